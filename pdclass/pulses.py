@@ -1,0 +1,205 @@
+"""The in-memory types of the pipeline: Chain, Capture, PulseSet; real and simulated pulses share them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+WaveArray = NDArray[np.float32]
+IntArray = NDArray[np.int64]
+
+LABELS = ("cable", "local", "switchgear", "interference")
+UNDECIDED = "undecided"
+BASES = ("dissected", "isolated", "located", "cross-checked", "expert", "simulated")
+
+WINDOW_S = 20e-6
+ONSET_SHARE = 0.25
+PHASE_HOLD_S = 1.0
+
+#: Columns of the pulse table (without the wave) and their pandas types, in the order on disk.
+TABLE_COLUMNS: Mapping[str, str] = {
+    "capture": "str",
+    "capture_digest": "str",
+    "circuit": "str",
+    "site": "str",
+    "sensor": "str",
+    "conductor": "str",
+    "session": "str",
+    "chain": "int16",
+    "onset_sample": "int64",
+    "onset_s": "float64",
+    "time_utc": "datetime64[ns, UTC]",
+    "phase_deg": "float32",
+    "noise_v": "float32",
+    "peak_v": "float32",
+    "snr_db": "float32",
+    "duration_us": "float32",
+    "clipped": "bool",
+    "window_mates": "int16",
+    "echo_of": "str",
+    "maybe_echo_of": "str",
+    "label": "str",
+    "basis": "str",
+    "labelled_by": "str",
+}
+#: Further columns of simulated pulses.
+SIMULATED_COLUMNS: Mapping[str, str] = {"family": "str", "distance_m": "float64", "charge_pc": "float64"}
+
+
+@dataclass(frozen=True)
+class Chain:
+    """Everything between cable and numbers; None means unknown, and what is then lost is said.
+
+    Attributes
+    ----------
+    rate_hz : samples a second [Hz], > 0.
+    volts_per_count : size of one count [V].
+    adc_bits : resolution of the digitiser [bit].
+    transfer_ohm : mid-band transfer impedance of the sensor [V/A].
+    band_hz : lower and upper -3 dB corner [Hz].
+    response : rows of (frequency [Hz], ohm, phase [deg]), sensor to counts.
+    mains_hz : mains frequency [Hz].
+    """
+
+    rate_hz: float
+    volts_per_count: float | None = None
+    adc_bits: int | None = None
+    transfer_ohm: float | None = None
+    band_hz: tuple[float, float] | None = None
+    response: tuple[tuple[float, float, float], ...] | None = None
+    mains_hz: float | None = None
+
+
+@dataclass(frozen=True)
+class Annotation:
+    """What somebody, or the simulator, says about one place of a capture."""
+
+    onset_sample: int
+    sample_count: int
+    label: str | None = None
+    basis: str | None = None
+    labelled_by: str | None = None
+    comment: str | None = None
+    family: str | None = None
+    distance_m: float | None = None
+    charge_pc: float | None = None
+
+
+@dataclass(frozen=True)
+class Capture:
+    """A stretch of recorded signal from one sensor.
+
+    Attributes
+    ----------
+    chain : how the signal became numbers.
+    counts : (samples,) int8, int16 or float32, read-only, memory-mapped where the file allows.
+    segments : (segments, 2) int64; the first sample of each segment in `counts` and its global index.
+        No pulse, filter or window crosses from one segment into the next.
+    phase_marks : (marks, 2) float64; sample and unwrapped phase [deg] of the reference voltage, or None.
+    digest : sha256 of the sample file's bytes, 64 hex digits.
+    """
+
+    chain: Chain
+    counts: NDArray[Any]
+    circuit: str
+    sensor: str
+    session: str
+    digest: str
+    name: str
+    site: str | None = None
+    conductor: str | None = None
+    start_utc: pd.Timestamp | None = None
+    segments: IntArray = field(default_factory=lambda: np.zeros((1, 2), np.int64))
+    phase_marks: FloatArray | None = None
+    phase_reference: str | None = None
+    annotations: tuple[Annotation, ...] = ()
+
+    def segment_bounds(self) -> list[tuple[int, int]]:
+        """First sample and one past the last sample of every segment, in order."""
+        starts = [int(start) for start in self.segments[:, 0]]
+        return list(zip(starts, [*starts[1:], int(self.counts.size)], strict=True))
+
+    @property
+    def duration_s(self) -> float:
+        """Recorded time [s], gaps not counted."""
+        return float(self.counts.size) / self.chain.rate_hz
+
+
+@dataclass(frozen=True)
+class PulseSet:
+    """Pulses of one rate and one window length.
+
+    Attributes
+    ----------
+    waves : (pulses, samples) float32 [V]; samples outside the record are NaN; the onset is a quarter in.
+    chains : the chains that the `chain` column counts into.
+    table : one row a pulse, indexed by `pulse_id`, with the columns of `TABLE_COLUMNS`.
+    """
+
+    waves: WaveArray
+    chains: tuple[Chain, ...]
+    table: pd.DataFrame
+
+    @property
+    def rate_hz(self) -> float:
+        """Samples a second, the same for every pulse of the set [Hz]."""
+        return self.chains[0].rate_hz
+
+    def take(self, places: NDArray[Any]) -> PulseSet:
+        """The pulses at the given places (integer positions or a boolean mask)."""
+        return PulseSet(self.waves[places], self.chains, self.table.iloc[places])
+
+
+def window_samples(rate_hz: float) -> int:
+    """Samples in one window of 20 us at the given rate."""
+    return round(WINDOW_S * rate_hz)
+
+
+def onset_in_window(samples: int) -> int:
+    """Place of the onset in a window of so many samples."""
+    return round(ONSET_SHARE * samples)
+
+
+def global_index(capture: Capture, sample: IntArray) -> IntArray:
+    """Index on the digitiser's clock (gaps counted) of samples of the file."""
+    place = np.searchsorted(capture.segments[:, 0], sample, side="right") - 1
+    return np.asarray(sample - capture.segments[place, 0] + capture.segments[place, 1], np.int64)
+
+
+def phase_deg(capture: Capture, sample: IntArray) -> WaveArray:
+    """Phase of the reference voltage at samples of the file [deg, 0 to 360].
+
+    Between marks the phase is interpolated. Outside them the mains frequency extrapolates for at most one
+    second; beyond that, and without marks or mains frequency, it is NaN.
+    """
+    marks = capture.phase_marks
+    if marks is None or len(marks) == 0:
+        return np.full(len(sample), np.nan, np.float32)
+    where = global_index(capture, sample).astype(np.float64)
+    known = global_index(capture, marks[:, 0].astype(np.int64)).astype(np.float64)
+    phase = np.interp(where, known, marks[:, 1])
+    outside = np.where(where < known[0], where - known[0], np.where(where > known[-1], where - known[-1], 0.0))
+    turns_per_sample = np.nan if capture.chain.mains_hz is None else capture.chain.mains_hz / capture.chain.rate_hz
+    phase = np.where(outside != 0, phase + 360.0 * outside * turns_per_sample, phase)
+    phase = np.where(np.abs(outside) > PHASE_HOLD_S * capture.chain.rate_hz, np.nan, phase)
+    wrapped = np.mod(phase, 360.0).astype(np.float32)
+    return np.where(wrapped >= np.float32(360.0), np.float32(0.0), wrapped)
+
+
+def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simulated: bool = False) -> pd.DataFrame:
+    """A table with every column of the contract in order and type; absent columns are null (clipped: False)."""
+    given = pd.DataFrame(rows)
+    given.index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
+    wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
+    defaults: dict[str, Any] = {"bool": False, "int16": 0, "int64": 0}
+    columns = {}
+    for name, kind in wanted.items():
+        column = given[name] if name in given else pd.Series(defaults.get(kind), index=given.index, dtype="object")
+        columns[name] = column.astype(kind) if kind != "str" else column.astype("object").where(column.notna(), None)
+    return pd.DataFrame(columns, index=given.index)

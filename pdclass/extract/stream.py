@@ -1,0 +1,371 @@
+"""The whole way from a capture to its pulses: background, events, echoes, windows, table."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from pdclass import digest
+from pdclass.errors import InputError
+from pdclass.extract import bank, whiten
+from pdclass.extract.echoes import Event, find_echoes
+from pdclass.extract.events import event_end, event_starts, mad_noise, threshold_sigmas
+from pdclass.pulses import (
+    ONSET_SHARE,
+    Annotation,
+    Capture,
+    FloatArray,
+    IntArray,
+    PulseSet,
+    WaveArray,
+    global_index,
+    onset_in_window,
+    phase_deg,
+    typed_table,
+    window_samples,
+)
+from pdclass.settings import Settings
+
+FILTER_ORDER = 64
+SPECTRUM_PIECES = 256
+NOISE_PIECES = 48
+NOISE_PIECE_SAMPLES = 16384
+WIDEST_BOX_S = 2e-6
+JOIN_S = 0.3e-6
+MARGIN_S = 4e-6
+LONGEST_CLUSTER_S = 400e-6
+BLOCK_SAMPLES = 1 << 16
+NOISE_REACH_S = 1e-3
+NOISE_STRIDE = 8
+LABEL_REACH_S = 0.5e-6
+#: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.
+LIMIT_PULSE_WIDTH_S = 50e-9
+
+
+class ExtractSettings(Settings):
+    """How pulses are found.
+
+    Attributes
+    ----------
+    false_events_per_cycle : false events a mains cycle that a Gaussian background would give.
+    longest_echo_us : longest delay of an echo [us].
+    cycle_s : the cycle meant by the false-event rate where the capture does not state its mains [s].
+    """
+
+    false_events_per_cycle: float = 1.0
+    longest_echo_us: float = 60.0
+    cycle_s: float = 0.02
+
+
+@dataclass(frozen=True)
+class Background:
+    """What the record sounds like without pulses.
+
+    Attributes
+    ----------
+    taps : whitening filter.
+    limits : (scales,) threshold of the box sums [count, whitened].
+    noise : noise level of the whitened record [count].
+    """
+
+    taps: WaveArray
+    limits: WaveArray
+    noise: float
+
+
+@dataclass(frozen=True)
+class Extraction:
+    """The pulses of one capture, echoes among them, and how they were found.
+
+    Attributes
+    ----------
+    pulses : every event, echoes marked by `echo_of`.
+    found, echoes : events in all, and those that are echoes.
+    detection_limit_v : peak of the smallest Gaussian pulse of 50 ns that would be found [V].
+    duration_s : recorded time [s].
+    notes : what should be said about the capture, a line each.
+    """
+
+    pulses: PulseSet
+    found: int
+    echoes: int
+    detection_limit_v: float
+    duration_s: float
+    notes: tuple[str, ...]
+
+
+def extract(
+    capture: Capture, settings: ExtractSettings | None = None, *, block_samples: int = BLOCK_SAMPLES
+) -> Extraction:
+    """Find the pulses of a capture.
+
+    The record is whitened by a prediction-error filter fitted to its median spectrum, a bank of box sums is
+    held against the threshold of a stated false-event rate, events are parted and their onsets refined, echoes
+    are told from pulses, and windows are cut from the raw record.
+
+    Parameters
+    ----------
+    capture : needs `volts_per_count`.
+    settings : how pulses are found.
+    block_samples : samples a block of the pass over the record; does not change the result.
+
+    Raises
+    ------
+    InputError
+        If the size of a count is unknown or the record is shorter than two windows.
+    """
+    settings = settings or ExtractSettings()
+    if capture.chain.volts_per_count is None:
+        raise InputError(f"{capture.name}: volts_per_count: unknown; state it with --volts-per-count")
+    background = measure_background(capture, settings)
+    events: list[tuple[int, int]] = []
+    echo_of: dict[int, int] = {}
+    maybe_of: dict[int, int] = {}
+    for bounds in capture.segment_bounds():
+        waves = _segment_events(capture, background, bounds, block_samples)
+        echoes, maybes = find_echoes(waves, capture.chain.rate_hz, settings.longest_echo_us * 1e-6)
+        echo_of |= {child + len(events): parent + len(events) for child, parent in echoes.items()}
+        maybe_of |= {child + len(events): parent + len(events) for child, parent in maybes.items()}
+        events += [(event.onset, event.end) for event in waves]
+    places = np.array(events, np.int64).reshape(-1, 2)
+    pulses, notes = _pulse_set(capture, places, echo_of, maybe_of)
+    limit = detection_limit_counts(background, capture.chain.rate_hz) * capture.chain.volts_per_count
+    return Extraction(pulses, len(places), len(echo_of), limit, capture.duration_s, tuple(notes))
+
+
+def measure_background(capture: Capture, settings: ExtractSettings) -> Background:
+    """Fit the whitening filter and the thresholds to pieces spread over the whole record."""
+    bounds, rate_hz = capture.segment_bounds(), capture.chain.rate_hz
+    piece = whiten.PIECE_SAMPLES
+    while piece > 256 and not len(whiten.spread_starts(bounds, piece, 1)):
+        piece //= 2
+    starts = whiten.spread_starts(bounds, piece, SPECTRUM_PIECES)
+    if not len(starts) or capture.counts.size < 2 * window_samples(rate_hz):
+        raise InputError(
+            f"{capture.name}: {capture.counts.size} samples: expected at least two windows of 20 us; record longer"
+        )
+    taps = whiten.whitening_filter(whiten.noise_spectrum(capture.counts, starts, piece), FILTER_ORDER)
+    scales = max(2, int(np.log2(WIDEST_BOX_S * rate_hz)) + 1)
+    span = NOISE_PIECE_SAMPLES if len(whiten.spread_starts(bounds, NOISE_PIECE_SAMPLES, 1)) else piece
+    pieces = [
+        bank.whitened(capture.counts, taps, (int(start), int(start) + span), int(start), int(start) + span)[
+            FILTER_ORDER:
+        ]
+        for start in whiten.spread_starts(bounds, span, NOISE_PIECES)
+    ]
+    noise = bank.box_noise(pieces, scales)
+    if noise[0] <= 0:
+        raise InputError(
+            f"{capture.name}: no noise in the record (most samples are equal); is the sensor connected?"
+        )
+    cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
+    sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
+    return Background(taps, (sigmas * noise).astype(np.float32), float(noise[0]))
+
+
+def detection_limit_counts(background: Background, rate_hz: float) -> float:
+    """Peak [count] of the smallest Gaussian pulse, 50 ns wide at half height, that reaches a threshold."""
+    sigma = LIMIT_PULSE_WIDTH_S * rate_hz / 2.3548200
+    reach = int(8 * sigma) + 2
+    pulse = np.exp(-0.5 * (np.arange(-reach, reach + 1) / sigma) ** 2)
+    box = np.convolve(pulse, background.taps.astype(np.float64))
+    gains = []
+    for scale, limit in enumerate(background.limits):
+        if scale:
+            half = 1 << (scale - 1)
+            box = np.convolve(box, np.concatenate([[1.0], np.zeros(half - 1), [1.0]]))
+        gains.append(np.abs(box).max() / limit)
+    return float(1 / max(gains))
+
+
+def _segment_events(
+    capture: Capture, background: Background, bounds: tuple[int, int], block_samples: int
+) -> list[Event]:
+    rate_hz = capture.chain.rate_hz
+    runs = bank.flagged_runs(
+        capture.counts, background.taps, background.limits, bounds, block_samples=block_samples
+    )
+    events: list[Event] = []
+    for first, last in _bounded(
+        bank.joined_runs(runs, round(JOIN_S * rate_hz)), round(LONGEST_CLUSTER_S * rate_hz)
+    ):
+        events += _cluster_events(capture, background, bounds, first, last)
+    return _in_order(events)
+
+
+def _bounded(runs: IntArray, longest: int) -> list[tuple[int, int]]:
+    """Runs cut into stretches of bounded length, counted from each run's own start."""
+    return [
+        (begin, min(begin + longest, int(last)))
+        for first, last in runs
+        for begin in range(int(first), int(last), longest)
+    ]
+
+
+def _cluster_events(
+    capture: Capture, background: Background, bounds: tuple[int, int], first: int, last: int
+) -> list[Event]:
+    rate_hz = capture.chain.rate_hz
+    margin, window = round(MARGIN_S * rate_hz), window_samples(rate_hz)
+    begin, end = max(bounds[0], first - margin), min(bounds[1], last + window)
+    white = bank.whitened(capture.counts, background.taps, bounds, begin, end) / np.float32(background.noise)
+    white[: max(0, bounds[0] + FILTER_ORDER - begin)] = 0.0
+    starts = event_starts(white, rate_hz, (first - begin, last - begin))
+    limits = [*starts[1:], white.size]
+    ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=True)]
+    return [
+        Event(start + begin, stop + begin, white[start:stop].copy())
+        for start, stop in zip(starts, ends, strict=True)
+    ]
+
+
+def _in_order(events: list[Event]) -> list[Event]:
+    """Events by onset; one that a neighbouring cluster found again is dropped, an end stops at the next onset."""
+    kept: list[Event] = []
+    for event in sorted(events, key=lambda event: event.onset):
+        if kept and event.onset < kept[-1].end:
+            if event.onset - kept[-1].onset < 8:
+                continue
+            former = kept.pop()
+            length = event.onset - former.onset
+            kept.append(Event(former.onset, event.onset, former.wave[:length]))
+        kept.append(event)
+    return kept
+
+
+def _pulse_set(
+    capture: Capture, places: IntArray, echo_of: dict[int, int], maybe_of: dict[int, int]
+) -> tuple[PulseSet, list[str]]:
+    rate_hz = capture.chain.rate_hz
+    onsets, ends = places[:, 0], places[:, 1]
+    ids = [digest.pulse_id(capture.digest, capture.sensor, int(onset)) for onset in onsets]
+    waves = _windows(capture, onsets)
+    noise_v = _noise_beside(capture, places)
+    peak_v = _signed_peaks(waves, ends - onsets)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        snr_db = 20 * np.log10(np.abs(peak_v) / noise_v)
+    labels, notes = _labels(capture, onsets, set(echo_of))
+    onset_s = (global_index(capture, onsets) - capture.segments[0, 1]) / rate_hz
+    rows: dict[str, Any] = {
+        "capture": capture.name,
+        "capture_digest": capture.digest,
+        "circuit": capture.circuit,
+        "site": capture.site,
+        "sensor": capture.sensor,
+        "conductor": capture.conductor,
+        "session": capture.session,
+        "chain": 0,
+        "onset_sample": onsets,
+        "onset_s": onset_s,
+        "time_utc": _times(capture, onset_s),
+        "phase_deg": phase_deg(capture, onsets),
+        "noise_v": noise_v,
+        "peak_v": peak_v,
+        "snr_db": snr_db,
+        "duration_us": (ends - onsets) / rate_hz * 1e6,
+        "clipped": _clipped(capture, places),
+        "window_mates": _window_mates(onsets, window_samples(rate_hz)),
+        "echo_of": [ids[echo_of[row]] if row in echo_of else None for row in range(len(ids))],
+        "maybe_echo_of": [ids[maybe_of[row]] if row in maybe_of else None for row in range(len(ids))],
+        **labels,
+    }
+    simulated = any(note.family is not None for note in capture.annotations)
+    table = typed_table(pd.DataFrame(rows, index=range(len(ids))), ids, simulated=simulated)
+    return PulseSet(waves, (capture.chain,), table), notes
+
+
+def _times(capture: Capture, onset_s: FloatArray) -> Any:
+    if capture.start_utc is None:
+        return pd.Series([pd.NaT] * len(onset_s), dtype="datetime64[ns, UTC]")
+    return pd.Series(capture.start_utc + pd.to_timedelta(np.rint(onset_s * 1e9).astype(np.int64), unit="ns"))
+
+
+def _windows(capture: Capture, onsets: IntArray) -> WaveArray:
+    """(pulses, samples) float32 [V]; what lies beyond the pulse's segment is NaN."""
+    samples = window_samples(capture.chain.rate_hz)
+    waves = np.full((len(onsets), samples), np.nan, np.float32)
+    lead = onset_in_window(samples)
+    for row, onset in enumerate(onsets):
+        first, last = _segment_of(capture, int(onset))
+        begin, end = max(first, onset - lead), min(last, onset - lead + samples)
+        piece = np.asarray(capture.counts[begin:end], np.float32) * np.float32(capture.chain.volts_per_count)
+        waves[row, begin - onset + lead : end - onset + lead] = piece
+    return waves
+
+
+def _segment_of(capture: Capture, sample: int) -> tuple[int, int]:
+    bounds = capture.segment_bounds()
+    return bounds[int(np.searchsorted([first for first, _ in bounds], sample, side="right")) - 1]
+
+
+def _noise_beside(capture: Capture, places: IntArray) -> WaveArray:
+    """Noise level of the recorded samples within 1 ms of each pulse, found pulses cut out [V]."""
+    reach = round(NOISE_REACH_S * capture.chain.rate_hz)
+    scale = float(capture.chain.volts_per_count or 1.0)
+    levels = np.empty(len(places), np.float32)
+    for row, (onset, _) in enumerate(places):
+        first, last = _segment_of(capture, int(onset))
+        begin, end = max(first, int(onset) - reach), min(last, int(onset) + reach)
+        # a fixed comb of samples, the same whatever the blocks
+        comb = np.arange(-(-begin // NOISE_STRIDE) * NOISE_STRIDE, end, NOISE_STRIDE)
+        inside = np.searchsorted(places[:, 0], comb, side="right") - 1
+        quiet = (inside < 0) | (comb >= places[np.maximum(inside, 0), 1])
+        levels[row] = scale * mad_noise(np.asarray(capture.counts[comb[quiet]], np.float64))
+    return levels
+
+
+def _signed_peaks(waves: WaveArray, lengths: IntArray) -> WaveArray:
+    """Largest excursion of each pulse's own samples from the median of its pre-trigger [V], with its sign."""
+    lead = onset_in_window(waves.shape[1])
+    peaks = np.empty(len(waves), np.float32)
+    for row, (wave, length) in enumerate(zip(waves, lengths, strict=True)):
+        before = wave[:lead][np.isfinite(wave[:lead])]
+        own = wave[lead : lead + max(int(length), 1)] - (np.median(before) if before.size else 0.0)
+        peaks[row] = own[np.nanargmax(np.abs(own))]
+    return peaks
+
+
+def _clipped(capture: Capture, places: IntArray) -> list[bool]:
+    """Whether a pulse holds samples at the end of the digitiser's range."""
+    bits = capture.chain.adc_bits
+    if bits is None or not np.issubdtype(capture.counts.dtype, np.integer):
+        return [False] * len(places)
+    top, bottom = (1 << (bits - 1)) - 1, -(1 << (bits - 1))
+    own = [np.asarray(capture.counts[onset:end], np.int64) for onset, end in places]
+    return [bool(np.any((piece >= top) | (piece <= bottom))) for piece in own]
+
+
+def _window_mates(onsets: IntArray, samples: int) -> IntArray:
+    """How many other events share each pulse's window."""
+    lead = round(ONSET_SHARE * samples)
+    first = np.searchsorted(onsets, onsets - lead, side="left")
+    last = np.searchsorted(onsets, onsets - lead + samples, side="left")
+    return np.asarray(last - first - 1, np.int64)
+
+
+def _labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tuple[dict[str, list[Any]], list[str]]:
+    """Annotations carried to the pulse nearest within 0.5 us; two that disagree give none, and a note."""
+    reach = LABEL_REACH_S * capture.chain.rate_hz
+    said: dict[int, Annotation | None] = {}
+    notes: list[str] = []
+    rows = np.array([row for row in range(len(onsets)) if row not in echoes], np.int64)
+    for note in capture.annotations:
+        if note.label is None or not len(rows):
+            continue
+        row = int(rows[np.argmin(np.abs(onsets[rows] - note.onset_sample))])
+        if abs(int(onsets[row]) - note.onset_sample) > reach:
+            continue
+        former = said.get(row, note)
+        if former is None or former.label != note.label:
+            notes.append(
+                f"{capture.name}: sample {onsets[row]}: two labels for one pulse; it is left unlabelled"
+            )
+            said[row] = None
+        else:
+            said[row] = note
+    names = ("label", "basis", "labelled_by", "family", "distance_m", "charge_pc")
+    chosen = [said.get(row) for row in range(len(onsets))]
+    return {name: [getattr(note, name) if note else None for note in chosen] for name in names}, notes

@@ -1,0 +1,34 @@
+"""The one visible list of features, and the family that measures each."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+
+from pdclass.features.echoes import ECHOES, measure_echoes
+from pdclass.features.edges import EDGES, measure_edges
+from pdclass.features.feature import Feature
+from pdclass.features.ringing import RINGING, measure_ringing
+from pdclass.features.scales import SCALES, measure_scales
+from pdclass.features.spectrum import SPECTRUM, measure_spectrum
+from pdclass.features.spread import SPREAD, measure_spread
+from pdclass.features.window import Window
+
+Measure = Callable[[Window], dict[str, float]]
+
+FAMILIES: Mapping[str, tuple[tuple[Feature, ...], Measure]] = {
+    "edges": (EDGES, measure_edges),
+    "spectrum": (SPECTRUM, measure_spectrum),
+    "scales": (SCALES, measure_scales),
+    "ringing": (RINGING, measure_ringing),
+    "echoes": (ECHOES, measure_echoes),
+    "spread": (SPREAD, measure_spread),
+}
+
+CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD)
+
+BY_NAME: Mapping[str, Feature] = {feature.name: feature for feature in CATALOGUE}
+
+
+def feature_digests() -> dict[str, str]:
+    """Digest of every feature's declaration, by name: what a bundle is checked against."""
+    return {feature.name: feature.digest for feature in CATALOGUE}

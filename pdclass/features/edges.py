@@ -1,0 +1,117 @@
+"""Edges: how fast a pulse rises and falls and how wide it is, by interpolated crossings of its own peak.
+
+The base line is that of the pre-trigger and the top is the peak: the histogram levels of IEEE Std 181 find no
+high state in a unipolar pulse.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from pdclass.features.feature import Feature
+from pdclass.features.window import GUARD, ONSET, STEP_NS, Window
+from pdclass.pulses import FloatArray
+
+_LEVELS = (
+    "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
+)
+_LONGEST_NS = 15000.0
+
+
+def crossing(wave: FloatArray, peak: int, level: float, *, forward: bool) -> float:
+    """Where the wave passes a level, going from its peak outwards, interpolated [samples]; NaN if nowhere.
+
+    Parameters
+    ----------
+    wave : (samples,) with the peak at `peak`.
+    peak : place of the peak.
+    level : in the wave's unit, below the peak.
+    forward : towards later samples, else towards earlier ones.
+    """
+    side = wave[peak:] if forward else wave[peak::-1]
+    below = np.flatnonzero(side < level)
+    if not below.size:
+        return float("nan")
+    k = int(below[0])
+    step = k - 1 + (side[k - 1] - level) / (side[k - 1] - side[k])
+    return float(peak + step if forward else peak - step)
+
+
+def crest(wave: FloatArray, peak: int) -> tuple[float, float]:
+    """Place [samples] and height of a peak by the parabola through its three highest samples."""
+    if not 0 < peak < wave.size - 1:
+        return float(peak), float(wave[peak])
+    left, middle, right = wave[peak - 1 : peak + 2]
+    bend = left - 2 * middle + right
+    shift = 0.5 * (left - right) / bend if bend < 0 else 0.0
+    return peak + shift, float(middle - 0.25 * (left - right) * shift)
+
+
+def edge_places(wave: FloatArray, peak: int) -> dict[str, float]:
+    """Crossings at 10, 25, 50 and 90 % before and after the peak, and the peak itself [samples].
+
+    Keys are `rise_10` ... `fall_10` and `peak`; NaN where the wave does not come down to the level.
+    """
+    place, height = crest(wave, peak)
+    found = {"peak": place, "height": height}
+    for percent in (10, 25, 50, 90):
+        found[f"rise_{percent}"] = crossing(wave, peak, height * percent / 100, forward=False)
+        found[f"fall_{percent}"] = crossing(wave, peak, height * percent / 100, forward=True)
+    return found
+
+
+def measure_edges(window: Window) -> dict[str, float]:
+    """The features of this family, by name."""
+    wave = window.wave[: window.last]
+    at = edge_places(wave, window.peak)
+    raw = edge_places(window.raw[: window.last], window.peak) if window.raw[window.peak] > 0 else {}
+    rise = (at["rise_90"] - at["rise_10"]) * STEP_NS
+    fall = (at["fall_10"] - at["fall_90"]) * STEP_NS
+    widths = {percent: (at[f"fall_{percent}"] - at[f"rise_{percent}"]) * STEP_NS for percent in (10, 25, 50)}
+    return {
+        "rise_ns": rise,
+        "rise_raw_ns": (raw["rise_90"] - raw["rise_10"]) * STEP_NS if raw else np.nan,
+        "fall_ns": fall,
+        "width_50_ns": widths[50],
+        "width_25_ns": widths[25],
+        "width_10_ns": widths[10],
+        "width_ratio": widths[10] / widths[50],
+        "asymmetry": fall / rise if rise > 0 else np.nan,
+        "tail_ns": _tail_ns(window),
+    }
+
+
+def _tail_ns(window: Window) -> float:
+    """From the peak until nine tenths of the energy of the own samples have passed."""
+    energy = np.cumsum(window.wave[ONSET - GUARD : window.end] ** 2)
+    return float(np.searchsorted(energy, 0.9 * energy[-1]) + ONSET - GUARD - window.peak) * STEP_NS
+
+
+def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 6.0) -> Feature:
+    return Feature(
+        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db
+    )
+
+
+EDGES = (
+    _edge("rise_ns", "10-90 % time of the edge that leads to the peak", "slower", "faster", "rise {value}"),
+    _edge(
+        "rise_raw_ns", "the same on the wave with its carriers", "slower", "faster", "rise before carriers are reduced {value}"
+    ),
+    _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
+    _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
+    _edge("width_25_ns", "width at a quarter of the peak", "wider", "narrower", "width at a quarter {value}", 12.0),
+    _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
+    Feature(
+        "width_ratio", "", "width at a tenth over width at half height", "foot over half width {value}", "longer-footed",
+        "shorter-footed", (1.0, 1e4), 0.3, _LEVELS, needs_snr_db=18.0,
+    ),
+    Feature(
+        "asymmetry", "", "fall time over rise time", "fall over rise {value}", "more lopsided", "more even",
+        (0.0, 1e4), 0.3, _LEVELS, needs_snr_db=12.0,
+    ),
+    Feature(
+        "tail_ns", "ns", "from the peak until nine tenths of the energy have passed", "tail {value}", "longer",
+        "shorter", (-_LONGEST_NS, _LONGEST_NS), 30.0, "own definition", needs_snr_db=6.0,
+    ),
+)  # fmt: skip

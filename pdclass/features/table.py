@@ -1,0 +1,87 @@
+"""Features of a set of pulses, pulse by pulse, so that no result depends on the company it came in."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from pdclass.errors import RefusedError
+from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
+from pdclass.features.edges import edge_places
+from pdclass.features.window import ONSET, STEP_NS, Window, prepared
+from pdclass.pulses import FloatArray, PulseSet
+
+
+def feature_table(pulses: PulseSet, names: Sequence[str] | None = None) -> FloatArray:
+    """Measure features of every pulse.
+
+    Parameters
+    ----------
+    pulses : the pulses.
+    names : features wanted, in order; the whole catalogue by default.
+
+    Returns
+    -------
+    (pulses, features) in each feature's unit; NaN = unmeasurable.
+
+    Raises
+    ------
+    RefusedError
+        If a name is not in the catalogue.
+    """
+    wanted = tuple(names) if names is not None else tuple(feature.name for feature in CATALOGUE)
+    unknown = [name for name in wanted if name not in BY_NAME]
+    if unknown:
+        raise RefusedError(
+            f"feature '{unknown[0]}' is not in this version's catalogue; use the version that has it"
+        )
+    families = [name for name, (features, _) in FAMILIES.items() if any(f.name in wanted for f in features)]
+    values = np.full((len(pulses.table), len(wanted)), np.nan)
+    for row, window in enumerate(_windows(pulses)):
+        if window is not None:
+            found = _measured(window, families)
+            values[row] = [found.get(name, np.nan) for name in wanted]
+    return values
+
+
+def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
+    """What a drawing of one pulse needs: `time_us` and `wave_v` (onset at 0, analysis band) and edge times [us].
+
+    Keys of the times are those of `edge_places` (without `height`) and `end`; empty where nothing is measurable.
+    """
+    window = _window(pulses, place)
+    if window is None:
+        return {}
+    wave_v = pulses.waves[place]
+    scale = float(pulses.table["peak_v"].iloc[place])
+    at = edge_places(window.wave[: window.last], window.peak)
+    times = {name: (where - ONSET) * STEP_NS / 1e3 for name, where in at.items() if name != "height"}
+    time_us = (np.arange(window.wave.size) - ONSET) * STEP_NS / 1e3
+    kept = slice(0, window.last) if np.isfinite(wave_v).any() else slice(0, 0)
+    shown = {"time_us": time_us[kept], "wave_v": window.wave[kept] * scale, "height_v": at["height"] * scale}
+    return {**shown, **times, "end": (window.end - ONSET) * STEP_NS / 1e3}
+
+
+def _windows(pulses: PulseSet) -> list[Window | None]:
+    return [_window(pulses, place) for place in range(len(pulses.table))]
+
+
+def _window(pulses: PulseSet, place: int) -> Window | None:
+    chain = pulses.chains[int(pulses.table["chain"].iloc[place])]
+    return prepared(pulses.waves[place], chain, float(pulses.table["duration_us"].iloc[place]))
+
+
+def _measured(window: Window, families: Sequence[str]) -> dict[str, float]:
+    """Values of some families, those NaN that the chain or the noise does not allow or that leave their range."""
+    found: dict[str, float] = {}
+    for family in families:
+        features, measure = FAMILIES[family]
+        values = measure(window)
+        for feature in features:
+            value = values[feature.name]
+            low, high = feature.valid_range
+            carried = window.reach_hz >= feature.needs_hz
+            clear = not window.snr_db < feature.needs_snr_db
+            found[feature.name] = value if carried and clear and low <= value <= high else np.nan
+    return found

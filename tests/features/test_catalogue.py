@@ -1,0 +1,196 @@
+"""One battery of tests that every feature of the catalogue must pass."""
+
+import dataclasses
+
+import numpy as np
+import pytest
+from scipy.signal import butter, sosfilt
+
+from closed_form import as_capture, background, damped_sine, double_exponential
+from pdclass.errors import RefusedError
+from pdclass.extract import extract
+from pdclass.features import BY_NAME, CATALOGUE, FAMILIES, feature_digests, feature_table
+from pdclass.pulses import Chain, PulseSet, typed_table, window_samples
+
+#: One sample, in the units in which features of time come.
+STEP = {"ns": 10.0, "µs": 0.01}
+NAMES = [feature.name for feature in CATALOGUE]
+SHAPES = {
+    "fast": lambda rate: double_exponential(10e-9, 50e-9, rate, 12e-6),
+    "slow": lambda rate: double_exponential(100e-9, 600e-9, rate, 12e-6),
+    "ringing": lambda rate: damped_sine(7e6, 0.4e-6, rate, 12e-6),
+    "two": lambda rate: double_exponential(20e-9, 90e-9, rate, 12e-6)
+    - 0.4 * np.roll(double_exponential(60e-9, 250e-9, rate, 12e-6), round(6e-6 * rate)),
+}
+
+
+def single(wave, *, rate_hz=100e6, height_v=1.0, noise_v=0.002, seed=0, band_hz=(0.1e6, 40e6), duration_us=3.0):
+    """One pulse in its window with white noise, without extraction."""
+    samples = window_samples(rate_hz)
+    window = np.random.default_rng(seed).normal(0, noise_v, samples)
+    lead = samples // 4
+    window[lead : lead + wave.size] += height_v * wave[: samples - lead]
+    table = typed_table({"duration_us": [duration_us], "peak_v": [height_v], "chain": [0]}, ["a" * 16])
+    return PulseSet(window[None].astype(np.float32), (Chain(rate_hz, band_hz=band_hz),), table)
+
+
+def values_of(pulses):
+    return feature_table(pulses)[0]
+
+
+@pytest.fixture(scope="module")
+def found():
+    """Pulses of every shape, extracted from noise with carriers."""
+    rng = np.random.default_rng(3)
+    signal = background(rng, 400_000)
+    for number, onset in enumerate(range(10_000, 390_000, 12_000)):
+        wave = list(SHAPES.values())[number % 4](100e6)
+        signal[onset : onset + wave.size] += rng.uniform(100, 4000) * wave
+    return extract(as_capture(signal)).pulses
+
+
+def test_names_and_words_are_complete_and_unlike():
+    """Every entry has a unit in its name where it has one, words for more and less, and a sentence with a value."""
+    assert len(NAMES) == len(set(NAMES)) >= 20
+    assert {"edges", "spectrum", "scales", "ringing", "echoes", "spread"} == set(FAMILIES)
+    assert sorted(NAMES) == sorted(f.name for features, _ in FAMILIES.values() for f in features)
+    endings = {"ns": "_ns", "MHz": "_mhz", "µs": "_us"}
+    for feature in CATALOGUE:
+        assert feature.name.endswith(endings.get(feature.unit, ""))
+        assert "{value}" in feature.sentence
+        assert feature.more != feature.less
+        assert feature.tolerance > 0
+        assert feature.reference
+
+
+def test_a_changed_declaration_changes_the_digest():
+    """A bundle that names a digest notices when the feature under the name is another."""
+    feature = BY_NAME["rise_ns"]
+    assert dataclasses.replace(feature, meaning="something else").digest != feature.digest
+    assert feature_digests()["rise_ns"] == feature.digest
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_finite_in_range_or_declared_unmeasurable(found, name):
+    """On extracted pulses every value is within its stated range or NaN, and most are measurable somewhere."""
+    values = feature_table(found, [name])[:, 0]
+    low, high = BY_NAME[name].valid_range
+    measured = values[np.isfinite(values)]
+    assert not np.isinf(values).any()
+    assert ((measured >= low) & (measured <= high)).all()
+    assert measured.size > 0
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+def test_gain_and_polarity_change_nothing(shape):
+    """The same pulse, a thousand times larger or turned over, has the same features."""
+    wave = SHAPES[shape](100e6)
+    plain = single(wave)
+    for factor in (1000.0, 1e-3, -1.0):
+        other = PulseSet((plain.waves * np.float32(factor)), plain.chains, plain.table)
+        np.testing.assert_allclose(values_of(other), values_of(plain), rtol=2e-4, atol=2e-4, equal_nan=True)
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+def test_an_offset_changes_nothing(shape):
+    """A constant added to the record, as a digitiser does, leaves the features alone."""
+    plain = single(SHAPES[shape](100e6))
+    raised = PulseSet(plain.waves + np.float32(0.5), plain.chains, plain.table)
+    np.testing.assert_allclose(values_of(raised), values_of(plain), rtol=2e-3, atol=2e-3, equal_nan=True)
+
+
+def test_alone_and_in_a_batch_the_same_bits(found):
+    """A pulse's features do not depend on the company it is measured in, to the last bit."""
+    whole = feature_table(found)
+    for place in (0, 7, len(whole) - 1):
+        assert np.array_equal(feature_table(found.take(np.array([place])))[0], whole[place], equal_nan=True)
+    backwards = feature_table(found.take(np.arange(len(whole))[::-1]))
+    assert np.array_equal(backwards[::-1], whole, equal_nan=True)
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+@pytest.mark.parametrize("rate_hz", [62.5e6, 125e6, 200e6, 250e6])
+def test_other_rates_agree_within_the_stated_tolerance(shape, rate_hz):
+    """The same pulse, sampled at another rate behind one chain of 15 MHz, keeps each feature within its tolerance."""
+    reference = single(band_limited(shape, 100e6), noise_v=1e-5, band_hz=(0.1e6, 15e6))
+    other = single(band_limited(shape, rate_hz), rate_hz=rate_hz, noise_v=1e-5, band_hz=(0.1e6, 15e6))
+    for feature, one, two in zip(CATALOGUE, values_of(reference), values_of(other), strict=True):
+        allowed = feature.tolerance + 0.02 * abs(one)
+        assert np.isnan(one) == np.isnan(two), feature.name
+        assert np.isnan(one) or abs(one - two) <= allowed, (feature.name, one, two)
+
+
+def band_limited(shape, rate_hz):
+    """The shape sampled at 1 GS/s, low-passed at 15 MHz (fourth order, causal) and thinned to the rate."""
+    fine = sosfilt(butter(4, 15e6, fs=1e9, output="sos"), SHAPES[shape](1e9))
+    place = np.arange(round(12e-6 * rate_hz)) * (1e9 / rate_hz)
+    return np.interp(place, np.arange(fine.size), fine)
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+def test_a_moved_window_keeps_the_features(shape):
+    """An onset that is one sample off moves no feature by more than its tolerance and a twentieth."""
+    plain = single(SHAPES[shape](100e6), noise_v=1e-4)
+    moved = PulseSet(np.roll(plain.waves, 1, axis=1), plain.chains, plain.table)
+    for feature, one, two in zip(CATALOGUE, values_of(plain), values_of(moved), strict=True):
+        assert np.isnan(one) == np.isnan(two), feature.name
+        assert np.isnan(one) or abs(one - two) <= STEP.get(feature.unit, 0.0) + feature.tolerance + 0.05 * abs(one), (feature.name, one, two)
+
+
+def test_what_the_chain_does_not_carry_is_unmeasurable():
+    """Behind a chain that ends at 12 MHz the share of power above 14 MHz is NaN; the rise time is not."""
+    narrow = single(SHAPES["fast"](100e6), band_hz=(0.1e6, 12e6))
+    values = dict(zip(NAMES, values_of(narrow), strict=True))
+    assert np.isnan(values["share_14_25_mhz"])
+    assert np.isfinite(values["rise_ns"])
+
+
+def test_what_the_noise_hides_is_unmeasurable():
+    """At 10 dB the width at a tenth of the peak is NaN, the width at half height is not."""
+    buried = single(SHAPES["slow"](100e6), noise_v=0.35)
+    values = dict(zip(NAMES, values_of(buried), strict=True))
+    assert np.isnan(values["width_10_ns"])
+    assert np.isfinite(values["width_50_ns"])
+
+
+def test_a_window_that_crosses_a_gap_is_used_as_far_as_it_goes():
+    """Without the samples before the onset nothing that needs the noise is known, and nothing fails."""
+    cut = single(SHAPES["fast"](100e6))
+    waves = cut.waves.copy()
+    waves[:, :480] = np.nan
+    values = dict(zip(NAMES, values_of(PulseSet(waves, cut.chains, cut.table)), strict=True))
+    assert np.isnan(values["echo_ratio"])
+    assert values["rise_ns"] == pytest.approx(values_of(cut)[NAMES.index("rise_ns")], rel=0.1)
+
+
+def test_an_empty_or_constant_window_has_no_features():
+    """Where there is nothing to measure every feature is NaN, without a warning."""
+    plain = single(SHAPES["fast"](100e6))
+    for waves in (np.zeros_like(plain.waves), np.full_like(plain.waves, np.nan)):
+        assert np.isnan(values_of(PulseSet(waves, plain.chains, plain.table))).all()
+
+
+def test_an_unknown_feature_is_refused_by_name(found):
+    """A bundle that names a feature this version lacks is told which."""
+    with pytest.raises(RefusedError, match="'rise_fs'"):
+        feature_table(found, ["rise_fs"])
+
+
+def test_carriers_are_taken_out_before_measuring():
+    """Under a carrier of a fifth of the peak the width is that of the clean pulse within 10 %."""
+    t = np.arange(2000) / 100e6
+    clean = single(SHAPES["slow"](100e6))
+    carried = PulseSet(
+        clean.waves + (0.2 * np.cos(2 * np.pi * 1.35e6 * t + 1)).astype(np.float32), clean.chains, clean.table
+    )
+    names = ["width_50_ns", "rise_ns"]
+    np.testing.assert_allclose(feature_table(carried, names), feature_table(clean, names), rtol=0.1)
+
+
+def test_the_echo_feature_finds_delay_ratio_and_sign():
+    """A copy of 0.4 after 6 us, turned over, is found as such."""
+    t = SHAPES["fast"](100e6)
+    wave = t - 0.4 * np.roll(t, 600)
+    delay, ratio = feature_table(single(wave), ["echo_delay_us", "echo_ratio"])[0]
+    assert delay == pytest.approx(6.0, abs=0.03)
+    assert ratio == pytest.approx(-0.4, abs=0.03)

@@ -1,5 +1,5 @@
 """From a capture's stream of samples to its pulses."""
 
-from pdclass.extract.stream import ExtractSettings, Extraction, extract
+from pdclass.extract.stream import Extraction, ExtractSettings, extract
 
 __all__ = ["ExtractSettings", "Extraction", "extract"]

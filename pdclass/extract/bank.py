@@ -27,9 +27,7 @@ def whiten_into(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # 
 
 
 @_njit
-def flag_boxes(
-    white: WaveArray, limits: WaveArray, flags: NDArray[Any]
-) -> None:  # pragma: no cover - compiled
+def flag_boxes(white: WaveArray, limits: WaveArray, flags: NDArray[Any]) -> None:  # pragma: no cover - compiled
     """Flag the centre of every box of 1, 2, 4, ... samples whose sum leaves its limit.
 
     `white` is overwritten. Doubling (a box = two neighbours of half its width) gives every box the same
@@ -50,9 +48,7 @@ def flag_boxes(
             centred[i] |= abs(white[i]) > limit
 
 
-def whitened(
-    counts: NDArray[Any], taps: WaveArray, bounds: tuple[int, int], first: int, last: int
-) -> WaveArray:
+def whitened(counts: NDArray[Any], taps: WaveArray, bounds: tuple[int, int], first: int, last: int) -> WaveArray:
     """Whitened samples `first` to `last` of a segment; before the segment its first sample is held.
 
     Parameters
@@ -102,9 +98,7 @@ def flagged_runs(
         # the filter starts on a held sample at a segment's beginning: what it says there is not noise-like
         white[: max(0, bounds[0] + order - begin)] = 0.0
         flag_boxes(white, limits, flags)
-        edges = np.flatnonzero(
-            np.diff(np.concatenate([[False], flags[first - begin : last - begin], [False]]))
-        )
+        edges = np.flatnonzero(np.diff(np.concatenate([[False], flags[first - begin : last - begin], [False]])))
         runs.append(edges.reshape(-1, 2) + first)
     return np.concatenate(runs).astype(np.int64) if runs else np.zeros((0, 2), np.int64)
 

@@ -117,7 +117,7 @@ def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int]) -> l
     starts: list[int] = []
     for place in rough:
         begin = max(starts[-1] + attack if starts else 0, place - twin)
-        start = _refined(white, quick, begin, place, attack)
+        start = _refined(white, begin, place, attack)
         if not starts or start > starts[-1]:
             starts.append(start)
     return starts
@@ -128,7 +128,7 @@ def _slow_start(slow: FloatArray, inside: tuple[int, int]) -> int:
     return inside[0] + int(np.argmax(slow[inside[0] : max(inside[1], inside[0] + 1)]))
 
 
-def _refined(white: WaveArray, quick: FloatArray, begin: int, place: int, attack: int) -> int:
+def _refined(white: WaveArray, begin: int, place: int, attack: int) -> int:
     crest_end = min(white.size, place + 2 * attack)
     crest = place - attack + int(np.argmax(np.abs(white[max(place - attack, 0) : crest_end])))
     stretch = white[begin : max(crest, place) + 2]
@@ -154,12 +154,21 @@ def event_end(white: WaveArray, start: int, limit: int, rate_hz: float) -> int:
 def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:
     """How many noise levels a box sum of each scale must reach for a stated rate of false events a cycle.
 
-    The noise is taken as Gaussian after whitening and a box of w samples as independent every w/2 samples;
-    the rate is shared equally among the scales. Background with heavier tails gives more false events.
+    The noise is taken as Gaussian and white. Box sums of w samples, correlated as 1 - |lag|/w, leave z noise
+    levels in about z²/w separate excursions a sample times the tail of the normal law, and at most one. The rate
+    is shared equally among the scales. Background with heavier tails gives more false events.
+
+    References
+    ----------
+    J. Pickands, Trans. Am. Math. Soc. 145, 51-73, 1969 (from memory; index 1, constant 1).
     """
     widths = 2.0 ** np.arange(scales)
-    chances = false_events / scales / (2.0 * samples_per_cycle / widths)
-    return np.array([_normal_quantile(chance / 2) for chance in np.minimum(chances, 0.5)])
+    sigmas = np.full(scales, 5.0)
+    for _ in range(20):
+        places = samples_per_cycle * np.minimum(1.0, sigmas**2 / widths)
+        chances = np.minimum(false_events / scales / places, 1.0)
+        sigmas = np.array([_normal_quantile(chance / 2) for chance in chances])
+    return sigmas
 
 
 def _normal_quantile(tail: float) -> float:

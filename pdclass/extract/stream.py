@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from pdclass import digest
 from pdclass.errors import InputError
@@ -41,6 +42,7 @@ BLOCK_SAMPLES = 1 << 16
 NOISE_REACH_S = 1e-3
 NOISE_STRIDE = 8
 LABEL_REACH_S = 0.5e-6
+_GOLDEN = 0.6180339887498949
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.
 LIMIT_PULSE_WIDTH_S = 50e-9
 
@@ -158,9 +160,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
     ]
     noise = bank.box_noise(pieces, scales)
     if noise[0] <= 0:
-        raise InputError(
-            f"{capture.name}: no noise in the record (most samples are equal); is the sensor connected?"
-        )
+        raise InputError(f"{capture.name}: no noise in the record (most samples are equal); is the sensor connected?")
     cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
     sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
     return Background(taps, (sigmas * noise).astype(np.float32), float(noise[0]))
@@ -185,13 +185,9 @@ def _segment_events(
     capture: Capture, background: Background, bounds: tuple[int, int], block_samples: int
 ) -> list[Event]:
     rate_hz = capture.chain.rate_hz
-    runs = bank.flagged_runs(
-        capture.counts, background.taps, background.limits, bounds, block_samples=block_samples
-    )
+    runs = bank.flagged_runs(capture.counts, background.taps, background.limits, bounds, block_samples=block_samples)
     events: list[Event] = []
-    for first, last in _bounded(
-        bank.joined_runs(runs, round(JOIN_S * rate_hz)), round(LONGEST_CLUSTER_S * rate_hz)
-    ):
+    for first, last in _bounded(bank.joined_runs(runs, round(JOIN_S * rate_hz)), round(LONGEST_CLUSTER_S * rate_hz)):
         events += _cluster_events(capture, background, bounds, first, last)
     return _in_order(events)
 
@@ -217,8 +213,7 @@ def _cluster_events(
     limits = [*starts[1:], white.size]
     ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=True)]
     return [
-        Event(start + begin, stop + begin, white[start:stop].copy())
-        for start, stop in zip(starts, ends, strict=True)
+        Event(start + begin, stop + begin, white[start:stop].copy()) for start, stop in zip(starts, ends, strict=True)
     ]
 
 
@@ -313,8 +308,19 @@ def _noise_beside(capture: Capture, places: IntArray) -> WaveArray:
         comb = np.arange(-(-begin // NOISE_STRIDE) * NOISE_STRIDE, end, NOISE_STRIDE)
         inside = np.searchsorted(places[:, 0], comb, side="right") - 1
         quiet = (inside < 0) | (comb >= places[np.maximum(inside, 0), 1])
-        levels[row] = scale * mad_noise(np.asarray(capture.counts[comb[quiet]], np.float64))
+        levels[row] = scale * mad_noise(_smoothed(capture.counts, comb[quiet]))
     return levels
+
+
+def _smoothed(counts: NDArray[Any], places: IntArray) -> FloatArray:
+    """Samples of a record, whole numbers spread evenly over the width of a count by their place.
+
+    Without that the median deviation of a record with little noise would jump from count to count.
+    """
+    samples = np.asarray(counts[places], np.float64)
+    if np.issubdtype(counts.dtype, np.integer):
+        samples += np.mod(places * _GOLDEN, 1.0) - 0.5
+    return samples
 
 
 def _signed_peaks(waves: WaveArray, lengths: IntArray) -> WaveArray:
@@ -360,9 +366,7 @@ def _labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tuple[dict[
             continue
         former = said.get(row, note)
         if former is None or former.label != note.label:
-            notes.append(
-                f"{capture.name}: sample {onsets[row]}: two labels for one pulse; it is left unlabelled"
-            )
+            notes.append(f"{capture.name}: sample {onsets[row]}: two labels for one pulse; it is left unlabelled")
             said[row] = None
         else:
             said[row] = note

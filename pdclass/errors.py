@@ -41,9 +41,7 @@ class SkippedInputsError(PdclassError):
     exit_code = 6
 
 
-def complaint(
-    where: str | Path, field: str, *, expected: object, found: object, advice: str
-) -> str:
+def complaint(where: str | Path, field: str, *, expected: object, found: object, advice: str) -> str:
     """One line that says which file, which field, what was expected and found, and what to do."""
     line = f"{where}: {field}: expected {expected}, found {found}; {advice}"
     return " ".join(line.split())

@@ -3,6 +3,7 @@
 import numpy as np
 import pandas as pd
 from closed_form import damped_sine, double_exponential
+
 from pdclass.digest import pulse_id
 from pdclass.features import BY_NAME, feature_digests, feature_table
 from pdclass.model.bundle import BundleParts, read_bundle, write_bundle
@@ -39,7 +40,9 @@ def pulse_set(labels, *, rng, chain=CHAIN, capture="quay", noise_v=0.4e-3, **col
     size = 0.01 * rng.lognormal(0, 0.7, len(labels)) * rng.choice([-1, 1], len(labels))
     for row, label in enumerate(labels):
         wave = wave_of(label, rng)[: samples - samples // 4]
-        waves[row, samples // 4 : samples // 4 + wave.size] += (size[row] * wave / np.abs(wave).max()).astype(np.float32)
+        waves[row, samples // 4 : samples // 4 + wave.size] += (size[row] * wave / np.abs(wave).max()).astype(
+            np.float32
+        )
     onset = 20_000 + 10_000 * np.arange(len(labels))
     peak = np.take_along_axis(waves, np.abs(waves).argmax(axis=1)[:, None], axis=1)[:, 0]
     rows = {
@@ -136,7 +139,11 @@ def scored_shard(bundle, pulses, capture, **record):
     fields = {"circuit": "Quay Road", "sensor": "strap 1", "session": "one", "phase_reference": "L1-earth"}
     fields |= {"duration_s": 0.02, "detection_limit_v": 2.34e-3, "unchecked": not_checked(pulses, bundle.validity)}
     made = capture_record(
-        name=capture, capture_digest=DIGESTS[capture], found=len(pulses.table) - echoes, echoes=echoes, **fields | record
+        name=capture,
+        capture_digest=DIGESTS[capture],
+        found=len(pulses.table) - echoes,
+        echoes=echoes,
+        **fields | record,
     )
     return Shard(capture, DIGESTS[capture], pulses, verdicts, made)
 
@@ -150,8 +157,8 @@ def sample_shards(bundle, *, counts=(40, 25, 25, 30), seed=5):
     first.table.loc[names[3], "echo_of"] = names[2]
     first.table.loc[names[5], "maybe_echo_of"] = names[4]
     unknown = Chain(100e6, 1e-4, None, band_hz=(0.1e6, 25e6))
-    second = pulse_set(["cable", "local", "interference"] * 5, rng=rng, chain=unknown, capture="crane", phase_deg=np.nan,
-                       circuit="Crane <b>Row</b>", sensor="strap 2")  # fmt: skip
+    named = {"circuit": "Crane <b>Row</b>", "sensor": "strap 2", "phase_deg": np.nan}
+    second = pulse_set(["cable", "local", "interference"] * 5, rng=rng, chain=unknown, capture="crane", **named)
     slow = Chain(40e6, 1e-4, 8, band_hz=(0.1e6, 15e6))
     third = pulse_set(["cable", "interference"] * 4, rng=rng, chain=slow, capture="depot", circuit="=Depot $x_1$")
     return [

@@ -1,1 +1,19 @@
-"""."""
+"""Files into the in-memory types and back: captures (SigMF) and pulse tables (Parquet)."""
+
+from pdclass.capture.atomic import whole_file
+from pdclass.capture.fill import OPTIONS, FillIns
+from pdclass.capture.opening import open_capture
+from pdclass.capture.sigmf_writer import counts_digest, write_sigmf
+from pdclass.capture.tables import read_pulses
+from pdclass.capture.tables_writer import write_pulses
+
+__all__ = [
+    "OPTIONS",
+    "FillIns",
+    "counts_digest",
+    "open_capture",
+    "read_pulses",
+    "whole_file",
+    "write_pulses",
+    "write_sigmf",
+]

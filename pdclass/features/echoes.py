@@ -29,9 +29,7 @@ def measure_echoes(window: Window) -> dict[str, float]:
         return nothing
     size = scipy.fft.next_fast_len(SAMPLES + own.size)
     following = window.wave[ONSET - GUARD : window.last]
-    match = scipy.fft.irfft(np.conj(scipy.fft.rfft(own, size)) * scipy.fft.rfft(following, size), size)[
-        first:usable
-    ]
+    match = scipy.fft.irfft(np.conj(scipy.fft.rfft(own, size)) * scipy.fft.rfft(following, size), size)[first:usable]
     k = int(np.argmax(np.abs(match)))
     ratio = float(match[k] / energy)
     level = float(np.median(np.abs(match))) / 0.6744898 / energy
@@ -42,11 +40,27 @@ def measure_echoes(window: Window) -> dict[str, float]:
 
 ECHOES = (
     Feature(
-        "echo_delay_us", "µs", "delay of the strongest later copy within the window", "later copy after {value}", "later",
-        "earlier", (0.0, 15.0), 0.05, "own definition", needs_snr_db=12.0,
+        "echo_delay_us",
+        "µs",
+        "delay of the strongest later copy within the window",
+        "later copy after {value}",
+        "later",
+        "earlier",
+        (0.0, 15.0),
+        0.05,
+        "own definition",
+        needs_snr_db=12.0,
     ),
     Feature(
-        "echo_ratio", "", "height of the strongest later copy over the pulse, negative when turned over",
-        "later copy {value} of the pulse", "larger", "smaller", (-2.0, 2.0), 0.08, "own definition", needs_snr_db=12.0,
+        "echo_ratio",
+        "",
+        "height of the strongest later copy over the pulse, negative when turned over",
+        "later copy {value} of the pulse",
+        "larger",
+        "smaller",
+        (-2.0, 2.0),
+        0.08,
+        "own definition",
+        needs_snr_db=12.0,
     ),
-)  # fmt: skip
+)

@@ -12,9 +12,7 @@ from pdclass.features.feature import Feature
 from pdclass.features.window import GUARD, ONSET, STEP_NS, Window
 from pdclass.pulses import FloatArray
 
-_LEVELS = (
-    "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
-)
+_LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
 _LONGEST_NS = 15000.0
 
 
@@ -88,30 +86,56 @@ def _tail_ns(window: Window) -> float:
 
 
 def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 6.0) -> Feature:
-    return Feature(
-        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db
-    )
+    return Feature(name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db)
 
 
 EDGES = (
     _edge("rise_ns", "10-90 % time of the edge that leads to the peak", "slower", "faster", "rise {value}"),
     _edge(
-        "rise_raw_ns", "the same on the wave with its carriers", "slower", "faster", "rise before carriers are reduced {value}"
+        "rise_raw_ns",
+        "the same on the wave with its carriers",
+        "slower",
+        "faster",
+        "rise before carriers are reduced {value}",
     ),
     _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
     _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
     _edge("width_25_ns", "width at a quarter of the peak", "wider", "narrower", "width at a quarter {value}", 12.0),
     _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
     Feature(
-        "width_ratio", "", "width at a tenth over width at half height", "foot over half width {value}", "longer-footed",
-        "shorter-footed", (1.0, 1e4), 0.3, _LEVELS, needs_snr_db=18.0,
+        "width_ratio",
+        "",
+        "width at a tenth over width at half height",
+        "foot over half width {value}",
+        "longer-footed",
+        "shorter-footed",
+        (1.0, 1e4),
+        0.3,
+        _LEVELS,
+        needs_snr_db=18.0,
     ),
     Feature(
-        "asymmetry", "", "fall time over rise time", "fall over rise {value}", "more lopsided", "more even",
-        (0.0, 1e4), 0.3, _LEVELS, needs_snr_db=12.0,
+        "asymmetry",
+        "",
+        "fall time over rise time",
+        "fall over rise {value}",
+        "more lopsided",
+        "more even",
+        (0.0, 1e4),
+        0.3,
+        _LEVELS,
+        needs_snr_db=12.0,
     ),
     Feature(
-        "tail_ns", "ns", "from the peak until nine tenths of the energy have passed", "tail {value}", "longer",
-        "shorter", (-_LONGEST_NS, _LONGEST_NS), 30.0, "own definition", needs_snr_db=6.0,
+        "tail_ns",
+        "ns",
+        "from the peak until nine tenths of the energy have passed",
+        "tail {value}",
+        "longer",
+        "shorter",
+        (-_LONGEST_NS, _LONGEST_NS),
+        30.0,
+        "own definition",
+        needs_snr_db=6.0,
     ),
-)  # fmt: skip
+)

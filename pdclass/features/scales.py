@@ -11,9 +11,7 @@ from pdclass.wavelets import scale_energies
 LEVELS = 7
 #: Every pulse is padded to one length, so that the coarsest scale has room.
 _PADDED = 2048
-_REFERENCE = (
-    "wavelet energy entropy after C. E. Shannon; symlet of eight vanishing moments (I. Daubechies, 1992)"
-)
+_REFERENCE = "wavelet energy entropy after C. E. Shannon; symlet of eight vanishing moments (I. Daubechies, 1992)"
 
 
 def measure_scales(window: Window) -> dict[str, float]:
@@ -31,12 +29,27 @@ def measure_scales(window: Window) -> dict[str, float]:
 
 SCALES = (
     Feature(
-        "scale_entropy", "", "how evenly the energy is spread over the wavelet scales, 0 (one scale) to 1 (all alike)",
-        "evenness over scales {value}", "more even", "more concentrated", (0.0, 1.0), 0.06, _REFERENCE, needs_snr_db=6.0,
-    ),
-    Feature(
-        "scale_centre", "", "energy-weighted mean wavelet level; one level more = half the frequency",
-        "centre of the wavelet scales {value}", "coarser", "finer", (2.0, float(LEVELS)), 0.25, _REFERENCE,
+        "scale_entropy",
+        "",
+        "how evenly the energy is spread over the wavelet scales, 0 (one scale) to 1 (all alike)",
+        "evenness over scales {value}",
+        "more even",
+        "more concentrated",
+        (0.0, 1.0),
+        0.06,
+        _REFERENCE,
         needs_snr_db=6.0,
     ),
-)  # fmt: skip
+    Feature(
+        "scale_centre",
+        "",
+        "energy-weighted mean wavelet level; one level more = half the frequency",
+        "centre of the wavelet scales {value}",
+        "coarser",
+        "finer",
+        (2.0, float(LEVELS)),
+        0.25,
+        _REFERENCE,
+        needs_snr_db=6.0,
+    ),
+)

@@ -33,9 +33,7 @@ def feature_table(pulses: PulseSet, names: Sequence[str] | None = None) -> Float
     wanted = tuple(names) if names is not None else tuple(feature.name for feature in CATALOGUE)
     unknown = [name for name in wanted if name not in BY_NAME]
     if unknown:
-        raise RefusedError(
-            f"feature '{unknown[0]}' is not in this version's catalogue; use the version that has it"
-        )
+        raise RefusedError(f"feature '{unknown[0]}' is not in this version's catalogue; use the version that has it")
     families = [name for name, (features, _) in FAMILIES.items() if any(f.name in wanted for f in features)]
     values = np.full((len(pulses.table), len(wanted)), np.nan)
     for row, window in enumerate(_windows(pulses)):

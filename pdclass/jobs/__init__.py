@@ -1,1 +1,1 @@
-"""."""
+"""One module a command: the function that the command calls."""

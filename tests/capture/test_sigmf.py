@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 import pytest
+import sigmf
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
@@ -290,6 +291,30 @@ def test_a_capture_without_phase_or_chain_is_read(tmp_path, make_capture):
     assert capture.chain == bare.chain
     assert capture.phase_marks is None
     assert np.isnan(phase_deg(capture, np.array([0, 10]))).all()
+
+
+def test_a_recording_of_the_standard_package_is_read(tmp_path):
+    """A recording that the sigmf package alone has written (8 bit, 40 MS/s) is read, its counts unscaled."""
+    counts = (20 * np.sin(0.3 * np.arange(5000))).astype(np.int8)
+    counts.tofile(tmp_path / "antenna.sigmf-data")
+    written = sigmf.SigMFFile(
+        data_file=str(tmp_path / "antenna.sigmf-data"),
+        global_info={
+            "core:datatype": "ri8",
+            "core:sample_rate": 40e6,
+            "core:extensions": [{"name": "pdclass", "version": "1.0.0", "optional": True}],
+            "pdclass:volts_per_count": 1e-3,
+        },
+    )
+    written.add_capture(0, metadata={"core:datetime": "2031-05-04T03:02:01.5Z"})
+    written.add_annotation(100, 20, metadata={"core:label": "interference", "core:generator": "human:cd"})
+    written.tofile(str(tmp_path / "antenna.sigmf-meta"))
+    capture = open_capture(tmp_path / "antenna.sigmf-meta", FillIns(circuit="Line 7", sensor="A1", session="one"))
+    np.testing.assert_array_equal(capture.counts, counts)
+    assert capture.counts.dtype == np.int8
+    assert capture.chain.rate_hz == 40e6
+    assert capture.start_utc == pd.Timestamp("2031-05-04T03:02:01.5Z")
+    assert (capture.annotations[0].label, capture.annotations[0].labelled_by) == ("interference", "cd")
 
 
 NAMES = st.text(st.characters(categories=["L", "N", "P", "Zs"]), min_size=1, max_size=20).filter(str.strip)

@@ -1,0 +1,46 @@
+"""A path of any kind into a capture, or one line that says why not."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from pdclass.capture.fill import FillIns
+from pdclass.capture.recording import META_ENDING, SAMPLES_ENDING
+from pdclass.capture.sigmf import read_sigmf
+from pdclass.errors import InputError, complaint
+from pdclass.pulses import Capture
+
+_READ = "a SigMF recording (NAME.sigmf-meta, NAME.sigmf-data or NAME)"
+
+
+def open_capture(path: Path | str, fill: FillIns | None = None) -> Capture:
+    """The capture in a file, chosen by the file's ending; fill-ins supply what the file does not say.
+
+    Raises
+    ------
+    InputError
+        If the path is a folder, has an ending that is not read, or anything about the file is wrong.
+    """
+    path = Path(path)
+    try:
+        _refuse_other_kinds(path)
+        return read_sigmf(path, fill or FillIns())
+    except OSError as error:
+        raise InputError(f"{path}: cannot be read ({error.strerror or error}); check the disk and its rights") from None
+    except (ValueError, LookupError, OverflowError) as error:
+        raise InputError(f"{path}: not readable as a capture ({error}); write it again") from None
+
+
+def _refuse_other_kinds(path: Path) -> None:
+    if path.name.endswith((META_ENDING, SAMPLES_ENDING)) or Path(f"{path}{META_ENDING}").exists():
+        return
+    if path.is_dir():
+        advice = f"give its recordings: {path}/*{META_ENDING}"
+        raise InputError(complaint(path, "kind", expected=_READ, found="a folder", advice=advice))
+    if path.suffix == ".parquet":
+        found, advice = "a pulse table", "its pulses are already extracted: score it as it is"
+    elif path.suffix == ".sigmf":
+        found, advice = "a SigMF archive", "unpack it and give the two files"
+    else:
+        found, advice = f"ending {path.suffix!r}", "convert the file, or check its name"
+    raise InputError(complaint(path, "ending", expected=_READ, found=found, advice=advice))

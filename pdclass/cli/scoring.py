@@ -1,0 +1,120 @@
+"""Commands from captures to verdicts: extract, score."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import typer
+
+from pdclass.cli.talking import (
+    BAND,
+    CIRCUIT,
+    COUNT,
+    FORCE,
+    JOBS,
+    JSON,
+    MAINS,
+    RATE,
+    SENSOR,
+    SESSION,
+    SITE,
+    Terminal,
+    pair,
+    result,
+)
+
+if TYPE_CHECKING:
+    from pdclass.capture import FillIns
+
+
+def extract(
+    captures: list[Path] = typer.Argument(help="Captures (SigMF)."),
+    out: Path = typer.Option(..., "--out", help="Pulse table to write (.parquet)."),
+    rate_hz: float = RATE,
+    volts_per_count: float = COUNT,
+    circuit: str = CIRCUIT,
+    site: str = SITE,
+    sensor: str = SENSOR,
+    session: str = SESSION,
+    band_hz: str = BAND,
+    mains_hz: float = MAINS,
+    jobs: int = JOBS,
+    force: bool = FORCE,
+    as_json: bool = JSON,
+) -> None:
+    """Find the pulses of captures and write them as a pulse table."""
+    from pdclass.jobs import extract as job
+
+    fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
+    done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=Terminal())
+    lines, rows = [], []
+    for name, found in zip(done.names, done.found, strict=True):
+        limit_mv = found.detection_limit_v * 1e3
+        lines.append(
+            f"{name}: {found.found - found.echoes} pulses and {found.echoes} echoes in {found.duration_s * 1e3:.3g} ms; "
+            f"smallest findable 50 ns pulse {limit_mv:.3g} mV"
+        )
+        lines += found.notes
+        rows.append({"capture": name, "pulses": found.found - found.echoes, "echoes": found.echoes, "limit_mv": limit_mv})
+    lines += [f"pulses: {out}", f"next: pdclass score {out} --out verdicts"]
+    result(lines, {"out": out, "captures": rows}, as_json=as_json)
+
+
+def score(
+    inputs: list[Path] = typer.Argument(help="Captures (SigMF), pulse tables (.parquet), or folders of them."),
+    out: Path = typer.Option(..., "--out", help="Folder for the verdicts."),
+    bundle: Path = typer.Option(None, "--bundle", help="Model; the shipped base bundle by default."),
+    rate_hz: float = RATE,
+    volts_per_count: float = COUNT,
+    circuit: str = CIRCUIT,
+    site: str = SITE,
+    sensor: str = SENSOR,
+    session: str = SESSION,
+    band_hz: str = BAND,
+    mains_hz: float = MAINS,
+    csv: bool = typer.Option(False, "--csv", help="Also write verdicts.csv."),
+    report: bool = typer.Option(True, "--report/--no-report", help="Write report.html."),
+    jobs: int = JOBS,
+    force: bool = FORCE,
+    as_json: bool = JSON,
+) -> None:
+    """Give every pulse of captures or pulse tables its verdict with reasons, and write a report."""
+    from pdclass.errors import SkippedInputsError
+    from pdclass.jobs import score as job
+
+    fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
+    talk = Terminal()
+    done = job.score_inputs(
+        inputs, out, bundle=bundle, fill=fill, jobs=jobs, as_csv=csv, report=report, force=force, talk=talk
+    )
+    content = {"out": done.out, "report": done.report, "captures": done.run["captures"], "skipped": done.skipped}
+    result(job.score_lines(done), content, as_json=as_json)
+    if done.skipped:
+        for line in done.skipped:
+            talk.say(f"skipped: {line}")
+        raise SkippedInputsError(f"{len(done.skipped)} inputs were skipped, see above; the rest is scored")
+
+
+def _fill_ins(
+    rate_hz: float | None,
+    volts_per_count: float | None,
+    circuit: str | None,
+    site: str | None,
+    sensor: str | None,
+    session: str | None,
+    band_hz: str | None,
+    mains_hz: float | None,
+) -> FillIns:
+    from pdclass.capture import FillIns
+
+    return FillIns(
+        rate_hz=rate_hz,
+        volts_per_count=volts_per_count,
+        circuit=circuit,
+        site=site,
+        sensor=sensor,
+        session=session,
+        band_hz=pair(band_hz, "--band-hz"),
+        mains_hz=mains_hz,
+    )

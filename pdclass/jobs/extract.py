@@ -1,0 +1,63 @@
+"""`pdclass extract`: the pulses of captures as one pulse table."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+from pdclass.capture import FillIns, open_capture, write_pulses
+from pdclass.errors import InputError
+from pdclass.extract import ExtractSettings, Extraction, extract
+from pdclass.jobs.simulate import joined
+from pdclass.jobs.talk import SILENT, Talk, each
+
+
+@dataclass(frozen=True)
+class Extracted:
+    """What was found in each capture, in order, and where the table is."""
+
+    out: Path
+    names: tuple[str, ...]
+    found: tuple[Extraction, ...]
+
+
+def extract_captures(
+    captures: Sequence[Path],
+    out: Path,
+    *,
+    fill: FillIns | None = None,
+    settings: ExtractSettings | None = None,
+    jobs: int = 1,
+    force: bool = False,
+    talk: Talk = SILENT,
+) -> Extracted:
+    """Find the pulses of captures and write them as one pulse table.
+
+    Raises
+    ------
+    InputError
+        If a capture is not readable, captures differ in rate, or the table exists and `force` is not given.
+    """
+    if out.suffix != ".parquet":
+        raise InputError(f"{out}: --out: expected a name that ends in .parquet; choose one")
+    if out.exists() and not force:
+        raise InputError(f"{out}: exists already; choose another name or --force")
+    if not out.resolve().parent.is_dir():
+        raise InputError(f"{out.resolve().parent}: no such folder; make it first")
+    calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in captures]
+    made = each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures read")
+    rates = {extraction.pulses.rate_hz: str(path) for path, (_, extraction) in zip(captures, made, strict=True)}
+    if len(rates) > 1:
+        (first, one), (second, other) = list(rates.items())[:2]
+        raise InputError(
+            f"{other}: rate: expected {first / 1e6:g} MS/s as in {one}, found {second / 1e6:g} MS/s; "
+            "extract captures of each rate into a table of their own"
+        )
+    write_pulses(out, joined([extraction.pulses for _, extraction in made]))
+    return Extracted(out, tuple(name for name, _ in made), tuple(extraction for _, extraction in made))
+
+
+def _pulses_of(path: Path, fill: FillIns, settings: ExtractSettings) -> tuple[str, Extraction]:
+    capture = open_capture(path, fill)
+    return capture.name, extract(capture, settings)

@@ -1,0 +1,38 @@
+"""What a job says while it works; silent unless the caller listens."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Sequence
+from typing import Any, TypeVar
+
+from joblib import Parallel, delayed
+
+Item = TypeVar("Item")
+Result = TypeVar("Result")
+
+
+class Talk:
+    """Where a job's progress goes; this one is silent."""
+
+    def say(self, line: str) -> None:
+        """Say one line, at the beginning or end of a stage."""
+
+    def track(self, items: Iterable[Item], _words: str, _total: int) -> Iterable[Item]:
+        """Pass items through while their number is shown."""
+        return items
+
+
+SILENT = Talk()
+
+
+def each(
+    function: Callable[..., Result], calls: Sequence[tuple[Any, ...]], *, jobs: int, talk: Talk, words: str
+) -> list[Result]:
+    """Results of a function for every tuple of arguments, in their order, in `jobs` processes.
+
+    Every worker has one thread for linear algebra: spinning threads slow a small machine down many times.
+    """
+    if jobs == 1:
+        return list(talk.track((function(*call) for call in calls), words, len(calls)))
+    pool = Parallel(n_jobs=jobs, return_as="generator", inner_max_num_threads=1, backend="loky")
+    return list(talk.track(pool(delayed(function)(*call) for call in calls), words, len(calls)))

@@ -1,0 +1,127 @@
+"""`pdclass train`: a bundle from labelled pulses."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from pathlib import Path
+
+import numpy as np
+from pydantic import ValidationError
+
+from pdclass.capture import read_pulses
+from pdclass.digest import file_digest
+from pdclass.errors import InputError
+from pdclass.features import ANALYSIS_BAND_HZ, ANALYSIS_RATE_HZ, CATALOGUE, feature_digests, feature_table
+from pdclass.jobs.simulate import joined
+from pdclass.jobs.talk import SILENT, Talk
+from pdclass.model.bundle import BundleParts, write_bundle
+from pdclass.model.columns import thin
+from pdclass.pulses import FloatArray, PulseSet
+from pdclass.training.card import card_text
+from pdclass.training.fit import train
+from pdclass.training.settings import TrainSettings
+
+
+@dataclass(frozen=True)
+class Trained:
+    """The bundle's digest and what the user should know about it."""
+
+    out: Path
+    digest: str
+    notes: tuple[str, ...]
+
+
+def train_bundle(
+    pulses: Sequence[Path],
+    out: Path,
+    *,
+    error_rate: float = 0.10,
+    mix: Mapping[str, float] | None = None,
+    group: str | None = None,
+    private: bool = False,
+    seed: int = 0,
+    force: bool = False,
+    talk: Talk = SILENT,
+) -> Trained:
+    """Fit, calibrate and write a bundle.
+
+    Raises
+    ------
+    InputError
+        If a table or a setting is not usable.
+    TooFewError
+        If there are too few groups, altogether or of a class.
+    """
+    settings = _settings(error_rate, mix, group, private=private, seed=seed)
+    if out.exists() and not force:
+        raise InputError(f"{out}: exists already; choose another name or --force")
+    sets, notes = read_tables(pulses)
+    talk.say(f"{sum(len(one.table) for one in sets)} pulses read")
+    values, together = measured(sets)
+    talk.say(f"{values.shape[1]} features measured; fitting")
+    provenance = {"inputs": [{"name": path.name, "digest": file_digest(path)} for path in tables_of(pulses)]}
+    parts = fit(values, together, settings, provenance=provenance)
+    parts = replace(parts, card=card_text(parts, None, title=f"Bundle {out.name}", tested_on="", trained_on=""))
+    digest = write_bundle(out, parts, replace=force)
+    return Trained(out, digest, (*notes, *parts.account["notes"]))
+
+
+def fit(
+    values: FloatArray,
+    pulses: PulseSet,
+    settings: TrainSettings,
+    *,
+    provenance: Mapping[str, object],
+    world: str | None = None,
+) -> BundleParts:
+    """Train on the whole catalogue; the manifest tells the analysis band and rate."""
+    analysis = {"analysis_band_hz": list(ANALYSIS_BAND_HZ), "analysis_rate_hz": ANALYSIS_RATE_HZ}
+    return train(
+        values,
+        [feature.name for feature in CATALOGUE],
+        feature_digests(),
+        pulses,
+        settings,
+        feature_units={feature.name: feature.unit for feature in CATALOGUE},
+        provenance={**analysis, **provenance},
+        world=world,
+    )
+
+
+def tables_of(given: Sequence[Path]) -> list[Path]:
+    """Pulse tables, a verdict folder standing for those in its `pulses/`."""
+    found: list[Path] = []
+    for path in given:
+        inside = sorted((path / "pulses").glob("*.parquet")) if path.is_dir() else [path]
+        if not inside:
+            raise InputError(f"{path}: expected a pulse table or a verdict folder, found neither; name another")
+        found += inside
+    return found
+
+
+def read_tables(given: Sequence[Path]) -> tuple[list[PulseSet], list[str]]:
+    """The pulse sets of some tables, with notes of the reading."""
+    read = [read_pulses(path) for path in tables_of(given)]
+    return [pulses for pulses, _ in read], [note for _, notes in read for note in notes]
+
+
+def measured(sets: Sequence[PulseSet], names: Sequence[str] | None = None) -> tuple[FloatArray, PulseSet]:
+    """Features of pulse sets of any rates, and the pulses as one set with their waves thinned.
+
+    Training looks at features and keeps thinned waves for comparison, so that rates may differ.
+    """
+    values = np.concatenate([feature_table(pulses, names) for pulses in sets])
+    return values, joined([PulseSet(thin(pulses.waves), pulses.chains, pulses.table) for pulses in sets])
+
+
+def _settings(
+    error_rate: float, mix: Mapping[str, float] | None, group: str | None, *, private: bool, seed: int
+) -> TrainSettings:
+    by = "circuit-and-site" if group is None else group
+    chosen = {"error_rate": error_rate, "mix": mix, "group_by": by, "private": private, "seed": seed}
+    try:
+        return TrainSettings.model_validate(chosen)
+    except ValidationError as error:
+        first = error.errors()[0]
+        raise InputError(f"{first['loc'][0]}: {first['msg']}, found {first['input']!r}") from None

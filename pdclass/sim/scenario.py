@@ -1,0 +1,162 @@
+"""From a scenario to captures: pulses of mixed origin in one continuous record, with their truth."""
+
+from __future__ import annotations
+
+import hashlib
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from pdclass.errors import InputError, complaint
+from pdclass.pulses import Annotation, Capture, Chain, FloatArray, IntArray
+from pdclass.sim.circuit import Circuit, Source, draw_circuit
+from pdclass.sim.draw import whole
+from pdclass.sim.ranges import Scenario, read_scenario
+from pdclass.sim.receiver import chain_band_hz, quantise
+from pdclass.sim.record import Plan, Timeline, draw_plan, draw_signal, draw_timeline, plant
+
+__all__ = ["SIMULATOR_VERSION", "Scenario", "capture_count", "read_scenario", "simulate_capture"]
+
+#: Goes up whenever the same scenario and seed give other samples than before.
+SIMULATOR_VERSION = 1
+
+_FIRST_DAY = pd.Timestamp("2025-01-06", tz="UTC")
+_LEAST_NOISE_DB_OF_COUNT = 3.5
+_DB_PER_BIT = 20 * np.log10(2)
+_MOST_OFFSET_COUNTS = 4.0
+
+
+def capture_count(scenario: Scenario) -> int:
+    """How many captures a scenario asks for."""
+    return (len(scenario.circuit) or scenario.circuits) * scenario.captures_per_circuit
+
+
+def simulate_capture(scenario: Scenario, number: int, *, seed: int, pulses: int | None = None) -> Capture:
+    """Capture `number` of a scenario with the truth of every planted pulse as annotations.
+
+    Parameters
+    ----------
+    scenario : the synthetic world.
+    number : from 1; in drawn worlds a number beyond `capture_count` gives further circuits, where circuits are
+        named further sessions. The capture does not depend on how many others are made.
+    seed : of the world, >= 0.
+    pulses : planted pulses, >= 0 (converters have no more than their edges); None = what the scenario says.
+
+    Raises
+    ------
+    InputError
+        If `number`, `seed` or `pulses` lies below its bound.
+    """
+    for field, found, least in (("capture", number, 1), ("seed", seed, 0), ("pulses", pulses or 0, 0)):
+        if found < least:
+            wanted = f"{least} or more"
+            raise InputError(complaint("simulate", field, expected=wanted, found=found, advice=f"give {wanted}"))
+    index, session = _circuit_and_session(scenario, number)
+    for_good = np.random.SeedSequence(seed, spawn_key=(0, index))
+    circuit = draw_circuit(scenario, index, rng=np.random.default_rng(for_good))
+    visit = np.random.SeedSequence(seed, spawn_key=(1, index, session))
+    time_rng, noise_rng, plan_rng, offset_rng = np.random.default_rng(visit).spawn(4)
+    timeline = draw_timeline(scenario.capture, circuit, rng=time_rng)
+    signal = draw_signal(circuit, timeline, rng=noise_rng)
+    annotations = plant(signal, circuit, timeline, _plans(scenario, circuit, timeline, pulses, rng=plan_rng))
+    volts_per_count = _volts_per_count(circuit)
+    signal += np.float32(offset_rng.uniform(-_MOST_OFFSET_COUNTS, _MOST_OFFSET_COUNTS) * volts_per_count)
+    counts = quantise(signal, volts_per_count, circuit.receiver.bits)
+    start = _FIRST_DAY + pd.Timedelta(days=7 * session, minutes=number)
+    return _capture(circuit, timeline, counts, annotations, f"{scenario.name}-{number:04d}", start)
+
+
+def _circuit_and_session(scenario: Scenario, number: int) -> tuple[int, int]:
+    if scenario.circuit:
+        session, index = divmod(number - 1, len(scenario.circuit))
+        return index, session
+    return divmod(number - 1, scenario.captures_per_circuit)
+
+
+def _plans(
+    scenario: Scenario, circuit: Circuit, timeline: Timeline, pulses: int | None, *, rng: np.random.Generator
+) -> list[tuple[Source, Plan]]:
+    share_rng, *children = rng.spawn(1 + len(circuit.sources))
+    counts = _share_out(scenario, circuit, timeline, pulses, rng=share_rng)
+    return [
+        (source, draw_plan(source, int(count), timeline, rng=child))
+        for source, count, child in zip(circuit.sources, counts, children, strict=True)
+    ]
+
+
+def _share_out(
+    scenario: Scenario, circuit: Circuit, timeline: Timeline, pulses: int | None, *, rng: np.random.Generator
+) -> IntArray:
+    """Pulses of each source: by the scenario's mix of classes, or by the rates that it names."""
+    labels = [source.label for source in circuit.sources]
+    if not labels:
+        return np.zeros(0, np.int64)
+    if scenario.circuit:
+        rates = np.array([source.pulses_per_cycle or 0.0 for source in circuit.sources])
+        if pulses is None:
+            cycles = timeline.samples * timeline.deg_per_sample / 360.0
+            return rng.poisson(rates * cycles).astype(np.int64)
+    else:
+        rates = np.array([getattr(scenario.mix, label) / labels.count(label) for label in labels])
+    total = whole(scenario.capture.pulses, rng=rng) if pulses is None else pulses
+    return rng.multinomial(total, rates / rates.sum()).astype(np.int64)
+
+
+def _volts_per_count(circuit: Circuit) -> float:
+    """Size of a count [V]: the full scale stands above the noise as drawn, the noise above a count in any case."""
+    most_db = _DB_PER_BIT * (circuit.receiver.bits - 1) - _LEAST_NOISE_DB_OF_COUNT
+    full_scale_v = circuit.noise_v * 10 ** (min(circuit.full_scale_db, most_db) / 20)
+    return float(full_scale_v / (1 << (circuit.receiver.bits - 1)))
+
+
+def _phase_marks(timeline: Timeline) -> FloatArray:
+    """Phase at the first sample of every segment, and at the first sample of every mains cycle."""
+    marks: list[float] = []
+    for first, end in timeline.bounds():
+        start_deg, last_deg = timeline.phase(np.array([first, end - 1], np.float64))
+        cycles = 360.0 * np.arange(np.floor(start_deg / 360.0) + 1, np.floor(last_deg / 360.0) + 1)
+        marks += [float(first), *(first + np.ceil((cycles - start_deg) / timeline.deg_per_sample)).tolist()]
+    samples = np.unique(np.array(marks))
+    return np.stack([samples, timeline.phase(samples)], axis=1)
+
+
+def _chain(circuit: Circuit) -> Chain:
+    receiver = circuit.receiver
+    return Chain(
+        rate_hz=receiver.rate_hz,
+        volts_per_count=_volts_per_count(circuit),
+        adc_bits=receiver.bits,
+        transfer_ohm=receiver.transfer_ohm,
+        band_hz=chain_band_hz(receiver),
+        mains_hz=circuit.mains_hz,
+    )
+
+
+def _capture(
+    circuit: Circuit,
+    timeline: Timeline,
+    counts: NDArray[Any],
+    annotations: tuple[Annotation, ...],
+    name: str,
+    start: pd.Timestamp,
+) -> Capture:
+    counts.flags.writeable = False
+    little = counts.astype(counts.dtype.newbyteorder("<"), copy=False)
+    return Capture(
+        chain=_chain(circuit),
+        counts=counts,
+        circuit=circuit.name,
+        sensor=circuit.sensor,
+        session=f"{start:%Y-%m-%d}",
+        digest=hashlib.sha256(little.tobytes()).hexdigest(),
+        name=name,
+        site=circuit.site,
+        conductor=circuit.conductor,
+        start_utc=start,
+        segments=timeline.segments,
+        phase_marks=_phase_marks(timeline),
+        phase_reference="own",
+        annotations=annotations,
+    )

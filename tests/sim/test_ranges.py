@@ -1,0 +1,52 @@
+"""Scenario files are checked before anything is simulated, and the shipped ones are whole."""
+
+import pytest
+
+from pdclass.errors import InputError
+from pdclass.settings import shipped
+from pdclass.sim.ranges import read_scenario
+
+SHIPPED = sorted(shipped("synthetic").glob("*.toml"))
+NAMED = """
+name = "x"
+[[circuit]]
+name = "a"
+sensor = "s"
+length_m = 500.0
+[[circuit.sources]]
+label = "{label}"
+distance_m = {place}
+pulses_per_cycle = 1.0
+snr_db = [1.0, 2.0]
+"""
+
+
+@pytest.mark.parametrize("path", SHIPPED, ids=lambda path: path.stem)
+def test_shipped_scenarios_are_read(path):
+    """Every shipped scenario is valid and bears the name of its file."""
+    assert read_scenario(path).name == path.stem
+
+
+@pytest.mark.parametrize(
+    ("text", "wanted"),
+    [
+        ('name = "x"\ncircuts = 3', "circuts: unknown key; the nearest known one is 'circuits'"),
+        ('name = "x"\n[capture]\nrates_hz = [99e6]', "a rate is one of"),
+        ('name = "x"\nsnr_db = [40.0, 10.0]', "the lower bound stands first"),
+        ('name = "x"\n[cable]\nareas_mm2 = [33]', "areas_mm2"),
+        (NAMED.format(label="cable", place=0.0), "distance_m lies between 10 and 500 m"),
+        (NAMED.format(label="local", place=11.0), "distance_m lies between 0 and 10 m"),
+        ('name = "Not A Name"', "name"),
+        ('name = "x"\n[mix]\ncable = 0.0\nlocal = 0.0\nswitchgear = 0.0\ninterference = 0.0', "at least one"),
+        ('name = "x"\n[capture]\npulses = [-1, 3]', "pulses"),
+    ],
+)
+def test_what_is_wrong_is_named(tmp_path, text, wanted):
+    """A wrong key or value is one line with the file and the field."""
+    path = tmp_path / "scenario.toml"
+    path.write_text(text, encoding="utf-8")
+    with pytest.raises(InputError) as error:
+        read_scenario(path)
+    assert str(path) in str(error.value)
+    assert wanted in str(error.value)
+    assert "\n" not in str(error.value)

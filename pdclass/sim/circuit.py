@@ -50,7 +50,7 @@ _MUTUAL_H = 1e-8
 #: Skin effect of the way along another feeder: K of exp(-K sqrt(s)), some metres to some kilometres [s^0.5].
 _FEEDER_SKIN = (1e-5, 1e-3)
 #: How interference reaches the sensor in drawn worlds, evenly from this list (common practice, no source).
-_PATHS: tuple[CouplingPath, ...] = ("radiated", "radiated", "screen", "screen", "feeder", "far-end")
+_PATHS: tuple[CouplingPath, ...] = (*("radiated", "screen") * 3, "feeder", "far-end")
 _DISCHARGES: tuple[Pattern, ...] = ("void", "surface", "floating")
 _DISTURBANCES: tuple[Pattern, ...] = ("uniform", "switching")
 
@@ -206,15 +206,19 @@ def _draw_entries(scenario: Scenario, length_m: float, *, rng: np.random.Generat
 
 
 def _draw_distance(label: Label, length_m: float, *, rng: np.random.Generator) -> float | None:
-    """Half the local sources at the termination; cable ones at the far end, evenly, or evenly in the logarithm."""
+    """Half the local sources at the termination; of the cable ones a fifth at the far end, the rest mostly even.
+
+    Faults do not prefer a place along the cable (common practice, no source); a few are drawn evenly in the
+    logarithm, so that the first hundred metres are not empty on long circuits.
+    """
     where, place = rng.uniform(), rng.uniform()
     if label == "local":
         return 0.0 if where < 0.5 else NEAR_M * place
     if label != "cable":
         return None
-    if where < 0.15:
+    if where < 0.2:
         return length_m
-    if where < 0.55:
+    if where < 0.8:
         return NEAR_M + (length_m - NEAR_M) * place
     return float(NEAR_M * (length_m / NEAR_M) ** place)
 

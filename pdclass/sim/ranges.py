@@ -98,7 +98,7 @@ class NearEndRanges(Settings):
     """Elements of terminations, straps and switchgear, drawn evenly in their logarithm."""
 
     panels: Annotated[tuple[Annotated[int, Field(ge=2)], int], AfterValidator(_rising)] = (2, 3)
-    feeders: Count = (0, 2)
+    feeders: Count = (0, 4)
     tail_h: Positive = (0.3e-6, 3e-6)
     section_h: Positive = (0.3e-6, 1.5e-6)
     dropper_h: Positive = (0.2e-6, 2e-6)

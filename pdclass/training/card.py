@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
@@ -16,6 +16,7 @@ _UNTESTED = (
     "**Not tested on groups it has not seen: nothing is known of how often it calls switchgear interference, or of any "
     "other error.** Evaluate it on labelled pulses of other circuits before trusting it."
 )
+_UNSEEN = "Tested on groups that it has not seen."
 _MUST_NOT = """\
 - It is advisory only, from the waveforms of one sensor; it is not a permit to work and not proof that equipment is
   healthy or safe. High voltage kills: sensors are fitted and equipment is entered only by authorised persons under
@@ -52,7 +53,7 @@ def card_text(
     """
     sections = [
         f"# {title}",
-        *([_UNTESTED] if evaluation is None else _figures(evaluation, tested_on)),
+        *([_UNTESTED] if evaluation is None else _figures(evaluation, tested_on or _UNSEEN)),
         "## What it was trained on",
         *([trained_on] if trained_on else []),
         _trained(parts),
@@ -64,10 +65,32 @@ def card_text(
     return "\n\n".join(sections) + "\n"
 
 
+def evaluation_text(evaluation: Evaluation, *, title: str, warnings: Sequence[str] = ()) -> str:
+    """An evaluation as Markdown: what the card has of it, and each group and the calibration as well.
+
+    Parameters
+    ----------
+    title : first heading.
+    warnings : lines that stand before every figure.
+    """
+    sections = [
+        f"# {title}",
+        *(f"**{line}**" for line in warnings),
+        *_figures(evaluation, ""),
+        "### Calibration of the likeliest label",
+        markdown(_held(evaluation.tables["calibration"])),
+        "### By group",
+        markdown(evaluation.tables["by_group"].reset_index()),
+        "## Cautions",
+        _MUST_NOT,
+    ]
+    return "\n\n".join(sections) + "\n"
+
+
 def _figures(evaluation: Evaluation, tested_on: str) -> list[str]:
     return [
         _dangerous(evaluation.figures),
-        "## How well it does on groups it has not seen",
+        "## How well it does",
         *([tested_on] if tested_on else []),
         _headline(evaluation.figures),
         "### By label",

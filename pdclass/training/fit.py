@@ -24,6 +24,7 @@ from pdclass.training.boost import Examples, Fitted, fit_on_parts, fit_shared
 from pdclass.training.groups import Names, check_enough, class_group_weights, group_names, share_out
 from pdclass.training.settings import TrainSettings
 
+_SHARINGS = 20
 _LIBRARIES = ("pdclass", "numpy", "scikit-learn", "numba", "pandas", "pyarrow")
 
 
@@ -74,7 +75,7 @@ def train(
     pulses, rows = pulses.take(kept), rows[kept]
     classes = _classes(pulses.table)
     examples = _examples(rows, pulses.table, classes, settings)
-    shared = _share(examples, len(classes), settings)
+    shared = _share(examples, classes, settings)
     fitted, how = _fit(examples, shared, len(classes), settings)
     mix = checked_mix(settings.mix, classes)
     shift = mix_shift(np.full(len(classes), 1 / len(classes)), np.array([mix[name] for name in classes]))
@@ -82,19 +83,6 @@ def train(
     limits, notes = _limits(fitted, shift, conform, classes, settings)
     keep = reference_places(examples.label_index, examples.groups, settings.reference_rows)
     novelty = fit_novelty(rows[keep], examples.groups[keep], conform.values, conform.groups)
-    account = {
-        "settings": settings.model_dump(),
-        "groups": _group_account(examples, shared, classes, settings),
-        "how": how,
-        "rounds": fitted.rounds,
-        "stop_log_loss": fitted.stop_loss,
-        "pulses": {name: int(np.sum(examples.label_index == k)) for k, name in enumerate(classes)},
-        "left_out": "echoes and unlabelled pulses",
-        "training_digest": array_digest(rows),
-        "versions": {name: version(name) for name in _LIBRARIES} | {"python": platform.python_version()},
-        "notes": notes + _sharing_note(settings) + _empty_notes(rows, feature_names),
-        "provenance": dict(provenance or {}),
-    }
     return BundleParts(
         classes=classes,
         features=tuple(feature_names),
@@ -109,7 +97,14 @@ def train(
         feature_digests=dict(feature_digests),
         feature_units=dict(feature_units or {}),
         mix=mix,
-        account=account,
+        account={
+            **_account(examples, shared, classes, settings),
+            "how": how,
+            "rounds": fitted.rounds,
+            "stop_log_loss": fitted.stop_loss,
+            "notes": notes + _sharing_note(settings) + _empty_notes(rows, feature_names),
+            "provenance": dict(provenance or {}),
+        },
         world=world,
         training=None if settings.private else _real(rows, pulses.table, examples, feature_names),
     )
@@ -155,7 +150,28 @@ def _examples(rows: FloatArray, table: pd.DataFrame, classes: Sequence[str], set
     return Examples(rows, label_index, groups)
 
 
-def _share(examples: Examples, n_classes: int, settings: TrainSettings) -> Shared:
+def _share(examples: Examples, classes: Sequence[str], settings: TrainSettings) -> Shared:
+    """The first of some sharings that has every class in every part."""
+    shares = _shares(examples, len(classes), settings)
+    for attempt in range(_SHARINGS):
+        rng = np.random.default_rng([settings.seed, attempt])
+        parts = share_out(examples.label_index, examples.groups, shares, rng=rng)
+        lost = [(part, _lost(examples.of(names), classes)) for part, names in parts.items()]
+        if not any(missing for _, missing in lost):
+            return Shared(parts, shares)
+    part, missing = next(pair for pair in lost if pair[1])
+    raise TooFewError(
+        f"class '{missing[0]}': expected groups for every part, found none left for '{part}' in {_SHARINGS} sharings; "
+        "label pulses of more circuits"
+    )
+
+
+def _lost(examples: Examples, classes: Sequence[str]) -> list[str]:
+    held = set(examples.label_index.tolist())
+    return [name for k, name in enumerate(classes) if k not in held]
+
+
+def _shares(examples: Examples, n_classes: int, settings: TrainSettings) -> dict[str, float]:
     """Conform gets its share, or more where at most half of the rarest class's groups buys it a finite limit."""
     rarest = min(len(set(examples.groups[examples.label_index == k])) for k in range(n_classes))
     chosen = settings.parts.model_dump()
@@ -168,16 +184,7 @@ def _share(examples: Examples, n_classes: int, settings: TrainSettings) -> Share
         others = {"learn": 1.0}
     left = (1 - wanted) / sum(others.values())
     # conform first: ties of the sharing-out go to it
-    shares = {"conform": wanted, **{name: share * left for name, share in others.items()}}
-    rng = np.random.default_rng([settings.seed, 0])
-    parts = share_out(examples.label_index, examples.groups, shares, rng=rng)
-    for part, names in parts.items():
-        found = set(examples.of(names).label_index)
-        if len(found) < n_classes:
-            missing = min(set(range(n_classes)) - found)
-            raise TooFewError(f"part '{part}': expected every class, found none of class number {missing + 1}; "
-                              "label pulses of more circuits")  # fmt: skip
-    return Shared(parts, shares)
+    return {"conform": wanted, **{name: share * left for name, share in others.items()}}
 
 
 def _fit(examples: Examples, shared: Shared, n_classes: int, settings: TrainSettings) -> tuple[Fitted, str]:
@@ -218,15 +225,21 @@ def _empty_notes(rows: FloatArray, names: Sequence[str]) -> list[str]:
     return [f"feature '{name}' is unmeasurable in every training pulse, so no tree uses it" for name in empty]
 
 
-def _group_account(
-    examples: Examples, shared: Shared, classes: Sequence[str], settings: TrainSettings
-) -> dict[str, Any]:
+def _account(examples: Examples, shared: Shared, classes: Sequence[str], settings: TrainSettings) -> dict[str, Any]:
     counts = {}
     for part, names in shared.parts.items():
         held = examples.of(names)
         per_class = {name: len(set(held.groups[held.label_index == k])) for k, name in enumerate(classes)}
         counts[part] = {"groups": len(names), "pulses": len(held.groups), "groups_of": per_class}
-    return {"by": settings.group_by, "total": len(set(examples.groups)), "shares": shared.shares, "parts": counts}
+    total = len(set(examples.groups))
+    return {
+        "settings": settings.model_dump(),
+        "groups": {"by": settings.group_by, "total": total, "shares": shared.shares, "parts": counts},
+        "pulses": {name: int(np.sum(examples.label_index == k)) for k, name in enumerate(classes)},
+        "left_out": "echoes and unlabelled pulses",
+        "training_digest": array_digest(examples.values),
+        "versions": {name: version(name) for name in _LIBRARIES} | {"python": platform.python_version()},
+    }
 
 
 def validity_of(pulses: PulseSet) -> Validity:

@@ -162,6 +162,16 @@ def test_a_manifest_that_is_no_canonical_json_is_refused(folder, content):
         read_bundle(folder, DIGESTS)
 
 
+def test_a_manifest_in_another_form_is_refused(folder):
+    """The same content with spaces, or with a key that stands there twice, is not what was sealed."""
+    path = folder / "manifest.json"
+    whole = path.read_text()
+    for other in (json.dumps(json.loads(whole), sort_keys=True), whole.replace("{", '{"account":{},', 1)):
+        path.write_text(other)
+        with pytest.raises(RefusedError, match="canonical JSON"):
+            read_bundle(folder, DIGESTS)
+
+
 def test_a_feature_that_the_program_lacks_is_refused(folder):
     """A name or digest that is not the program's own is refused, naming feature and version."""
     with pytest.raises(RefusedError, match=r"'empty'.*no such feature.*pdclass \d"):

@@ -51,6 +51,15 @@ def test_a_pulse_with_too_few_features_is_unfamiliar():
     assert unfamiliar(reference, far)[0]
 
 
+def test_an_infinitely_far_pulse_is_unfamiliar_even_without_a_limit():
+    """Where the limit is infinite nothing else is unfamiliar, but a pulse that cannot be compared is."""
+    values, _ = cloud()
+    centre, scale = np.zeros(6), np.ones(6)
+    reference = make_reference(values, centre, scale, np.inf)
+    far = novelty(reference, np.stack([np.full(6, np.nan), np.full(6, 1e9)]))
+    np.testing.assert_array_equal(unfamiliar(reference, far), [True, False])
+
+
 def test_far_pulses_are_unfamiliar_and_near_ones_are_not():
     """A shift of six spreads in every feature is found; fresh pulses of the same kind mostly are not."""
     values, groups = cloud(600)

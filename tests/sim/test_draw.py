@@ -53,9 +53,9 @@ def test_named_carriers_are_always_there():
 
 
 def test_panels_and_feeders_are_as_asked():
-    """Two or three panels with at most two further feeders, none of them in the first panel."""
+    """Two or three panels with at most four further feeders, none of them in the first panel."""
     for seed in range(30):
         near = draw_near_end(NearEndRanges(), rng=np.random.default_rng(seed))
         assert len(near.panels) in (2, 3)
-        assert sum(len(panel.feeders) for panel in near.panels) <= 2
+        assert sum(len(panel.feeders) for panel in near.panels) <= 4
         assert near.panels[0].feeders == ()

@@ -6,7 +6,7 @@ import pytest
 from blobs import DIGESTS, blobs
 
 from pdclass.model.bundle import read_bundle, write_bundle
-from pdclass.training.card import card_text, markdown, three, with_card
+from pdclass.training.card import card_text, evaluation_text, markdown, three, with_card
 from pdclass.training.evaluate import evaluate
 
 
@@ -53,6 +53,14 @@ def test_card_and_figures_travel_in_the_bundle(parts, card, tmp_path):
     assert (tmp_path / "b" / "card.md").read_text() == text
     assert read_bundle(tmp_path / "b", DIGESTS).manifest["account"]["metrics"] == evaluation.figures
     assert with_card(parts, None, title="T").account["metrics"] is None
+
+
+def test_an_evaluation_lists_every_group_and_warns_first(card):
+    """Warnings stand before the figures, every group has its row."""
+    text = evaluation_text(card[0], title="Bundle 12ab", warnings=["3 groups were trained on"])
+    assert text.splitlines()[:3] == ["# Bundle 12ab", "", "**3 groups were trained on**"]
+    assert all(f"| {group} |" in text for group in card[0].tables["by_group"].index)
+    assert "has not seen" not in text
 
 
 def test_an_untested_bundle_says_so(parts):

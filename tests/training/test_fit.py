@@ -11,6 +11,7 @@ from pdclass.digest import file_digest
 from pdclass.errors import InputError, TooFewError
 from pdclass.model.bundle import read_bundle, write_bundle
 from pdclass.model.forest import margins
+from pdclass.model.novelty import fit_novelty
 from pdclass.pulses import PulseSet
 from pdclass.training.boost import Examples
 from pdclass.training.fit import _classes, _examples, _share, reference_places, train, validity_of
@@ -98,10 +99,34 @@ def test_conform_groups_teach_nothing_else():
     assert (before.limits != after.limits).any()
 
 
+def test_the_novelty_limit_comes_from_the_conform_groups():
+    """Fitted again by hand from the reference and the conform pulses alone, it is the same."""
+    values, pulses = blobs(30)
+    parts = train(values, NAMES, DIGESTS, pulses, QUICK)
+    circuits = pulses.table["circuit"].to_numpy(object)
+    held = np.isin(circuits.astype(str), sorted(conform_groups(values, pulses)))
+    reference = parts.reference[list(NAMES)].to_numpy()
+    again = fit_novelty(reference, parts.reference["group"].to_numpy(object), values[held], circuits[held])
+    assert parts.novelty.limit == again.limit
+    everyone = fit_novelty(reference, parts.reference["group"].to_numpy(object), values, circuits)
+    assert parts.novelty.limit != everyone.limit
+
+
 def conform_groups(values, pulses):
     order = np.argsort(pulses.table.index.to_numpy(str))
     classes = _classes(pulses.table)
-    return set(_share(_examples(values[order], pulses.table.iloc[order], classes, QUICK), 4, QUICK).parts["conform"])
+    return set(
+        _share(_examples(values[order], pulses.table.iloc[order], classes, QUICK), classes, QUICK).parts["conform"]
+    )
+
+
+def test_a_class_without_groups_for_a_part_is_named():
+    """Where no sharing leaves a class in every part, the class is named."""
+    values, pulses = blobs(12)
+    groups = pulses.table["circuit"].to_numpy(object)
+    label = np.where(groups == "C003", 1, 0)
+    with pytest.raises(TooFewError, match=r"class 'local': expected groups for every part"):
+        _share(Examples(values, label, groups), ("cable", "local"), QUICK)
 
 
 def test_two_and_three_classes_work():

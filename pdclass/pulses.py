@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, cast
 
 import numpy as np
 import pandas as pd
@@ -197,9 +197,15 @@ def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simul
     given = pd.DataFrame(rows)
     given.index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
     wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
-    defaults: dict[str, Any] = {"bool": False, "int16": 0, "int64": 0}
-    columns = {}
-    for name, kind in wanted.items():
-        column = given[name] if name in given else pd.Series(defaults.get(kind), index=given.index, dtype="object")
-        columns[name] = column.astype(kind) if kind != "str" else column.astype("object").where(column.notna(), None)
-    return pd.DataFrame(columns, index=given.index)
+    return pd.DataFrame({name: _typed(given, name, kind) for name, kind in wanted.items()}, index=given.index)
+
+
+def _typed(given: pd.DataFrame, name: str, kind: str) -> pd.Series[Any]:
+    if name not in given:
+        absent: Any = {"bool": False, "int16": 0, "int64": 0}.get(kind)
+        column = pd.Series(absent, index=given.index, dtype="object")
+    else:
+        column = given[name]
+    if kind == "str":
+        return column.astype("object").where(column.notna(), None)
+    return column.astype(cast(Any, kind))

@@ -1,6 +1,7 @@
 """Closed-form waves, a background of noise and carriers, and a capture of them."""
 
 import numpy as np
+
 from pdclass.pulses import Capture, Chain
 
 RATE_HZ = 100e6

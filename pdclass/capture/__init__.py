@@ -1,6 +1,5 @@
 """Files into the in-memory types and back: captures (SigMF) and pulse tables (Parquet)."""
 
-from pdclass.capture.atomic import whole_file
 from pdclass.capture.fill import OPTIONS, FillIns
 from pdclass.capture.opening import open_capture
 from pdclass.capture.sigmf_writer import counts_digest, write_sigmf
@@ -13,7 +12,6 @@ __all__ = [
     "counts_digest",
     "open_capture",
     "read_pulses",
-    "whole_file",
     "write_pulses",
     "write_sigmf",
 ]

@@ -10,11 +10,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from pdclass.capture.atomic import whole_file
 from pdclass.capture.recording import DATATYPES, META_ENDING, SAMPLES_ENDING
 from pdclass.capture.sigmf import EXTENSION, EXTENSION_VERSION, check_metadata
 from pdclass.errors import InputError, complaint
 from pdclass.pulses import Annotation, Capture, IntArray, global_index
+from pdclass.writing import whole_file
 
 SIGMF_VERSION = "1.2.6"
 _BLOCK_SAMPLES = 1 << 19

@@ -11,11 +11,11 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 
-from pdclass.capture.atomic import whole_file
 from pdclass.capture.waves import check_waves
 from pdclass.digest import canonical_json
 from pdclass.errors import InputError, complaint
 from pdclass.pulses import SIMULATED_COLUMNS, TABLE_COLUMNS, Chain, PulseSet, window_samples
+from pdclass.writing import whole_file
 
 TABLE_KEY = b"pdclass"
 TABLE_FORMAT = 1

@@ -50,13 +50,13 @@ def extract(
     done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=Terminal())
     lines, rows = [], []
     for name, found in zip(done.names, done.found, strict=True):
-        limit_mv = found.detection_limit_v * 1e3
+        limit_mv, pulses = found.detection_limit_v * 1e3, found.found - found.echoes
         lines.append(
-            f"{name}: {found.found - found.echoes} pulses and {found.echoes} echoes in {found.duration_s * 1e3:.3g} ms; "
+            f"{name}: {pulses} pulses and {found.echoes} echoes in {found.duration_s * 1e3:.3g} ms; "
             f"smallest findable 50 ns pulse {limit_mv:.3g} mV"
         )
         lines += found.notes
-        rows.append({"capture": name, "pulses": found.found - found.echoes, "echoes": found.echoes, "limit_mv": limit_mv})
+        rows.append({"capture": name, "pulses": pulses, "echoes": found.echoes, "limit_mv": limit_mv})
     lines += [f"pulses: {out}", f"next: pdclass score {out} --out verdicts"]
     result(lines, {"out": out, "captures": rows}, as_json=as_json)
 

@@ -23,7 +23,7 @@ class Terminal:
 
     def track(self, items: Iterable[Item], words: str, total: int) -> Iterable[Item]:
         """Items with a bar, or with one line when all have passed."""
-        if not sys.stderr.isatty() or total < 2:  # noqa: PLR2004 - a bar for one item tells nothing
+        if not sys.stderr.isatty() or total < 2:
             yield from items
             print(f"{words}: {total}", file=sys.stderr)
             return

@@ -22,7 +22,11 @@ def demo(
     from pdclass.jobs import demo as job
 
     done = job.demo(out, jobs=jobs, force=force, talk=Terminal())
-    result(job.demo_lines(done), {"out": done.out, "report": done.report, "compared": done.comparison.to_dict("index")}, as_json=as_json)
+    result(
+        job.demo_lines(done),
+        {"out": done.out, "report": done.report, "compared": done.comparison.to_dict("index")},
+        as_json=as_json,
+    )
 
 
 def simulate(

@@ -9,6 +9,11 @@ from pdclass.features.feature import Feature
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
 from pdclass.pulses import FloatArray
 
+#: So far below the pulse nothing tells of the path any more.
+_LOWEST_DB = -60.0
+#: Stretches after the peak [us] whose level is measured: late, weak structure tells of the path.
+LATE_US = ((0.3, 0.6), (0.6, 1.2), (1.2, 3.0), (3.0, 6.0))
+
 _CONTIN = "A. Contin et al., IEEE Trans. Dielectr. Electr. Insul. 9(3), 335-348, 2002 (from memory)"
 
 
@@ -49,10 +54,30 @@ def measure_spread(window: Window) -> dict[str, float]:
         "equivalent_width_mhz": width_hz / 1e6,
         "onset_to_peak_ns": (window.peak - ONSET) * STEP_NS,
         "late_energy": float(late),
+        **{_late_name(first, last): _late_level_db(window, first, last) for first, last in LATE_US},
         "energy_before_peak": float(energy[:peak].sum() / total),
         "standing_out_ns": float(strong[-1] - strong[0] + 1) * STEP_NS if strong.size else 0.0,
         "crest_factor": float(1 / np.sqrt(np.mean(window.wave[ONSET : ONSET + 200] ** 2))),
     }
+
+
+def _late_level_db(window: Window, first_us: float, last_us: float) -> float:
+    """Power in a stretch after the peak over that of the peak's own 0.5 us, noise subtracted [dB].
+
+    Where the stretch does not stand out, a fifth of the noise power stands for it: the value is then an upper bound.
+    NaN where the noise is unknown or the window ends before.
+    """
+    first, last = (window.peak + round(edge * ANALYSIS_RATE_HZ / 1e6) for edge in (first_us, last_us))
+    core = window.wave[ONSET - GUARD : window.peak + 30]
+    if last > window.last or not window.noise > 0:
+        return float("nan")
+    power = float(np.mean(window.wave[first:last] ** 2)) - window.noise**2
+    level_db = 10 * np.log10(max(power, 0.2 * window.noise**2) / np.mean(core**2))
+    return float(max(level_db, _LOWEST_DB))
+
+
+def _late_name(first_us: float, last_us: float) -> str:
+    return f"late_{first_us:g}_{last_us:g}_db".replace(".", "p")
 
 
 SPREAD = (
@@ -139,5 +164,20 @@ SPREAD = (
         0.6,
         "own definition",
         needs_snr_db=6.0,
+    ),
+    *(
+        Feature(
+            _late_name(first, last),
+            "dB",
+            f"power between {first:g} and {last:g} µs after the peak, over that of the pulse's beginning",
+            f"level {first:g}-{last:g} µs after the peak {{value}}",
+            "higher",
+            "lower",
+            (_LOWEST_DB, 40.0),
+            2.0,
+            "own definition",
+            needs_snr_db=9.0,
+        )
+        for first, last in LATE_US
     ),
 )

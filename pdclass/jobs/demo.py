@@ -43,9 +43,7 @@ def demo(out: Path, *, jobs: int = 1, force: bool = False, talk: Talk = SILENT) 
     made = simulate(SCENARIO, out / "captures", seed=SEED, jobs=jobs, force=True, talk=talk)
     talk.say("finding pulses and scoring them with the shipped bundle (a first run also compiles its kernels)")
     truth = _truth(made)
-    scored = score_inputs(
-        list(made.captures), out / "verdicts", jobs=jobs, force=True, talk=talk, truth=truth
-    )
+    scored = score_inputs(list(made.captures), out / "verdicts", jobs=jobs, force=True, talk=talk, truth=truth)
     verdicts = read_verdicts(scored.out)
     found = compare_with_truth(verdicts, truth.labels, scored.classes)
     return Demo(out, scored.out / "report.html", scored, found.table)

@@ -8,7 +8,7 @@ from pathlib import Path
 
 from pdclass.capture import FillIns, open_capture, write_pulses
 from pdclass.errors import InputError
-from pdclass.extract import ExtractSettings, Extraction, extract
+from pdclass.extract import Extraction, ExtractSettings, extract
 from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk, each
 

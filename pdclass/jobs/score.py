@@ -118,9 +118,7 @@ def score_inputs(
     if len(skipped) == len(paths):
         batch.drop_folder(staging)
         raise InputError("; ".join(skipped))
-    run = batch.run_record(
-        staging, plan, [item | {"state": state} for item, state in zip(given, states, strict=True)]
-    )
+    run = batch.run_record(staging, plan, [item | {"state": state} for item, state in zip(given, states, strict=True)])
     page = _report(staging, run, model, truth) if report else None
     where = batch.finish_folder(staging, out, run, bundle=bundle_path, report_html=page, as_csv=as_csv)
     return Scored(where, where / "report.html" if report else None, run, model.classes, skipped)
@@ -136,8 +134,9 @@ def _report(staging: Path, run: dict[str, Any], model: Bundle, truth: Truth | No
     # drawing is slow to import: it comes in only where a report is wanted
     from pdclass.report.page import batch_report  # noqa: PLC0415
 
-    known = {} if truth is None else {"truth": truth.labels, "planted": truth.planted}
-    return batch_report(staging, run, model, **known)
+    if truth is None:
+        return batch_report(staging, run, model)
+    return batch_report(staging, run, model, truth=truth.labels, planted=truth.planted)
 
 
 def _expanded(given: Path) -> list[Path]:
@@ -211,7 +210,6 @@ def _capture_shard(capture: Capture, settings: ExtractSettings, model: Bundle) -
 def _table_shard(path: Path, digest: str, fill: FillIns, model: Bundle) -> batch.Shard:
     pulses, notes = read_pulses(path, fill)
     echoes = int(pulses.table["echo_of"].notna().sum())
-    one = {name: _only(pulses, name) for name in ("circuit", "site", "sensor", "session")}
     record = batch.capture_record(
         name=path.stem,
         capture_digest=digest,
@@ -219,7 +217,10 @@ def _table_shard(path: Path, digest: str, fill: FillIns, model: Bundle) -> batch
         echoes=echoes,
         unchecked=not_checked(pulses, model.validity),
         notes=notes,
-        **one,
+        circuit=_only(pulses, "circuit"),
+        site=_only(pulses, "site"),
+        sensor=_only(pulses, "sensor"),
+        session=_only(pulses, "session"),
     )
     return _shard(path.stem, digest, pulses, model, record)
 

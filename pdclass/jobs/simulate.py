@@ -11,7 +11,7 @@ import pandas as pd
 
 from pdclass.capture import write_pulses, write_sigmf
 from pdclass.errors import InputError
-from pdclass.extract import ExtractSettings, Extraction, extract
+from pdclass.extract import Extraction, ExtractSettings, extract
 from pdclass.jobs.talk import SILENT, Talk, each
 from pdclass.pulses import Annotation, Capture, PulseSet
 from pdclass.settings import shipped
@@ -153,8 +153,6 @@ def joined(sets: Sequence[PulseSet]) -> PulseSet:
     return PulseSet(np.concatenate([pulses.waves for pulses in sets]), tuple(chains), pd.concat(tables))
 
 
-def _capture_to_disk(
-    world: Scenario, number: int, seed: int, pulses: int | None, out: Path
-) -> tuple[Path, PulseSet]:
+def _capture_to_disk(world: Scenario, number: int, seed: int, pulses: int | None, out: Path) -> tuple[Path, PulseSet]:
     capture = simulate_capture(world, number, seed=seed, pulses=pulses)
     return write_sigmf(out, capture), labelled_pulses(capture, ExtractSettings()).pulses

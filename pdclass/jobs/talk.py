@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
-from typing import Any, TypeVar
+from typing import Any, Protocol, TypeVar
 
 from joblib import Parallel, delayed
 
@@ -11,18 +11,29 @@ Item = TypeVar("Item")
 Result = TypeVar("Result")
 
 
-class Talk:
-    """Where a job's progress goes; this one is silent."""
+class Talk(Protocol):
+    """Where a job's progress goes."""
 
-    def say(self, line: str) -> None:
+    def say(self, line: str, /) -> None:
         """Say one line, at the beginning or end of a stage."""
 
-    def track(self, items: Iterable[Item], _words: str, _total: int) -> Iterable[Item]:
+    def track(self, items: Iterable[Item], words: str, total: int, /) -> Iterable[Item]:
         """Pass items through while their number is shown."""
+        ...
+
+
+class Silent:
+    """Says nothing."""
+
+    def say(self, _line: str, /) -> None:
+        """Say nothing."""
+
+    def track(self, items: Iterable[Item], _words: str, _total: int, /) -> Iterable[Item]:
+        """Pass items through."""
         return items
 
 
-SILENT = Talk()
+SILENT = Silent()
 
 
 def each(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
@@ -18,7 +18,7 @@ from pdclass.jobs.talk import SILENT, Talk
 from pdclass.model.bundle import BundleParts, write_bundle
 from pdclass.model.columns import thin
 from pdclass.pulses import FloatArray, PulseSet
-from pdclass.training.card import card_text
+from pdclass.training.card import with_card
 from pdclass.training.fit import train
 from pdclass.training.settings import TrainSettings
 
@@ -62,7 +62,7 @@ def train_bundle(
     talk.say(f"{values.shape[1]} features measured; fitting")
     provenance = {"inputs": [{"name": path.name, "digest": file_digest(path)} for path in tables_of(pulses)]}
     parts = fit(values, together, settings, provenance=provenance)
-    parts = replace(parts, card=card_text(parts, None, title=f"Bundle {out.name}", tested_on="", trained_on=""))
+    parts = with_card(parts, None, title=f"Bundle {out.name}")
     digest = write_bundle(out, parts, replace=force)
     return Trained(out, digest, (*notes, *parts.account["notes"]))
 

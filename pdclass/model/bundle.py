@@ -22,6 +22,7 @@ from pdclass.model.manifest import FORMAT, Manifest, Validity
 from pdclass.model.novelty import NoveltyReference, make_reference
 from pdclass.model.treefile import read_arrays, write_arrays
 from pdclass.pulses import FloatArray
+from pdclass.writing import flush
 
 MANIFEST = "manifest.json"
 TREES, REFERENCE, TRAINING = "trees.npz", "reference.parquet", "training.parquet"
@@ -126,8 +127,8 @@ def write_bundle(path: Path, parts: BundleParts, *, replace: bool = False) -> st
         raise InputError(f"{path.parent}: expected a folder to write the bundle in, found none; make it first")
     if path.exists() and not replace:
         raise InputError(f"{path}: expected nothing there yet, found something; choose another name or --force")
-    if path.exists() and not path.is_dir():
-        raise InputError(f"{path}: expected a folder to replace, found a file; choose another name")
+    if path.exists() and not _replaceable(path):
+        raise InputError(f"{path}: expected a bundle to replace, found something else; choose another name")
     fresh = path.with_name(f".{path.name}.{os.getpid()}.part")
     fresh.mkdir()
     try:
@@ -144,7 +145,7 @@ def _put_in_place(fresh: Path, path: Path) -> None:
     if path.exists():
         path.rename(old)
     fresh.rename(path)
-    _sync(path.parent)
+    flush(path.parent)
     if old.is_dir():
         shutil.rmtree(old)
 
@@ -192,17 +193,14 @@ def _novelty_entry(novelty: NoveltyReference) -> dict[str, Any]:
     }
 
 
+def _replaceable(path: Path) -> bool:
+    """Whether a folder is a bundle or empty: nothing else is ever removed."""
+    return path.is_dir() and ((path / MANIFEST).is_file() or not any(path.iterdir()))
+
+
 def _settle(folder: Path) -> None:
     for place in [*sorted(folder.iterdir()), folder]:
-        _sync(place)
-
-
-def _sync(place: Path) -> None:
-    descriptor = os.open(place, os.O_RDONLY)
-    try:
-        os.fsync(descriptor)
-    finally:
-        os.close(descriptor)
+        flush(place)
 
 
 def read_bundle(path: Path, known: Mapping[str, str]) -> Bundle:

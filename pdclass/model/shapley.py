@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from pdclass.model.forest import Forest, checked_values
 from pdclass.pulses import FloatArray, IntArray
 
-_ROWS = 64  # pulses worked on side by side; each is summed on its own, so the number never changes a bit
+_ROWS = 256  # pulses worked on side by side; each is summed on its own, so the number never changes a bit
 
 _Leaves = tuple[IntArray, FloatArray, IntArray, IntArray, FloatArray, FloatArray, NDArray[np.bool_], FloatArray]
 

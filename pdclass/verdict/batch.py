@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import os
 import shutil
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
@@ -13,7 +12,7 @@ from typing import Any
 import pandas as pd
 import pyarrow.parquet as pq
 
-from pdclass.capture import read_pulses, whole_file, write_pulses
+from pdclass.capture import read_pulses, write_pulses
 from pdclass.digest import canonical_json, file_digest, json_digest
 from pdclass.errors import InputError, RefusedError, complaint
 from pdclass.pulses import PulseSet
@@ -25,6 +24,7 @@ from pdclass.verdict.tables import (
     write_reason_table,
     write_verdict_table,
 )
+from pdclass.writing import flush, write_text
 
 #: 1 = this layout. A changed layout gets the next number, and the reader of the old one stays.
 FORMAT = 1
@@ -159,7 +159,7 @@ def write_shard(staging: Path, shard: Shard) -> None:
     write_verdict_table(staging / "verdicts" / shard.file, shard.verdicts)
     write_reason_table(staging / "reasons" / shard.file, shard.verdicts)
     write_pulses(staging / "pulses" / shard.file, shard.pulses)
-    _write_text(canonical_json(dict(shard.record)), _record_path(staging, shard.file))
+    write_text(_record_path(staging, shard.file), canonical_json(dict(shard.record)))
 
 
 def run_record(staging: Path, plan: Mapping[str, Any], inputs: Sequence[Mapping[str, Any]]) -> dict[str, Any]:
@@ -200,17 +200,17 @@ def finish_folder(
     _clear(staging, {record_file(record) for record in run["captures"]})
     shutil.copytree(bundle, staging / "bundle")
     if report_html is not None:
-        _write_text(report_html, staging / "report.html")
+        write_text(staging / "report.html", report_html)
     if as_csv:
-        _write_text(csv_text(read_verdicts(staging)), staging / "verdicts.csv")
+        write_text(staging / "verdicts.csv", csv_text(read_verdicts(staging)))
     files = {
         path.relative_to(staging).as_posix(): file_digest(path)
         for path in sorted(staging.rglob("*"))
         if path.is_file() and path.parent.name != "records"
     }
-    _write_text(canonical_json({**run, "files": files}), staging / "run.json")
+    write_text(staging / "run.json", canonical_json({**run, "files": files}))
     for folder in sorted({path.parent for path in staging.rglob("*")}):
-        _sync(folder)
+        flush(folder)
     shutil.rmtree(staging / "records")
     _put_in_place(staging, out)
     return out
@@ -297,11 +297,6 @@ def shard_paths(folder: Path, kind: str) -> list[Path]:
     return paths
 
 
-def _write_text(text: str, path: Path) -> None:
-    with whole_file(path) as file:
-        file.write(text.encode())
-
-
 def _record_path(staging: Path, file: str) -> Path:
     return staging / "records" / f"{file.removesuffix('.parquet')}.json"
 
@@ -329,7 +324,7 @@ def _put_in_place(staging: Path, out: Path) -> None:
     if out.exists():
         out.rename(_aside(out))
     staging.rename(out)
-    _sync(out.parent)
+    flush(out.parent)
     _settle(out)
 
 
@@ -345,16 +340,8 @@ def _settle(out: Path) -> None:
         if path.name not in _PARTS:
             path.rename(out / path.name)
     shutil.rmtree(aside)
-    _sync(out.parent)
+    flush(out.parent)
 
 
 def _aside(out: Path) -> Path:
     return out.parent / f".{out.name}.old"
-
-
-def _sync(folder: Path) -> None:
-    place = os.open(folder, os.O_RDONLY)
-    try:
-        os.fsync(place)
-    finally:
-        os.close(place)

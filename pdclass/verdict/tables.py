@@ -13,9 +13,9 @@ import pandas as pd
 import pyarrow as pa
 import pyarrow.parquet as pq
 
-from pdclass.capture import whole_file
 from pdclass.errors import InputError
 from pdclass.verdict.score import Verdicts
+from pdclass.writing import whole_file
 
 #: A spreadsheet takes a text that begins so for a formula.
 _FORMULA = ("=", "+", "-", "@", "\t", "\r")

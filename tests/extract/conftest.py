@@ -2,8 +2,8 @@
 
 import numpy as np
 import pytest
-
 from closed_form import as_capture, background, damped_sine, double_exponential
+
 from pdclass.pulses import Annotation
 
 

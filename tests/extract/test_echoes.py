@@ -3,8 +3,8 @@
 import numpy as np
 import pytest
 import scipy.fft
-
 from closed_form import as_capture, double_exponential
+
 from pdclass.extract import ExtractSettings, extract
 from pdclass.extract.echoes import PATHS_S, path_likeness
 

@@ -5,8 +5,8 @@ import dataclasses
 import numpy as np
 import pandas as pd
 import pytest
-
 from closed_form import as_capture, background, damped_sine, double_exponential
+
 from pdclass.digest import pulse_id
 from pdclass.errors import InputError
 from pdclass.extract import ExtractSettings, extract
@@ -123,7 +123,9 @@ def test_pulse_ids_come_from_capture_sensor_and_onset(planted):
     assert table.index[0] == pulse_id("d" * 64, "strap 1", int(table["onset_sample"].iloc[0]))
 
 
-@pytest.mark.parametrize(("rate_hz", "dtype", "bits"), [(40e6, np.int8, 8), (62.5e6, np.int16, 12), (250e6, np.float32, None)])
+@pytest.mark.parametrize(
+    ("rate_hz", "dtype", "bits"), [(40e6, np.int8, 8), (62.5e6, np.int16, 12), (250e6, np.float32, None)]
+)
 def test_other_rates_and_sample_types_work(rate_hz, dtype, bits):
     """Eight bits at 40 MS/s and floats at 250 MS/s are found as well, within 0.1 us."""
     rng = np.random.default_rng(10)

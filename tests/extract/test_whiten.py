@@ -2,8 +2,8 @@
 
 import numpy as np
 import pytest
-
 from closed_form import background
+
 from pdclass.extract.bank import whitened
 from pdclass.extract.whiten import noise_spectrum, spread_starts, whitening_filter
 

@@ -4,9 +4,9 @@ import dataclasses
 
 import numpy as np
 import pytest
+from closed_form import as_capture, background, damped_sine, double_exponential
 from scipy.signal import butter, sosfilt
 
-from closed_form import as_capture, background, damped_sine, double_exponential
 from pdclass.errors import RefusedError
 from pdclass.extract import extract
 from pdclass.features import BY_NAME, CATALOGUE, FAMILIES, feature_digests, feature_table
@@ -19,8 +19,10 @@ SHAPES = {
     "fast": lambda rate: double_exponential(10e-9, 50e-9, rate, 12e-6),
     "slow": lambda rate: double_exponential(100e-9, 600e-9, rate, 12e-6),
     "ringing": lambda rate: damped_sine(7e6, 0.4e-6, rate, 12e-6),
-    "two": lambda rate: double_exponential(20e-9, 90e-9, rate, 12e-6)
-    - 0.4 * np.roll(double_exponential(60e-9, 250e-9, rate, 12e-6), round(6e-6 * rate)),
+    "two": lambda rate: (
+        double_exponential(20e-9, 90e-9, rate, 12e-6)
+        - 0.4 * np.roll(double_exponential(60e-9, 250e-9, rate, 12e-6), round(6e-6 * rate))
+    ),
 }
 
 
@@ -134,7 +136,11 @@ def test_a_moved_window_keeps_the_features(shape):
     moved = PulseSet(np.roll(plain.waves, 1, axis=1), plain.chains, plain.table)
     for feature, one, two in zip(CATALOGUE, values_of(plain), values_of(moved), strict=True):
         assert np.isnan(one) == np.isnan(two), feature.name
-        assert np.isnan(one) or abs(one - two) <= STEP.get(feature.unit, 0.0) + feature.tolerance + 0.05 * abs(one), (feature.name, one, two)
+        assert np.isnan(one) or abs(one - two) <= STEP.get(feature.unit, 0.0) + feature.tolerance + 0.05 * abs(one), (
+            feature.name,
+            one,
+            two,
+        )
 
 
 def test_what_the_chain_does_not_carry_is_unmeasurable():

@@ -83,7 +83,9 @@ def test_pulse_tables_score_as_their_captures_do(tiny_world, tiny_bundle, tmp_pa
     capture = tiny_world.captures[1]
     extract_captures([capture], tmp_path / "p.parquet")
     direct = read_verdicts(score_inputs([capture], tmp_path / "a", bundle=tiny_bundle, report=False).out)
-    through = read_verdicts(score_inputs([tmp_path / "p.parquet"], tmp_path / "b", bundle=tiny_bundle, report=False).out)
+    through = read_verdicts(
+        score_inputs([tmp_path / "p.parquet"], tmp_path / "b", bundle=tiny_bundle, report=False).out
+    )
     pd.testing.assert_frame_equal(direct, through)
 
 

@@ -11,8 +11,8 @@ import numpy as np
 import pytest
 import pywt.data
 import sigmf
-
 from closed_form import damped_sine, double_exponential
+
 from pdclass.capture import read_pulses
 from pdclass.jobs.extract import extract_captures
 from pdclass.jobs.score import base_bundle, score_inputs

@@ -109,4 +109,4 @@ def test_one_cycle_and_one_window():
     """100 MS/s for 20 ms are 2,000,000 samples; 20 us are a thousandth of the cycle (common practice, no source)."""
     assert 100e6 * 20e-3 == 2_000_000
     assert window_samples(100e6) == 2_000
-    assert WINDOW_S * 50 * 1000 == pytest.approx(1.0)
+    assert pytest.approx(1.0) == WINDOW_S * 50 * 1000

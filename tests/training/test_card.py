@@ -25,7 +25,7 @@ def test_the_dangerous_cell_comes_first(card):
     assert text.splitlines()[2].startswith(f"**Switchgear decided as interference: {count} of {pulses} pulses, in ")
 
 
-def test_the_card_says_what_issue_and_use_need(card, parts):
+def test_the_card_says_what_its_user_needs(card, parts):
     """Figures, what it was trained on, what it must not be used for, limits: all there."""
     evaluation, text = card
     for needed in (

@@ -28,7 +28,7 @@ def whole_file(path: Path) -> Iterator[BinaryIO]:
             file.flush()
             os.fsync(file.fileno())
         sibling.replace(path)
-        _flush_folder(path.parent)
+        flush(path.parent)
     except OSError as error:
         raise InputError(
             f"{path}: cannot be written ({error.strerror or error}); check the folder and its space"
@@ -37,10 +37,17 @@ def whole_file(path: Path) -> Iterator[BinaryIO]:
         sibling.unlink(missing_ok=True)
 
 
-def _flush_folder(folder: Path) -> None:
+def write_text(path: Path, text: str) -> None:
+    """Write a text file (UTF-8), whole or not at all."""
+    with whole_file(path) as file:
+        file.write(text.encode())
+
+
+def flush(place: Path) -> None:
+    """Have a file, or the names in a folder, on the disk before going on."""
     if os.name != "posix":
         return
-    number = os.open(folder, os.O_RDONLY)
+    number = os.open(place, os.O_RDONLY)
     try:
         os.fsync(number)
     finally:

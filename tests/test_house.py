@@ -99,9 +99,7 @@ def test_imports_go_down_only(trees):
 
 
 def test_own_imports_stand_at_the_top(trees):
-    """The package imports itself inside functions only on the command-line floor, to keep --help quick, and where a
-    job draws.
-    """
+    """The package imports itself inside functions only in cli, to keep --help quick, and where a job draws."""
     wrong = [
         f"{where(path)} imports {name}"
         for path, tree in trees.items()

@@ -8,7 +8,8 @@ import numpy as np
 import pytest
 import sigmf
 
-from pdclass.capture import atomic, counts_digest, open_capture, write_sigmf
+from pdclass import writing
+from pdclass.capture import counts_digest, open_capture, write_sigmf
 from pdclass.errors import InputError
 
 
@@ -42,7 +43,7 @@ def test_a_failed_write_leaves_the_old_file_and_nothing_else(tmp_path, make_capt
     def full(number):
         raise OSError(28, "No space left on device")
 
-    monkeypatch.setattr(atomic.os, "fsync", full)
+    monkeypatch.setattr(writing.os, "fsync", full)
     with pytest.raises(InputError, match="No space left on device"):
         write_sigmf(tmp_path, make_capture(circuit="Another"))
     assert {each.name: each.read_bytes() for each in tmp_path.iterdir()} == before

@@ -30,7 +30,9 @@ def demo(
 
 
 def simulate(
-    scenario: str = typer.Argument(help="Scenario file (TOML), or a shipped one: base, port-ferrow, tiny."),
+    scenario: str = typer.Argument(
+        help="Scenario file (TOML), or a shipped one: base, port-ferrow, tiny.", metavar="SCENARIO"
+    ),
     out: Path = typer.Option(..., "--out", help="Folder for the captures and pulses.parquet."),
     seed: int = typer.Option(1, "--seed", min=0, help="Draws another world from the same distributions."),
     captures: int = typer.Option(None, "--captures", min=1, help="Captures; the scenario's number by default."),

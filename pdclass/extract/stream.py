@@ -40,7 +40,7 @@ MARGIN_S = 4e-6
 LONGEST_CLUSTER_S = 400e-6
 BLOCK_SAMPLES = 1 << 16
 NOISE_REACH_S = 1e-3
-NOISE_STRIDE = 8
+NOISE_STRIDE = 31
 LABEL_REACH_S = 0.5e-6
 _GOLDEN = 0.6180339887498949
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.

@@ -124,4 +124,7 @@ def _settings(
         return TrainSettings.model_validate(chosen)
     except ValidationError as error:
         first = error.errors()[0]
-        raise InputError(f"{first['loc'][0]}: {first['msg']}, found {first['input']!r}") from None
+        option = {"error_rate": "--error-rate", "mix": "--mix", "group_by": "--group", "seed": "--seed"}[
+            str(first["loc"][0])
+        ]
+        raise InputError(f"{option}: {first['msg']}, found {first['input']!r}") from None

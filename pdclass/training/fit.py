@@ -143,7 +143,9 @@ def _classes(table: pd.DataFrame) -> tuple[str, ...]:
 
 def _examples(rows: FloatArray, table: pd.DataFrame, classes: Sequence[str], settings: TrainSettings) -> Examples:
     if not len(rows):
-        raise TooFewError("labels: expected labelled pulses, found none; label some first (`pdclass extract --sheet`)")
+        raise TooFewError(
+            "labels: expected labelled pulses, found none; label some first (annotations in the captures, or the label column)"
+        )
     label_index = np.array([classes.index(label) for label in table["label"]], np.int64)
     groups = group_names(table, settings.group_by)
     check_enough(label_index, groups, classes)

@@ -86,7 +86,7 @@ def check_enough(label_index: IntArray, groups: Names, classes: Sequence[str]) -
     TooFewError
         Naming the class, how many groups it has and how many are needed.
     """
-    advice = "label pulses of more circuits, or add a base bundle (--base)"
+    advice = "label pulses of more circuits"
     if len(classes) < 2:
         raise TooFewError(f"classes: expected at least 2 with labels, found {len(classes)}; {advice}")
     total = len(set(groups))

@@ -1,0 +1,81 @@
+"""The documents keep their word: commands exist, have help, and the ones shown run."""
+
+import re
+import shlex
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+from typer.main import get_command
+
+from pdclass.cli.app import app
+
+ROOT = Path(__file__).parent.parent
+README = (ROOT / "README.md").read_text(encoding="utf-8")
+COMMANDS = get_command(app).commands
+MARKDOWN = sorted([*ROOT.glob("*.md"), *(ROOT / "docs").glob("*.md"), *(ROOT / "synthetic").glob("*.md")])
+
+
+def pdclass(*arguments, cwd):
+    return subprocess.run(
+        [sys.executable, "-c", "from pdclass.cli.app import main; main()", *arguments],
+        capture_output=True,
+        text=True,
+        cwd=cwd,
+        check=False,
+    )
+
+
+def shown_commands():
+    """Commands in the README's console blocks, without the prompt and without what they printed."""
+    blocks = re.findall(r"```console\n(.*?)```", README, flags=re.DOTALL)
+    lines = [line for block in blocks for line in block.replace("\\\n", " ").splitlines()]
+    return [line.removeprefix("$ ") for line in lines if line.startswith("$ pdclass ")]
+
+
+def test_the_command_table_lists_every_command_and_no_other():
+    """The README's table and the program agree on what commands there are."""
+    table = set(re.findall(r"^\| `pdclass ([a-z]+)", README, flags=re.MULTILINE))
+    assert table == set(COMMANDS)
+
+
+@pytest.mark.parametrize("name", sorted(COMMANDS))
+def test_every_command_has_short_complete_help(name, tmp_path):
+    """Help says what the command does and what every option is, within a screen and a half."""
+    done = pdclass(name, "--help", cwd=tmp_path)
+    assert done.returncode == 0
+    assert len(done.stdout.splitlines()) <= 60
+    assert COMMANDS[name].help
+    assert all(getattr(parameter, "help", None) for parameter in COMMANDS[name].params if parameter.name != "help")
+
+
+def test_every_command_shown_in_the_readme_runs(tmp_path):
+    """The README's commands, run in their order in one folder, all succeed and name what comes next."""
+    commands = shown_commands()
+    assert len(commands) >= 4
+    for command in commands:
+        done = pdclass(*shlex.split(command)[1:], cwd=tmp_path)
+        assert done.returncode == 0, (command, done.stderr)
+
+
+@pytest.mark.parametrize("path", MARKDOWN, ids=lambda path: path.name)
+def test_links_in_documents_lead_somewhere(path):
+    """Every relative link of a document leads to a file of the project."""
+    links = re.findall(r"\]\(([^)#:]+)\)", path.read_text(encoding="utf-8"))
+    assert all((path.parent / link).exists() for link in links)
+
+
+def test_cautions_stand_in_the_readme():
+    """The README carries the cautions that every report carries."""
+    text = " ".join(README.split())
+    for words in (
+        "not a permit to work",
+        "not proof that equipment is healthy or safe",
+        "High voltage kills",
+        "under the utility's own safety rules and local codes",
+        "licensed, competent staff",
+        "absolute magnitude means little on-line",
+        "many equal labels are not many proofs",
+    ):
+        assert words.lower() in text.lower(), words

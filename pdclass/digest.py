@@ -1,4 +1,4 @@
-"""Digests of files, arrays and canonical JSON; the identity of a pulse (DESIGN: the types)."""
+"""Digests of files, arrays and canonical JSON; the identity of a pulse."""
 
 from __future__ import annotations
 
@@ -54,5 +54,5 @@ def pulse_id(capture_digest: str, sensor: str, onset_sample: int) -> str:
 def loose_pulse_id(wave_v: NDArray[np.float32], circuit: str, session: str) -> str:
     """The name of a pulse without a capture, from its wave's bytes [V, float32 little-endian]."""
     sha = hashlib.sha256(np.ascontiguousarray(wave_v, dtype="<f4").tobytes())
-    sha.update(f"{circuit}{session}".encode())
+    sha.update(f"|{circuit}|{session}".encode())
     return sha.hexdigest()[:16]

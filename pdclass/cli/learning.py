@@ -10,9 +10,7 @@ from pdclass.cli.talking import FORCE, JSON, Terminal, result, shares
 
 
 def train(
-    pulses: list[Path] = typer.Argument(
-        help="Labelled pulse tables (.parquet) or verdict folders.", metavar="PULSES..."
-    ),
+    pulses: list[Path] = typer.Argument(help="Labelled pulse tables (.parquet) or verdict folders.", metavar="PULSES"),
     out: Path = typer.Option(..., "--out", help="Folder of the bundle to write."),
     error_rate: float = typer.Option(0.10, "--error-rate", help="How often a label set may miss the truth."),
     mix: str = typer.Option(None, "--mix", help="Class mix of the probabilities: cable=0.1,local=0.2,..."),
@@ -44,7 +42,7 @@ def train(
 def evaluate(
     bundle: Path = typer.Argument(help="The bundle.", metavar="BUNDLE"),
     pulses: list[Path] = typer.Argument(
-        help="Labelled pulse tables of circuits that the bundle has not seen.", metavar="PULSES..."
+        help="Labelled pulse tables of circuits that the bundle has not seen.", metavar="PULSES"
     ),
     out: Path = typer.Option(..., "--out", help="Folder for the figures."),
     force: bool = FORCE,

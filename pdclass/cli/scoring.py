@@ -29,7 +29,7 @@ if TYPE_CHECKING:
 
 
 def extract(
-    captures: list[Path] = typer.Argument(help="Captures (SigMF).", metavar="CAPTURE..."),
+    captures: list[Path] = typer.Argument(help="Captures (SigMF).", metavar="CAPTURE"),
     out: Path = typer.Option(..., "--out", help="Pulse table to write (.parquet)."),
     rate_hz: float = RATE,
     volts_per_count: float = COUNT,
@@ -63,7 +63,7 @@ def extract(
 
 def score(
     inputs: list[Path] = typer.Argument(
-        help="Captures (SigMF), pulse tables (.parquet), or folders of them.", metavar="INPUT..."
+        help="Captures (SigMF), pulse tables (.parquet), or folders of them.", metavar="INPUT"
     ),
     out: Path = typer.Option(..., "--out", help="Folder for the verdicts."),
     bundle: Path = typer.Option(None, "--bundle", help="Model; the shipped base bundle by default."),

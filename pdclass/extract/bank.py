@@ -50,28 +50,57 @@ def flag_boxes(white: WaveArray, limits: WaveArray, flags: NDArray[Any]) -> None
             centred[i] |= abs(white[i]) > limit
 
 
-def whitened(counts: NDArray[Any], taps: WaveArray, bounds: tuple[int, int], first: int, last: int) -> WaveArray:
-    """Whitened samples `first` to `last` of a segment; before the segment its first sample is held.
+def as_signal(counts: NDArray[Any], first: int, last: int, offset: float) -> WaveArray:
+    """Samples `first` to `last` of a record without its offset, as float32.
+
+    Whole numbers are spread over the width of a count by a fixed pattern of their place: with little noise the
+    median deviation would otherwise jump from count to count, and the threshold with it.
+    """
+    signal = np.asarray(counts[first:last], np.float64) - offset
+    if np.issubdtype(counts.dtype, np.integer):
+        signal += dither(first, last)
+    return signal.astype(np.float32)
+
+
+def dither(first: int, last: int) -> FloatArray:
+    """Numbers evenly spread over -0.5 to 0.5 that depend on the place alone (a mixing hash of it)."""
+    place = np.arange(first, last).astype(np.uint64) * np.uint64(0x9E3779B97F4A7C15)
+    place ^= place >> np.uint64(29)
+    place *= np.uint64(0xBF58476D1CE4E5B9)
+    return np.asarray((place >> np.uint64(40)).astype(np.float64) / (1 << 24) - 0.5)
+
+
+def whitened(
+    counts: NDArray[Any], taps: WaveArray, offset: float, bounds: tuple[int, int], first: int, last: int
+) -> WaveArray:
+    """Whitened samples `first` to `last` of a segment; what came before the segment is its beginning, turned round.
 
     Parameters
     ----------
     counts : the record.
     taps : whitening filter.
+    offset : level of the record, taken out first [count].
     bounds : first and one past the last sample of the segment.
     first, last : the stretch wanted, within the segment.
     """
     order = taps.size - 1
-    signal = np.asarray(counts[max(first - order, bounds[0]) : last], np.float32)
-    short = order - (first - max(first - order, bounds[0]))
+    begin = max(first - order, bounds[0])
+    signal = as_signal(counts, begin, last, offset)
+    short = order - (first - begin)
     if short:
-        signal = np.concatenate([np.full(short, signal[0], np.float32), signal])
+        head = as_signal(counts, bounds[0], min(bounds[0] + short + 1, bounds[1]), offset)
+        mirrored = np.resize((2 * head[0] - head[1:])[::-1], short) if head.size > 1 else np.zeros(short, np.float32)
+        signal = np.concatenate([mirrored.astype(np.float32), signal])
     out = np.empty(last - first, np.float32)
     whiten_into(signal, taps, out)
     return out
 
 
 def box_noise(pieces: list[WaveArray], scales: int) -> FloatArray:
-    """The noise level MAD/0.6745 of the box sums of every scale, from whitened pieces of the record."""
+    """The noise level MAD/0.6745 of the box sums of every scale, from whitened pieces of the record.
+
+    The deviation is about zero: the level of the record is taken out before.
+    """
     levels = np.empty(scales)
     sums = [piece.astype(np.float32, copy=True) for piece in pieces]
     for scale in range(scales):
@@ -83,22 +112,26 @@ def box_noise(pieces: list[WaveArray], scales: int) -> FloatArray:
 
 
 def flagged_runs(
-    counts: NDArray[Any], taps: WaveArray, limits: WaveArray, bounds: tuple[int, int], *, block_samples: int
+    counts: NDArray[Any],
+    taps: WaveArray,
+    offset: float,
+    limits: WaveArray,
+    bounds: tuple[int, int],
+    *,
+    block_samples: int,
 ) -> IntArray:
     """Runs (first, one past last) of flagged samples in one segment.
 
     The pass goes in blocks; each is filtered with the samples before it and the widest box after it, so that
     the block size does not change a single flag.
     """
-    order, reach = taps.size - 1, (1 << (limits.size - 1)) - 1
+    reach = (1 << (limits.size - 1)) - 1
     runs = []
     for first in range(bounds[0], bounds[1], block_samples):
         last = min(first + block_samples, bounds[1])
         begin, end = max(first - reach, bounds[0]), min(last + reach, bounds[1])
-        white = whitened(counts, taps, bounds, begin, end)
+        white = whitened(counts, taps, offset, bounds, begin, end)
         flags = np.zeros(white.size, np.bool_)
-        # the filter starts on a held sample at a segment's beginning: what it says there is not noise-like
-        white[: max(0, bounds[0] + order - begin)] = 0.0
         flag_boxes(white, limits, flags)
         edges = np.flatnonzero(np.diff(np.concatenate([[False], flags[first - begin : last - begin], [False]])))
         runs.append(edges.reshape(-1, 2) + first)

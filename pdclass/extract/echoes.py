@@ -30,7 +30,11 @@ SMALLER = 0.9
 #: With so many events as strong as the parent, the echo of one alone is no echo: theirs would be there too.
 LONE_PARENTS = 5
 MOST_PARENTS = 8
-_SHAPE_S = 3e-6
+#: Of what follows at an echo's delay at least this share is smaller than what it follows; in a train it is not.
+ECHO_SHARE = 0.8
+TRAIN_REACH = 1.5
+#: So much of each event's beginning tells its shape.
+SHAPE_S = 3e-6
 
 
 @dataclass(frozen=True)
@@ -78,7 +82,7 @@ def find_echoes(events: Sequence[Event], rate_hz: float, longest_s: float) -> tu
     """
     pairs = [pair for child in range(len(events)) for pair in _likenesses(events, child, rate_hz, longest_s)]
     peaks = np.array([event.peak for event in events])
-    proven = _recurring(pairs, rate_hz, longest_s)
+    proven = _recurring(pairs, rate_hz, longest_s) & ~_of_a_train(events, pairs, rate_hz)
     echoes: dict[int, int] = {}
     maybes: dict[int, int] = {}
     for place in sorted(range(len(pairs)), key=lambda place: (pairs[place].child, -pairs[place].alike)):
@@ -100,15 +104,34 @@ def _recurring(pairs: Sequence[Likeness], rate_hz: float, longest_s: float) -> N
     Enough is more than chance would bring: three, and three times what delays spread evenly would give.
     """
     alike = np.array([pair.alike >= ALIKE for pair in pairs], np.bool_)
-    delay_s = np.array([pair.delay for pair in pairs]) / rate_hz
-    ratio = np.log([pair.ratio for pair in pairs])
-    needed = max(RECURRENCES, 3 * np.count_nonzero(alike) * 2 * RECURRENCE_S / longest_s)
+    delay_s = np.array([pair.delay for pair in pairs])[alike] / rate_hz
+    order = np.argsort(delay_s, kind="stable")
+    delay_s, ratio = delay_s[order], np.log([pair.ratio for pair in pairs])[alike][order]
+    needed = max(RECURRENCES, 3 * len(delay_s) * 2 * RECURRENCE_S / longest_s)
     proven = np.zeros(len(pairs), np.bool_)
-    for place, pair in enumerate(pairs):
-        same = alike & (np.abs(delay_s - delay_s[place]) <= RECURRENCE_S)
-        steady = np.abs(ratio[same] - ratio[place]) <= STEADY
-        proven[place] = alike[place] and (np.sum(same) if pair.slower else np.sum(steady)) >= needed
+    for place in np.flatnonzero(alike).tolist():
+        pair = pairs[place]
+        low, high = np.searchsorted(
+            delay_s, [pair.delay / rate_hz - RECURRENCE_S, pair.delay / rate_hz + RECURRENCE_S], side="left"
+        )
+        steady = np.count_nonzero(np.abs(ratio[low:high] - np.log(pair.ratio)) <= STEADY)
+        proven[place] = (high - low if pair.slower else steady) >= needed
     return proven
+
+
+def _of_a_train(events: Sequence[Event], pairs: Sequence[Likeness], rate_hz: float) -> NDArray[np.bool_]:
+    """Which likenesses have a delay at which larger or equal events follow, too: a train, and no echoes."""
+    onsets, peaks = np.array([event.onset for event in events]), np.array([event.peak for event in events])
+    reach = RECURRENCE_S * rate_hz
+    trains: dict[int, bool] = {}
+    for key in {round(pair.delay / reach) for pair in pairs}:
+        aim = onsets + key * reach
+        near = np.clip(np.searchsorted(onsets, aim), 1, max(len(onsets) - 1, 1))
+        near = near - (aim - onsets[near - 1] < onsets[near] - aim)
+        follows = (np.abs(onsets[near] - aim) <= TRAIN_REACH * reach) & (near != np.arange(len(onsets)))
+        smaller = follows & (peaks[near] < SMALLER * peaks)
+        trains[key] = bool(np.sum(smaller) < ECHO_SHARE * np.sum(follows))
+    return np.array([trains[round(pair.delay / reach)] for pair in pairs], np.bool_)
 
 
 def _likenesses(events: Sequence[Event], child: int, rate_hz: float, longest_s: float) -> list[Likeness]:
@@ -141,7 +164,7 @@ def path_likeness(parent: WaveArray, child: WaveArray, rate_hz: float) -> FloatA
     exp(-K sqrt(s)): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory). A line that ends in a
     capacitance reflects (1 - s tau)/(1 + s tau), tau = Z0 C (any transmission-line text).
     """
-    longest = round(_SHAPE_S * rate_hz)
+    longest = round(SHAPE_S * rate_hz)
     copy, original = np.asarray(child[:longest], np.float64), np.asarray(parent[:longest], np.float64)
     energy = float(np.sum(copy**2))
     clean = max(energy - copy.size, 0.05 * energy)

@@ -21,7 +21,12 @@ TAIL_RISE = 8.0
 #: energy after a dip to a tenth of it counts: lobes of a mode with a quality below 20 fall faster.
 TWIN_SHARE = 0.85
 TWIN_DIP = 0.1
+#: A swing to the other side with this share of the peak energy is a mode that rings.
+SWING = 0.25
 TWIN_S = 0.5e-6
+#: Before a crest of so many noise levels three samples in a row below the other number are noise, no onset.
+CLEAR = 10.0
+QUIET = 3.0
 ALIVE = 9.0
 FADED = 2.0
 
@@ -33,24 +38,39 @@ def mean_energy(white: WaveArray, width: int) -> FloatArray:
 
 
 @_njit
+def largest_sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover - compiled
+    """Sign of the largest of the `width` samples up to and with `last`."""
+    best = white[last]
+    for i in range(max(0, last - width + 1), last):
+        if abs(white[i]) > abs(best):
+            best = white[i]
+    return 1.0 if best >= 0 else -1.0
+
+
+@_njit
 def candidate_starts(
-    quick: FloatArray, slow: FloatArray, attack: int, twin: int, limits: FloatArray
+    white: WaveArray, quick: FloatArray, slow: FloatArray, attack: int, twin: int, limits: FloatArray
 ) -> IntArray:  # pragma: no cover - compiled
     """Places where the quick energy of a whitened stretch starts to rise for a new pulse.
 
-    `limits` = (alive, faded, tail rise, twin share, twin dip).
+    A twin has the sign of the pulse before it, and nothing of the other sign stands between them: what swings to
+    the other side is taken for ringing.
+    `limits` = (alive, faded, tail rise, twin share, twin dip, swing).
     """
-    alive, faded, rise, share, dip = limits
+    alive, faded, rise, share, dip, swing = limits
     found = np.empty(quick.size // max(attack, 1) + 1, np.int64)
     count = 0
     active = False
     peak = 0.0
     lowest = 0.0
+    sign = 1.0
+    ringing = False
     start = 0
     for i in range(quick.size):
         if not active:
             if quick[i] > alive:
                 active, start, peak, lowest = True, i, quick[i], quick[i]
+                sign, ringing = largest_sign(white, i, attack), False
                 found[count] = i
                 count += 1
             continue
@@ -62,13 +82,18 @@ def candidate_starts(
             recent = max(recent, quick[j])
         beyond = i - start > twin
         from_tail = beyond and quick[i] > alive and quick[i] > rise * recent
-        as_twin = not beyond and lowest < dip * peak and quick[i] > share * peak and i - start > attack
+        as_twin = attack < i - start <= 2 * twin and lowest < dip * peak and quick[i] > share * peak
+        if quick[i] > swing * peak and largest_sign(white, i, attack) != sign:
+            ringing = True
+        as_twin = as_twin and not ringing
         if (from_tail or as_twin) and count < found.size:
             found[count] = i
             count += 1
             start, peak, lowest = i, quick[i], quick[i]
+            sign, ringing = largest_sign(white, i, attack), False
         elif quick[i] > peak:
             peak, lowest = quick[i], quick[i]
+            sign = largest_sign(white, i, attack)
         else:
             lowest = min(lowest, quick[i])
     return found[:count]
@@ -97,7 +122,7 @@ def onset_by_information(white: WaveArray) -> int:
     return int(k[np.argmin(score)])
 
 
-def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int]) -> list[int]:
+def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int], *, continued: bool = False) -> list[int]:
     """Onsets of the events of one cluster, as places in a whitened stretch (noise of variance 1).
 
     Parameters
@@ -105,19 +130,24 @@ def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int]) -> l
     white : (samples,) the cluster with some microseconds before it and after.
     rate_hz : sampling rate [Hz].
     inside : first and one past the last place that the cluster flagged; onsets lie near it.
+    continued : the cluster began before: what is already there at its first place is no new event.
     """
     attack, decay, twin = (max(2, round(span * rate_hz)) for span in (ATTACK_S, DECAY_S, TWIN_S))
     quick, slow = mean_energy(white, attack), mean_energy(white, decay)
-    limits = np.array([ALIVE, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP])
+    limits = np.array([ALIVE, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP, SWING])
     lead = max(0, inside[0] - decay)
-    rough = [int(place) + lead for place in candidate_starts(quick[lead:], slow[lead:], attack, twin, limits)]
+    rough = [
+        int(place) + lead for place in candidate_starts(white[lead:], quick[lead:], slow[lead:], attack, twin, limits)
+    ]
     rough = [place for place in rough if place <= inside[1] + attack]
-    if not rough:
+    if continued:
+        rough = [place for place in rough if place > inside[0] + attack]
+    elif not rough:
         rough = [_slow_start(slow, inside)]
     starts: list[int] = []
-    for place in rough:
+    for place, following in zip(rough, [*rough[1:], white.size], strict=True):
         begin = max(starts[-1] + attack if starts else 0, place - twin)
-        start = _refined(white, begin, place, attack)
+        start = _refined(white, begin, place, min(place + twin, max(following - attack, place + 2 * attack)), attack)
         if not starts or start > starts[-1]:
             starts.append(start)
     return starts
@@ -128,11 +158,20 @@ def _slow_start(slow: FloatArray, inside: tuple[int, int]) -> int:
     return inside[0] + int(np.argmax(slow[inside[0] : max(inside[1], inside[0] + 1)]))
 
 
-def _refined(white: WaveArray, begin: int, place: int, attack: int) -> int:
-    crest_end = min(white.size, place + 2 * attack)
-    crest = place - attack + int(np.argmax(np.abs(white[max(place - attack, 0) : crest_end])))
-    stretch = white[begin : max(crest, place) + 2]
-    return begin + onset_by_information(stretch)
+def _refined(white: WaveArray, begin: int, place: int, stop: int, attack: int) -> int:
+    """The onset near a rough place: by information up to the first sample of half the height that follows."""
+    first = max(place - attack, begin)
+    height = np.abs(white[first:stop])
+    crest = first + int(np.argmax(height >= 0.5 * height.max()))
+    onset = begin + onset_by_information(white[begin : max(crest, place) + 2])
+    return onset if abs(white[crest]) < CLEAR else _after_quiet(white, onset, crest)
+
+
+def _after_quiet(white: WaveArray, onset: int, crest: int) -> int:
+    """The onset moved past the last quiet stretch before a clear crest: what lies before that was the noise."""
+    quiet = np.abs(white[onset:crest]) < QUIET
+    runs = np.flatnonzero(quiet[2:] & quiet[1:-1] & quiet[:-2])
+    return onset + int(runs[-1]) + 3 if len(runs) else onset
 
 
 def event_end(white: WaveArray, start: int, limit: int, rate_hz: float) -> int:

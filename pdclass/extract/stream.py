@@ -3,17 +3,19 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Annotated as Bounded
 from typing import Any
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
+from pydantic import Field
 
 from pdclass import digest
 from pdclass.errors import InputError
 from pdclass.extract import bank, whiten
-from pdclass.extract.echoes import Event, find_echoes
-from pdclass.extract.events import event_end, event_starts, mad_noise, threshold_sigmas
+from pdclass.extract.echoes import SHAPE_S, Event, find_echoes
+from pdclass.extract.events import ATTACK_S, event_end, event_starts, mad_noise, threshold_sigmas
 from pdclass.pulses import (
     ONSET_SHARE,
     Annotation,
@@ -35,9 +37,11 @@ SPECTRUM_PIECES = 256
 NOISE_PIECES = 48
 NOISE_PIECE_SAMPLES = 16384
 WIDEST_BOX_S = 2e-6
-JOIN_S = 0.3e-6
+#: A wide box flags up to half its width before and after its cause; what lies nearer is one cluster.
+JOIN_S = 1.3e-6
 MARGIN_S = 4e-6
 LONGEST_CLUSTER_S = 400e-6
+_SMALLEST_PIECE = 512
 BLOCK_SAMPLES = 1 << 16
 NOISE_REACH_S = 1e-3
 NOISE_STRIDE = 31
@@ -57,9 +61,9 @@ class ExtractSettings(Settings):
     cycle_s : the cycle meant by the false-event rate where the capture does not state its mains [s].
     """
 
-    false_events_per_cycle: float = 1.0
-    longest_echo_us: float = 60.0
-    cycle_s: float = 0.02
+    false_events_per_cycle: Bounded[float, Field(gt=0, le=1e5)] = 1.0
+    longest_echo_us: Bounded[float, Field(gt=0, le=1000)] = 60.0
+    cycle_s: Bounded[float, Field(gt=0, le=1)] = 0.02
 
 
 @dataclass(frozen=True)
@@ -69,11 +73,13 @@ class Background:
     Attributes
     ----------
     taps : whitening filter.
+    offset : level of the record [count].
     limits : (scales,) threshold of the box sums [count, whitened].
     noise : noise level of the whitened record [count].
     """
 
     taps: WaveArray
+    offset: float
     limits: WaveArray
     noise: float
 
@@ -139,31 +145,41 @@ def extract(
 
 
 def measure_background(capture: Capture, settings: ExtractSettings) -> Background:
-    """Fit the whitening filter and the thresholds to pieces spread over the whole record."""
-    bounds, rate_hz = capture.segment_bounds(), capture.chain.rate_hz
+    """Fit the whitening filter and the thresholds to pieces spread over the whole record.
+
+    Raises
+    ------
+    InputError
+        If the record or its segments are too short, hold NaN or infinite samples, or hold no noise.
+    """
+    bounds, rate_hz, counts = capture.segment_bounds(), capture.chain.rate_hz, capture.counts
     piece = whiten.PIECE_SAMPLES
-    while piece > 256 and not len(whiten.spread_starts(bounds, piece, 1)):
+    while piece > _SMALLEST_PIECE and not len(whiten.spread_starts(bounds, piece, 1)):
         piece //= 2
     starts = whiten.spread_starts(bounds, piece, SPECTRUM_PIECES)
-    if not len(starts) or capture.counts.size < 2 * window_samples(rate_hz):
+    needed = max(piece, 2 * window_samples(rate_hz))
+    if not len(starts) or max(last - first for first, last in bounds) < needed:
         raise InputError(
-            f"{capture.name}: {capture.counts.size} samples: expected at least two windows of 20 us; record longer"
+            f"{capture.name}: samples: expected a segment of at least {needed} (two windows of 20 us), found "
+            f"{counts.size} in {len(bounds)} segments; record longer without gaps"
         )
-    taps = whiten.whitening_filter(whiten.noise_spectrum(capture.counts, starts, piece), FILTER_ORDER)
-    scales = max(2, int(np.log2(WIDEST_BOX_S * rate_hz)) + 1)
-    span = NOISE_PIECE_SAMPLES if len(whiten.spread_starts(bounds, NOISE_PIECE_SAMPLES, 1)) else piece
+    offset = whiten.record_level(counts, starts, piece)
+    spectrum = whiten.noise_spectrum(counts, starts, piece)
+    if not np.isfinite(spectrum).all() or spectrum.max() <= 0:
+        raise InputError(f"{capture.name}: samples: expected finite values with noise, found neither; check the sensor")
+    taps = whiten.whitening_filter(spectrum, FILTER_ORDER)
+    scales = int(np.log2(WIDEST_BOX_S * rate_hz)) + 1
+    span = NOISE_PIECE_SAMPLES if len(whiten.spread_starts(bounds, NOISE_PIECE_SAMPLES, 1)) else needed
     pieces = [
-        bank.whitened(capture.counts, taps, (int(start), int(start) + span), int(start), int(start) + span)[
-            FILTER_ORDER:
-        ]
-        for start in whiten.spread_starts(bounds, span, NOISE_PIECES)
+        bank.whitened(counts, taps, offset, (start, start + span), start, start + span)[FILTER_ORDER:]
+        for start in whiten.spread_starts(bounds, span, NOISE_PIECES).tolist()
     ]
     noise = bank.box_noise(pieces, scales)
-    if noise[0] <= 0:
+    if not noise.min() > 0:
         raise InputError(f"{capture.name}: no noise in the record (most samples are equal); is the sensor connected?")
     cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
     sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
-    return Background(taps, (sigmas * noise).astype(np.float32), float(noise[0]))
+    return Background(taps, offset, (sigmas * noise).astype(np.float32), float(noise[0]))
 
 
 def detection_limit_counts(background: Background, rate_hz: float) -> float:
@@ -185,44 +201,48 @@ def _segment_events(
     capture: Capture, background: Background, bounds: tuple[int, int], block_samples: int
 ) -> list[Event]:
     rate_hz = capture.chain.rate_hz
-    runs = bank.flagged_runs(capture.counts, background.taps, background.limits, bounds, block_samples=block_samples)
+    runs = bank.flagged_runs(
+        capture.counts,
+        background.taps,
+        background.offset,
+        background.limits,
+        bounds,
+        block_samples=block_samples,
+    )
     events: list[Event] = []
-    for first, last in _bounded(bank.joined_runs(runs, round(JOIN_S * rate_hz)), round(LONGEST_CLUSTER_S * rate_hz)):
-        events += _cluster_events(capture, background, bounds, first, last)
-    return _in_order(events)
-
-
-def _bounded(runs: IntArray, longest: int) -> list[tuple[int, int]]:
-    """Runs cut into stretches of bounded length, counted from each run's own start."""
-    return [
-        (begin, min(begin + longest, int(last)))
-        for first, last in runs
-        for begin in range(int(first), int(last), longest)
-    ]
+    longest = round(LONGEST_CLUSTER_S * rate_hz)
+    for first, last in bank.joined_runs(runs, round(JOIN_S * rate_hz)).tolist():
+        # a long burst is looked at piece by piece, counted from its own start; a cut is no new beginning
+        for begin in range(first, last, longest):
+            inside = (begin, min(begin + longest, last))
+            events += _cluster_events(capture, background, bounds, inside, continued=begin > first)
+    return _in_order(events, max(2, round(ATTACK_S * rate_hz)))
 
 
 def _cluster_events(
-    capture: Capture, background: Background, bounds: tuple[int, int], first: int, last: int
+    capture: Capture, background: Background, bounds: tuple[int, int], inside: tuple[int, int], *, continued: bool
 ) -> list[Event]:
     rate_hz = capture.chain.rate_hz
     margin, window = round(MARGIN_S * rate_hz), window_samples(rate_hz)
-    begin, end = max(bounds[0], first - margin), min(bounds[1], last + window)
-    white = bank.whitened(capture.counts, background.taps, bounds, begin, end) / np.float32(background.noise)
-    white[: max(0, bounds[0] + FILTER_ORDER - begin)] = 0.0
-    starts = event_starts(white, rate_hz, (first - begin, last - begin))
+    begin, end = max(bounds[0], inside[0] - margin), min(bounds[1], inside[1] + window)
+    white = bank.whitened(capture.counts, background.taps, background.offset, bounds, begin, end)
+    white /= np.float32(background.noise)
+    starts = event_starts(white, rate_hz, (inside[0] - begin, inside[1] - begin), continued=continued)
     limits = [*starts[1:], white.size]
     ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=True)]
+    shape = round(SHAPE_S * rate_hz)
     return [
-        Event(start + begin, stop + begin, white[start:stop].copy()) for start, stop in zip(starts, ends, strict=True)
+        Event(start + begin, stop + begin, white[start : min(stop, start + shape)].copy())
+        for start, stop in zip(starts, ends, strict=True)
     ]
 
 
-def _in_order(events: list[Event]) -> list[Event]:
+def _in_order(events: list[Event], apart: int) -> list[Event]:
     """Events by onset; one that a neighbouring cluster found again is dropped, an end stops at the next onset."""
     kept: list[Event] = []
     for event in sorted(events, key=lambda event: event.onset):
         if kept and event.onset < kept[-1].end:
-            if event.onset - kept[-1].onset < 8:
+            if event.onset - kept[-1].onset < apart:
                 continue
             former = kept.pop()
             length = event.onset - former.onset
@@ -313,10 +333,7 @@ def _noise_beside(capture: Capture, places: IntArray) -> WaveArray:
 
 
 def _smoothed(counts: NDArray[Any], places: IntArray) -> FloatArray:
-    """Samples of a record, whole numbers spread evenly over the width of a count by their place.
-
-    Without that the median deviation of a record with little noise would jump from count to count.
-    """
+    """Samples of a record, whole numbers spread evenly over the width of a count by their place."""
     samples = np.asarray(counts[places], np.float64)
     if np.issubdtype(counts.dtype, np.integer):
         samples += np.mod(places * _GOLDEN, 1.0) - 0.5
@@ -335,10 +352,10 @@ def _signed_peaks(waves: WaveArray, lengths: IntArray) -> WaveArray:
 
 
 def _clipped(capture: Capture, places: IntArray) -> list[bool]:
-    """Whether a pulse holds samples at the end of the digitiser's range."""
-    bits = capture.chain.adc_bits
-    if bits is None or not np.issubdtype(capture.counts.dtype, np.integer):
+    """Whether a pulse holds samples at the end of the digitiser's range (of the type's where that is unknown)."""
+    if not np.issubdtype(capture.counts.dtype, np.integer):
         return [False] * len(places)
+    bits = capture.chain.adc_bits or np.iinfo(capture.counts.dtype).bits
     top, bottom = (1 << (bits - 1)) - 1, -(1 << (bits - 1))
     own = [np.asarray(capture.counts[onset:end], np.int64) for onset, end in places]
     return [bool(np.any((piece >= top) | (piece <= bottom))) for piece in own]
@@ -353,23 +370,37 @@ def _window_mates(onsets: IntArray, samples: int) -> IntArray:
 
 
 def _labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tuple[dict[str, list[Any]], list[str]]:
-    """Annotations carried to the pulse nearest within 0.5 us; two that disagree give none, and a note."""
+    """Annotations carried to the pulse nearest within 0.5 us, the nearest one first.
+
+    Two that disagree give none; what finds no pulse is counted. Both are said in a note.
+    """
     reach = LABEL_REACH_S * capture.chain.rate_hz
-    said: dict[int, Annotation | None] = {}
-    notes: list[str] = []
+    given = [note for note in capture.annotations if note.label is not None]
     rows = np.array([row for row in range(len(onsets)) if row not in echoes], np.int64)
-    for note in capture.annotations:
-        if note.label is None or not len(rows):
-            continue
-        row = int(rows[np.argmin(np.abs(onsets[rows] - note.onset_sample))])
-        if abs(int(onsets[row]) - note.onset_sample) > reach:
-            continue
-        former = said.get(row, note)
-        if former is None or former.label != note.label:
-            notes.append(f"{capture.name}: sample {onsets[row]}: two labels for one pulse; it is left unlabelled")
-            said[row] = None
-        else:
-            said[row] = note
+    if not len(rows):
+        notes = [_lost(capture, given, len(given))] if given else []
+        return _label_columns([None] * len(onsets)), notes
+    apart = [np.abs(onsets[rows] - note.onset_sample) for note in given]
+    nearest = [int(rows[np.argmin(distance)]) for distance in apart]
+    order = sorted(range(len(given)), key=lambda k: int(apart[k].min()))
+    said: dict[int, Annotation | None] = {}
+    notes = []
+    for k in (k for k in order if apart[k].min() <= reach):
+        former = said.setdefault(nearest[k], given[k])
+        if former is not None and former.label != given[k].label:
+            where = f"{capture.name}: sample {onsets[nearest[k]]}"
+            notes.append(f"{where}: two labels for one pulse; it is left unlabelled")
+            said[nearest[k]] = None
+    lost = [given[k] for k in range(len(given)) if apart[k].min() > reach]
+    notes += [_lost(capture, lost, len(given))] if lost else []
+    return _label_columns([said.get(row) for row in range(len(onsets))]), notes
+
+
+def _lost(capture: Capture, lost: list[Annotation], given: int) -> str:
+    first = min(note.onset_sample for note in lost)
+    return f"{capture.name}: {len(lost)} of {given} labels found no pulse within 0.5 us, the first at sample {first}"
+
+
+def _label_columns(chosen: list[Annotation | None]) -> dict[str, list[Any]]:
     names = ("label", "basis", "labelled_by", "family", "distance_m", "charge_pc")
-    chosen = [said.get(row) for row in range(len(onsets))]
-    return {name: [getattr(note, name) if note else None for note in chosen] for name in names}, notes
+    return {name: [getattr(note, name) if note else None for note in chosen] for name in names}

@@ -44,11 +44,18 @@ def noise_spectrum(counts: NDArray[Any], starts: IntArray, piece: int = PIECE_SA
     (piece // 2 + 1,) power a bin [count²]; a pulse in a few of the pieces does not move it.
     """
     taper = np.hanning(piece)
-    powers = np.empty((len(starts), piece // 2 + 1), np.float32)
+    powers = np.empty((len(starts), piece // 2 + 1))
     for row, start in enumerate(starts):
         wave = np.asarray(counts[start : start + piece], np.float64)
         powers[row] = np.abs(scipy.fft.rfft((wave - wave.mean()) * taper)) ** 2
-    return np.asarray(np.median(powers, axis=0), np.float64)
+    # whole numbers carry the noise of rounding, a twelfth of a count squared, even where they stand still
+    rounding = np.sum(taper**2) / 12 if np.issubdtype(counts.dtype, np.integer) else 0.0
+    return np.asarray(np.median(powers, axis=0) + rounding, np.float64)
+
+
+def record_level(counts: NDArray[Any], starts: IntArray, piece: int = PIECE_SAMPLES) -> float:
+    """The level that a record stands at without signal: the median over pieces of their medians [count]."""
+    return float(np.median([np.median(counts[start : start + piece]) for start in starts]))
 
 
 def whitening_filter(spectrum: FloatArray, order: int) -> WaveArray:

@@ -59,16 +59,24 @@ def edge_places(wave: FloatArray, peak: int) -> dict[str, float]:
 
 
 def measure_edges(window: Window) -> dict[str, float]:
-    """The features of this family, by name."""
-    wave = window.wave[: window.last]
-    at = edge_places(wave, window.peak)
-    raw = edge_places(window.raw[: window.last], window.peak) if window.raw[window.peak] > 0 else {}
-    rise = (at["rise_90"] - at["rise_10"]) * STEP_NS
+    """The features of this family, by name.
+
+    Crossings are looked for among the pulse's own samples, on a running mean over a sixth of the pulse's width (a
+    twenty-fourth for the rise): a slow edge in noise crosses a level many times, and the mean, not the first of
+    them, is meant.
+    """
+    wave, peak = window.edge, window.peak - (ONSET - 2 * GUARD)
+    width = float(np.sum(wave[np.abs(wave) > max(0.1, 3 * window.noise)] ** 2)) if window.noise > 0 else 0.0
+    wide, fine = smoothed(wave, width / 6), smoothed(wave, width / 24)
+    at, rising = edge_places(wide, _near(wide, peak)), edge_places(fine, _near(fine, peak))
+    raw = smoothed(window.raw[ONSET - 2 * GUARD : window.end], width / 24)
+    raw_rising = edge_places(raw, _near(raw, peak)) if raw[peak] > 0 else {"rise_10": np.nan, "rise_90": np.nan}
+    rise = (rising["rise_90"] - rising["rise_10"]) * STEP_NS
     fall = (at["fall_10"] - at["fall_90"]) * STEP_NS
     widths = {percent: (at[f"fall_{percent}"] - at[f"rise_{percent}"]) * STEP_NS for percent in (10, 25, 50)}
     return {
         "rise_ns": rise,
-        "rise_raw_ns": (raw["rise_90"] - raw["rise_10"]) * STEP_NS if raw else np.nan,
+        "rise_raw_ns": (raw_rising["rise_90"] - raw_rising["rise_10"]) * STEP_NS,
         "fall_ns": fall,
         "width_50_ns": widths[50],
         "width_25_ns": widths[25],
@@ -79,13 +87,31 @@ def measure_edges(window: Window) -> dict[str, float]:
     }
 
 
+def smoothed(wave: FloatArray, samples: float) -> FloatArray:
+    """Running mean over an odd number of samples, the nearest to the one asked for; ends are held."""
+    reach = int(samples) // 2
+    if reach < 1:
+        return wave
+    padded = np.concatenate([np.full(reach, wave[0]), wave, np.full(reach, wave[-1])])
+    total = np.concatenate([[0.0], np.cumsum(padded)])
+    return np.asarray((total[2 * reach + 1 :] - total[: -2 * reach - 1]) / (2 * reach + 1))
+
+
+def _near(wave: FloatArray, peak: int) -> int:
+    """The largest sample within the reach that smoothing moves a peak."""
+    first = max(peak - 2 * GUARD, 0)
+    return first + int(np.argmax(wave[first : peak + 2 * GUARD + 1]))
+
+
 def _tail_ns(window: Window) -> float:
-    """From the peak until nine tenths of the energy of the own samples have passed."""
-    energy = np.cumsum(window.wave[ONSET - GUARD : window.end] ** 2)
-    return float(np.searchsorted(energy, 0.9 * energy[-1]) + ONSET - GUARD - window.peak) * STEP_NS
+    """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out."""
+    noise = window.noise if window.noise > 0 else 0.0
+    energy = np.cumsum(window.wave[ONSET - GUARD : window.end] ** 2 - noise**2)
+    passed = int(np.argmax(energy >= 0.9 * energy[-1]))
+    return float(max(passed + ONSET - GUARD - window.peak, 0)) * STEP_NS
 
 
-def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 6.0) -> Feature:
+def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 9.0) -> Feature:
     return Feature(name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db)
 
 
@@ -107,10 +133,10 @@ EDGES = (
         "",
         "width at a tenth over width at half height",
         "foot over half width {value}",
-        "longer-footed",
-        "shorter-footed",
+        "broader at the foot",
+        "narrower at the foot",
         (1.0, 1e4),
-        0.3,
+        0.1,
         _LEVELS,
         needs_snr_db=18.0,
     ),
@@ -122,7 +148,7 @@ EDGES = (
         "more lopsided",
         "more even",
         (0.0, 1e4),
-        0.3,
+        0.15,
         _LEVELS,
         needs_snr_db=12.0,
     ),
@@ -133,8 +159,8 @@ EDGES = (
         "tail {value}",
         "longer",
         "shorter",
-        (-_LONGEST_NS, _LONGEST_NS),
-        30.0,
+        (0.0, _LONGEST_NS),
+        30,
         "own definition",
         needs_snr_db=6.0,
     ),

@@ -6,6 +6,8 @@ from dataclasses import asdict, dataclass
 
 from pdclass.digest import json_digest
 
+_WORDS = frozenset({"meaning", "sentence", "more", "less", "reference"})
+
 
 @dataclass(frozen=True)
 class Feature:
@@ -39,8 +41,11 @@ class Feature:
 
     @property
     def digest(self) -> str:
-        """Sha256 of the declaration: a bundle names it, so that no feature changes under its name."""
-        declared = asdict(self)
+        """Sha256 of what defines the number: a bundle names it, so that no feature changes under its name.
+
+        Words may be mended without a new name; whoever changes how the number comes about gives it one.
+        """
+        declared = {name: value for name, value in asdict(self).items() if name not in _WORDS}
         declared["valid_range"] = [_number(bound) for bound in self.valid_range]
         return json_digest(declared)
 

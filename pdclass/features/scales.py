@@ -36,7 +36,7 @@ SCALES = (
         "more even",
         "more concentrated",
         (0.0, 1.0),
-        0.06,
+        0.07,
         _REFERENCE,
         needs_snr_db=6.0,
     ),

@@ -11,6 +11,8 @@ from pdclass.pulses import FloatArray
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
 #: Bins below this share of the largest say nothing about a slope.
 _SLOPE_FLOOR = 1e-4
+#: A bin stands clear of the noise with so many times its power.
+_CLEAR = 10.0
 
 
 def centroid_and_spread_hz(frequency_hz: FloatArray, power: FloatArray) -> tuple[float, float]:
@@ -22,23 +24,19 @@ def centroid_and_spread_hz(frequency_hz: FloatArray, power: FloatArray) -> tuple
     if total <= 0:
         return float("nan"), float("nan")
     centre = float(np.sum(frequency_hz * power) / total)
-    return centre, float(np.sqrt(np.sum((frequency_hz - centre) ** 2 * power) / total))
+    spread = float(np.sum((frequency_hz - centre) ** 2 * power) / total)
+    return centre, float(np.sqrt(spread)) if spread > 0 else float("nan")
 
 
 def rolloff_hz(frequency_hz: FloatArray, power: FloatArray, share: float) -> float:
-    """Frequency below which a share of the power lies [Hz], interpolated; NaN without power."""
+    """The first frequency below which a share of the power lies [Hz], interpolated; NaN without power."""
     total = np.cumsum(power)
     if total[-1] <= 0:
         return float("nan")
-    return float(np.interp(share * total[-1], total, frequency_hz))
-
-
-def flatness(power: FloatArray) -> float:
-    """Geometric over arithmetic mean of the power, 0 (a line) to 1 (white); NaN without power."""
-    mean = power.mean()
-    if mean <= 0:
-        return float("nan")
-    return float(np.exp(np.mean(np.log(np.maximum(power, 1e-6 * power.max())))) / mean)
+    k = int(np.argmax(total >= share * total[-1]))
+    below = float(total[k - 1]) if k else 0.0
+    part = (share * total[-1] - below) / (total[k] - below) if total[k] > below else 0.0
+    return float(frequency_hz[k] - (1 - part) * (frequency_hz[1] - frequency_hz[0]))
 
 
 def slope_db(frequency_hz: FloatArray, power: FloatArray, *, root: bool, top_hz: float) -> float:
@@ -47,6 +45,8 @@ def slope_db(frequency_hz: FloatArray, power: FloatArray, *, root: bool, top_hz:
     Skin-effect loss grows as sqrt(f), the loss of dielectric and semiconducting screens rather as f: each
     kilometre of cable tilts the spectrum of what passes.
     """
+    if not power.size:
+        return float("nan")
     used = (frequency_hz >= 1e6) & (frequency_hz <= top_hz) & (power > _SLOPE_FLOOR * power.max())
     if np.count_nonzero(used) < 16:
         return float("nan")
@@ -58,23 +58,28 @@ def slope_db(frequency_hz: FloatArray, power: FloatArray, *, root: bool, top_hz:
 
 
 def measure_spectrum(window: Window) -> dict[str, float]:
-    """The features of this family, by name."""
-    frequency_hz, power = window.power()
-    total = power.sum()
-    centre, spread = centroid_and_spread_hz(frequency_hz, power)
+    """The features of this family, by name.
+
+    Sums run over power less noise with its sign, so that what is left of the noise cancels; slopes
+    use the bins that stand clear of it.
+    """
+    frequency_hz, power, noise = window.power()
+    signal, clear = power - noise, power > _CLEAR * noise
+    centre, spread = centroid_and_spread_hz(frequency_hz, signal)
     top_hz = min(15e6, 0.9 * window.reach_hz)
     found = {
         "centroid_mhz": centre / 1e6,
         "spectral_spread_mhz": spread / 1e6,
-        "rolloff_85_mhz": rolloff_hz(frequency_hz, power, 0.85) / 1e6,
-        "rolloff_95_mhz": rolloff_hz(frequency_hz, power, 0.95) / 1e6,
-        "flatness": flatness(power),
-        "slope_root_db": slope_db(frequency_hz, power, root=True, top_hz=top_hz),
-        "slope_linear_db": slope_db(frequency_hz, power, root=False, top_hz=top_hz),
+        "rolloff_85_mhz": rolloff_hz(frequency_hz, signal, 0.85) / 1e6,
+        "rolloff_95_mhz": rolloff_hz(frequency_hz, signal, 0.95) / 1e6,
+        "slope_root_db": slope_db(frequency_hz[clear], signal[clear], root=True, top_hz=top_hz),
+        "slope_linear_db": slope_db(frequency_hz[clear], signal[clear], root=False, top_hz=top_hz),
     }
+    total = signal.sum()
     for low, high in BANDS_MHZ:
         inside = (frequency_hz >= low * 1e6) & (frequency_hz < high * 1e6)
-        found[_band_name(low, high)] = float(power[inside].sum() / total) if total > 0 else np.nan
+        share = float(signal[inside].sum() / total) if total > 0 else np.nan
+        found[_band_name(low, high)] = min(max(share, 0.0), 1.0)
     return found
 
 
@@ -98,49 +103,40 @@ def _frequency(name: str, meaning: str, sentence: str, tolerance: float) -> Feat
 
 
 SPECTRUM = (
-    _frequency("centroid_mhz", "power-weighted mean frequency", "centre of the spectrum {value}", 0.5),
+    _frequency("centroid_mhz", "power-weighted mean frequency", "centre of the spectrum {value}", 0.1),
     _frequency(
-        "spectral_spread_mhz", "standard deviation of the spectrum about its centre", "spectrum wide {value}", 0.5
+        "spectral_spread_mhz",
+        "standard deviation of the spectrum about its centre",
+        "width of the spectrum {value}",
+        0.1,
     ),
-    _frequency("rolloff_85_mhz", "85 % of the power lies below", "85 % of the power below {value}", 1.0),
-    _frequency("rolloff_95_mhz", "95 % of the power lies below", "95 % of the power below {value}", 1.5),
-    Feature(
-        "flatness",
-        "",
-        "geometric over arithmetic mean of the power",
-        "flatness of the spectrum {value}",
-        "flatter",
-        "more peaked",
-        (0.0, 1.0),
-        0.05,
-        "own definition",
-        needs_snr_db=12.0,
-    ),
+    _frequency("rolloff_85_mhz", "85 % of the power lies below", "85 % of the power below {value}", 0.1),
+    _frequency("rolloff_95_mhz", "95 % of the power lies below", "95 % of the power below {value}", 0.2),
     Feature(
         "slope_root_db",
         "dB/√MHz",
         "tilt of the level against the root of the frequency, the mark of skin effect",
         "tilt of the spectrum {value}",
-        "less steep",
-        "steeper",
+        "rises more",
+        "falls more steeply",
         (-500.0, 500.0),
-        3.0,
+        0.5,
         "own definition",
         needs_hz=6e6,
-        needs_snr_db=12.0,
+        needs_snr_db=24.0,
     ),
     Feature(
         "slope_linear_db",
         "dB/MHz",
         "tilt of the level against the frequency, the mark of screens and dielectric",
         "straight tilt of the spectrum {value}",
-        "less steep",
-        "steeper",
+        "rises more",
+        "falls more steeply",
         (-200.0, 200.0),
-        1.0,
+        0.2,
         "own definition",
         needs_hz=6e6,
-        needs_snr_db=12.0,
+        needs_snr_db=24.0,
     ),
     *(
         Feature(
@@ -151,7 +147,7 @@ SPECTRUM = (
             "larger",
             "smaller",
             (0.0, 1.0),
-            0.05,
+            0.005,
             "own definition",
             needs_hz=0.8 * high * 1e6,
             needs_snr_db=6.0,

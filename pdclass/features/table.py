@@ -51,12 +51,11 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     window = _window(pulses, place)
     if window is None:
         return {}
-    wave_v = pulses.waves[place]
-    scale = float(pulses.table["peak_v"].iloc[place])
+    scale = window.height_v
     at = edge_places(window.wave[: window.last], window.peak)
     times = {name: (where - ONSET) * STEP_NS / 1e3 for name, where in at.items() if name != "height"}
     time_us = (np.arange(window.wave.size) - ONSET) * STEP_NS / 1e3
-    kept = slice(0, window.last) if np.isfinite(wave_v).any() else slice(0, 0)
+    kept = slice(0, window.last)
     shown = {"time_us": time_us[kept], "wave_v": window.wave[kept] * scale, "height_v": at["height"] * scale}
     return {**shown, **times, "end": (window.end - ONSET) * STEP_NS / 1e3}
 
@@ -80,6 +79,6 @@ def _measured(window: Window, families: Sequence[str]) -> dict[str, float]:
             value = values[feature.name]
             low, high = feature.valid_range
             carried = window.reach_hz >= feature.needs_hz
-            clear = not window.snr_db < feature.needs_snr_db
+            clear = feature.needs_snr_db == 0 or window.snr_db >= feature.needs_snr_db
             found[feature.name] = value if carried and clear and low <= value <= high else np.nan
     return found

@@ -22,6 +22,10 @@ _TONE_FFT = 4096
 _TONE_POWER = 20.0
 #: An excursion of so many noise levels before the onset is another event.
 _BUSY_LEVELS = 9.0
+_BUSY_MARGIN = 30
+#: The noise is not known from fewer samples than these; carriers are fitted to no fewer either.
+_SHORTEST_QUIET = 100
+_SHORTEST_FOR_CARRIERS = 200
 _SPECTRUM_FFT = 2048
 _SPECTRUM_SMOOTHING = 33
 
@@ -37,7 +41,8 @@ class Window:
     end : one past the last of the pulse's own samples, which begin at `ONSET`.
     last : one past the last recorded sample.
     peak : place of the largest excursion among the own samples.
-    noise : noise level beside the pulse, in units of the peak; NaN where another event is in the pre-trigger.
+    height_v : the peak that was made 1, with its sign [V].
+    noise : noise level beside the pulse, in units of the peak; NaN where the pre-trigger has no quiet stretch.
     noise_power : (bins,) noise spectrum scaled to the own samples; NaN likewise.
     reach_hz : highest frequency that the chain carries [Hz].
     snr_db : peak over noise [dB].
@@ -48,6 +53,7 @@ class Window:
     end: int
     last: int
     peak: int
+    height_v: float
     noise: float
     noise_power: FloatArray
     reach_hz: float
@@ -65,13 +71,21 @@ class Window:
         piece[piece.size - fade :] *= 0.5 + 0.5 * np.cos(np.pi * (np.arange(fade) + 0.5) / max(fade, 1))
         return piece
 
-    def power(self) -> tuple[FloatArray, FloatArray]:
-        """Frequencies [Hz] and power of the own samples within the analysis band, the noise subtracted."""
+    @property
+    def edge(self) -> FloatArray:
+        """The own samples with twice the lead: where an edge may be looked for, and nowhere else."""
+        return self.wave[ONSET - 2 * GUARD : self.end]
+
+    def power(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Frequencies [Hz], power of the own samples and of the noise, within the analysis band.
+
+        The noise is that beside the pulse, scaled to the own samples; zeros where it is unknown.
+        """
         spectrum = np.abs(scipy.fft.rfft(self.own, _SPECTRUM_FFT)) ** 2
         noise = np.where(np.isfinite(self.noise_power), self.noise_power, 0.0)
         frequency_hz = scipy.fft.rfftfreq(_SPECTRUM_FFT, 1 / ANALYSIS_RATE_HZ)
         inside = (frequency_hz >= ANALYSIS_BAND_HZ[0]) & (frequency_hz <= ANALYSIS_BAND_HZ[1])
-        return frequency_hz[inside], np.maximum(spectrum - noise, 0.0)[inside]
+        return frequency_hz[inside], spectrum[inside], noise[inside]
 
 
 def chain_reach_hz(chain: Chain) -> float:
@@ -94,23 +108,24 @@ def prepared(wave_v: WaveArray, chain: Chain, duration_us: float) -> Window | No
         return None
     first, last = (round(edge / wave_v.size * SAMPLES) for edge in (known[0], known[-1] + 1))
     raw = to_analysis_band(np.asarray(wave_v, np.float64))
-    before = slice(min(first + GUARD, ONSET), ONSET - GUARD)
-    busy = is_busy(raw[before])
-    clean = raw if busy else raw - carriers(raw[before], before.start)
-    level = np.median(clean[before]) if before.stop > before.start else 0.0
+    carried, quiet = _background(raw, first)
+    clean = raw - carried
+    beside = clean[quiet] if quiet.stop > quiet.start else clean[first:ONSET]
+    level = float(np.median(beside)) if beside.size else 0.0
     clean, raw = clean - level, raw - level
     length = duration_us * ANALYSIS_RATE_HZ / 1e6 if duration_us > 0 else SAMPLES
     end = int(min(max(ONSET + round(length), ONSET + 8), last, SAMPLES))
-    if end <= ONSET + 4:
+    if end <= ONSET + 4 or first > ONSET:
         return None
     peak = ONSET - GUARD // 2 + int(np.argmax(np.abs(clean[ONSET - GUARD // 2 : end])))
-    height = clean[peak]
+    height = float(clean[peak])
     if height == 0:
         return None
-    clean, raw = clean / height, raw / height
-    noise = np.nan if busy else float(np.median(np.abs(clean[before])) / 0.6744898)
-    noise_power = _noise_power(clean[before], end - ONSET + GUARD, busy=busy)
-    return Window(clean, raw, end, last, peak, noise, noise_power, chain_reach_hz(chain))
+    clean, raw, before = clean / height, raw / height, clean[quiet] / height
+    known_noise = quiet.stop - quiet.start >= _SHORTEST_QUIET
+    noise = float(np.median(np.abs(before)) / 0.6744898) if known_noise else np.nan
+    noise_power = _noise_power(before, end - ONSET + GUARD, known=known_noise)
+    return Window(clean, raw, end, last, peak, height, noise, noise_power, chain_reach_hz(chain))
 
 
 def to_analysis_band(wave_v: FloatArray) -> FloatArray:
@@ -134,12 +149,35 @@ def to_analysis_band(wave_v: FloatArray) -> FloatArray:
     return np.asarray(wave + np.linspace(begin, finish, SAMPLES, endpoint=False), np.float64)
 
 
-def is_busy(before: FloatArray) -> bool:
-    """Whether the pre-trigger holds another event, or too little to know the noise from."""
-    if before.size < 100:
-        return True
+def _background(raw: FloatArray, first: int) -> tuple[FloatArray, slice]:
+    """The carriers through the window, and the quiet stretch before the onset that tells of the noise.
+
+    Carriers are fitted to the whole pre-trigger; where another event then stands out of what is left, to its
+    longest stretch without one. The stretch is empty where that is too short to know anything from.
+    """
+    before = slice(min(first + GUARD, ONSET - GUARD), ONSET - GUARD)
+    carried = carriers(raw[before], before.start)
+    quiet = _longest_quiet((raw - carried)[before])
+    stretch = slice(before.start + quiet.start, before.start + quiet.stop)
+    if stretch == before:
+        return carried, before
+    if stretch.stop - stretch.start < _SHORTEST_QUIET:
+        return np.zeros(SAMPLES), slice(ONSET, ONSET)
+    return carriers(raw[stretch], stretch.start), stretch
+
+
+def _longest_quiet(before: FloatArray) -> slice:
+    """The longest stretch of a pre-trigger without an event; a margin beside each excursion is left out, too."""
+    if before.size < _SHORTEST_QUIET:
+        return slice(0, 0)
     deviation = np.abs(before - np.median(before))
-    return bool(deviation.max() > _BUSY_LEVELS * np.median(deviation) / 0.6744898)
+    loud = np.flatnonzero(deviation > _BUSY_LEVELS * np.median(deviation) / 0.6744898)
+    if not loud.size:
+        return slice(0, before.size)
+    edges = np.concatenate([[-_BUSY_MARGIN], loud, [before.size + _BUSY_MARGIN]])
+    gap = int(np.argmax(np.diff(edges)))
+    start, stop = int(edges[gap]) + _BUSY_MARGIN, int(edges[gap + 1]) - _BUSY_MARGIN
+    return slice(start, max(stop, start))
 
 
 def carriers(before: FloatArray, start: int) -> FloatArray:
@@ -152,6 +190,8 @@ def carriers(before: FloatArray, start: int) -> FloatArray:
     before : (n,) pre-trigger.
     start : place of its first sample in the window.
     """
+    if before.size < _SHORTEST_FOR_CARRIERS:
+        return np.zeros(SAMPLES)
     place = np.arange(start, start + before.size, dtype=np.int64) - ONSET
     everywhere = np.arange(SAMPLES, dtype=np.int64) - ONSET
     tones: list[float] = []
@@ -186,8 +226,8 @@ def _strongest_line(rest: FloatArray) -> float | None:
     return float((k + (0.5 * (left - right) / bend if bend else 0.0)) / _TONE_FFT)
 
 
-def _noise_power(before: FloatArray, own_samples: int, *, busy: bool) -> FloatArray:
-    if busy:
+def _noise_power(before: FloatArray, own_samples: int, *, known: bool) -> FloatArray:
+    if not known:
         return np.full(_SPECTRUM_FFT // 2 + 1, np.nan)
     power = np.abs(scipy.fft.rfft(before - before.mean(), _SPECTRUM_FFT)) ** 2 * own_samples / before.size
     pad = _SPECTRUM_SMOOTHING // 2

@@ -144,7 +144,7 @@ def _classes(table: pd.DataFrame) -> tuple[str, ...]:
 def _examples(rows: FloatArray, table: pd.DataFrame, classes: Sequence[str], settings: TrainSettings) -> Examples:
     if not len(rows):
         raise TooFewError(
-            "labels: expected labelled pulses, found none; label some first (annotations in the captures, or the label column)"
+            "labels: expected labelled pulses, found none; label some first (capture annotations, or column label)"
         )
     label_index = np.array([classes.index(label) for label in table["label"]], np.int64)
     groups = group_names(table, settings.group_by)

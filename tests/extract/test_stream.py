@@ -169,5 +169,5 @@ def test_unknown_count_size_is_refused_with_the_option_that_supplies_it(planted)
 
 def test_a_record_shorter_than_two_windows_is_refused():
     """Too little to know the noise from is said, with the number of samples."""
-    with pytest.raises(InputError, match="3000 samples"):
+    with pytest.raises(InputError, match="found 3000"):
         extract(as_capture(np.random.default_rng(0).normal(0, 10, 3000)))

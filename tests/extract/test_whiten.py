@@ -24,7 +24,7 @@ def test_carriers_are_gone_after_whitening():
     signal = background(np.random.default_rng(2), 400_000)
     taps = whitening_filter(noise_spectrum(signal, spread_starts([(0, signal.size)], 4096, 80)), 64)
     assert signal.std() > 2.2 * 20
-    assert whitened(signal, taps, (0, signal.size), 1000, 100_000).std() < 1.1 * 20
+    assert whitened(signal, taps, 0.0, (0, signal.size), 1000, 100_000).std() < 1.1 * 20
 
 
 def test_nothing_moves_before_its_onset():
@@ -32,7 +32,7 @@ def test_nothing_moves_before_its_onset():
     taps = np.array([1, -0.5, 0.25], np.float32)
     step = np.zeros(100, np.float32)
     step[50:] = 1
-    out = whitened(step, taps, (0, 100), 0, 100)
+    out = whitened(step, taps, 0.0, (0, 100), 0, 100)
     assert not out[:50].any()
     assert out[50:54] == pytest.approx([1, 0.5, 0.75, 0.75])
 

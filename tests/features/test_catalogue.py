@@ -19,6 +19,7 @@ SHAPES = {
     "fast": lambda rate: double_exponential(10e-9, 50e-9, rate, 12e-6),
     "slow": lambda rate: double_exponential(100e-9, 600e-9, rate, 12e-6),
     "ringing": lambda rate: damped_sine(7e6, 0.4e-6, rate, 12e-6),
+    "long": lambda rate: damped_sine(3e6, 1.5e-6, rate, 12e-6),
     "two": lambda rate: (
         double_exponential(20e-9, 90e-9, rate, 12e-6)
         - 0.4 * np.roll(double_exponential(60e-9, 250e-9, rate, 12e-6), round(6e-6 * rate))
@@ -45,8 +46,8 @@ def found():
     """Pulses of every shape, extracted from noise with carriers."""
     rng = np.random.default_rng(3)
     signal = background(rng, 400_000)
-    for number, onset in enumerate(range(10_000, 390_000, 12_000)):
-        wave = list(SHAPES.values())[number % 4](100e6)
+    for number, onset in enumerate(range(10_000, 390_000, 9_500)):
+        wave = list(SHAPES.values())[number % len(SHAPES)](100e6)
         signal[onset : onset + wave.size] += rng.uniform(100, 4000) * wave
     return extract(as_capture(signal)).pulses
 
@@ -65,10 +66,11 @@ def test_names_and_words_are_complete_and_unlike():
         assert feature.reference
 
 
-def test_a_changed_declaration_changes_the_digest():
-    """A bundle that names a digest notices when the feature under the name is another."""
+def test_a_changed_definition_changes_the_digest_and_changed_words_do_not():
+    """A bundle that names a digest notices when the feature under the name is another; words may be mended."""
     feature = BY_NAME["rise_ns"]
-    assert dataclasses.replace(feature, meaning="something else").digest != feature.digest
+    assert dataclasses.replace(feature, valid_range=(0.0, 1.0)).digest != feature.digest
+    assert dataclasses.replace(feature, sentence="edge {value}").digest == feature.digest
     assert feature_digests()["rise_ns"] == feature.digest
 
 
@@ -111,21 +113,25 @@ def test_alone_and_in_a_batch_the_same_bits(found):
 
 
 @pytest.mark.parametrize("shape", SHAPES)
+@pytest.mark.parametrize("corner_hz", [12e6, 24e6])
 @pytest.mark.parametrize("rate_hz", [62.5e6, 125e6, 200e6, 250e6])
-def test_other_rates_agree_within_the_stated_tolerance(shape, rate_hz):
-    """The same pulse, sampled at another rate behind one chain of 15 MHz, keeps each feature within its tolerance."""
-    reference = single(band_limited(shape, 100e6), noise_v=2e-4, band_hz=(0.1e6, 15e6))
-    other = single(band_limited(shape, rate_hz), rate_hz=rate_hz, noise_v=2e-4, band_hz=(0.1e6, 15e6))
+def test_other_rates_agree_within_the_stated_tolerance(shape, corner_hz, rate_hz):
+    """The same pulse behind the same chain keeps each feature within its tolerance at another rate (60 dB)."""
+    chain = {"noise_v": 1e-3, "band_hz": (0.1e6, corner_hz)}
+    reference = single(band_limited(shape, 100e6, corner_hz), **chain)
+    other = single(band_limited(shape, rate_hz, corner_hz), rate_hz=rate_hz, seed=3, **chain)
     for feature, one, two in zip(CATALOGUE, values_of(reference), values_of(other), strict=True):
-        allowed = feature.tolerance + 0.02 * abs(one)
-        assert np.isnan(one) == np.isnan(two), feature.name
-        assert np.isnan(one) or abs(one - two) <= allowed, (feature.name, one, two)
+        if np.isnan(one) != np.isnan(two):
+            # a level at the edge of the noise may be measurable at one rate only
+            assert feature.name.startswith("late_"), feature.name
+            assert np.nanmin([one, two]) < -40, (feature.name, one, two)
+        assert not abs(one - two) > feature.tolerance, (feature.name, one, two)
 
 
-def band_limited(shape, rate_hz):
-    """The shape sampled at 1 GS/s, low-passed at 15 MHz (fourth order, causal) and thinned to the rate."""
-    fine = sosfilt(butter(4, 15e6, fs=1e9, output="sos"), SHAPES[shape](1e9))
-    place = np.arange(round(12e-6 * rate_hz)) * (1e9 / rate_hz)
+def band_limited(shape, rate_hz, corner_hz):
+    """The shape sampled at 2 GS/s, low-passed (second order, causal) and thinned to the rate."""
+    fine = sosfilt(butter(2, corner_hz, fs=2e9, output="sos"), SHAPES[shape](2e9))
+    place = np.arange(round(12e-6 * rate_hz)) * (2e9 / rate_hz)
     return np.interp(place, np.arange(fine.size), fine)
 
 
@@ -160,13 +166,48 @@ def test_what_the_noise_hides_is_unmeasurable():
 
 
 def test_a_window_that_crosses_a_gap_is_used_as_far_as_it_goes():
-    """Without the samples before the onset nothing that needs the noise is known, and nothing fails."""
+    """Two microseconds before the onset are enough to know the noise from; with none nothing is measurable."""
     cut = single(SHAPES["fast"](100e6))
-    waves = cut.waves.copy()
-    waves[:, :480] = np.nan
-    values = dict(zip(NAMES, values_of(PulseSet(waves, cut.chains, cut.table)), strict=True))
-    assert np.isnan(values["echo_ratio"])
-    assert values["rise_ns"] == pytest.approx(values_of(cut)[NAMES.index("rise_ns")], rel=0.1)
+    for lost, measurable in ((300, True), (495, False)):
+        waves = cut.waves.copy()
+        waves[:, :lost] = np.nan
+        values = dict(zip(NAMES, values_of(PulseSet(waves, cut.chains, cut.table)), strict=True))
+        assert np.isfinite(values["rise_ns"]) == measurable
+        if measurable:
+            assert values["rise_ns"] == pytest.approx(values_of(cut)[NAMES.index("rise_ns")], rel=0.1)
+
+
+def test_a_neighbour_before_or_after_changes_little():
+    """Another pulse 3 us before the onset, or right after the end, hardly moves a feature."""
+    alone = single(SHAPES["fast"](100e6), duration_us=1.0)
+    near = {"before": -300, "after": 110}
+    for where in near.values():
+        waves = alone.waves.copy()
+        other = SHAPES["fast"](100e6)[: 1490 - where]
+        waves[0, 500 + where : 500 + where + other.size] += other.astype(np.float32)
+        crowded = PulseSet(waves, alone.chains, alone.table)
+        for feature, one, two in zip(CATALOGUE, values_of(alone), values_of(crowded), strict=True):
+            if "echo" in feature.name or np.isnan(one):
+                continue
+            assert abs(one - two) <= feature.tolerance + 0.1 * abs(one), (where, feature.name, one, two)
+
+
+def test_noise_changes_values_within_reason():
+    """From 50 to 30 dB no measurable feature moves by more than a third and four tolerances.
+
+    Tilts are left out for a ringing pulse: its spectrum is a hill, and fewer bins of it stand clear of more noise.
+    """
+    for shape in ("fast", "slow", "ringing"):
+        clear = single(SHAPES[shape](100e6), noise_v=0.003, duration_us=2.5)
+        values = np.array(
+            [values_of(single(SHAPES[shape](100e6), noise_v=0.03, duration_us=2.5, seed=k)) for k in range(9)]
+        )
+        for feature, one, many in zip(CATALOGUE, values_of(clear), values.T, strict=True):
+            hill = shape == "ringing" and feature.name.startswith("slope")
+            if "echo" in feature.name or hill or np.isnan(one) or np.isnan(many).any():
+                continue
+            moved = abs(np.median(many) - one)
+            assert moved <= 4 * feature.tolerance + 0.33 * abs(one), (shape, feature.name, one, np.median(many))
 
 
 def test_an_empty_or_constant_window_has_no_features():

@@ -18,7 +18,7 @@ def model():
 @pytest.mark.parametrize("length_m", [600.0, 2000.0])
 @pytest.mark.parametrize("label", ["local", "switchgear"])
 def test_echoes_of_near_pulses_are_not_scored_as_cable(model, label, length_m):
-    """Of what follows planted near pulses on an open cable, at most 6 % stands alone, and nothing is decided `cable`."""
+    """Of what follows near pulses on an open cable at most 6 % stands alone, and nothing is decided `cable`."""
     source = {"label": label, "distance_m": 0.0, "pulses_per_cycle": 30.0, "snr_db": [30.0, 44.0], "pattern": "void"}
     line = {"name": "Quay Road", "sensor": "strap", "length_m": length_m, "far_end": "open", "sources": [source]}
     world = {

@@ -175,19 +175,21 @@ def global_index(capture: Capture, sample: IntArray) -> IntArray:
 def phase_deg(capture: Capture, sample: IntArray) -> WaveArray:
     """Phase of the reference voltage at samples of the file [deg, 0 to 360].
 
-    Between marks the phase is interpolated. Outside them the mains frequency extrapolates for at most one
-    second; beyond that, and without marks or mains frequency, it is NaN.
+    Between marks the phase is interpolated, outside them the mains frequency extrapolates. More than a second from
+    the nearest mark, and without marks or mains frequency, it is NaN: turns could have been lost.
     """
     marks = capture.phase_marks
     if marks is None or len(marks) == 0:
         return np.full(len(sample), np.nan, np.float32)
     where = global_index(capture, sample).astype(np.float64)
     known = global_index(capture, marks[:, 0].astype(np.int64)).astype(np.float64)
-    phase = np.interp(where, known, marks[:, 1])
-    outside = np.where(where < known[0], where - known[0], np.where(where > known[-1], where - known[-1], 0.0))
+    beyond = np.where(where < known[0], where - known[0], np.maximum(where - known[-1], 0.0))
     turns_per_sample = np.nan if capture.chain.mains_hz is None else capture.chain.mains_hz / capture.chain.rate_hz
-    phase = np.where(outside != 0, phase + 360.0 * outside * turns_per_sample, phase)
-    phase = np.where(np.abs(outside) > PHASE_HOLD_S * capture.chain.rate_hz, np.nan, phase)
+    phase = np.interp(where, known, marks[:, 1])
+    phase = np.where(beyond != 0, phase + 360.0 * beyond * turns_per_sample, phase)
+    place = np.clip(np.searchsorted(known, where), 1, max(len(known) - 1, 1))
+    nearest = np.minimum(np.abs(where - known[place - 1]), np.abs(where - known[min(1, len(known) - 1) * place]))
+    phase = np.where(nearest > PHASE_HOLD_S * capture.chain.rate_hz, np.nan, phase)
     wrapped = np.mod(phase, 360.0).astype(np.float32)
     return np.where(wrapped >= np.float32(360.0), np.float32(0.0), wrapped)
 

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import os
 import secrets
-from collections.abc import Iterator
+import shutil
+from collections.abc import Collection, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import BinaryIO
@@ -52,3 +53,34 @@ def flush(place: Path) -> None:
         os.fsync(number)
     finally:
         os.close(number)
+
+
+def put_in_place(fresh: Path, place: Path, parts: Collection[str]) -> None:
+    """Exchange a folder for a freshly written sibling; what is neither of `parts` nor ours moves along.
+
+    A kill between the two renames leaves the old folder aside; `settle` takes it back or finishes.
+    """
+    if place.exists():
+        place.rename(_aside(place))
+    fresh.rename(place)
+    flush(place.parent)
+    settle(place, parts)
+
+
+def settle(place: Path, parts: Collection[str]) -> None:
+    """Finish, or take back, an exchange of folders that was killed half-way."""
+    aside = _aside(place)
+    if not aside.exists():
+        return
+    if not place.exists():
+        aside.rename(place)
+        return
+    for path in aside.iterdir():
+        if path.name not in parts:
+            path.rename(place / path.name)
+    shutil.rmtree(aside)
+    flush(place.parent)
+
+
+def _aside(place: Path) -> Path:
+    return place.parent / f".{place.name}.old"

@@ -31,6 +31,7 @@ APART = [{"training", "verdict"}]
 KEEPERS = {"sklearn": "training", "matplotlib": "report/plots.py", "pywt": "wavelets.py", "typer": "cli", "shap": None}
 BANNED_CALLS = {"eval", "exec", "compile", "__import__"}
 BANNED_MODULES = {"pickle", "cPickle", "dill", "cloudpickle", "shelve", "marshal"}
+BANNED_NAMES = {"joblib.load", "joblib.dump", "numpy.random.seed", "random.seed"}
 MODULES = sorted(PACKAGE.rglob("*.py"))
 
 
@@ -43,13 +44,16 @@ def room(path):
     return first.removesuffix(".py")
 
 
-def imported(tree):
-    """(module, node) for every import of a tree."""
+def imported(tree, module=""):
+    """(absolute name, node) for every import of a tree, each imported name also as a member of its module."""
     for node in ast.walk(tree):
         if isinstance(node, ast.Import):
             yield from ((alias.name, node) for alias in node.names)
         elif isinstance(node, ast.ImportFrom):
-            yield node.module or "", node
+            parents = module.split(".")[: -node.level] if node.level else []
+            base = ".".join([*parents, *([node.module] if node.module else [])])
+            yield base, node
+            yield from ((f"{base}.{alias.name}", node) for alias in node.names)
 
 
 def in_functions(tree):
@@ -57,6 +61,11 @@ def in_functions(tree):
     for node in ast.walk(tree):
         if isinstance(node, ast.FunctionDef | ast.AsyncFunctionDef | ast.Lambda):
             yield from ast.walk(node)
+
+
+def dotted(path):
+    """The dotted name of a module."""
+    return ".".join(["pdclass", *path.relative_to(PACKAGE).with_suffix("").parts])
 
 
 def called(node):
@@ -87,10 +96,10 @@ def test_imports_go_down_only(trees):
     """A module imports from its own room or from lower floors, and training and verdict never from each other."""
     wrong = []
     for path, tree in trees.items():
-        for name, _ in imported(tree):
-            if not name.startswith("pdclass.") or room(path) not in FLOORS:
+        for name, _ in imported(tree, dotted(path)):
+            there = name.split(".")[1] if name.startswith("pdclass.") else None
+            if there not in FLOORS or room(path) not in FLOORS:
                 continue
-            there = name.split(".")[1]
             upward = there != room(path) and FLOORS[there] >= FLOORS[room(path)] and FLOORS[room(path)] > 0
             quarrel = any({there, room(path)} == pair for pair in APART)
             if upward or quarrel or FLOORS[there] > FLOORS[room(path)]:
@@ -128,7 +137,11 @@ def test_nothing_that_executes_a_file(trees):
     """No pickle, no eval, no joblib.load, no allow_pickle=True, no seed set for everybody."""
     wrong = []
     for path, tree in trees.items():
-        wrong += [f"{where(path)}: {name}" for name, _ in imported(tree) if name.split(".")[0] in BANNED_MODULES]
+        wrong += [
+            f"{where(path)}: {name}"
+            for name, _ in imported(tree)
+            if name.split(".")[0] in BANNED_MODULES or name in BANNED_NAMES
+        ]
         for node in ast.walk(tree):
             if not isinstance(node, ast.Call):
                 continue
@@ -171,6 +184,26 @@ def test_what_a_floor_does_not_load(module, unwanted):
     code = f"import sys, {module}; print(' '.join(sorted({{m.split('.')[0] for m in sys.modules}})))"
     loaded = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stdout.split()
     assert not set(unwanted) & set(loaded)
+
+
+def test_the_checks_see_what_they_forbid():
+    """An upward import is seen whichever way it is written."""
+    for text in ("from pdclass import report", "from ..jobs import talk", "import pdclass.jobs.talk"):
+        names = [name for name, _ in imported(ast.parse(text), "pdclass.features.table")]
+        assert any(name.startswith(("pdclass.report", "pdclass.jobs")) for name in names), text
+    assert "joblib.load" in [name for name, _ in imported(ast.parse("from joblib import load"))]
+
+
+def test_functions_fit_on_a_screen(trees):
+    """No function exceeds fifty lines of code, its docstring not counted."""
+    long = []
+    for path, tree in trees.items():
+        for node in ast.walk(tree):
+            if isinstance(node, ast.FunctionDef):
+                body = node.body[1:] if ast.get_docstring(node) else node.body
+                if body and node.end_lineno - body[0].lineno + 1 > 50:
+                    long.append(f"{where(path)}: {node.name}")
+    assert not long
 
 
 def test_modules_are_of_readable_size(trees):

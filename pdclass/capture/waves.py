@@ -64,11 +64,16 @@ def pretrigger_noise_v(waves: WaveArray) -> WaveArray:
 
 
 def peak_v(waves: WaveArray) -> WaveArray:
-    """Signed sample of largest magnitude from the onset on [V]; of the whole window where nothing follows."""
+    """Signed excursion of largest magnitude from the onset on [V], from the median of what lies before it.
+
+    Where nothing follows the onset the whole window is looked at; where nothing lies before it, from zero.
+    """
     onset = onset_in_window(waves.shape[1])
     peaks = np.zeros(len(waves), np.float32)
     for row, wave in enumerate(waves):
-        after = wave[onset:] if not np.isnan(wave[onset:]).all() else wave
+        before = wave[:onset][~np.isnan(wave[:onset])]
+        level = np.median(before) if before.size else np.float32(0.0)
+        after = (wave[onset:] if not np.isnan(wave[onset:]).all() else wave) - level
         peaks[row] = after[np.nanargmax(np.abs(after))]
     return peaks
 

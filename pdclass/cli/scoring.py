@@ -46,8 +46,9 @@ def extract(
     """Find the pulses of captures and write them as a pulse table."""
     from pdclass.jobs import extract as job
 
+    talk = Terminal()
     fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
-    done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=Terminal())
+    done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=talk)
     lines, rows = [], []
     for name, found in zip(done.names, done.found, strict=True):
         limit_mv, pulses = found.detection_limit_v * 1e3, found.found - found.echoes
@@ -58,7 +59,8 @@ def extract(
         lines += found.notes
         rows.append({"capture": name, "pulses": pulses, "echoes": found.echoes, "limit_mv": limit_mv})
     lines += [f"pulses: {out}", f"next: pdclass score {out} --out verdicts"]
-    result(lines, {"out": out, "captures": rows}, as_json=as_json)
+    result(lines, {"out": out, "captures": rows, "skipped": done.skipped}, as_json=as_json)
+    _say_skipped(done.skipped, talk)
 
 
 def score(
@@ -82,7 +84,6 @@ def score(
     as_json: bool = JSON,
 ) -> None:
     """Give every pulse of captures or pulse tables its verdict with reasons, and write a report."""
-    from pdclass.errors import SkippedInputsError
     from pdclass.jobs import score as job
 
     fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
@@ -92,10 +93,16 @@ def score(
     )
     content = {"out": done.out, "report": done.report, "captures": done.run["captures"], "skipped": done.skipped}
     result(job.score_lines(done), content, as_json=as_json)
-    if done.skipped:
-        for line in done.skipped:
-            talk.say(f"skipped: {line}")
-        raise SkippedInputsError(f"{len(done.skipped)} inputs were skipped, see above; the rest is scored")
+    _say_skipped(done.skipped, talk)
+
+
+def _say_skipped(skipped: tuple[str, ...], talk: Terminal) -> None:
+    from pdclass.errors import SkippedInputsError
+
+    for line in skipped:
+        talk.say(f"skipped: {line}")
+    if skipped:
+        raise SkippedInputsError(f"{len(skipped)} inputs were skipped, see above; the rest is done")
 
 
 def _fill_ins(

@@ -145,7 +145,7 @@ def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int], *, c
     elif not rough:
         rough = [_slow_start(slow, inside)]
     starts: list[int] = []
-    for place, following in zip(rough, [*rough[1:], white.size], strict=True):
+    for place, following in zip(rough, [*rough[1:], white.size], strict=False):
         begin = max(starts[-1] + attack if starts else 0, place - twin)
         start = _refined(white, begin, place, min(place + twin, max(following - attack, place + 2 * attack)), attack)
         if not starts or start > starts[-1]:

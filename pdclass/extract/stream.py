@@ -229,7 +229,7 @@ def _cluster_events(
     white /= np.float32(background.noise)
     starts = event_starts(white, rate_hz, (inside[0] - begin, inside[1] - begin), continued=continued)
     limits = [*starts[1:], white.size]
-    ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=True)]
+    ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=False)]
     shape = round(SHAPE_S * rate_hz)
     return [
         Event(start + begin, stop + begin, white[start : min(stop, start + shape)].copy())

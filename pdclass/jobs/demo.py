@@ -17,7 +17,6 @@ from pdclass.verdict.batch import read_verdicts
 
 SCENARIO = "port-ferrow"
 SEED = 3
-_PARTS = {"captures", "verdicts"}
 
 
 @dataclass(frozen=True)
@@ -38,7 +37,7 @@ def demo(out: Path, *, jobs: int = 1, force: bool = False, talk: Talk = SILENT) 
     InputError
         If the folder holds something else.
     """
-    fresh_folder(out, force=force or {path.name for path in out.glob("*")} <= _PARTS)
+    fresh_folder(out, force=force)
     talk.say("Port Ferrow, a fictional harbour district: simulating four circuits, three mains cycles each")
     made = simulate(SCENARIO, out / "captures", seed=SEED, jobs=jobs, force=True, talk=talk)
     talk.say("finding pulses and scoring them with the shipped bundle (a first run also compiles its kernels)")

@@ -15,11 +15,12 @@ from pdclass.jobs.talk import SILENT, Talk, each
 
 @dataclass(frozen=True)
 class Extracted:
-    """What was found in each capture, in order, and where the table is."""
+    """What was found in each capture, in order, where the table is, and what could not be read."""
 
     out: Path
     names: tuple[str, ...]
     found: tuple[Extraction, ...]
+    skipped: tuple[str, ...]
 
 
 def extract_captures(
@@ -34,10 +35,12 @@ def extract_captures(
 ) -> Extracted:
     """Find the pulses of captures and write them as one pulse table.
 
+    A capture that cannot be read is reported and skipped; when none can be, nothing is written.
+
     Raises
     ------
     InputError
-        If a capture is not readable, captures differ in rate, or the table exists and `force` is not given.
+        If no capture is readable, captures differ in rate, or the table exists and `force` is not given.
     """
     if out.suffix != ".parquet":
         raise InputError(f"{out}: --out: expected a name that ends in .parquet; choose one")
@@ -45,19 +48,31 @@ def extract_captures(
         raise InputError(f"{out}: exists already; choose another name or --force")
     if not out.resolve().parent.is_dir():
         raise InputError(f"{out.resolve().parent}: no such folder; make it first")
-    calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in captures]
+    calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in dict.fromkeys(captures)]
     made = each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures read")
-    rates = {extraction.pulses.rate_hz: str(path) for path, (_, extraction) in zip(captures, made, strict=True)}
+    read = [one for one in made if not isinstance(one, str)]
+    skipped = tuple(one for one in made if isinstance(one, str))
+    if not read:
+        raise InputError("; ".join(skipped))
+    _one_rate(read)
+    write_pulses(out, joined([extraction.pulses for _, extraction in read]))
+    return Extracted(out, tuple(name for name, _ in read), tuple(extraction for _, extraction in read), skipped)
+
+
+def _one_rate(read: Sequence[tuple[str, Extraction]]) -> None:
+    rates = {extraction.pulses.rate_hz: name for name, extraction in read}
     if len(rates) > 1:
         (first, one), (second, other) = list(rates.items())[:2]
         raise InputError(
             f"{other}: rate: expected {first / 1e6:g} MS/s as in {one}, found {second / 1e6:g} MS/s; "
             "extract captures of each rate into a table of their own"
         )
-    write_pulses(out, joined([extraction.pulses for _, extraction in made]))
-    return Extracted(out, tuple(name for name, _ in made), tuple(extraction for _, extraction in made))
 
 
-def _pulses_of(path: Path, fill: FillIns, settings: ExtractSettings) -> tuple[str, Extraction]:
-    capture = open_capture(path, fill)
-    return capture.name, extract(capture, settings)
+def _pulses_of(path: Path, fill: FillIns, settings: ExtractSettings) -> tuple[str, Extraction] | str:
+    """Name and pulses of a capture, or why it could not be read."""
+    try:
+        capture = open_capture(path, fill)
+        return capture.name, extract(capture, settings)
+    except InputError as error:
+        return str(error)

@@ -153,12 +153,17 @@ def _expanded(given: Path) -> list[Path]:
 
 
 def _identity(path: Path) -> dict[str, str | None]:
-    """Digest of an input, None where it cannot be read (the reason comes when it is opened)."""
-    file = path.with_suffix(".sigmf-data") if path.suffix.startswith(".sigmf") else path
+    """Digests of an input's samples and metadata, None where it cannot be read (why is said when it is opened)."""
+    if not path.suffix.startswith(".sigmf"):
+        return {"digest": _digest(path)}
+    return {"digest": _digest(path.with_suffix(".sigmf-data")), "meta_digest": _digest(path.with_suffix(".sigmf-meta"))}
+
+
+def _digest(path: Path) -> str | None:
     try:
-        return {"digest": file_digest(file)}
+        return file_digest(path)
     except OSError:
-        return {"digest": None}
+        return None
 
 
 def _score_one(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -77,6 +77,8 @@ def simulate(
     """
     world = read_scenario(scenario_path(scenario))
     fresh_folder(out, force=force)
+    for old in [*out.glob(f"{world.name}-[0-9]*.sigmf-*"), *out.glob("pulses*.parquet")]:
+        old.unlink()
     numbers = range(1, (captures or capture_count(world)) + 1)
     calls = [(world, number, seed, pulses, out) for number in numbers]
     made = each(_capture_to_disk, calls, jobs=jobs, talk=talk, words="captures simulated")
@@ -97,14 +99,7 @@ def labelled_pulses(capture: Capture, settings: ExtractSettings) -> Extraction:
     """Pulses of a simulated capture; what is found far from everything planted is labelled background."""
     found = extract(capture, settings)
     table = with_background(found.pulses.table, capture.annotations, capture.chain.rate_hz)
-    return Extraction(
-        PulseSet(found.pulses.waves, found.pulses.chains, table),
-        found.found,
-        found.echoes,
-        found.detection_limit_v,
-        found.duration_s,
-        found.notes,
-    )
+    return replace(found, pulses=replace(found.pulses, table=table))
 
 
 def with_background(table: pd.DataFrame, planted: Sequence[Annotation], rate_hz: float) -> pd.DataFrame:

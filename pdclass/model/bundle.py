@@ -22,7 +22,7 @@ from pdclass.model.manifest import FORMAT, Manifest, Validity
 from pdclass.model.novelty import NoveltyReference, make_reference
 from pdclass.model.treefile import read_arrays, write_arrays
 from pdclass.pulses import FloatArray
-from pdclass.writing import flush
+from pdclass.writing import flush, put_in_place, settle
 
 MANIFEST = "manifest.json"
 TREES, REFERENCE, TRAINING = "trees.npz", "reference.parquet", "training.parquet"
@@ -125,6 +125,7 @@ def write_bundle(path: Path, parts: BundleParts, *, replace: bool = False) -> st
     """
     if not path.parent.is_dir():
         raise InputError(f"{path.parent}: expected a folder to write the bundle in, found none; make it first")
+    settle(path, SIZE_LIMITS)
     if path.exists() and not replace:
         raise InputError(f"{path}: expected nothing there yet, found something; choose another name or --force")
     if path.exists() and not _replaceable(path):
@@ -133,21 +134,11 @@ def write_bundle(path: Path, parts: BundleParts, *, replace: bool = False) -> st
     fresh.mkdir()
     try:
         _fill(fresh, parts)
-        _settle(fresh)
-        _put_in_place(fresh, path)
+        _flush_all(fresh)
+        put_in_place(fresh, path, SIZE_LIMITS)
     finally:
         shutil.rmtree(fresh, ignore_errors=True)
     return file_digest(path / MANIFEST)
-
-
-def _put_in_place(fresh: Path, path: Path) -> None:
-    old = fresh.with_suffix(".old")
-    if path.exists():
-        path.rename(old)
-    fresh.rename(path)
-    flush(path.parent)
-    if old.is_dir():
-        shutil.rmtree(old)
 
 
 def _fill(folder: Path, parts: BundleParts) -> None:
@@ -194,11 +185,11 @@ def _novelty_entry(novelty: NoveltyReference) -> dict[str, Any]:
 
 
 def _replaceable(path: Path) -> bool:
-    """Whether a folder is a bundle or empty: nothing else is ever removed."""
-    return path.is_dir() and ((path / MANIFEST).is_file() or not any(path.iterdir()))
+    """Whether a folder holds nothing but the files of a bundle: nothing else is ever removed."""
+    return path.is_dir() and all(file.name in SIZE_LIMITS for file in path.iterdir())
 
 
-def _settle(folder: Path) -> None:
+def _flush_all(folder: Path) -> None:
     for place in [*sorted(folder.iterdir()), folder]:
         flush(place)
 

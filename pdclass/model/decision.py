@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import NamedTuple
 
 import numpy as np
@@ -93,22 +94,24 @@ def _first_arrival(name: str, echo_of: dict[str, str]) -> str:
 
 def outside(validity: Validity, pulses: PulseSet) -> BoolArray:
     """Which pulses lie beyond a validity limit; what chain or bundle do not know is not checked."""
-    of_chain = np.array([_chain_outside(validity, chain) for chain in pulses.chains], np.bool_)
+    of_chain = np.array([bool(broken_limits(validity, stated_by(chain))) for chain in pulses.chains], np.bool_)
     snr_db = pulses.table["snr_db"].to_numpy(np.float64)
-    beyond = np.array([_beyond(float(value), validity.snr_db) for value in snr_db], np.bool_)
+    beyond = np.array([bool(broken_limits(validity, {"snr_db": float(value)})) for value in snr_db], np.bool_)
     return np.asarray(beyond | of_chain[pulses.table["chain"].to_numpy(np.int64)], np.bool_)
 
 
-def _chain_outside(validity: Validity, chain: Chain) -> bool:
+def stated_by(chain: Chain) -> dict[str, float | None]:
+    """What a chain states of the quantities that have validity limits, by the limit's name."""
     low, high = chain.band_hz or (None, None)
-    pairs = [
-        (chain.rate_hz, validity.rate_hz),
-        (low, validity.low_hz),
-        (high, validity.high_hz),
-        (chain.adc_bits, validity.adc_bits),
-    ]
-    return any(_beyond(value, ends) for value, ends in pairs)
+    return {"rate_hz": chain.rate_hz, "low_hz": low, "high_hz": high, "adc_bits": chain.adc_bits}
 
 
-def _beyond(value: float | None, ends: tuple[float, float] | None) -> bool:
-    return value is not None and ends is not None and not np.isnan(value) and not ends[0] <= value <= ends[1]
+def broken_limits(validity: Validity, stated: Mapping[str, float | None]) -> list[str]:
+    """Names of the limits that stated quantities break; unknown ones (None, NaN) break none."""
+    broken = []
+    for name, value in stated.items():
+        ends = getattr(validity, name)
+        known = value is not None and ends is not None and not np.isnan(value)
+        if known and not ends[0] <= value <= ends[1]:
+            broken.append(name)
+    return broken

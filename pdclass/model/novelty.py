@@ -74,7 +74,9 @@ def fit_novelty(
     of_reference = np.searchsorted(names, np.asarray(reference_groups, dtype=str))
     of_judged = np.searchsorted(names, np.asarray(judged_groups, dtype=str))
     far = _distances(unlimited, judged, of_reference, of_judged)
-    limit = group_quantile(far.astype(np.float64), judged_groups, LIMIT_SHARE, beyond=0)
+    # an infinitely far pulse is unfamiliar whatever the limit: it must not move it
+    near = np.isfinite(far)
+    limit = group_quantile(far[near].astype(np.float64), np.asarray(judged_groups)[near], LIMIT_SHARE, beyond=0)
     return NoveltyReference(centre, scale, unlimited.rows, limit)
 
 

@@ -198,11 +198,26 @@ def _draw_entries(scenario: Scenario, length_m: float, *, rng: np.random.Generat
                 pulses_per_cycle=1.0,
                 snr_db=scenario.snr_db,
                 pattern=patterns[int(rng.integers(0, len(patterns)))],
-                path=_PATHS[int(rng.integers(0, len(_PATHS)))],
+                path=_draw_path(label, rng=rng),
             )
             for _ in range(whole(scenario.mix.sources, rng=rng))
         ]
     return entries
+
+
+def _draw_path(label: Label, *, rng: np.random.Generator) -> CouplingPath:
+    """A tenth of the cable sources lie on a neighbour's cable, a quarter of the local ones between core and box.
+
+    Both shares: common practice, no source. Without them a model would learn that what comes from a feeder is
+    nobody's, and that a termination only ever discharges to its screen.
+    """
+    usual = _PATHS[int(rng.integers(0, len(_PATHS)))]
+    place = rng.uniform()
+    if label == "cable":
+        return "feeder" if place < 0.1 else "far-end"
+    if label == "local":
+        return "box" if place < 0.25 else "screen"
+    return usual
 
 
 def _draw_distance(label: Label, length_m: float, *, rng: np.random.Generator) -> float | None:
@@ -260,6 +275,10 @@ def _discharge(wish: SourceEntry, network: Network, *, rng: np.random.Generator)
         panel = int(rng.integers(0, network.panels))
         node = bus_node(panel) if rng.uniform() < 0.5 else equipment_node(panel)
         return _Entrance(wish.pattern, current, 0.0, network.transfer.from_node[:, node])
+    if wish.label == "cable" and wish.path == "feeder":
+        return _Entrance(wish.pattern, current, None, _disturbance_transfer(network, "feeder", rng=rng))
+    if wish.label == "local" and wish.path == "box":
+        return _Entrance(wish.pattern, current, 0.0, network.transfer.from_node[:, CORE])
     otherwise = 0.0 if wish.label == "local" else network.length_m
     distance_m = otherwise if wish.distance_m is None else wish.distance_m
     return _Entrance(wish.pattern, current, distance_m, from_cable(network, distance_m))

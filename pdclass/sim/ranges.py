@@ -13,7 +13,7 @@ from pdclass.sim.phase import Pattern
 Label = Literal["cable", "local", "switchgear", "interference"]
 Insulation = Literal["XLPE", "EPR"]
 FarEndKind = Literal["open", "transformer", "cable"]
-CouplingPath = Literal["radiated", "screen", "feeder", "far-end"]
+CouplingPath = Literal["radiated", "screen", "feeder", "far-end", "box"]
 _RATES_HZ = (40e6, 62.5e6, 100e6, 125e6, 200e6, 250e6)
 
 

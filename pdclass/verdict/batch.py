@@ -24,7 +24,7 @@ from pdclass.verdict.tables import (
     write_reason_table,
     write_verdict_table,
 )
-from pdclass.writing import flush, write_text
+from pdclass.writing import flush, put_in_place, settle, write_text
 
 #: 1 = this layout. A changed layout gets the next number, and the reader of the old one stays.
 FORMAT = 1
@@ -127,7 +127,7 @@ def begin_folder(out: Path, plan: Mapping[str, Any], *, force: bool = False) -> 
         If `out` is a file or cannot be made.
     """
     out = out.resolve()
-    _settle(out)
+    settle(out, _PARTS)
     if out.exists() and not out.is_dir():
         raise InputError(complaint(out, "--out", expected="a folder", found="a file", advice="name another"))
     if out.exists() and any(out.iterdir()) and not force and _plan_digest_of(out) != json_digest(dict(plan)):
@@ -212,7 +212,7 @@ def finish_folder(
     for folder in sorted({path.parent for path in staging.rglob("*")}):
         flush(folder)
     shutil.rmtree(staging / "records")
-    _put_in_place(staging, out)
+    put_in_place(staging, out, _PARTS)
     return out
 
 
@@ -318,30 +318,3 @@ def _clear(staging: Path, wanted: Iterable[str]) -> None:
         if path.is_file():
             path.unlink()
     shutil.rmtree(staging / "bundle", ignore_errors=True)
-
-
-def _put_in_place(staging: Path, out: Path) -> None:
-    if out.exists():
-        out.rename(_aside(out))
-    staging.rename(out)
-    flush(out.parent)
-    _settle(out)
-
-
-def _settle(out: Path) -> None:
-    """Finish, or take back, an exchange of folders that was killed half-way; strangers' files move along."""
-    aside = _aside(out)
-    if not aside.exists():
-        return
-    if not out.exists():
-        aside.rename(out)
-        return
-    for path in aside.iterdir():
-        if path.name not in _PARTS:
-            path.rename(out / path.name)
-    shutil.rmtree(aside)
-    flush(out.parent)
-
-
-def _aside(out: Path) -> Path:
-    return out.parent / f".{out.name}.old"

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -13,10 +13,10 @@ from pdclass.errors import InputError
 from pdclass.features import CATALOGUE
 from pdclass.features.feature import Feature
 from pdclass.model.bundle import Bundle
-from pdclass.model.decision import BoolArray, Decisions, decide
+from pdclass.model.decision import BoolArray, Decisions, broken_limits, decide, stated_by
 from pdclass.model.manifest import Validity
 from pdclass.model.reasons import calibrated_reasons
-from pdclass.pulses import UNDECIDED, Chain, FloatArray, IntArray, PulseSet
+from pdclass.pulses import UNDECIDED, FloatArray, IntArray, PulseSet
 from pdclass.verdict.sentences import REASONS, Wording, reason_sentences, reference_ranks
 
 #: Columns that a verdict takes over from the pulse table.
@@ -130,7 +130,7 @@ def held_against(order: IntArray, sets: BoolArray) -> IntArray:
 
 def limits_broken(pulses: PulseSet, validity: Validity) -> list[str | None]:
     """Per pulse, the validity limits that its chain or its signal-to-noise ratio breaks, or None."""
-    of_chain = ["; ".join(_broken(_chain_fields(chain), validity)) for chain in pulses.chains]
+    of_chain = ["; ".join(_broken(stated_by(chain), validity)) for chain in pulses.chains]
     chains = pulses.table["chain"].tolist()
     ratios = pulses.table["snr_db"].astype(float).tolist()
     found = []
@@ -145,7 +145,7 @@ def not_checked(pulses: PulseSet, validity: Validity) -> list[str]:
     lines = []
     for name, word, unit, scale in _LIMITS:
         span = getattr(validity, name)
-        stated = [_chain_fields(chain).get(name, 0.0) for chain in pulses.chains]
+        stated = [stated_by(chain).get(name, 0.0) for chain in pulses.chains]
         if span is None:
             lines.append(f"{word} not checked: the bundle does not know what it was trained on")
         elif None in stated:
@@ -165,22 +165,14 @@ def _check_shape(pulses: PulseSet, values: FloatArray, bundle: Bundle) -> None:
         )
 
 
-def _chain_fields(chain: Chain) -> dict[str, float | None]:
-    low, high = chain.band_hz or (None, None)
-    return {"rate_hz": chain.rate_hz, "low_hz": low, "high_hz": high, "adc_bits": chain.adc_bits}
-
-
-def _broken(fields: dict[str, float | None], validity: Validity) -> list[str]:
+def _broken(stated: Mapping[str, float | None], validity: Validity) -> list[str]:
     causes = []
-    for name, word, unit, scale in _LIMITS:
-        value, span = fields.get(name), getattr(validity, name)
-        if value is None or span is None or np.isnan(value):
-            continue
-        low, high = span
+    broken = broken_limits(validity, stated)
+    for name, word, unit, scale in (limit for limit in _LIMITS if limit[0] in broken):
+        value, (low, high) = float(stated[name] or 0.0), getattr(validity, name)
         side, limit = ("below", low) if value < low else ("above", high)
-        if not low <= value <= high:
-            found, bound = _apart(value / scale, limit / scale)
-            causes.append(f"{word} {found} {unit} is {side} {bound} {unit}")
+        found, bound = _apart(value / scale, limit / scale)
+        causes.append(f"{word} {found} {unit} is {side} {bound} {unit}")
     return causes
 
 

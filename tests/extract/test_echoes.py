@@ -71,3 +71,14 @@ def test_likeness_grows_with_the_right_path_and_stays_low_for_another_shape():
     t = np.arange(300) / RATE_HZ
     other = (100 * np.sin(2 * np.pi * 11e6 * t) * np.exp(-t / 2e-6)).astype(np.float32)
     assert path_likeness(wave, other, RATE_HZ).max() < 0.75
+
+
+@pytest.mark.parametrize("period_us", [10, 50])
+def test_a_periodic_train_is_no_chain_of_echoes(period_us):
+    """Bursts at a steady interval and of changing height are pulses, every one; none is an echo of another."""
+    rng = np.random.default_rng(5)
+    wave = double_exponential(20e-9, 150e-9)
+    onsets = np.arange(1000, 990_000, period_us * 100)
+    found = extract(record([(int(o), rng.uniform(500, 1500), wave) for o in onsets]), STRICT)
+    assert abs(found.found - len(onsets)) <= 1
+    assert found.echoes == 0

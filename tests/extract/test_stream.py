@@ -171,3 +171,76 @@ def test_a_record_shorter_than_two_windows_is_refused():
     """Too little to know the noise from is said, with the number of samples."""
     with pytest.raises(InputError, match="found 3000"):
         extract(as_capture(np.random.default_rng(0).normal(0, 10, 3000)))
+
+
+@pytest.mark.parametrize("offset", [20, 400, 4000])
+def test_an_offset_blinds_nothing(offset, planted):
+    """A digitiser that stands at another level finds the same pulses at the same places."""
+    _, capture = planted
+    raised = dataclasses.replace(capture, counts=(capture.counts + offset).astype(np.int16))
+    onsets = extract(capture).pulses.table["onset_sample"]
+    assert np.array_equal(extract(raised).pulses.table["onset_sample"], onsets)
+
+
+@pytest.mark.parametrize("sigma", [0.5, 1.0, 1.5, 2.2])
+def test_little_noise_does_not_raise_the_false_event_rate(sigma):
+    """With a noise of about a count the stated one false event a cycle holds within a factor of three (20 cycles)."""
+    rng = np.random.default_rng(12)
+    noise = as_capture(rng.normal(0, sigma, 8_000_000), chain=Chain(20e6, 1e-4, 14, mains_hz=50.0))
+    assert extract(noise).found <= 60
+
+
+def test_a_record_padded_with_one_value_is_no_storm():
+    """Two fifths of a record standing still give a handful of events, not hundreds."""
+    rng = np.random.default_rng(13)
+    signal = rng.normal(0, 10, 400_000)
+    signal[240_000:] = 0
+    assert extract(as_capture(signal)).found <= 20
+
+
+def test_samples_that_are_no_numbers_are_refused():
+    """A record with NaN is an input error, not a crash."""
+    signal = np.random.default_rng(14).normal(0, 10, 400_000)
+    signal[::3000] = np.nan
+    with pytest.raises(InputError, match="finite"):
+        extract(as_capture(signal, dtype=np.float32))
+
+
+def test_the_first_samples_of_a_record_are_searched():
+    """A pulse whose onset lies 40 samples into the record is found there."""
+    rng = np.random.default_rng(15)
+    signal = rng.normal(0, 10, 100_000)
+    wave = double_exponential(12e-9, 60e-9)
+    signal[40 : 40 + wave.size] += 1000 * wave
+    assert abs(nearest(extract(as_capture(signal)), 40)) <= 2
+
+
+def test_a_second_pulse_half_a_microsecond_later_is_found():
+    """Two like pulses 0.45 to 1 us apart are two, whether or not the second is larger."""
+    rng = np.random.default_rng(16)
+    wave = double_exponential(30e-9, 150e-9)
+    for gap in (45, 60, 100):
+        for ratio in (1.0, 2.0):
+            signal = rng.normal(0, 10, 100_000)
+            signal[50_000 : 50_000 + wave.size] += 600 * wave
+            signal[50_000 + gap : 50_000 + gap + wave.size] += 600 * ratio * wave
+            assert abs(nearest(extract(as_capture(signal)), 50_000 + gap)) <= 5, (gap, ratio)
+
+
+def test_a_long_burst_is_not_cut_into_events():
+    """A burst of 1.5 ms is one event or few, not one for every stretch it is looked at in."""
+    rng = np.random.default_rng(17)
+    signal = rng.normal(0, 10, 400_000)
+    burst = np.sin(2 * np.pi * 3.3e6 * np.arange(150_000) / 100e6)
+    signal[100_000:250_000] += 60 * burst
+    found = extract(as_capture(signal)).pulses.table["onset_sample"]
+    inside = found[(found > 105_000) & (found < 245_000)]
+    assert len(inside) <= 3
+
+
+def test_labels_without_a_pulse_are_counted(planted):
+    """An annotation where no pulse is found is said, with the first place."""
+    _, capture = planted
+    lost = dataclasses.replace(capture.annotations[0], onset_sample=5)
+    found = extract(dataclasses.replace(capture, annotations=(*capture.annotations, lost)))
+    assert "1 of 41 labels found no pulse within 0.5 us, the first at sample 5" in found.notes[0]

@@ -21,8 +21,11 @@ def test_every_circuit_has_every_class():
 
 
 def test_places_belong_to_their_class():
-    """Cable sources lie beyond 10 m, local ones within, switchgear at the sensor; interference may lie nowhere."""
+    """Cable sources lie beyond 10 m or on a neighbour's cable, local ones within, switchgear at the sensor."""
     places = {label: [s.distance_m for s in SOURCES if s.label == label] for label in ("cable", "local", "switchgear")}
+    neighbours = [place for place in places["cable"] if place is None]
+    assert 0 < len(neighbours) < 0.3 * len(places["cable"])
+    places["cable"] = [place for place in places["cable"] if place is not None]
     assert min(places["cable"]) >= 10 >= max(places["local"])
     assert set(places["switchgear"]) == {0.0}
     assert max(places["cable"]) > 1000

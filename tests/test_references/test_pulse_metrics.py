@@ -2,7 +2,7 @@
 
 Gaussian, RC and double-exponential figures follow from the formulas; edge conventions after IEEE Std 181-2011 (10, 50
 and 90 % of the peak); equivalent length and bandwidth after A. Contin et al., IEEE TDEI 9(3), 335-348, 2002 (from
-memory); the anti-alias edge of about 9 ns and the window of 20 us are common practice, no source.
+memory).
 """
 
 import numpy as np
@@ -13,7 +13,6 @@ import scipy.special
 from pdclass.features.edges import edge_places
 from pdclass.features.spectrum import centroid_and_spread_hz
 from pdclass.features.spread import equivalent_spread
-from pdclass.pulses import WINDOW_S, window_samples
 
 RATE_HZ = 100e6
 T_S = np.arange(2000) / RATE_HZ
@@ -103,10 +102,3 @@ def test_rc_edge_times_bandwidth():
     response = np.abs(scipy.fft.rfft(impulse, 1 << 18))
     corner = np.interp(-np.sqrt(0.5), -response / response[0], scipy.fft.rfftfreq(1 << 18, 1 / RATE_HZ))
     assert (at["rise_90"] - at["rise_10"]) / RATE_HZ * corner == pytest.approx(0.349699, rel=0.02)
-
-
-def test_one_cycle_and_one_window():
-    """100 MS/s for 20 ms are 2,000,000 samples; 20 us are a thousandth of the cycle (common practice, no source)."""
-    assert 100e6 * 20e-3 == 2_000_000
-    assert window_samples(100e6) == 2_000
-    assert pytest.approx(1.0) == WINDOW_S * 50 * 1000

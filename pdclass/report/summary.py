@@ -22,6 +22,13 @@ WHO_ACTS: Mapping[str, str] = {
     "switchgear": "the switchgear crew, under the safety rules for switchgear",
     "interference": "nobody",
 }
+#: A set without `interference` is a discharge whose place is open: who then has to act.
+WHO_ACTS_TOGETHER: Mapping[tuple[str, ...], str] = {
+    ("cable", "local"): "the termination crew, and locate from both ends",
+    ("local", "switchgear"): "termination crew and switchgear crew together",
+    ("cable", "switchgear"): "the switchgear crew, and locate from both ends",
+    ("cable", "local", "switchgear"): "termination crew and switchgear crew together, and locate from both ends",
+}
 MEANING: Mapping[str, str] = {
     "cable": "a discharge that arrived after travel along a cable: a path, not an asset",
     "local": "a discharge in the termination, cable box or first 10 m of cable at the sensor",
@@ -328,18 +335,12 @@ def _doubt_words(total: pd.Series[int], own: Mapping[str, int]) -> str:
 
 
 def _who(total: pd.Series[int], own: Mapping[str, int]) -> str:
-    near_end = own.get(set_in_words(("local", "switchgear")), 0)
     discharges = [name for name in WHO_ACTS if name != "interference" and total.get(name, 0)]
-    if discharges:
-        named = sorted(discharges, key=lambda name: -total[name])
-        calls = [f"for {name} ({total[name]}), {WHO_ACTS[name]}" for name in named]
-        if near_end:
-            calls.append(f"for those open between termination and switchgear ({near_end}), both crews")
+    calls = [f"for {name} ({total[name]}), {WHO_ACTS[name]}" for name in sorted(discharges, key=lambda n: -total[n])]
+    for labels, who in WHO_ACTS_TOGETHER.items():
+        if count := own.get(set_in_words(labels), 0):
+            calls.append(f"for those open between {' and '.join(labels)} ({count}), {who}")
+    if calls:
         return f"To act: {'; '.join(calls)}."
-    if near_end:
-        return (
-            "To act: termination crew and switchgear crew together, since this sensor cannot tell which of the "
-            "two places it is."
-        )
     found = "No pulse was decided as a discharge" if total["pulses"] else "No pulse was found"
     return f"{found}; that does not show that the circuit is healthy."

@@ -43,7 +43,7 @@ class CaptureRanges(Settings):
     bits: tuple[Annotated[int, Field(ge=8, le=16)], ...] = (8, 10, 12, 14, 16)
     mains_hz: tuple[Annotated[float, Field(gt=10, lt=100)], ...] = (50.0, 60.0)
     low_corner_hz: Positive = (30e3, 300e3)
-    high_corner_hz: Positive = (8e6, 40e6)
+    high_corner_hz: Positive = (8e6, 80e6)
     transfer_ohm: Positive = (1.0, 15.0)
     noise_v: Positive = (20e-6, 500e-6)
     full_scale_db: Range = (38.0, 70.0)

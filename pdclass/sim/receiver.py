@@ -15,7 +15,7 @@ from pdclass.sim.grid import ComplexArray, band_end
 #: -3 dB corner of the anti-alias filter as a share of the rate (common practice, no source).
 ANTI_ALIAS_SHARE = 0.4
 #: No digitiser of this world passes more [Hz].
-WIDEST_HZ = 40e6
+WIDEST_HZ = 48e6
 _ORDER = 4
 
 
@@ -45,7 +45,7 @@ def sensor_response(receiver: Receiver, s: ComplexArray) -> ComplexArray:
 
 
 def anti_alias_response(rate_hz: float, s: ComplexArray) -> ComplexArray:
-    """Butterworth low-pass of order 4 at 0.4 of the rate, at most 40 MHz; (frequencies,), 1 at 0 Hz."""
+    """Butterworth low-pass of order 4 at 0.4 of the rate, at most 48 MHz; (frequencies,), 1 at 0 Hz."""
     corner = 2 * np.pi * min(ANTI_ALIAS_SHARE * rate_hz, WIDEST_HZ)
     _, poles, gain = scipy.signal.butter(_ORDER, corner, analog=True, output="zpk")
     return np.asarray(gain / np.prod([s - pole for pole in poles], axis=0))

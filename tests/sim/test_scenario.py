@@ -40,7 +40,7 @@ def test_captures_are_whole(captures):
         assert capture.digest == hashlib.sha256(capture.counts.tobytes()).hexdigest()
         low_hz, high_hz = capture.chain.band_hz
         assert 20e3 < low_hz < 400e3
-        assert 6e6 < high_hz < 41e6
+        assert 6e6 < high_hz < 45e6
         assert 15 <= len(capture.annotations) <= 30
         onsets = [annotation.onset_sample for annotation in capture.annotations]
         assert onsets == sorted(onsets)

@@ -58,30 +58,43 @@ def edge_places(wave: FloatArray, peak: int) -> dict[str, float]:
     return found
 
 
-def measure_edges(window: Window) -> dict[str, float]:
-    """The features of this family, by name.
+def measured_places(window: Window) -> dict[str, float]:
+    """Places of the crossings that the features are measured between, from the window's first sample [samples].
 
     Crossings are looked for among the pulse's own samples, on a running mean over a sixth of the pulse's width (a
     twenty-fourth for the rise): a slow edge in noise crosses a level many times, and the mean, not the first of
-    them, is meant.
+    them, is meant. Keys as of `edge_places`, and `raw_10`, `raw_90` on the wave with its carriers,
+    `foot_10` on the mean of the widths.
     """
-    wave, peak = window.edge, window.peak - (ONSET - 2 * GUARD)
+    wave, first = window.edge, ONSET - 2 * GUARD
     width = float(np.sum(wave[np.abs(wave) > max(0.1, 3 * window.noise)] ** 2)) if window.noise > 0 else 0.0
     wide, fine = smoothed(wave, width / 6), smoothed(wave, width / 24)
+    raw = smoothed(window.raw[first : window.end], width / 24)
+    peak = window.peak - first
     at, rising = edge_places(wide, _near(wide, peak)), edge_places(fine, _near(fine, peak))
-    raw = smoothed(window.raw[ONSET - 2 * GUARD : window.end], width / 24)
-    raw_rising = edge_places(raw, _near(raw, peak)) if raw[peak] > 0 else {"rise_10": np.nan, "rise_90": np.nan}
-    rise = (rising["rise_90"] - rising["rise_10"]) * STEP_NS
+    at |= {"foot_10": at["rise_10"], "rise_10": rising["rise_10"], "rise_90": rising["rise_90"]}
+    carried = edge_places(raw, _near(raw, peak)) if raw[peak] > 0 else {"rise_10": np.nan, "rise_90": np.nan}
+    at |= {"raw_10": carried["rise_10"], "raw_90": carried["rise_90"]}
+    return {name: place if name == "height" else place + first for name, place in at.items()}
+
+
+def measure_edges(window: Window) -> dict[str, float]:
+    """The features of this family, by name."""
+    at = measured_places(window)
+    rise = (at["rise_90"] - at["rise_10"]) * STEP_NS
     fall = (at["fall_10"] - at["fall_90"]) * STEP_NS
-    widths = {percent: (at[f"fall_{percent}"] - at[f"rise_{percent}"]) * STEP_NS for percent in (10, 25, 50)}
+    width_50, width_25, width_10 = (
+        (at[last] - at[first]) * STEP_NS
+        for first, last in (("rise_50", "fall_50"), ("rise_25", "fall_25"), ("foot_10", "fall_10"))
+    )
     return {
         "rise_ns": rise,
-        "rise_raw_ns": (raw_rising["rise_90"] - raw_rising["rise_10"]) * STEP_NS,
+        "rise_raw_ns": (at["raw_90"] - at["raw_10"]) * STEP_NS,
         "fall_ns": fall,
-        "width_50_ns": widths[50],
-        "width_25_ns": widths[25],
-        "width_10_ns": widths[10],
-        "width_ratio": widths[10] / widths[50],
+        "width_50_ns": width_50,
+        "width_25_ns": width_25,
+        "width_10_ns": width_10,
+        "width_ratio": width_10 / width_50,
         "asymmetry": fall / rise if rise > 0 else np.nan,
         "tail_ns": _tail_ns(window),
     }
@@ -119,7 +132,7 @@ EDGES = (
     _edge("rise_ns", "10-90 % time of the edge that leads to the peak", "slower", "faster", "rise {value}"),
     _edge(
         "rise_raw_ns",
-        "the same on the wave with its carriers",
+        "10-90 % time of the leading edge before carriers are reduced",
         "slower",
         "faster",
         "rise before carriers are reduced {value}",

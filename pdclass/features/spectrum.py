@@ -103,10 +103,12 @@ def _frequency(name: str, meaning: str, sentence: str, tolerance: float) -> Feat
 
 
 SPECTRUM = (
-    _frequency("centroid_mhz", "power-weighted mean frequency", "centre of the spectrum {value}", 0.1),
+    _frequency(
+        "centroid_mhz", "centre of the spectrum (power-weighted mean frequency)", "centre of the spectrum {value}", 0.1
+    ),
     _frequency(
         "spectral_spread_mhz",
-        "standard deviation of the spectrum about its centre",
+        "width of the spectrum (standard deviation about its centre)",
         "width of the spectrum {value}",
         0.1,
     ),

@@ -8,7 +8,7 @@ import numpy as np
 
 from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
-from pdclass.features.edges import edge_places
+from pdclass.features.edges import measured_places
 from pdclass.features.window import ONSET, STEP_NS, Window, prepared
 from pdclass.pulses import FloatArray, PulseSet
 
@@ -46,13 +46,13 @@ def feature_table(pulses: PulseSet, names: Sequence[str] | None = None) -> Float
 def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     """What a drawing of one pulse needs: `time_us` and `wave_v` (onset at 0, analysis band) and edge times [us].
 
-    Keys of the times are those of `edge_places` (without `height`) and `end`; empty where nothing is measurable.
+    Keys of the times are those of `measured_places` (without `height`) and `end`; empty where nothing is measurable.
     """
     window = _window(pulses, place)
     if window is None:
         return {}
     scale = window.height_v
-    at = edge_places(window.wave[: window.last], window.peak)
+    at = measured_places(window)
     times = {name: (where - ONSET) * STEP_NS / 1e3 for name, where in at.items() if name != "height"}
     time_us = (np.arange(window.wave.size) - ONSET) * STEP_NS / 1e3
     kept = slice(0, window.last)

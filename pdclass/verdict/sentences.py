@@ -43,6 +43,10 @@ LATER_ECHO_NOTE = "later echo not excluded: the window stands alone"
 MAYBE_ECHO_NOTE = "may be an echo of an earlier pulse, so the labels open to that one stay open here"
 
 
+#: A share or ratio smaller than this is not worth its digits.
+SMALLEST = 0.001
+
+
 def three_digits(value: float) -> str:
     """A number at three significant digits, without an exponent between 0.0001 and a million."""
     if value == 0 or not math.isfinite(value):
@@ -55,9 +59,11 @@ def three_digits(value: float) -> str:
 
 
 def quantity(value: float, unit: str) -> str:
-    """A number at three significant digits with its unit; whole numbers without a unit are counts."""
+    """A number at three significant digits with its unit; without a unit whole numbers are counts, tiny ones say so."""
     if not unit and float(value).is_integer() and abs(value) < 1e6:
         return f"{value:.0f}"
+    if not unit and abs(value) < SMALLEST:
+        return f"under {SMALLEST:g}" if value > 0 else f"above -{SMALLEST:g}"
     return f"{three_digits(value)} {unit}".rstrip()
 
 

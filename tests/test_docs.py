@@ -1,5 +1,6 @@
 """The documents keep their word: commands exist, have help, and the ones shown run."""
 
+import json
 import re
 import shlex
 import subprocess
@@ -10,6 +11,7 @@ import pytest
 from typer.main import get_command
 
 from pdclass.cli.app import app
+from pdclass.jobs.score import base_bundle
 
 ROOT = Path(__file__).parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -64,6 +66,18 @@ def test_links_in_documents_lead_somewhere(path):
     """Every relative link of a document leads to a file of the project."""
     links = re.findall(r"\]\(([^)#:]+)\)", path.read_text(encoding="utf-8"))
     assert all((path.parent / link).exists() for link in links)
+
+
+def test_figures_in_the_readme_are_those_of_the_shipped_bundle():
+    """What the README says of the base bundle is what its manifest holds."""
+    manifest = json.loads((base_bundle() / "manifest.json").read_text(encoding="utf-8"))
+    metrics = manifest["account"]["metrics"]
+    rows = dict(re.findall(r"^  \| ([^|]+) \| ([^|]+) \|$", README, flags=re.MULTILINE))
+    dangerous = f"{metrics['switchgear_as_interference_count']} of {metrics['switchgear_pulses']} pulses"
+    assert rows["switchgear decided as interference (the dangerous one)"] == dangerous
+    assert rows["undecided"] == f"{metrics['share_undecided']:.2f}"
+    assert rows["accuracy among the decided"] == f"{metrics['accuracy_decided']:.2f}"
+    assert rows["balanced accuracy of the likeliest label"].startswith(f"{metrics['balanced_accuracy']:.2f};")
 
 
 def test_cautions_stand_in_the_readme():

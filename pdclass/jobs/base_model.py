@@ -9,7 +9,8 @@ from pdclass.extract import ExtractSettings
 from pdclass.jobs.simulate import by_rate, labelled_pulses, scenario_path
 from pdclass.jobs.talk import SILENT, Silent, Talk, each
 from pdclass.jobs.train import fit, measured
-from pdclass.model.bundle import write_bundle
+from pdclass.model.bundle import BundleParts, write_bundle
+from pdclass.model.decision import decide
 from pdclass.pulses import FloatArray, PulseSet
 from pdclass.sim.scenario import SIMULATOR_VERSION, Scenario, capture_count, read_scenario, simulate_capture
 from pdclass.training.card import with_card
@@ -57,7 +58,8 @@ def make_base(
         found,
         title=f"Bundle {out.name}",
         tested_on=f"Tested on {tested} simulated circuits of the same distributions (seed {TEST_SEED}), none of which "
-        "it was trained on. Simulated pulses only: how it does on field pulses has not been measured.",
+        "it was trained on. Simulated pulses only: how it does on field pulses has not been measured. "
+        + _neighbours(parts, test_values, test_pulses),
         trained_on=f"Trained on simulated pulses alone: {count} circuits of the world `{path.stem}` "
         f"(seed {SEED}, simulator version {SIMULATOR_VERSION}), each with its own cable, near end, "
         "sensor, rate and interference. "

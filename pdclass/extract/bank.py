@@ -73,7 +73,7 @@ def dither(first: int, last: int) -> FloatArray:
 def whitened(
     counts: NDArray[Any], taps: WaveArray, offset: float, bounds: tuple[int, int], first: int, last: int
 ) -> WaveArray:
-    """Whitened samples `first` to `last` of a segment; what came before the segment is its beginning, turned round.
+    """Whitened samples `first` to `last` of a segment; what came before it is predicted backwards.
 
     Parameters
     ----------
@@ -88,12 +88,28 @@ def whitened(
     signal = as_signal(counts, begin, last, offset)
     short = order - (first - begin)
     if short:
-        head = as_signal(counts, bounds[0], min(bounds[0] + short + 1, bounds[1]), offset)
-        mirrored = np.resize((2 * head[0] - head[1:])[::-1], short) if head.size > 1 else np.zeros(short, np.float32)
-        signal = np.concatenate([mirrored.astype(np.float32), signal])
+        head = as_signal(counts, bounds[0], min(bounds[0] + order, bounds[1]), offset)
+        signal = np.concatenate([continued_back(head, taps, short), signal])
     out = np.empty(last - first, np.float32)
     whiten_into(signal, taps, out)
     return out
+
+
+@_njit
+def continued_back(head: WaveArray, taps: WaveArray, count: int) -> WaveArray:  # pragma: no cover - compiled
+    """The samples that the background would have had before a beginning, predicted backwards from it.
+
+    The prediction of a stationary background is the same in both directions of time, so its carriers run through.
+    """
+    order = taps.size - 1
+    joined = np.zeros(count + order, np.float32)
+    joined[count : count + head.size] = head
+    for i in range(count - 1, -1, -1):
+        total = np.float32(0.0)
+        for k in range(1, order + 1):
+            total -= taps[k] * joined[i + k]
+        joined[i] = total
+    return joined[:count]
 
 
 def box_noise(pieces: list[WaveArray], scales: int) -> FloatArray:

@@ -21,6 +21,9 @@ FAR_ENDS_S = np.array([0.0, 15e-9, 50e-9, 150e-9])
 ALIKE_SURE = 0.92
 ALIKE = 0.75
 ALIKE_MAYBE = 0.55
+#: Below so many noise levels a shape cannot be compared: after a pulse three times as large an echo stays possible.
+FAINT = 8.0
+FAINT_RATIO = 1 / 3
 SLOWER = 0.01
 RECURRENCE_S = 50e-9
 RECURRENCES = 3
@@ -143,7 +146,8 @@ def _likenesses(events: Sequence[Event], child: int, rate_hz: float, longest_s: 
         if events[child].peak < SMALLER * events[parent].peak:
             scores = path_likeness(events[parent].wave, events[child].wave, rate_hz)
             best, ratio = float(scores.max()), events[child].peak / events[parent].peak
-            if best >= ALIKE_MAYBE:
+            faint = events[child].peak < FAINT and ratio < FAINT_RATIO
+            if best >= ALIKE_MAYBE or faint:
                 slower = best > scores[:, 0].max() + SLOWER
                 found.append(Likeness(parent, child, delay, ratio, best, slower=slower))
     return found

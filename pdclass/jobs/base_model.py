@@ -69,6 +69,18 @@ def make_base(
     return write_bundle(out, parts, replace=replace_old)
 
 
+def _neighbours(parts: BundleParts, values: FloatArray, pulses: PulseSet) -> str:
+    """What becomes of pulses from a neighbour's cable: they come over the busbar, as those of the switchgear do."""
+    decisions = decide(parts, values, pulses)
+    table = pulses.table[pulses.table["echo_of"].isna()]
+    theirs = ((table["label"] == "cable") & table["distance_m"].isna()).to_numpy()
+    as_switchgear = decisions.decided & (decisions.likeliest == parts.classes.index("switchgear"))
+    return (
+        f"Of the cable pulses, {theirs.sum()} come from a neighbour's cable over the busbar; "
+        f"{(theirs & as_switchgear).sum()} of these are decided as switchgear."
+    )
+
+
 def drawn_pulses(world: Scenario, numbers: range, seed: int, *, jobs: int, talk: Talk) -> tuple[FloatArray, PulseSet]:
     """Features and pulses of simulated captures, each found by the extractor as in real captures."""
     calls = [(world, number, seed) for number in numbers]

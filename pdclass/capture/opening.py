@@ -10,6 +10,7 @@ from pdclass.capture.sigmf import read_sigmf
 from pdclass.errors import InputError, complaint
 from pdclass.pulses import Capture
 
+_LONGEST_NAME = 120
 _READ = "a SigMF recording (NAME.sigmf-meta, NAME.sigmf-data or NAME)"
 
 
@@ -22,6 +23,7 @@ def open_capture(path: Path | str, fill: FillIns | None = None) -> Capture:
         If the path is a folder, has an ending that is not read, or anything about the file is wrong.
     """
     path = Path(path)
+    check_name(path)
     try:
         _refuse_other_kinds(path)
         return read_sigmf(path, fill or FillIns())
@@ -31,9 +33,27 @@ def open_capture(path: Path | str, fill: FillIns | None = None) -> Capture:
         raise InputError(f"{path}: not readable as a capture ({error}); write it again") from None
 
 
+def check_name(path: Path) -> None:
+    """Refuse a name that cannot stand in a verdict folder or on a line of a report.
+
+    Raises
+    ------
+    InputError
+        If it is longer than 120 characters or holds a line break or another control character.
+    """
+    name = path.name
+    shown = "".join(letter if letter.isprintable() else "?" for letter in name)[:60]
+    if not name.isprintable() or len(name) > _LONGEST_NAME:
+        expected = f"at most {_LONGEST_NAME} printable characters"
+        found = f"{len(name)} characters" if name.isprintable() else "a character that cannot be printed"
+        raise InputError(complaint(shown, "file name", expected=expected, found=found, advice="rename the file"))
+
+
 def _refuse_other_kinds(path: Path) -> None:
     if path.name.endswith((META_ENDING, SAMPLES_ENDING)) or Path(f"{path}{META_ENDING}").exists():
         return
+    if not path.exists():
+        raise InputError(f"{path}: no such file or folder; check the name")
     if path.is_dir():
         advice = f"give its recordings: {path}/*{META_ENDING}"
         raise InputError(complaint(path, "kind", expected=_READ, found="a folder", advice=advice))

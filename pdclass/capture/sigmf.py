@@ -322,8 +322,8 @@ def _annotation(each: Fields, offset: int, total: int) -> Annotation:
         if value is not None and not isinstance(value, str):
             raise each.wrong(name, "text", shown(value))
     human = generator is not None and generator.startswith("human:")
-    remarks = [comment] if comment else []
-    remarks += [f"label: {label}"] if label and label not in LABELS else []
+    remarks = [f"label: {label}"] if label and label not in LABELS else []
+    remarks += [comment] if comment else []
     remarks += [f"generator: {generator}"] if generator and not human and generator != "simulated" else []
     basis = each.text("pdclass:basis", BASES)
     return Annotation(

@@ -156,7 +156,17 @@ def _read(opened: _Opened, fill: FillIns) -> tuple[PulseSet, list[str]]:
     _derive(opened, columns, waves, notes)
     simulated = any(name in columns for name in SIMULATED_COLUMNS)
     table = typed_table(pd.DataFrame(columns, index=ids), ids, simulated=simulated)
-    return PulseSet(waves, chains, table), notes
+    return PulseSet(waves, chains, _with_lost_parents(opened.where, table, notes)), notes
+
+
+def _with_lost_parents(where: str, table: pd.DataFrame, notes: list[str]) -> pd.DataFrame:
+    """Echoes whose parent is not in the table are kept as pulses that may be echoes: none gets lost unsaid."""
+    lost = table["echo_of"].notna() & ~table["echo_of"].isin(table.index)
+    if not lost.any():
+        return table
+    notes.append(f"{where}: {lost.sum()} echoes without their parent are kept as pulses whose every label stays open")
+    maybe = table["maybe_echo_of"].where(~lost, table["echo_of"])
+    return table.assign(maybe_echo_of=maybe, echo_of=table["echo_of"].where(~lost, None))
 
 
 def _check_needed(opened: _Opened, fill: FillIns) -> None:

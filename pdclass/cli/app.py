@@ -52,14 +52,18 @@ def main() -> None:
     """Run a command; an error of ours becomes one line on stderr and its exit code."""
     debug = "--debug" in sys.argv
     try:
-        app(standalone_mode=True)
+        sys.exit(app(standalone_mode=False) or 0)
     except PdclassError as error:
         _end(f"pdclass: {error}", error.exit_code, debug=debug)
-    except KeyboardInterrupt:
-        _end("pdclass: stopped; the same command goes on", 130, debug=False)
+    except (KeyboardInterrupt, typer.Abort):
+        _end("pdclass: stopped; what was complete is kept, and the same command goes on from there", 130, debug=False)
     except BrokenPipeError:
         sys.exit(1)
     except Exception as error:  # noqa: BLE001 - whatever else happens is a defect, said in one line
+        if callable(show := getattr(error, "show", None)):
+            # the parser's own complaint about how a command was used
+            show()
+            sys.exit(getattr(error, "exit_code", 2))
         line = f"pdclass: defect: {type(error).__name__}: {error}; run again with --debug and report it"
         _end(" ".join(line.split()), 1, debug=debug)
 

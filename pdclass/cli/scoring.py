@@ -102,7 +102,8 @@ def _say_skipped(skipped: tuple[str, ...], talk: Terminal) -> None:
     for line in skipped:
         talk.say(f"skipped: {line}")
     if skipped:
-        raise SkippedInputsError(f"{len(skipped)} inputs were skipped, see above; the rest is done")
+        count = "one input was" if len(skipped) == 1 else f"{len(skipped)} inputs were"
+        raise SkippedInputsError(f"{count} skipped, see above; the rest is done")
 
 
 def _fill_ins(

@@ -54,9 +54,12 @@ def shares(text: str | None, option: str) -> dict[str, float] | None:
     if text is None:
         return None
     try:
-        return {name.strip(): float(share) for name, share in (part.split("=") for part in text.split(","))}
+        pairs = [(name.strip(), float(share)) for name, share in (part.split("=") for part in text.split(","))]
     except ValueError:
         raise InputError(f"{option}: expected cable=0.1,local=0.2,..., found '{text}'") from None
+    if len(dict(pairs)) < len(pairs):
+        raise InputError(f"{option}: expected each label once, found one twice in '{text}'")
+    return dict(pairs)
 
 
 CIRCUIT = typer.Option(None, "--circuit", help="Circuit, where the file does not name it.", metavar="NAME")

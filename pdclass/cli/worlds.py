@@ -35,8 +35,10 @@ def simulate(
     ),
     out: Path = typer.Option(..., "--out", help="Folder for the captures and pulses.parquet."),
     seed: int = typer.Option(1, "--seed", min=0, help="Draws another world from the same distributions."),
-    captures: int = typer.Option(None, "--captures", min=1, help="Captures; the scenario's number by default."),
-    pulses: int = typer.Option(None, "--pulses", min=0, help="Planted pulses a capture."),
+    captures: int = typer.Option(
+        None, "--captures", min=1, max=100_000, help="Captures; by default the scenario's number."
+    ),
+    pulses: int = typer.Option(None, "--pulses", min=0, max=100_000, help="Planted pulses a capture."),
     jobs: int = JOBS,
     force: bool = FORCE,
     as_json: bool = JSON,

@@ -46,6 +46,7 @@ BLOCK_SAMPLES = 1 << 16
 NOISE_REACH_S = 1e-3
 NOISE_STRIDE = 31
 LABEL_REACH_S = 0.5e-6
+LARGEST_V = 1000.0
 _GOLDEN = 0.6180339887498949
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.
 LIMIT_PULSE_WIDTH_S = 50e-9
@@ -259,6 +260,7 @@ def _pulse_set(
     ids = [digest.pulse_id(capture.digest, capture.sensor, int(onset)) for onset in onsets]
     waves = _windows(capture, onsets)
     noise_v = _noise_beside(capture, places)
+    _check_volts(capture, waves)
     peak_v = _signed_peaks(waves, ends - onsets)
     with np.errstate(divide="ignore", invalid="ignore"):
         snr_db = 20 * np.log10(np.abs(peak_v) / noise_v)
@@ -290,6 +292,16 @@ def _pulse_set(
     simulated = any(note.family is not None for note in capture.annotations)
     table = typed_table(pd.DataFrame(rows, index=range(len(ids))), ids, simulated=simulated)
     return PulseSet(waves, (capture.chain,), table), notes
+
+
+def _check_volts(capture: Capture, waves: WaveArray) -> None:
+    """Refuse waves that no sensor gives: the size of a count must be wrong."""
+    largest = float(np.nanmax(np.abs(waves))) if waves.size else 0.0
+    if not largest <= LARGEST_V:
+        raise InputError(
+            f"{capture.name}: volts_per_count: expected waves of at most {LARGEST_V:g} V, found {largest:.3g} V; "
+            "correct it in the metadata, or with --volts-per-count where the file does not state it"
+        )
 
 
 def _times(capture: Capture, onset_s: FloatArray) -> Any:
@@ -376,9 +388,12 @@ def _labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tuple[dict[
     """
     reach = LABEL_REACH_S * capture.chain.rate_hz
     given = [note for note in capture.annotations if note.label is not None]
+    foreign = sum((note.comment or "").startswith("label: ") for note in capture.annotations)
+    said_foreign = f"{capture.name}: {foreign} annotations carry labels that pdclass does not know; they are not used"
     rows = np.array([row for row in range(len(onsets)) if row not in echoes], np.int64)
     if not len(rows):
         notes = [_lost(capture, given, len(given))] if given else []
+        notes += [said_foreign] if foreign else []
         return _label_columns([None] * len(onsets)), notes
     apart = [np.abs(onsets[rows] - note.onset_sample) for note in given]
     nearest = [int(rows[np.argmin(distance)]) for distance in apart]
@@ -393,6 +408,7 @@ def _labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tuple[dict[
             said[nearest[k]] = None
     lost = [given[k] for k in range(len(given)) if apart[k].min() > reach]
     notes += [_lost(capture, lost, len(given))] if lost else []
+    notes += [said_foreign] if foreign else []
     return _label_columns([said.get(row) for row in range(len(onsets))]), notes
 
 

@@ -31,6 +31,8 @@ def crossing(wave: FloatArray, peak: int, level: float, *, forward: bool) -> flo
     if not below.size:
         return float("nan")
     k = int(below[0])
+    if k == 0:
+        return float("nan")
     step = k - 1 + (side[k - 1] - level) / (side[k - 1] - side[k])
     return float(peak + step if forward else peak - step)
 

@@ -56,7 +56,7 @@ def make_base(
     parts = with_card(
         parts,
         found,
-        title=f"Bundle {out.name}",
+        title="The base bundle",
         tested_on=f"Tested on {tested} simulated circuits of the same distributions (seed {TEST_SEED}), none of which "
         "it was trained on. Simulated pulses only: how it does on field pulses has not been measured. "
         + _neighbours(parts, test_values, test_pulses),

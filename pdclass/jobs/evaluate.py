@@ -7,14 +7,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, Literal
 
-from pdclass.errors import TooFewError
 from pdclass.features import feature_digests
 from pdclass.jobs.simulate import fresh_folder
 from pdclass.jobs.talk import SILENT, Talk
 from pdclass.jobs.train import measured, read_tables
 from pdclass.model.bundle import Bundle, read_bundle
 from pdclass.pulses import PulseSet
-from pdclass.training.card import evaluation_text, three
+from pdclass.training.card import evaluation_text, spoken
 from pdclass.training.evaluate import evaluate
 from pdclass.training.groups import group_names
 from pdclass.writing import write_text
@@ -47,7 +46,7 @@ def evaluate_bundle(
     found = evaluate(model, values, together)
     fresh_folder(out, force=force)
     write_text(out / "evaluation.md", evaluation_text(found, title=f"Bundle {model.digest[:16]}", warnings=seen))
-    lines = (*notes, *seen, *_headline(found.figures))
+    lines = (*notes, *seen, *spoken(found.figures))
     return Evaluated(found.figures, out / "evaluation.md", lines)
 
 
@@ -58,9 +57,3 @@ def _seen(model: Bundle, pulses: PulseSet) -> tuple[str, ...]:
     if not shared:
         return ()
     return (f"warning: {len(shared)} groups were trained on, as {min(shared)}; figures are too good",)
-
-
-def _headline(figures: dict[str, Any]) -> tuple[str, ...]:
-    if figures.get("pulses") == 0:
-        raise TooFewError("labels: no labelled pulse; label some first")
-    return tuple(f"{name.replace('_', ' ')}: {three(value)}" for name, value in figures.items())

@@ -49,7 +49,7 @@ def extract_captures(
     if not out.resolve().parent.is_dir():
         raise InputError(f"{out.resolve().parent}: no such folder; make it first")
     calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in dict.fromkeys(captures)]
-    made = each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures read")
+    made = _once(each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures looked at"))
     read = [one for one in made if not isinstance(one, str)]
     skipped = tuple(one for one in made if isinstance(one, str))
     if not read:
@@ -57,6 +57,21 @@ def extract_captures(
     _one_rate(read)
     write_pulses(out, joined([extraction.pulses for _, extraction in read]))
     return Extracted(out, tuple(name for name, _ in read), tuple(extraction for _, extraction in read), skipped)
+
+
+def _once(made: Sequence[tuple[str, Extraction] | str]) -> list[tuple[str, Extraction] | str]:
+    """The same without captures whose samples came before: a pulse has one name and stands there once."""
+    names: dict[str, str] = {}
+    kept: list[tuple[str, Extraction] | str] = []
+    for one in made:
+        if isinstance(one, str) or not len(one[1].pulses.table):
+            kept.append(one)
+            continue
+        digest = str(one[1].pulses.table["capture_digest"].iloc[0])
+        former = names.setdefault(digest, one[0]) if digest not in names else names[digest]
+        first = all(isinstance(k, str) or k[0] != former for k in kept)
+        kept.append(one if first else f"{one[0]}: holds the same samples as {former}; give each recording once")
+    return kept
 
 
 def _one_rate(read: Sequence[tuple[str, Extraction]]) -> None:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from importlib.metadata import version
 from pathlib import Path
@@ -11,7 +11,7 @@ from typing import Any
 import pandas as pd
 
 from pdclass import __version__
-from pdclass.capture import FillIns, open_capture, read_pulses
+from pdclass.capture import FillIns, check_name, open_capture, read_pulses
 from pdclass.digest import file_digest
 from pdclass.errors import InputError, PdclassError
 from pdclass.extract import ExtractSettings, extract
@@ -99,7 +99,8 @@ def score_inputs(
     """
     bundle_path = bundle or base_bundle()
     model = read_bundle(bundle_path, feature_digests())
-    paths = [path for given in inputs for path in _expanded(given)]
+    paths = list(dict.fromkeys(path for given in inputs for path in _expanded(given, talk)))
+    _check_apart(out, paths)
     chosen, fill = settings or ExtractSettings(), fill or FillIns()
     given = [{"given": str(path), **_identity(path)} for path in paths]
     plan = {
@@ -112,8 +113,14 @@ def score_inputs(
         | {"pdclass": __version__},
     }
     staging = batch.begin_folder(out, plan, force=force)
-    calls = [(path, item, staging, bundle_path, fill, chosen) for path, item in zip(paths, given, strict=True)]
-    states = each(_score_one, calls, jobs=jobs, talk=talk, words="inputs scored")
+    twice = _same_samples(given)
+    calls = [
+        (path, item, staging, bundle_path, fill, chosen)
+        for path, item in zip(paths, given, strict=True)
+        if str(path) not in twice
+    ]
+    done = iter(each(_score_one, calls, jobs=jobs, talk=talk, words="inputs looked at"))
+    states = [twice.get(str(path)) or next(done) for path in paths]
     skipped = tuple(state for state in states if state != "scored")
     if len(skipped) == len(paths):
         batch.drop_folder(staging)
@@ -139,7 +146,14 @@ def _report(staging: Path, run: dict[str, Any], model: Bundle, truth: Truth | No
     return batch_report(staging, run, model, truth=truth.labels, planted=truth.planted)
 
 
-def _expanded(given: Path) -> list[Path]:
+def _check_apart(out: Path, paths: Sequence[Path]) -> None:
+    """Refuse an output folder that holds an input: it would be replaced."""
+    inside = [path for path in paths if path.resolve().is_relative_to(out.resolve())]
+    if inside:
+        raise InputError(f"{out}: --out: expected a folder without inputs, found {inside[0]} in it; choose another")
+
+
+def _expanded(given: Path, talk: Talk) -> list[Path]:
     """The inputs a path stands for: itself, or what a folder holds."""
     if not given.is_dir():
         return [given]
@@ -149,7 +163,23 @@ def _expanded(given: Path) -> list[Path]:
     if not found:
         raise InputError(f"{given}: no captures (.sigmf-meta) or pulse tables (.parquet) in this folder; name another")
     captures = [path for path in found if path.suffix == ".sigmf-meta"]
+    if captures and len(captures) < len(found):
+        talk.say(f"{given}: its {len(captures)} captures are scored; name its pulse tables to score those")
     return captures or found
+
+
+def _same_samples(given: Sequence[Mapping[str, str | None]]) -> dict[str, str]:
+    """Why inputs are skipped that hold the samples of an earlier one: its pulses would be counted twice."""
+    first: dict[str, Mapping[str, str | None]] = {}
+    skipped = {}
+    for item in given:
+        digest, name = item["digest"], str(item["given"])
+        former = first.setdefault(digest, item) if digest else item
+        if former is not item:
+            same = former.get("meta_digest") == item.get("meta_digest")
+            what = "the same recording" if same else "the same samples with other metadata; correct one of them"
+            skipped[name] = f"{name}: holds the samples of {former['given']}: {what}"
+    return skipped
 
 
 def _identity(path: Path) -> dict[str, str | None]:
@@ -183,11 +213,12 @@ def _score_one(
             shard = _table_shard(path, digest, fill, model)
         else:
             shard = _capture_shard(capture, settings, model)
-        batch.write_shard(staging, shard)
     except PdclassError as error:
         if error.exit_code not in {2, 3}:
             raise
         return str(error)
+    # what cannot be written is no fault of the input: it ends the run, which the same command continues
+    batch.write_shard(staging, shard)
     return "scored"
 
 
@@ -213,6 +244,7 @@ def _capture_shard(capture: Capture, settings: ExtractSettings, model: Bundle) -
 
 
 def _table_shard(path: Path, digest: str, fill: FillIns, model: Bundle) -> batch.Shard:
+    check_name(path)
     pulses, notes = read_pulses(path, fill)
     echoes = int(pulses.table["echo_of"].notna().sum())
     record = batch.capture_record(

@@ -15,12 +15,15 @@ from pdclass.errors import InputError
 from pdclass.features import ANALYSIS_BAND_HZ, ANALYSIS_RATE_HZ, CATALOGUE, feature_digests, feature_table
 from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk
-from pdclass.model.bundle import BundleParts, write_bundle
+from pdclass.model.bundle import BundleParts, check_place, write_bundle
 from pdclass.model.columns import thin
-from pdclass.pulses import FloatArray, PulseSet
+from pdclass.pulses import LABELS, FloatArray, PulseSet
 from pdclass.training.card import with_card
 from pdclass.training.fit import train
 from pdclass.training.settings import TrainSettings
+
+#: A label that hardly ever occurs still has to be possible.
+_SMALLEST_SHARE = 0.001
 
 
 @dataclass(frozen=True)
@@ -54,15 +57,14 @@ def train_bundle(
         If there are too few groups, altogether or of a class.
     """
     settings = _settings(error_rate, mix, group, private=private, seed=seed)
-    if out.exists() and not force:
-        raise InputError(f"{out}: exists already; choose another name or --force")
+    check_place(out, replace=force)
     sets, notes = read_tables(pulses)
     talk.say(f"{sum(len(one.table) for one in sets)} pulses read")
     values, together = measured(sets)
     talk.say(f"{values.shape[1]} features measured; fitting")
     provenance = {"inputs": [{"name": path.name, "digest": file_digest(path)} for path in tables_of(pulses)]}
     parts = fit(values, together, settings, provenance=provenance)
-    parts = with_card(parts, None, title=f"Bundle {out.name}")
+    parts = with_card(parts, None, title="Bundle trained on labelled pulses")
     digest = write_bundle(out, parts, replace=force)
     return Trained(out, digest, (*notes, *parts.account["notes"]))
 
@@ -118,13 +120,27 @@ def measured(sets: Sequence[PulseSet], names: Sequence[str] | None = None) -> tu
 def _settings(
     error_rate: float, mix: Mapping[str, float] | None, group: str | None, *, private: bool, seed: int
 ) -> TrainSettings:
+    if not 0.01 <= error_rate <= 0.5:
+        raise InputError(f"--error-rate: expected 0.01 to 0.5, found {error_rate:g}; choose one between")
+    if group not in {None, "circuit"}:
+        raise InputError(f"--group: expected circuit, found {group!r}; leave it out for circuit and site")
+    if mix is not None:
+        _check_mix(mix)
     by = "circuit-and-site" if group is None else group
     chosen = {"error_rate": error_rate, "mix": mix, "group_by": by, "private": private, "seed": seed}
     try:
         return TrainSettings.model_validate(chosen)
     except ValidationError as error:
         first = error.errors()[0]
-        option = {"error_rate": "--error-rate", "mix": "--mix", "group_by": "--group", "seed": "--seed"}[
-            str(first["loc"][0])
-        ]
-        raise InputError(f"{option}: {first['msg']}, found {first['input']!r}") from None
+        raise InputError(f"{first['loc'][0]}: {first['msg']}, found {first['input']!r}") from None
+
+
+def _check_mix(mix: Mapping[str, float]) -> None:
+    strange = sorted(set(mix) - set(LABELS))
+    if strange:
+        raise InputError(f"--mix: expected shares of {', '.join(LABELS)}, found '{strange[0]}'; correct the name")
+    low = [name for name, share in mix.items() if not share >= _SMALLEST_SHARE]
+    if low:
+        raise InputError(f"--mix: {low[0]}: expected at least {_SMALLEST_SHARE}, found {mix[low[0]]:g}; raise it")
+    if abs(sum(mix.values()) - 1) > 0.01:
+        raise InputError(f"--mix: expected shares that add up to 1, found {sum(mix.values()):.3g}; correct them")

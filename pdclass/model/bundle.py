@@ -123,13 +123,7 @@ def write_bundle(path: Path, parts: BundleParts, *, replace: bool = False) -> st
     InputError
         If the folder exists (and is not to be replaced) or its parent does not.
     """
-    if not path.parent.is_dir():
-        raise InputError(f"{path.parent}: expected a folder to write the bundle in, found none; make it first")
-    settle(path, SIZE_LIMITS)
-    if path.exists() and not replace:
-        raise InputError(f"{path}: expected nothing there yet, found something; choose another name or --force")
-    if path.exists() and not _replaceable(path):
-        raise InputError(f"{path}: expected a bundle to replace, found something else; choose another name")
+    check_place(path, replace=replace)
     fresh = path.with_name(f".{path.name}.{os.getpid()}.part")
     fresh.mkdir()
     try:
@@ -182,6 +176,23 @@ def _novelty_entry(novelty: NoveltyReference) -> dict[str, Any]:
         "scale": [float(value) for value in novelty.scale],
         "limit": float(novelty.limit) if np.isfinite(novelty.limit) else None,
     }
+
+
+def check_place(path: Path, *, replace: bool) -> None:
+    """Refuse a place where no bundle can be written: to be asked before the work is done.
+
+    Raises
+    ------
+    InputError
+        If its parent is no folder, if something is there and not to be replaced, or if that is no bundle.
+    """
+    if not path.parent.is_dir():
+        raise InputError(f"{path.parent}: expected a folder to write the bundle in, found none; make it first")
+    settle(path, SIZE_LIMITS)
+    if path.exists() and not replace:
+        raise InputError(f"{path}: expected nothing there yet, found something; choose another name or --force")
+    if path.exists() and not _replaceable(path):
+        raise InputError(f"{path}: expected a bundle to replace, found something else; choose another name")
 
 
 def _replaceable(path: Path) -> bool:
@@ -258,7 +269,8 @@ def _check_files(folder: Path) -> None:
     for file in there:
         if file.name not in SIZE_LIMITS:
             found = f"'{file.name}'"
-            raise RefusedError(complaint(folder, "files", expected=", ".join(SIZE_LIMITS), found=found, advice=_ADVICE))
+            advice = "remove it if you know it is harmless; a bundle holds nothing else"
+            raise RefusedError(complaint(folder, "files", expected=", ".join(SIZE_LIMITS), found=found, advice=advice))
         if file.is_symlink() or not file.is_file():
             found = "a link or folder"
             raise RefusedError(complaint(file, "file", expected="a plain file", found=found, advice=_ADVICE))

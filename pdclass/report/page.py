@@ -37,7 +37,14 @@ from pdclass.report.summary import (
     with_names,
 )
 from pdclass.verdict.batch import read_pulse_tables, read_shard_pulses, read_verdicts
-from pdclass.verdict.sentences import CABLE_NOTE, doubt_in_words, quantity, standing_notes, three_digits
+from pdclass.verdict.sentences import (
+    CABLE_NOTE,
+    MAYBE_ECHO_NOTE,
+    doubt_in_words,
+    quantity,
+    standing_notes,
+    three_digits,
+)
 
 #: Most causes of doubt that get a drawn example, and most circuits and sensors that get phase panels.
 _MOST_CAUSES = 6
@@ -96,6 +103,7 @@ def batch_report(
         unchecked=_unchecked(batch),
         provenance=_provenance(run, bundle),
         mix=_mix_words(bundle),
+        record=_record_words(bundle),
         error_percent=f"{100 * bundle.error_rate:.3g}",
         cautions=CAUTIONS,
         short_caution=SHORT_CAUTION,
@@ -217,8 +225,8 @@ def _card(batch: _Batch, pulse: str, edges: Mapping[str, Any]) -> dict[str, Any]
         "probabilities": [(name, percent(row[f"p_{name}"]), name in row["label_set"]) for name in batch.bundle.classes],
         "odds": _odds(float(row["log_odds"])),
         "reasons": [row[f"reason_{place}"] for place in (1, 2, 3) if row[f"reason_{place}"] is not None],
-        "notes": standing_notes(row),
-        "doubt": doubt_in_words(row),
+        "notes": [note for note in standing_notes(row) if note != MAYBE_ECHO_NOTE],
+        "doubt": "; ".join([doubt_in_words(row), *(note for note in standing_notes(row) if note == MAYBE_ECHO_NOTE)]),
         "echoes": _echo_words(batch.pulses, pulse, float(row["onset_s"])),
         "figures": [Markup(drawing) for drawing in drawings],  # noqa: S704
     }
@@ -279,12 +287,20 @@ def _comparison(batch: _Batch, truth: pd.Series[Any], planted: Mapping[str, int]
         }
         for label in found.table.index
     ]
+    rows.append(_nothing_planted(batch, truth, list(found.table.columns)))
     wrong = [
         {"pulse": pulse, "planted": row["planted"], "label": row["label"], "where": _where(row.to_dict())}
         for pulse, row in found.wrong.head(_MOST_WRONG).iterrows()
     ]
     columns = list(found.table.columns)
     return {"rows": rows, "columns": columns, "wrong": wrong, "wrong_total": len(found.wrong), "planted": planted}
+
+
+def _nothing_planted(batch: _Batch, truth: pd.Series[Any], columns: Sequence[str]) -> dict[str, Any]:
+    """The row of verdicts on pulses that nothing was planted for; they have no recall."""
+    others = batch.verdicts.loc[~batch.verdicts.index.isin(truth.dropna().index), "label"].value_counts()
+    counts = {name: int(others.get(name, 0)) for name in columns}
+    return {"label": "nothing planted", "counts": counts, "planted": "", "recall": "", "decided": ""}
 
 
 def _unchecked(batch: _Batch) -> list[tuple[str, str]]:
@@ -299,6 +315,23 @@ def _captures_words(names: Sequence[str], batch: _Batch) -> str:
         return "all captures"
     shown = ", ".join(names[:_MOST_LISTED])
     return shown if len(names) <= _MOST_LISTED else f"{shown} and {len(names) - _MOST_LISTED} more"
+
+
+def _record_words(bundle: Bundle) -> str:
+    """How well the bundle did where it was tested, the dangerous error first; that it was not, where it was not."""
+    metrics = bundle.manifest.get("account", {}).get("metrics")
+    if not metrics or metrics.get("accuracy_decided") is None:
+        return "The model that decided carries no figures of a test: how often it is right is not known"
+    provenance = bundle.manifest["account"].get("provenance", {})
+    where = "simulated circuits" if "scenario" in provenance else "circuits"
+    dangerous = metrics.get("switchgear_as_interference_share")
+    words = f"Tested on {metrics['groups']} {where} that it had not seen, the model that decided"
+    if dangerous is not None:
+        words += f" called {percent(dangerous)} of the switchgear pulses interference,"
+    return (
+        f"{words} left {percent(metrics['share_undecided'])} undecided, and was right in "
+        f"{percent(metrics['accuracy_decided'])} of those it decided; its card in the folder `bundle` says more"
+    )
 
 
 def _mix_words(bundle: Bundle) -> str:

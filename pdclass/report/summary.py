@@ -255,6 +255,7 @@ def compare_with_truth(verdicts: pd.DataFrame, truth: pd.Series[Any], classes: S
     given = verdicts["label"].reindex(truth.index).fillna("echo")
     order = [label for label in classes if (truth == label).any()]
     table = pd.crosstab(truth, given).reindex(index=order, columns=[*classes, UNDECIDED, "echo"], fill_value=0)
+    table.index.name, table.columns.name = None, None
     total = table.sum(axis=1)
     right = pd.Series({label: table.loc[label, label] for label in order}, dtype=np.int64)
     decided = table[list(classes)].sum(axis=1)

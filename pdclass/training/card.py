@@ -30,6 +30,25 @@ _MUST_NOT = """\
 - Do not use it beyond the validity limits below, nor where its figures were not measured."""
 
 
+#: The figures at the head of a card, in words.
+HEADLINES: Mapping[str, str] = {
+    "balanced accuracy of the likeliest label": "balanced_accuracy",
+    "the same with local and switchgear merged": "balanced_accuracy_near_end_merged",
+    "share undecided": "share_undecided",
+    "accuracy among the decided": "accuracy_decided",
+    "balanced accuracy among the decided": "balanced_accuracy_decided",
+    "coverage of the label sets, mean over groups": "coverage_mean",
+    "coverage, 10th percentile of groups": "coverage_10th_percentile",
+    "coverage, worst group": "coverage_worst_group",
+    "mean size of the label sets": "set_size_mean",
+    "expected calibration error (10 bins)": "calibration_error",
+    "share unfamiliar": "share_unfamiliar",
+    "pulses": "pulses",
+    "groups": "groups",
+    "groups are made by": "groups_by",
+}
+
+
 def with_card(
     parts: BundleParts, evaluation: Evaluation | None, *, title: str, tested_on: str = "", trained_on: str = ""
 ) -> BundleParts:
@@ -122,24 +141,14 @@ def _dangerous(figures: Mapping[str, Any]) -> str:
 
 
 def _headline(figures: Mapping[str, Any]) -> str:
-    names = {
-        "balanced accuracy of the likeliest label": "balanced_accuracy",
-        "the same with local and switchgear merged": "balanced_accuracy_near_end_merged",
-        "share undecided": "share_undecided",
-        "accuracy among the decided": "accuracy_decided",
-        "balanced accuracy among the decided": "balanced_accuracy_decided",
-        "coverage of the label sets, mean over groups": "coverage_mean",
-        "coverage, 10th percentile of groups": "coverage_10th_percentile",
-        "coverage, worst group": "coverage_worst_group",
-        "mean size of the label sets": "set_size_mean",
-        "expected calibration error (10 bins)": "calibration_error",
-        "share unfamiliar": "share_unfamiliar",
-        "pulses": "pulses",
-        "groups": "groups",
-        "groups are made by": "groups_by",
-    }
-    rows = [{"figure": word, "value": figures[name]} for word, name in names.items()]
+    rows = [{"figure": word, "value": figures[name]} for word, name in HEADLINES.items()]
     return markdown(pd.DataFrame(rows, dtype=object))
+
+
+def spoken(figures: Mapping[str, Any]) -> list[str]:
+    """The figures as lines for a terminal, the dangerous one first."""
+    lines = [f"{word}: {three(figures[name])}" for word, name in HEADLINES.items() if figures[name] is not None]
+    return [_dangerous(figures).replace("**", ""), *lines]
 
 
 def _half(distance_m: float | None) -> str:

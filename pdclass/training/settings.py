@@ -35,7 +35,7 @@ class TrainSettings(Settings):
     reference_rows : most pulses kept for comparison and novelty.
     """
 
-    error_rate: Annotated[float, Field(gt=0, lt=1)] = 0.10
+    error_rate: Annotated[float, Field(ge=0.01, le=0.5)] = 0.10
     mix: dict[str, float] | None = None
     group_by: Literal["circuit-and-site", "circuit"] = "circuit-and-site"
     seed: Annotated[int, Field(ge=0, lt=2**32)] = 0

@@ -117,7 +117,8 @@ def begin_folder(out: Path, plan: Mapping[str, Any], *, force: bool = False) -> 
     ----------
     out : where the verdict folder is to stand.
     plan : what decides the result: inputs as given, settings, digests of bundle and catalogue, versions.
-    force : replace a verdict folder of another plan; strangers' files in it stay.
+    force : replace a verdict folder of another plan; strangers' files in it stay. A folder that holds anything but
+        an earlier run is never replaced.
 
     Raises
     ------
@@ -130,14 +131,20 @@ def begin_folder(out: Path, plan: Mapping[str, Any], *, force: bool = False) -> 
     settle(out, _PARTS)
     if out.exists() and not out.is_dir():
         raise InputError(complaint(out, "--out", expected="a folder", found="a file", advice="name another"))
-    if out.exists() and any(out.iterdir()) and not force and _plan_digest_of(out) != json_digest(dict(plan)):
+    if out.exists() and Path.cwd().is_relative_to(out):
+        advice = "name a folder inside it, or one elsewhere"
+        raise InputError(complaint(out, "--out", expected="a folder of its own", found="where you are", advice=advice))
+    standing = _plan_digest_of(out) if out.exists() and any(out.iterdir()) else json_digest(dict(plan))
+    if standing is None or (not force and standing != json_digest(dict(plan))):
         raise RefusedError(
             complaint(
                 out,
                 "--out",
                 expected="an empty folder or a verdict folder of the same run",
-                found="other content",
-                advice="choose another folder, or --force to replace the verdicts in it",
+                found="files of another kind" if standing is None else "verdicts of another run",
+                advice="choose another folder"
+                if standing is None
+                else "choose another folder, or --force to replace the verdicts in it",
             )
         )
     staging = out.parent / f".{out.name}.{json_digest(dict(plan))[:16]}.part"

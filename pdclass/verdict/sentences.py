@@ -234,7 +234,7 @@ def doubt_kind(row: Mapping[Any, Any]) -> str:
     if row["outside"] is not None:
         return f"outside what the model was trained on: {_limits_named(row['outside'])}"
     if row["unfamiliar"]:
-        return "unfamiliar: unlike anything the model was trained on"
+        return "unfamiliar: not like the pulses the model was trained on"
     members = list(row["label_set"])
     if len(members) == 1 and members[0] != row["likeliest"]:
         return f"contradictory: {row['likeliest']} is most probable, yet only {members[0]} stays in the set"
@@ -249,7 +249,9 @@ def doubt_in_words(row: Mapping[Any, Any]) -> str:
     if row["outside"] is not None:
         causes.append(f"outside what the model was trained on: {row['outside']}")
     if row["unfamiliar"]:
-        causes.append(f"unfamiliar (novelty {three_digits(float(row['novelty']))}): unlike anything trained on")
+        causes.append(
+            f"unfamiliar (novelty {three_digits(float(row['novelty']))}): not like what the model was trained on"
+        )
     members = list(row["label_set"])
     if not causes:
         return doubt_kind(row)
@@ -274,6 +276,6 @@ def standing_notes(row: Mapping[Any, Any]) -> list[str]:
         notes.append(CABLE_NOTE)
     if row.get("capture") is None:
         notes.append(LATER_ECHO_NOTE)
-    if row.get("maybe_echo_of") is not None:
+    if row.get("maybe_echo_of") is not None and not row["decided"]:
         notes.append(MAYBE_ECHO_NOTE)
     return notes

@@ -259,7 +259,7 @@ def test_foreign_labels_and_makers_are_kept_as_comments(edit):
     first = open_capture(path).annotations[0]
     assert first.label is None
     assert first.labelled_by is None
-    assert first.comment == "seen twice; label: corona?; generator: trigger box"
+    assert first.comment == "label: corona?; seen twice; generator: trigger box"
     assert first.sample_count == 3990
 
 

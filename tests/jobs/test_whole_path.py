@@ -7,7 +7,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from pdclass.capture import FillIns, open_capture, read_pulses
+from pdclass.capture import FillIns, open_capture, read_pulses, write_pulses
 from pdclass.errors import InputError, RefusedError, TooFewError
 from pdclass.jobs import base_model
 from pdclass.jobs.evaluate import evaluate_bundle
@@ -131,7 +131,7 @@ def test_one_flipped_byte_in_a_bundle_is_refused(tiny_world, tiny_bundle, tmp_pa
 def test_training_from_tables_writes_a_bundle_with_its_card(tiny_world, tmp_path):
     """`train` on the labelled tables of many circuits gives a bundle that says what it cannot promise."""
     done = train_bundle(list(tiny_world.pulse_tables), tmp_path / "own")
-    assert (tmp_path / "own" / "card.md").read_text().startswith("# Bundle own")
+    assert (tmp_path / "own" / "card.md").read_text().startswith("# Bundle trained on labelled pulses")
     manifest = json.loads((tmp_path / "own" / "manifest.json").read_text())
     assert manifest["error_rate"] == 0.1
     assert len(done.digest) == 64
@@ -176,3 +176,83 @@ def test_fill_ins_supply_what_a_table_lacks(tiny_world, tmp_path):
     extract_captures([tmp_path / "c.sigmf-meta"], tmp_path / "p.parquet", fill=FillIns(site="Lantern Substation"))
     pulses, _ = read_pulses(tmp_path / "p.parquet")
     assert set(pulses.table["site"]) == {"Lantern Substation"}
+
+
+def test_the_same_samples_twice_are_scored_once(tiny_world, tiny_bundle, tmp_path):
+    """A recording under a second name, or with other metadata, is skipped with the reason: its pulses count once."""
+    capture = tiny_world.captures[0]
+    for name, circuit in (("copy", None), ("other", "Other Lane")):
+        meta = json.loads(capture.read_text())
+        meta["global"]["pdclass:circuit"] = circuit or meta["global"]["pdclass:circuit"]
+        text = json.dumps(meta) if circuit else capture.read_text()
+        (tmp_path / f"{name}.sigmf-meta").write_text(text)
+        (tmp_path / f"{name}.sigmf-data").write_bytes(capture.with_suffix(".sigmf-data").read_bytes())
+    inputs = [capture, tmp_path / "copy.sigmf-meta", tmp_path / "other.sigmf-meta"]
+    done = score_inputs(inputs, tmp_path / "v", bundle=tiny_bundle, report=False)
+    assert len(done.run["captures"]) == 1
+    assert "the same recording" in done.skipped[0]
+    assert "the same samples with other metadata" in done.skipped[1]
+
+
+def test_a_wrong_count_size_names_the_capture(tiny_world, tiny_bundle, tmp_path):
+    """Waves of kilovolts mean a wrong size of a count: said of the capture, and the other input is scored."""
+    capture = tiny_world.captures[0]
+    meta = json.loads(capture.read_text())
+    meta["global"]["pdclass:volts_per_count"] = 1e3
+    (tmp_path / "loud.sigmf-meta").write_text(json.dumps(meta))
+    (tmp_path / "loud.sigmf-data").write_bytes(capture.with_suffix(".sigmf-data").read_bytes())
+    inputs = [tmp_path / "loud.sigmf-meta", tiny_world.captures[1]]
+    done = score_inputs(inputs, tmp_path / "v", bundle=tiny_bundle, report=False)
+    assert done.skipped[0].startswith("loud: volts_per_count: expected waves of at most 1000 V")
+    assert len(done.run["captures"]) == 1
+
+
+def test_a_name_that_cannot_stand_in_a_report_is_refused(tiny_world, tiny_bundle, tmp_path):
+    """A line break in a file's name is refused for that file; the rest is scored."""
+    capture = tiny_world.captures[0]
+    odd = tmp_path / "line\nbreak.sigmf-meta"
+    odd.write_text(capture.read_text())
+    odd.with_suffix(".sigmf-data").write_bytes(capture.with_suffix(".sigmf-data").read_bytes())
+    done = score_inputs([odd, tiny_world.captures[1]], tmp_path / "v", bundle=tiny_bundle, report=False)
+    assert "cannot be printed" in done.skipped[0]
+    assert "\n" not in done.skipped[0]
+
+
+def test_an_echo_without_its_parent_is_not_lost(tiny_world, tiny_bundle, tmp_path):
+    """Cut a table down to an echo alone, and it is scored as a pulse whose every label stays open, and said."""
+    pulses, _ = read_pulses(tiny_world.pulse_tables[0])
+    echoes = np.flatnonzero(pulses.table["echo_of"].notna().to_numpy())
+    write_pulses(tmp_path / "e.parquet", pulses.take(echoes[:3]))
+    done = score_inputs([tmp_path / "e.parquet"], tmp_path / "v", bundle=tiny_bundle, report=False)
+    verdicts = read_verdicts(done.out)
+    assert len(verdicts) == 3
+    assert not verdicts["decided"].any()
+    assert "without their parent" in " ".join(done.run["captures"][0]["notes"])
+
+
+def test_an_output_that_holds_an_input_is_refused(tiny_world, tiny_bundle):
+    """Verdicts are not written over the captures that they are about."""
+    with pytest.raises(InputError, match="without inputs"):
+        score_inputs([tiny_world.captures[0]], tiny_world.captures[0].parent, bundle=tiny_bundle, force=True)
+
+
+def test_a_mix_is_checked_before_any_work(tmp_path):
+    """Shares that do not add up, are of no known label or nearly nothing are refused at once."""
+    for mix, words in (
+        ({"cable": 0.5, "local": 0.1}, "add up to 1"),
+        ({"kabel": 1.0}, "kabel"),
+        ({"cable": float("nan")}, "at least 0.001"),
+    ):
+        with pytest.raises(InputError, match=words):
+            train_bundle([tmp_path / "none.parquet"], tmp_path / "b", mix=mix)
+
+
+def test_labels_unknown_to_the_program_are_counted(tiny_world, tmp_path):
+    """A mistyped label in a capture's annotations is said, not lost in silence."""
+    capture = tiny_world.captures[0]
+    meta = json.loads(capture.read_text())
+    meta["annotations"][0]["core:label"] = "kabel"
+    (tmp_path / "c.sigmf-meta").write_text(json.dumps(meta))
+    (tmp_path / "c.sigmf-data").write_bytes(capture.with_suffix(".sigmf-data").read_bytes())
+    done = extract_captures([tmp_path / "c.sigmf-meta"], tmp_path / "p.parquet")
+    assert any("1 annotations carry labels that pdclass does not know" in note for note in done.found[0].notes)

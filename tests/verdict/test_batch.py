@@ -4,6 +4,7 @@ import csv
 import hashlib
 import io
 import json
+from pathlib import Path
 
 import numpy as np
 import pandas as pd
@@ -164,19 +165,34 @@ def test_another_folder_is_refused_without_force(tmp_path, shards, bundle_folder
 
 
 def test_force_replaces_verdicts_and_keeps_what_belongs_to_others(tmp_path, shards, bundle_folder):
-    """With force the verdicts are replaced; a file that is none of ours stays."""
-    out = tmp_path / "verdicts"
-    out.mkdir()
+    """With force the verdicts of an earlier run are replaced; a file that is none of ours stays."""
+    out = _finish(tmp_path, shards, bundle_folder)
     (out / "love.txt").write_text("dear")
-    (out / "verdicts").mkdir()
-    (out / "verdicts" / "old-00000000.parquet").write_bytes(b"old")
-    staging = begin_folder(out, PLAN, force=True)
-    for shard in shards:
+    other = {**PLAN, "bundle_digest": "another"}
+    staging = begin_folder(out, other, force=True)
+    for shard in shards[:1]:
         write_shard(staging, shard)
-    finish_folder(staging, out, run_record(staging, PLAN, INPUTS), bundle=bundle_folder)
+    finish_folder(staging, out, run_record(staging, other, INPUTS), bundle=bundle_folder)
     assert (out / "love.txt").read_text() == "dear"
-    assert not (out / "verdicts" / "old-00000000.parquet").exists()
-    assert {path.name for path in tmp_path.iterdir()} == {"verdicts"}
+    assert len(list((out / "verdicts").iterdir())) == 1
+    assert {path.name for path in tmp_path.iterdir()} == {out.name}
+
+
+def test_a_folder_without_a_run_is_never_replaced(tmp_path):
+    """Somebody's files, though named as ours are, are refused even with force, and stay."""
+    out = tmp_path / "mine"
+    (out / "pulses").mkdir(parents=True)
+    (out / "pulses" / "field.parquet").write_bytes(b"dear")
+    with pytest.raises(RefusedError, match="files of another kind"):
+        begin_folder(out, PLAN, force=True)
+    assert (out / "pulses" / "field.parquet").read_bytes() == b"dear"
+
+
+def test_the_folder_one_stands_in_is_refused(tmp_path, monkeypatch):
+    """--out . would pull the ground from under the shell."""
+    monkeypatch.chdir(tmp_path)
+    with pytest.raises(InputError, match="where you are"):
+        begin_folder(Path(), PLAN)
 
 
 def test_an_exchange_killed_half_way_is_settled(tmp_path, shards, bundle_folder):

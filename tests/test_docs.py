@@ -7,9 +7,11 @@ import subprocess
 import sys
 from pathlib import Path
 
+import numpy as np
 import pytest
 from typer.main import get_command
 
+from pdclass.capture import open_capture
 from pdclass.cli.app import app
 from pdclass.jobs.score import base_bundle
 
@@ -59,6 +61,19 @@ def test_every_command_shown_in_the_readme_runs(tmp_path):
     for command in commands:
         done = pdclass(*shlex.split(command)[1:], cwd=tmp_path)
         assert done.returncode == 0, (command, done.stderr)
+
+
+def test_the_metadata_shown_opens_as_a_capture(tmp_path):
+    """The JSON of the page on captures, with samples beside it, is a capture that the reader takes."""
+    page = (ROOT / "docs" / "captures.md").read_text(encoding="utf-8")
+    shown = re.search(r"```json\n(.*?)```", page, flags=re.DOTALL).group(1)
+    (tmp_path / "shown.sigmf-meta").write_text(shown, encoding="utf-8")
+    samples = np.random.default_rng(0).normal(0, 30, 10_000).round().astype("<i2")
+    (tmp_path / "shown.sigmf-data").write_bytes(samples.tobytes())
+    capture = open_capture(tmp_path / "shown.sigmf-meta")
+    assert capture.circuit == "Quay Road"
+    assert capture.chain.band_hz == (80e3, 28e6)
+    assert np.array_equal(capture.counts, samples)
 
 
 @pytest.mark.parametrize("path", MARKDOWN, ids=lambda path: path.name)

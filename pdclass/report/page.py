@@ -276,14 +276,13 @@ def _odds(log_odds: float) -> str:
 
 def _comparison(batch: _Batch, truth: pd.Series[Any], planted: Mapping[str, int] | None) -> dict[str, Any]:
     found = compare_with_truth(batch.verdicts, truth, batch.bundle.classes)
-    recall, decided = (found.recall[name].astype(float).to_dict() for name in ("recall", "decided"))
+    recall = found.recall["recall"].astype(float).to_dict()
     rows = [
         {
             "label": label,
             "counts": found.table.loc[label].to_dict(),
             "planted": "" if planted is None else planted.get(str(label), 0),
             "recall": percent(recall[label]),
-            "decided": percent(decided[label]),
         }
         for label in found.table.index
     ]
@@ -300,7 +299,7 @@ def _nothing_planted(batch: _Batch, truth: pd.Series[Any], columns: Sequence[str
     """The row of verdicts on pulses that nothing was planted for; they have no recall."""
     others = batch.verdicts.loc[~batch.verdicts.index.isin(truth.dropna().index), "label"].value_counts()
     counts = {name: int(others.get(name, 0)) for name in columns}
-    return {"label": "nothing planted", "counts": counts, "planted": "", "recall": "", "decided": ""}
+    return {"label": "nothing planted", "counts": counts, "planted": "", "recall": ""}
 
 
 def _unchecked(batch: _Batch) -> list[tuple[str, str]]:

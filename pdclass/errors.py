@@ -29,12 +29,6 @@ class TooFewError(PdclassError):
     exit_code = 4
 
 
-class MissingPartError(PdclassError):
-    """An optional part is not installed (exit code 5)."""
-
-    exit_code = 5
-
-
 class SkippedInputsError(PdclassError):
     """The work is done, but some inputs were skipped (exit code 6)."""
 

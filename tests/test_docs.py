@@ -93,6 +93,14 @@ def test_figures_in_the_readme_are_those_of_the_shipped_bundle():
     assert rows["undecided"] == f"{metrics['share_undecided']:.2f}"
     assert rows["accuracy among the decided"] == f"{metrics['accuracy_decided']:.2f}"
     assert rows["balanced accuracy of the likeliest label"].startswith(f"{metrics['balanced_accuracy']:.2f};")
+    covered = rows["the true label is in the label set (promised 0.90 on average over circuits)"]
+    mean, worst = metrics["coverage_mean"], metrics["coverage_worst_group"]
+    assert covered == f"{mean:.2f} on average, {worst:.2f} on the worst circuit"
+    card = (base_bundle() / "card.md").read_text(encoding="utf-8")
+    recalls = re.findall(r"(0\.\d+) at", rows["recall of `cable`"])
+    assert len(recalls) == 3
+    assert all(f"| {recall} |" in card for recall in recalls)
+    assert rows["recall of `cable`"].endswith(f"about {metrics['cable_half_distance_m']:.0f} m")
 
 
 def test_cautions_stand_in_the_readme():

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
@@ -60,8 +60,9 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     return {**shown, **times, "end": (window.end - ONSET) * STEP_NS / 1e3}
 
 
-def _windows(pulses: PulseSet) -> list[Window | None]:
-    return [_window(pulses, place) for place in range(len(pulses.table))]
+def _windows(pulses: PulseSet) -> Iterator[Window | None]:
+    """One window at a time: prepared windows are larger than stored ones, and tables may be long."""
+    return (_window(pulses, place) for place in range(len(pulses.table)))
 
 
 def _window(pulses: PulseSet, place: int) -> Window | None:

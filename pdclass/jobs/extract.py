@@ -61,16 +61,18 @@ def extract_captures(
 
 def _once(made: Sequence[tuple[str, Extraction] | str]) -> list[tuple[str, Extraction] | str]:
     """The same without captures whose samples came before: a pulse has one name and stands there once."""
-    names: dict[str, str] = {}
+    holders: dict[str, str] = {}
     kept: list[tuple[str, Extraction] | str] = []
     for one in made:
         if isinstance(one, str) or not len(one[1].pulses.table):
             kept.append(one)
             continue
         digest = str(one[1].pulses.table["capture_digest"].iloc[0])
-        former = names.setdefault(digest, one[0]) if digest not in names else names[digest]
-        first = all(isinstance(k, str) or k[0] != former for k in kept)
-        kept.append(one if first else f"{one[0]}: holds the same samples as {former}; give each recording once")
+        former = holders.get(digest)
+        holders.setdefault(digest, one[0])
+        kept.append(
+            one if former is None else f"{one[0]}: holds the same samples as {former}; give each recording once"
+        )
     return kept
 
 

@@ -30,11 +30,6 @@ class SourceCurrent:
     fall_s: float
     ring_hz: float = 0.0
 
-    @property
-    def carries_charge(self) -> bool:
-        """Whether the area of the current means a charge; a ringing burst has no net charge to speak of."""
-        return self.shape != "ringing"
-
     def stretched(self, factor: float) -> SourceCurrent:
         """The same current, `factor` times as slow (the ringing frequency belongs to the circuit and stays)."""
         return SourceCurrent(self.shape, self.rise_s * factor, self.fall_s * factor, self.ring_hz)

@@ -256,3 +256,22 @@ def test_labels_unknown_to_the_program_are_counted(tiny_world, tmp_path):
     (tmp_path / "c.sigmf-data").write_bytes(capture.with_suffix(".sigmf-data").read_bytes())
     done = extract_captures([tmp_path / "c.sigmf-meta"], tmp_path / "p.parquet")
     assert any("1 annotations carry labels that pdclass does not know" in note for note in done.found[0].notes)
+
+
+def test_two_captures_of_one_name_are_both_extracted(tiny_world, tmp_path):
+    """Recordings of different content that share a file name, from two folders, both give their pulses."""
+    rates = {}
+    for path in tiny_world.captures:
+        rates.setdefault(open_capture(path).chain.rate_hz, []).append(path)
+    pair = next(paths for paths in rates.values() if len(paths) > 1)[:2]
+    named = []
+    for number, path in enumerate(pair):
+        (tmp_path / str(number)).mkdir()
+        named.append(tmp_path / str(number) / "night.sigmf-meta")
+        named[-1].write_text(path.read_text())
+        named[-1].with_suffix(".sigmf-data").write_bytes(path.with_suffix(".sigmf-data").read_bytes())
+    done = extract_captures(named, tmp_path / "p.parquet")
+    assert done.skipped == ()
+    assert read_pulses(tmp_path / "p.parquet")[0].table["capture_digest"].nunique() == 2
+    again = extract_captures([*named, pair[0]], tmp_path / "q.parquet")
+    assert "holds the samples of night" in again.skipped[0]

@@ -7,7 +7,7 @@ export OMP_NUM_THREADS = 1
 export OPENBLAS_NUM_THREADS = 1
 export NUMBA_NUM_THREADS = 1
 
-.PHONY: demo test check format bench model clean
+.PHONY: demo test check format bench model pictures clean
 
 demo: $(VENV)/run.stamp
 	$(BIN)/pdclass demo --out port-ferrow-demo --force
@@ -29,6 +29,9 @@ bench: $(VENV)/dev.stamp
 
 model: $(VENV)/dev.stamp
 	$(BIN)/python -m pdclass.jobs.base_model models/base
+
+pictures: $(VENV)/dev.stamp
+	$(BIN)/python -m pdclass.jobs.pictures synthetic/pictures
 
 $(VENV)/run.stamp: pyproject.toml constraints.txt
 	test -x $(BIN)/python || $(PYTHON) -m venv $(VENV)

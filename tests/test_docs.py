@@ -76,6 +76,19 @@ def test_the_metadata_shown_opens_as_a_capture(tmp_path):
     assert np.array_equal(capture.counts, samples)
 
 
+def test_the_world_shown_is_simulated_with_its_measured_cable(tmp_path):
+    """Scenario and curve of the page on own worlds, written as shown, run with the command shown."""
+    page = (ROOT / "docs" / "own-world.md").read_text(encoding="utf-8")
+    for name, kind in (("own.toml", "toml"), ("own-cable.csv", "csv")):
+        shown = re.search(rf"```{kind}\n(.*?)```", page, flags=re.DOTALL).group(1)
+        (tmp_path / name).write_text(shown, encoding="utf-8")
+    command = re.search(r"^pdclass simulate .*$", page, flags=re.MULTILINE).group(0)
+    done = pdclass(*shlex.split(command)[1:], cwd=tmp_path)
+    assert done.returncode == 0, done.stderr
+    assert {path.name for path in (tmp_path / "own-world").iterdir()} >= {"pulses.parquet", "gallery.html"}
+    assert open_capture(tmp_path / "own-world" / "own-0001.sigmf-meta").chain.rate_hz == 100e6
+
+
 @pytest.mark.parametrize("path", MARKDOWN, ids=lambda path: path.name)
 def test_links_in_documents_lead_somewhere(path):
     """Every relative link of a document leads to a file of the project."""

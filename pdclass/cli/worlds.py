@@ -39,6 +39,7 @@ def simulate(
         None, "--captures", min=1, max=100_000, help="Captures; by default the scenario's number."
     ),
     pulses: int = typer.Option(None, "--pulses", min=0, max=100_000, help="Planted pulses a capture."),
+    gallery: bool = typer.Option(False, "--gallery", help="Also write gallery.html: what this world looks like."),
     jobs: int = JOBS,
     force: bool = FORCE,
     as_json: bool = JSON,
@@ -47,10 +48,25 @@ def simulate(
     from pdclass.jobs import simulate as job
 
     done = job.simulate(
-        scenario, out, seed=seed, captures=captures, pulses=pulses, jobs=jobs, force=force, talk=Terminal()
+        scenario,
+        out,
+        seed=seed,
+        captures=captures,
+        pulses=pulses,
+        jobs=jobs,
+        gallery=gallery,
+        force=force,
+        talk=Terminal(),
     )
     lines = [f"{len(done.captures)} captures in {out}, {done.pulses} pulses found in them"]
     lines += [f"pulses: {path}" for path in done.pulse_tables]
+    if done.gallery is not None:
+        lines.append(f"gallery: {done.gallery}")
     lines.append(f"next: pdclass score {done.captures[0]} --out verdicts")
-    content = {"captures": done.captures, "pulse_tables": done.pulse_tables, "pulses": done.pulses}
+    content = {
+        "captures": done.captures,
+        "pulse_tables": done.pulse_tables,
+        "pulses": done.pulses,
+        "gallery": done.gallery,
+    }
     result(lines, content, as_json=as_json)

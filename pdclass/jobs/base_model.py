@@ -4,6 +4,10 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
 
 from pdclass.extract import ExtractSettings
 from pdclass.jobs.simulate import by_rate, labelled_pulses, scenario_path
@@ -12,18 +16,46 @@ from pdclass.jobs.train import fit, measured
 from pdclass.model.bundle import BundleParts, write_bundle
 from pdclass.model.decision import decide
 from pdclass.pulses import FloatArray, PulseSet
-from pdclass.sim.scenario import SIMULATOR_VERSION, Scenario, capture_count, read_scenario, simulate_capture
-from pdclass.training.card import with_card
-from pdclass.training.evaluate import evaluate
+from pdclass.sim.scenario import (
+    SIMULATOR_VERSION,
+    Scenario,
+    capture_count,
+    capture_of,
+    circuit_of,
+    read_scenario,
+)
+from pdclass.training.card import markdown, with_card
+from pdclass.training.evaluate import evaluate, judge
 from pdclass.training.settings import TrainSettings
+from pdclass.training.study import CLEAR_DB, Family, Measured, clear, learning_curve, left_out
 
 SEED = 20_250
 #: The circuits of the card's figures come from the same distributions by another seed.
 TEST_SEED = 90_210
 #: So many further circuits are drawn for the card, or a third of the training world's where that is fewer.
-TEST_CIRCUITS = 400
+TEST_CIRCUITS = 500
+#: Worlds with fewer circuits are too small for the studies of the card.
+STUDY_CIRCUITS = 400
 #: So many false events a cycle are let through, so that bare crossings of the background are learned as such.
 FALSE_EVENTS = 20.0
+_CLEAR = (
+    "Classes weigh equally, within a class its circuits. Near end merged: `local` and `switchgear` count as one, and a "
+    "label set of nothing else as decided."
+)
+_LEFT_OUT = (
+    "For each family the circuits of the test in which it is met, scored by the bundle (known) and by one trained "
+    "alike without it (left out)."
+)
+#: What is left out of training, one at a time, and scored when met.
+FAMILIES = (
+    Family("paper-insulated cable, belted too", circuits=lambda traits: traits["cable"] in ("paper", "belted")),
+    Family("EPR cable", circuits=lambda traits: traits["cable"] == "EPR"),
+    Family("stations of 6 panels and more", circuits=lambda traits: traits["panels"] >= 6),
+    Family("chains that end below 14 MHz", circuits=lambda traits: traits["high_hz"] < 14e6),
+    Family("interference: converter", pulses="converter"),
+    Family("interference: arc", pulses="arc"),
+    Family("interference: switch-mode", pulses="switch-mode"),
+)
 
 
 def make_base(
@@ -40,7 +72,7 @@ def make_base(
     path = scenario_path(scenario)
     world = read_scenario(path)
     count = capture_count(world)
-    values, pulses = drawn_pulses(world, range(1, count + 1), SEED, jobs=jobs, talk=talk)
+    taught = drawn_pulses(world, range(1, count + 1), SEED, jobs=jobs, talk=talk)
     provenance = {
         "scenario": path.stem,
         "seed": SEED,
@@ -48,31 +80,32 @@ def make_base(
         "false_events_per_cycle": FALSE_EVENTS,
         "circuits": count,
     }
-    parts = fit(values, pulses, TrainSettings(), provenance=provenance, world=path.read_text(encoding="utf-8"))
-    tested = min(TEST_CIRCUITS, max(8, count // 3))
-    test_values, test_pulses = drawn_pulses(world, range(1, tested + 1), TEST_SEED, jobs=jobs, talk=talk)
-    found = evaluate(parts, test_values, test_pulses)
+    text = path.read_text(encoding="utf-8")
+    parts = fit(taught.values, taught.pulses, TrainSettings(), provenance=provenance, world=text)
+    many = min(TEST_CIRCUITS, max(8, count // 3))
+    tested = drawn_pulses(world, range(1, many + 1), TEST_SEED, jobs=jobs, talk=talk)
     low, high = world.snr_db
     parts = with_card(
         parts,
-        found,
+        evaluate(parts, tested.values, tested.pulses),
         title="The base bundle",
-        tested_on=f"Tested on {tested} simulated circuits of the same distributions (seed {TEST_SEED}), none of which "
+        tested_on=f"Tested on {many} simulated circuits of the same distributions (seed {TEST_SEED}), none of which "
         "it was trained on. Simulated pulses only: how it does on field pulses has not been measured. "
-        + _neighbours(parts, test_values, test_pulses),
+        + _neighbours(parts, tested),
         trained_on=f"Trained on simulated pulses alone: {count} circuits of the world `{path.stem}` "
         f"(seed {SEED}, simulator version {SIMULATOR_VERSION}), each with its own cable, near end, "
         "sensor, rate and interference. "
         f"The height of planted pulses over the recorded noise is uniform in decibels from {low:g} to {high:g} dB, the "
         f"same law for every label; pulses were found by the extractor at {FALSE_EVENTS:g} false events a cycle.",
+        studies=_studies(parts, taught, tested, talk),
     )
     return write_bundle(out, parts, replace=replace_old)
 
 
-def _neighbours(parts: BundleParts, values: FloatArray, pulses: PulseSet) -> str:
+def _neighbours(parts: BundleParts, tested: Measured) -> str:
     """What becomes of pulses from a neighbour's cable: they come over the busbar, as those of the switchgear do."""
-    decisions = decide(parts, values, pulses)
-    table = pulses.table[pulses.table["echo_of"].isna()]
+    decisions = decide(parts, tested.values, tested.pulses)
+    table = tested.pulses.table[tested.pulses.table["echo_of"].isna()]
     theirs = ((table["label"] == "cable") & table["distance_m"].isna()).to_numpy()
     as_switchgear = decisions.decided & (decisions.likeliest == parts.classes.index("switchgear"))
     return (
@@ -81,17 +114,65 @@ def _neighbours(parts: BundleParts, values: FloatArray, pulses: PulseSet) -> str
     )
 
 
-def drawn_pulses(world: Scenario, numbers: range, seed: int, *, jobs: int, talk: Talk) -> tuple[FloatArray, PulseSet]:
+def _studies(parts: BundleParts, taught: Measured, tested: Measured, talk: Talk) -> list[str]:
+    """Sections of the card: clear pulses, more circuits, families left out."""
+    count = len(taught.traits)
+    if count < STUDY_CIRCUITS:
+        return []
+    judged = judge(parts, tested.values, tested.pulses)
+    talk.say("learning curve")
+    curve = learning_curve(taught, tested, [count // 8, count // 4, count // 2, count], _trained)
+    talk.say("families left out of training")
+    without = left_out(taught, tested, FAMILIES, _trained, parts)
+    return [
+        f"## Clear pulses: {CLEAR_DB:g} dB and more over the noise",
+        _CLEAR,
+        markdown(
+            pd.DataFrame([{"figure": key.replace("_", " "), "value": value} for key, value in clear(judged).items()])
+        ),
+        "### Which pairs fail",
+        markdown(confused(judged.where(judged.snr_db >= CLEAR_DB)).reset_index()),
+        "### More circuits",
+        "Trained on the first so many circuits, the same figures of clear pulses.",
+        markdown(curve),
+        "### Families left out of training",
+        _LEFT_OUT,
+        markdown(without),
+    ]
+
+
+def confused(judged: Any) -> pd.DataFrame:
+    """True label by row, likeliest label by column, as shares of the row with its circuits weighing equally."""
+    rows = {}
+    for name in judged.classes:
+        here = judged.of(name)
+        weight = 1.0 / pd.Series(judged.groups[here]).groupby(judged.groups[here]).transform("size").to_numpy(
+            np.float64
+        )
+        found = np.bincount(judged.verdict.likeliest[here], weight, minlength=len(judged.classes))
+        rows[name] = found / found.sum()
+    return pd.DataFrame(rows, index=list(judged.classes)).T.rename_axis("truth")
+
+
+def _trained(values: FloatArray, pulses: PulseSet) -> BundleParts:
+    return fit(values, pulses, TrainSettings(), provenance={})
+
+
+def drawn_pulses(world: Scenario, numbers: range, seed: int, *, jobs: int, talk: Talk) -> Measured:
     """Features and pulses of simulated captures, each found by the extractor as in real captures."""
     calls = [(world, number, seed) for number in numbers]
     found = each(_pulses_of, calls, jobs=jobs, talk=talk, words="circuits simulated")
-    return measured(list(by_rate(found).values()))
+    values, pulses = measured(list(by_rate([one for one, _ in found]).values()))
+    traits = pd.DataFrame([traits for _, traits in found]).drop_duplicates("circuit").set_index("circuit")
+    return Measured(values, pulses, traits)
 
 
-def _pulses_of(world: Scenario, number: int, seed: int) -> PulseSet:
-    capture = simulate_capture(world, number, seed=seed)
+def _pulses_of(world: Scenario, number: int, seed: int) -> tuple[PulseSet, dict[str, Any]]:
+    circuit = circuit_of(world, number, seed=seed)
+    capture = capture_of(world, circuit, number, seed=seed)
     pulses = labelled_pulses(capture, ExtractSettings(false_events_per_cycle=FALSE_EVENTS)).pulses
-    return pulses.take((pulses.table["label"].notna() | pulses.table["echo_of"].notna()).to_numpy())
+    kept = pulses.take((pulses.table["label"].notna() | pulses.table["echo_of"].notna()).to_numpy())
+    return kept, {"circuit": circuit.name, **circuit.traits}
 
 
 class _Lines(Silent):

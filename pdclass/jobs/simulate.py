@@ -12,6 +12,7 @@ import pandas as pd
 from pdclass.capture import write_pulses, write_sigmf
 from pdclass.errors import InputError
 from pdclass.extract import Extraction, ExtractSettings, extract
+from pdclass.jobs.gallery import GALLERY, write_gallery
 from pdclass.jobs.talk import SILENT, Talk, each
 from pdclass.pulses import Annotation, Capture, PulseSet
 from pdclass.settings import shipped
@@ -28,6 +29,7 @@ class Simulated:
     captures: tuple[Path, ...]
     pulse_tables: tuple[Path, ...]
     pulses: int
+    gallery: Path | None = None
 
 
 def scenario_path(name: str | Path) -> Path:
@@ -56,6 +58,7 @@ def simulate(
     captures: int | None = None,
     pulses: int | None = None,
     jobs: int = 1,
+    gallery: bool = False,
     force: bool = False,
     talk: Talk = SILENT,
 ) -> Simulated:
@@ -68,6 +71,7 @@ def simulate(
     seed : draws another world from the same distributions.
     captures, pulses : captures, and planted pulses a capture; the scenario's own numbers by default.
     jobs : processes; does not change the result.
+    gallery : also write a page of what this world looks like.
     force : write into a folder that is not empty.
 
     Raises
@@ -77,13 +81,14 @@ def simulate(
     """
     world = read_scenario(scenario_path(scenario))
     fresh_folder(out, force=force)
-    for old in [*out.glob(f"{world.name}-[0-9]*.sigmf-*"), *out.glob("pulses*.parquet")]:
+    for old in [*out.glob(f"{world.name}-[0-9]*.sigmf-*"), *out.glob("pulses*.parquet"), *out.glob(GALLERY)]:
         old.unlink()
     numbers = range(1, (captures or capture_count(world)) + 1)
     calls = [(world, number, seed, pulses, out) for number in numbers]
     made = each(_capture_to_disk, calls, jobs=jobs, talk=talk, words="captures simulated")
     tables = write_by_rate([found for _, found in made], out)
-    return Simulated(tuple(path for path, _ in made), tables, sum(len(found.table) for _, found in made))
+    page = write_gallery(world, out, seed=seed, talk=talk) if gallery else None
+    return Simulated(tuple(path for path, _ in made), tables, sum(len(found.table) for _, found in made), page)
 
 
 def fresh_folder(out: Path, *, force: bool) -> None:

@@ -24,7 +24,7 @@ TOP_HZ = 62.5e6
 #: Frequency from which the spectrum is smoothly brought to zero at TOP_HZ [Hz].
 TAPER_HZ = 42e6
 #: Damping of the numerical Laplace transform [1/s].
-DAMPING_PER_S = 5.0 / RECORD_S
+DAMPING_PER_S = 7.0 / RECORD_S
 #: Time in the record at which a source has its reference instant [s].
 LEAD_S = 2e-6
 _FADE_S = 5e-6

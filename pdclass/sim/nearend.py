@@ -1,58 +1,91 @@
 """The near end: one network for every class; only the place where charge enters makes the difference.
 
-Nodes: core of the termination, screen of the cable, and for each panel a busbar node and an equipment node
-(voltage transformer, current transformer, bushings at the end of a dropper). The reference is the earth bar.
-The cable stands between core and screen; the strap with the sensor stands between screen and earth bar.
-Element values are broad assumptions (common practice, no source): ring frequency and Q come out as random
-variables of a few MHz to some tens of MHz.
+The reference is the earth bar. The cable stands between the core and the screen of its termination; the strap with
+the sensor stands between the screen and the earth bar, and beside it the screen has a way of its own to the soil. The
+tail joins the core to the busbar of its own panel, which stands anywhere in a ladder of panels; other cables leave
+other panels, each with a strap and a way to the soil of its own. All of this is a tree: its branches are folded from
+the leaves to the root, the screen, and reciprocity turns the one solution with a current into the screen into the
+strap current for a current into every node. Topology: common practice, no source.
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
+from pdclass.errors import InputError, complaint
+from pdclass.sim.elements import (
+    Lead,
+    LossyCapacitance,
+    Sheath,
+    SheathLine,
+    SoilWay,
+    Strap,
+    StressCone,
+    capacitance_admittance,
+    cone_admittance,
+    lead_impedance,
+    sheath_line,
+    soil_admittance,
+)
 from pdclass.sim.grid import ComplexArray
 
 CORE, SCREEN, FIRST_BUS = 0, 1, 2
 
 
 @dataclass(frozen=True)
-class Lead:
-    """An inductance with its losses: R + sL + k sqrt(s) [ohm, H, ohm s^0.5]."""
+class Feeder:
+    """Another cable of the station, as far as its termination; what its route shows comes from outside.
 
-    ohm: float
-    henry: float
-    skin: float = 0.0
+    Attributes
+    ----------
+    tail : from the busbar to its termination.
+    box : capacitance from its core to its earthed cable box.
+    cone : capacitance from its core to its screen.
+    strap : from its screen to the earth bar.
+    soil : its screen's own way to earth.
+    loop_share : voltage that a radiated field induces in its strap's loop, as a share of that in the own strap's.
+    """
+
+    tail: Lead
+    box: LossyCapacitance
+    cone: LossyCapacitance
+    strap: Strap
+    soil: SoilWay
+    loop_share: float = 0.0
 
 
 @dataclass(frozen=True)
-class LossyCapacitance:
-    """A capacitance with a resistance in series [F], [ohm]."""
+class Winding:
+    """A power transformer on a busbar: the capacitance of its winding to earth behind a lead."""
 
-    farad: float
-    ohm: float
+    lead: Lead
+    capacitance: LossyCapacitance
 
 
 @dataclass(frozen=True)
 class Panel:
-    """One panel: its length of busbar, the equipment on its dropper, and the feeders that leave it.
+    """One panel of the ladder.
 
     Attributes
     ----------
     busbar : capacitance of the busbar to the enclosure.
+    section : busbar to the next panel (without effect in the last one).
     dropper : lead from the busbar to the equipment.
-    equipment : capacitance of transformers and bushings to earth.
-    feeders : series lead and surge impedance of other cables, their own strap included [ohm, H].
-    section : busbar to the next panel (unused in the last one).
+    equipment : capacitance to earth of transformers and bushings, or of an open breaker's near side alone.
+    feeders : cables that leave it; the cable with the sensor is not among them.
+    transformer : power transformer that it feeds, or None.
     """
 
     busbar: LossyCapacitance
+    section: Lead
     dropper: Lead
     equipment: LossyCapacitance
-    feeders: tuple[Lead, ...]
-    section: Lead
+    feeders: tuple[Feeder, ...] = ()
+    transformer: Winding | None = None
 
 
 @dataclass(frozen=True)
@@ -61,91 +94,88 @@ class NearEnd:
 
     Attributes
     ----------
-    tail : conductor from the termination to the first busbar.
-    termination : capacitance from core to screen.
+    tail : conductor from the termination to the busbar of its own panel.
+    termination : between core and screen.
     box : capacitance from core to the cable box, which is earthed.
-    strap : earth strap from screen to earth bar, round which the sensor sits.
-    soil_ohm : surge resistance of the screen against soil [ohm].
-    screen_f : stray capacitance of the screen's end to earth [F].
-    panels : two or three; the first is that of this cable.
+    strap : from screen to earth bar; the sensor sits round it.
+    soil : the screen's own way to earth.
+    panels : the ladder, in order.
+    own : place of the panel of the cable with the sensor, from 0.
+    sheath : line that every way through the soil is, or None where the resistance to earth stands in its place.
+    tail_share : voltage that a radiated field induces in the loop of the tail, as a share of that in the strap's.
+
+    Raises
+    ------
+    InputError
+        If there is no such own panel.
     """
 
     tail: Lead
-    termination: LossyCapacitance
+    termination: StressCone
     box: LossyCapacitance
-    strap: Lead
-    soil_ohm: float
-    screen_f: float
+    strap: Strap
+    soil: SoilWay
     panels: tuple[Panel, ...]
+    own: int = 0
+    sheath: Sheath | None = None
+    tail_share: float = 0.0
+
+    def __post_init__(self) -> None:
+        if not 0 <= self.own < len(self.panels):
+            expected = f"a panel from 0 to {len(self.panels) - 1}"
+            advice = "name a panel of the ladder"
+            raise InputError(complaint("near end", "own", expected=expected, found=self.own, advice=advice))
+
+    @property
+    def feeder_list(self) -> tuple[Feeder, ...]:
+        """The other cables, panel by panel."""
+        return tuple(feeder for panel in self.panels for feeder in panel.feeders)
+
+    @property
+    def feeders(self) -> int:
+        """Number of other cables, whose admittances the caller supplies."""
+        return len(self.feeder_list)
 
     @property
     def nodes(self) -> int:
         """Number of nodes apart from the earth bar."""
-        return FIRST_BUS + 2 * len(self.panels)
+        return FIRST_BUS + 2 * len(self.panels) + 2 * self.feeders
 
 
 @dataclass(frozen=True)
 class StrapTransfer:
-    """Strap current per unit of excitation.
+    """Current through the strap, from screen to earth bar, per unit of excitation.
 
     Attributes
     ----------
-    from_node : (frequencies, nodes) for a current driven from earth into each node.
+    from_node : (nodes, frequencies) for a current driven from earth into each node.
+    from_feeder : (feeders, frequencies) for a current driven from screen to core at the near end of a feeder's route.
     from_emf : (frequencies,) [S] for a voltage induced in the strap's loop.
+    from_feeder_emf : (feeders, frequencies) [S] for a voltage induced in a feeder's strap loop.
+    from_tail_emf : (frequencies,) [S] for a voltage induced in the loop of the tail.
+    from_field : (frequencies,) [S] for a radiated field: per volt in the strap's loop, all loops in their shares.
     """
 
     from_node: ComplexArray
+    from_feeder: ComplexArray
     from_emf: ComplexArray
+    from_feeder_emf: ComplexArray
+    from_tail_emf: ComplexArray
+    from_field: ComplexArray
 
 
-def lead_admittance(lead: Lead, s: ComplexArray) -> ComplexArray:
-    """Admittance of a lead [S], (frequencies,)."""
-    return np.asarray(1 / (lead.ohm + s * lead.henry + lead.skin * np.sqrt(s)))
+class _Frequencies(NamedTuple):
+    s: ComplexArray
+    root: ComplexArray
 
 
-def capacitance_admittance(part: LossyCapacitance, s: ComplexArray) -> ComplexArray:
-    """Admittance of a lossy capacitance [S], (frequencies,)."""
-    return np.asarray(s * part.farad / (1 + s * part.farad * part.ohm))
+class _Branch(NamedTuple):
+    """One node of the tree: what joins it to its parent in series, and what it has to earth."""
 
-
-def nodal_matrix(near: NearEnd, cable_s: ComplexArray, s: ComplexArray) -> ComplexArray:
-    """Nodal admittance matrix of the near end with its cable [S], (frequencies, nodes, nodes), symmetric.
-
-    Parameters
-    ----------
-    near : the network.
-    cable_s : input admittance of the cable between core and screen [S], (frequencies,).
-    s : complex frequency [1/s].
-    """
-    matrix = np.zeros((s.size, near.nodes, near.nodes), np.complex128)
-    _join(matrix, CORE, SCREEN, cable_s + capacitance_admittance(near.termination, s))
-    _to_earth(matrix, CORE, capacitance_admittance(near.box, s))
-    _to_earth(matrix, SCREEN, lead_admittance(near.strap, s) + 1 / near.soil_ohm + s * near.screen_f)
-    _join(matrix, CORE, FIRST_BUS, lead_admittance(near.tail, s))
-    for number, panel in enumerate(near.panels):
-        bus, equipment = bus_node(number), equipment_node(number)
-        _to_earth(matrix, bus, capacitance_admittance(panel.busbar, s))
-        _join(matrix, bus, equipment, lead_admittance(panel.dropper, s))
-        _to_earth(matrix, equipment, capacitance_admittance(panel.equipment, s))
-        for feeder in panel.feeders:
-            _to_earth(matrix, bus, lead_admittance(feeder, s))
-        if number + 1 < len(near.panels):
-            _join(matrix, bus, bus_node(number + 1), lead_admittance(panel.section, s))
-    return matrix
-
-
-def strap_transfer(near: NearEnd, cable_s: ComplexArray, s: ComplexArray) -> StrapTransfer:
-    """Strap current for a current into any node, and for a voltage induced in the strap's loop.
-
-    The network is reciprocal: one solution with a current into the screen gives the screen's voltage for a
-    current into every node.
-    """
-    matrix = nodal_matrix(near, cable_s, s)
-    into_screen = np.zeros((s.size, near.nodes, 1), np.complex128)
-    into_screen[:, SCREEN, 0] = 1
-    voltage = np.linalg.solve(matrix, into_screen)[:, :, 0]
-    strap = lead_admittance(near.strap, s)
-    return StrapTransfer(voltage * strap[:, None], strap * (voltage[:, SCREEN] * strap - 1))
+    node: int
+    parent: int
+    series_ohm: ComplexArray
+    shunt_s: ComplexArray
 
 
 def bus_node(panel: int) -> int:
@@ -158,12 +188,108 @@ def equipment_node(panel: int) -> int:
     return FIRST_BUS + 2 * panel + 1
 
 
-def _join(matrix: ComplexArray, one: int, other: int, admittance: ComplexArray) -> None:
-    matrix[:, one, one] += admittance
-    matrix[:, other, other] += admittance
-    matrix[:, one, other] -= admittance
-    matrix[:, other, one] -= admittance
+def feeder_core_node(near: NearEnd, number: int) -> int:
+    """Node of the core of a feeder's termination; that of its screen is the next one."""
+    return FIRST_BUS + 2 * len(near.panels) + 2 * number
 
 
-def _to_earth(matrix: ComplexArray, node: int, admittance: ComplexArray) -> None:
-    matrix[:, node, node] += admittance
+def strap_transfer(
+    near: NearEnd, cable_s: ComplexArray, feeders_s: Sequence[ComplexArray], s: ComplexArray
+) -> StrapTransfer:
+    """Strap current for a current into any node, and for a voltage induced in any loop.
+
+    Parameters
+    ----------
+    near : the network.
+    cable_s : input admittance of the cable between core and screen [S], (frequencies,).
+    feeders_s : the same for each other cable, panel by panel.
+    s : complex frequency [1/s], (frequencies,), none of them 0.
+
+    Raises
+    ------
+    InputError
+        If there are not as many admittances as other cables.
+    """
+    if len(feeders_s) != near.feeders:
+        advice = "give one route for each feeder"
+        found = f"{len(feeders_s)} admittances"
+        raise InputError(complaint("near end", "feeders", expected=near.feeders, found=found, advice=advice))
+    at = _Frequencies(s, np.sqrt(s))
+    strap = 1 / _lead(near.strap.lead, at)
+    from_node = _voltages(near, cable_s, feeders_s, at) * strap
+    from_emf = strap * (from_node[SCREEN] - 1)
+    from_tail_emf = (from_node[CORE] - from_node[bus_node(near.own)]) / _lead(near.tail, at)
+    first = feeder_core_node(near, 0)
+    cores, screens = from_node[first::2], from_node[first + 1 :: 2]
+    from_feeder_emf = np.empty_like(screens)
+    from_field = from_emf + near.tail_share * from_tail_emf
+    for number, feeder in enumerate(near.feeder_list):
+        from_feeder_emf[number] = screens[number] / _lead(feeder.strap.lead, at)
+        from_field += feeder.loop_share * from_feeder_emf[number]
+    return StrapTransfer(from_node, cores - screens, from_emf, from_feeder_emf, from_tail_emf, from_field)
+
+
+def _voltages(
+    near: NearEnd, cable_s: ComplexArray, feeders_s: Sequence[ComplexArray], at: _Frequencies
+) -> ComplexArray:
+    """Voltage of every node per current into the screen [ohm], (nodes, frequencies)."""
+    line = None if near.sheath is None else sheath_line(near.sheath, at.s)
+    branches = list(_branches(near, cable_s, feeders_s, line, at))
+    to_earth = {branch.node: branch.shunt_s for branch in branches}
+    to_earth[SCREEN] = _screen_shunt(near.strap, near.soil, line, at)
+    share: dict[int, ComplexArray] = {}
+    for branch in reversed(branches):
+        # what a child takes of its parent's voltage, and what it adds to its parent's way to earth
+        share[branch.node] = 1 / (1 + branch.series_ohm * to_earth[branch.node])
+        to_earth[branch.parent] = to_earth[branch.parent] + to_earth[branch.node] * share[branch.node]
+    voltage = np.empty((near.nodes, at.s.size), np.complex128)
+    voltage[SCREEN] = 1 / to_earth[SCREEN]
+    for branch in branches:
+        np.multiply(voltage[branch.parent], share[branch.node], out=voltage[branch.node])
+    return voltage
+
+
+def _branches(
+    near: NearEnd,
+    cable_s: ComplexArray,
+    feeders_s: Sequence[ComplexArray],
+    line: SheathLine | None,
+    at: _Frequencies,
+) -> Iterator[_Branch]:
+    """Every node but the screen, parents before their children."""
+    own, last = near.own, len(near.panels) - 1
+    across = cable_s + cone_admittance(near.termination, at.s)
+    yield _Branch(CORE, SCREEN, 1 / across, capacitance_admittance(near.box, at.s))
+    yield _Branch(bus_node(own), CORE, _lead(near.tail, at), _bus_shunt(near.panels[own], at))
+    for number in range(own - 1, -1, -1):
+        panel = near.panels[number]
+        yield _Branch(bus_node(number), bus_node(number + 1), _lead(panel.section, at), _bus_shunt(panel, at))
+    for number in range(own, last):
+        onward = _lead(near.panels[number].section, at)
+        yield _Branch(bus_node(number + 1), bus_node(number), onward, _bus_shunt(near.panels[number + 1], at))
+    number = 0
+    for place, panel in enumerate(near.panels):
+        equipment = capacitance_admittance(panel.equipment, at.s)
+        yield _Branch(equipment_node(place), bus_node(place), _lead(panel.dropper, at), equipment)
+        for feeder in panel.feeders:
+            core = feeder_core_node(near, number)
+            route_s = feeders_s[number] + capacitance_admittance(feeder.cone, at.s)
+            yield _Branch(core, bus_node(place), _lead(feeder.tail, at), capacitance_admittance(feeder.box, at.s))
+            yield _Branch(core + 1, core, 1 / route_s, _screen_shunt(feeder.strap, feeder.soil, line, at))
+            number += 1
+
+
+def _bus_shunt(panel: Panel, at: _Frequencies) -> ComplexArray:
+    busbar = capacitance_admittance(panel.busbar, at.s)
+    if panel.transformer is None:
+        return busbar
+    winding = capacitance_admittance(panel.transformer.capacitance, at.s)
+    return np.asarray(busbar + winding / (1 + winding * _lead(panel.transformer.lead, at)))
+
+
+def _screen_shunt(strap: Strap, soil: SoilWay, line: SheathLine | None, at: _Frequencies) -> ComplexArray:
+    return np.asarray(1 / _lead(strap.lead, at) + at.s * strap.stray_farad + soil_admittance(soil, line, at.s))
+
+
+def _lead(lead: Lead, at: _Frequencies) -> ComplexArray:
+    return lead_impedance(lead, at.s, at.root)

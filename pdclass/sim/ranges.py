@@ -1,141 +1,103 @@
-"""What a scenario file says: every range from which the synthetic world is drawn."""
+"""What a scenario file says: the world it draws from, or the circuits that it names."""
 
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated, Literal, Self
+from typing import Literal, Self, get_args
 
-from pydantic import AfterValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from pdclass.settings import Settings, read_settings
-from pdclass.sim.phase import Pattern
+from pdclass.sim.disturbers import Family
+from pdclass.sim.disturbers import Path as CouplingPath
+from pdclass.sim.draw import Count, Positive, Range, Weights
+from pdclass.sim.drawn_background import BackgroundRanges
+from pdclass.sim.drawn_cable import CableRanges, FarEndKind
+from pdclass.sim.drawn_chain import ChainRanges
+from pdclass.sim.drawn_disturbance import DisturberRanges
+from pdclass.sim.drawn_near_end import NearEndRanges
+from pdclass.sim.drawn_source import Kind, SourceRanges
+from pdclass.sim.phase import ActivityRanges, Pattern
 
 Label = Literal["cable", "local", "switchgear", "interference"]
-Insulation = Literal["XLPE", "EPR"]
-FarEndKind = Literal["open", "transformer", "cable"]
-CouplingPath = Literal["radiated", "screen", "feeder", "far-end", "box"]
-_RATES_HZ = (40e6, 62.5e6, 100e6, 125e6, 200e6, 250e6)
-
-
-def _rising(pair: tuple[float, float]) -> tuple[float, float]:
-    if pair[0] > pair[1]:
-        raise ValueError("the lower bound stands first")
-    return pair
-
-
-def _known_rates(rates: tuple[float, ...]) -> tuple[float, ...]:
-    if not set(rates) <= set(_RATES_HZ):
-        raise ValueError(f"a rate is one of {', '.join(f'{rate:g}' for rate in _RATES_HZ)}")
-    return rates
-
-
-Range = Annotated[tuple[float, float], AfterValidator(_rising)]
-Positive = Annotated[tuple[Annotated[float, Field(gt=0)], float], AfterValidator(_rising)]
-Count = Annotated[tuple[Annotated[int, Field(ge=0)], int], AfterValidator(_rising)]
+#: Ways of a discharge to the strap that its label leaves open.
+Way = Literal["cable", "neighbour", "stress-cone", "box", "bus", "equipment"]
 
 
 class CaptureRanges(Settings):
-    """What one capture is like: length [ms], pulses in it, rates [Hz], bits, corners of the sensor [Hz]."""
+    """What one capture is like.
+
+    Attributes
+    ----------
+    duration_ms : length of the record [ms].
+    pulses : planted pulses in a record of a drawn circuit.
+    noise_v : MAD/0.6745 of the background at the digitiser, carriers included [V].
+    full_scale_db : of the digitiser over that noise [dB].
+    offset_counts : offset of the digitiser [counts], either sign.
+    segments, gap_ms : stretches of the record, and what is lost between them [ms].
+    """
 
     duration_ms: float = Field(default=3.0, gt=0.2, le=2000)
     pulses: Count = (25, 30)
-    rates_hz: Annotated[tuple[float, ...], AfterValidator(_known_rates)] = (62.5e6, 100e6, 125e6, 200e6, 250e6)
-    bits: tuple[Annotated[int, Field(ge=8, le=16)], ...] = (8, 10, 12, 14, 16)
-    mains_hz: tuple[Annotated[float, Field(gt=10, lt=100)], ...] = (50.0, 60.0)
-    low_corner_hz: Positive = (30e3, 300e3)
-    high_corner_hz: Positive = (8e6, 80e6)
-    transfer_ohm: Positive = (1.0, 15.0)
     noise_v: Positive = (20e-6, 500e-6)
     full_scale_db: Range = (38.0, 70.0)
+    offset_counts: float = Field(default=4.0, ge=0)
     segments: int = Field(default=1, ge=1, le=64)
     gap_ms: float = Field(default=5.0, gt=0)
 
 
 class Mix(Settings):
-    """Share of the planted pulses of each class; any positive numbers, their sum counts as one."""
+    """Which sources a drawn circuit has, and how its planted pulses are shared among the classes.
+
+    Attributes
+    ----------
+    cable, local, switchgear, interference : share of the planted pulses; their sum counts as one.
+    sources : of each class on one circuit.
+    cable_ways : a place on this cable, or on a neighbour's cable whose pulses arrive over the busbar.
+    far_end_share : of the places on a cable that are its far end, 0 to 1.
+    near_share : of the places drawn evenly in the logarithm of the distance rather than evenly, 0 to 1.
+    local_ways : from core to screen through the stress cone or within 10 m of cable, or from core to cable box.
+    local_at_termination : share of the former at the termination itself, 0 to 1.
+    switchgear_ways : from a busbar, or from equipment on its dropper, to earth.
+    own_panel : share of switchgear sources in the panel of this cable, 0 to 1; the rest evenly in the others.
+    """
 
     cable: float = Field(default=0.25, ge=0)
     local: float = Field(default=0.25, ge=0)
     switchgear: float = Field(default=0.25, ge=0)
     interference: float = Field(default=0.25, ge=0)
-    sources: Annotated[tuple[Annotated[int, Field(ge=1)], int], AfterValidator(_rising)] = (1, 3)
+    sources: Count = (1, 3)
+    cable_ways: Weights = Field(default={"cable": 0.9, "neighbour": 0.1})
+    far_end_share: float = Field(default=0.2, ge=0, le=1)
+    near_share: float = Field(default=0.2, ge=0, le=1)
+    local_ways: Weights = Field(default={"stress-cone": 0.75, "box": 0.25})
+    local_at_termination: float = Field(default=0.5, ge=0, le=1)
+    switchgear_ways: Weights = Field(default={"bus": 0.5, "equipment": 0.5})
+    own_panel: float = Field(default=0.4, ge=0, le=1)
 
     @model_validator(mode="after")
     def _something_is_planted(self) -> Self:
         if self.cable + self.local + self.switchgear + self.interference <= 0:
             raise ValueError("at least one share is above zero")
+        for field in ("cable_ways", "local_ways", "switchgear_ways"):
+            odd = sorted(set(getattr(self, field)) - set(get_args(Way)))
+            if odd:
+                raise ValueError(f"{field} knows {', '.join(get_args(Way))}, not {odd[0]}")
         return self
 
 
-class CableRanges(Settings):
-    """Dimensions and materials of the cables."""
-
-    length_m: Positive = (80.0, 4000.0)
-    insulations: tuple[Insulation, ...] = ("XLPE", "XLPE", "EPR")
-    areas_mm2: tuple[Literal[50, 70, 95, 120, 150, 185, 240, 300, 400, 500, 630], ...] = (
-        50,
-        70,
-        95,
-        120,
-        150,
-        185,
-        240,
-        300,
-        400,
-        500,
-        630,
-    )
-    insulation_mm: tuple[float, ...] = (3.4, 4.5, 5.5, 8.0)
-    semicon_mm: Positive = (0.3, 1.0)
-    semicon_s_per_m: Positive = (3e-3, 10.0)
-    semicon_permittivity: Positive = (10.0, 300.0)
-    cole_cole_share: float = Field(default=0.5, ge=0, le=1)
-    excess: Range = (0.0, 2.0)
-    far_ends: tuple[FarEndKind, ...] = ("open", "transformer", "transformer", "cable")
-
-
-class NearEndRanges(Settings):
-    """Elements of terminations, straps and switchgear, drawn evenly in their logarithm."""
-
-    panels: Annotated[tuple[Annotated[int, Field(ge=2)], int], AfterValidator(_rising)] = (2, 3)
-    feeders: Count = (0, 4)
-    tail_h: Positive = (0.3e-6, 3e-6)
-    section_h: Positive = (0.3e-6, 1.5e-6)
-    dropper_h: Positive = (0.2e-6, 2e-6)
-    busbar_f: Positive = (20e-12, 120e-12)
-    equipment_f: Positive = (30e-12, 500e-12)
-    termination_f: Positive = (20e-12, 150e-12)
-    box_f: Positive = (5e-12, 30e-12)
-    screen_f: Positive = (10e-12, 100e-12)
-    strap_h: Positive = (0.2e-6, 2e-6)
-    soil_ohm: Positive = (20.0, 80.0)
-    feeder_ohm: Positive = (12.0, 45.0)
-    feeder_h: Positive = (0.5e-6, 4e-6)
-    loss_ohm: Positive = (0.3, 40.0)
-
-
-class InterferenceRanges(Settings):
-    """Carriers, coloured noise and converters; amplitudes in units of the white noise's deviation."""
-
-    carriers: Count = (0, 6)
-    carrier_amplitude: Positive = (0.1, 3.0)
-    carriers_hz: tuple[float, ...] = ()
-    low_noise: Range = (0.0, 1.5)
-    low_noise_hz: Positive = (0.3e6, 5e6)
-    switching_hz: Positive = (2e3, 20e3)
-    ring_hz: Positive = (0.3e6, 15e6)
-    ring_q: Positive = (1.5, 20.0)
-
-
 class SourceEntry(Settings):
-    """One source of an explicit circuit."""
+    """One source of an explicit circuit; what it does not say is drawn."""
 
     label: Label
     distance_m: float | None = Field(default=None, ge=0)
     pulses_per_cycle: float = Field(gt=0, le=1000)
     snr_db: Range
-    pattern: Pattern = "uniform"
-    path: CouplingPath = "radiated"
+    pattern: Pattern | None = None
+    kind: Kind | None = None
+    way: Way | None = None
+    family: Family | None = None
+    path: CouplingPath | None = None
 
 
 class CircuitEntry(Settings):
@@ -173,21 +135,29 @@ class Scenario(Settings):
     name: str = Field(pattern=r"^[a-z0-9][a-z0-9-]*$")
     circuits: int = Field(default=24, ge=1)
     captures_per_circuit: int = Field(default=1, ge=1)
-    snr_db: Range = (8.0, 46.0)
+    snr_db: Range = (8.0, 58.0)
     capture: CaptureRanges = CaptureRanges()
+    chain: ChainRanges = ChainRanges()
     mix: Mix = Mix()
+    source: SourceRanges = SourceRanges()
+    activity: ActivityRanges = ActivityRanges()
     cable: CableRanges = CableRanges()
     near_end: NearEndRanges = NearEndRanges()
-    interference: InterferenceRanges = InterferenceRanges()
+    background: BackgroundRanges = BackgroundRanges()
+    interference: DisturberRanges = DisturberRanges()
     circuit: tuple[CircuitEntry, ...] = ()
 
 
 def read_scenario(path: Path) -> Scenario:
-    """The scenario of a TOML file.
+    """The scenario of a TOML file; a measured curve is looked for beside it.
 
     Raises
     ------
     InputError
         If the file cannot be read, or holds an unknown key or a value out of bounds.
     """
-    return read_settings(path, Scenario)
+    scenario = read_settings(path, Scenario)
+    if scenario.cable.curve is None:
+        return scenario
+    cable = scenario.cable.model_copy(update={"curve": str(path.parent / scenario.cable.curve)})
+    return scenario.model_copy(update={"cable": cable})

@@ -9,10 +9,12 @@ import numpy as np
 
 from pdclass.pulses import Annotation, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.sim.circuit import ONSET_SHARE_OF_PEAK, Circuit, Source
+from pdclass.sim.disturbers import disturber_times
 from pdclass.sim.grid import LEAD_S, laplace_grid, to_samples
-from pdclass.sim.interference import background_wave, switching_times
-from pdclass.sim.phase import draw_phases, half_cycle_sign
+from pdclass.sim.interference import background_wave
+from pdclass.sim.phase import Activity, activity_phases
 from pdclass.sim.ranges import CaptureRanges
+from pdclass.sim.receiver import saturated, saturation_at
 from pdclass.sim.source import source_spectrum
 
 #: MAD of Gaussian noise of unit deviation.
@@ -21,9 +23,8 @@ _MAD_OF_GAUSSIAN = 0.6745
 _WIDTH_JITTER = 0.08
 #: Share of a discharge's pulses with the polarity of the other half cycle.
 _STRAY_POLARITY = 0.1
-_JITTER_OF_PERIOD = (0.002, 0.02)
 _BATCH = 32
-_NOISE_PROBES = 200_000
+_NOISE_PROBES = 60_000
 
 
 @dataclass(frozen=True)
@@ -97,7 +98,7 @@ def draw_timeline(ranges: CaptureRanges, circuit: Circuit, *, rng: np.random.Gen
 def draw_signal(circuit: Circuit, timeline: Timeline, *, rng: np.random.Generator) -> WaveArray:
     """Noise and carriers of the whole record, (samples,) [V]; MAD/0.6745 of it is the circuit's noise."""
     parts = [
-        background_wave(circuit.background, int(clock), end - first, timeline.rate_hz, rng=rng)
+        background_wave(circuit.reception, int(clock), end - first, rng=rng)
         for (first, end), clock in zip(timeline.bounds(), timeline.segments[:, 1], strict=True)
     ]
     signal = np.concatenate(parts)
@@ -108,16 +109,44 @@ def draw_signal(circuit: Circuit, timeline: Timeline, *, rng: np.random.Generato
 
 
 def draw_plan(source: Source, count: int, timeline: Timeline, *, rng: np.random.Generator) -> Plan:
-    """Times, heights, polarities and widths of `count` pulses; a converter has no more than its edges."""
-    if source.switching_hz > 0:
-        onset = _switching_onsets(source, count, timeline, rng=rng)
-        sign = rng.choice([-1.0, 1.0], onset.size)
-    else:
-        onset = _discharge_onsets(source, count, timeline, rng=rng)
-        stray = np.where(rng.uniform(size=onset.size) < _STRAY_POLARITY, -1.0, 1.0)
-        sign = rng.choice([-1.0, 1.0]) * stray * half_cycle_sign(timeline.phase(onset))
+    """Times, heights, polarities and widths of `count` pulses; a switching device has no more than its edges."""
+    stretches = timeline.bounds()
+    lengths = np.array([end - first for first, end in stretches])
+    shares = rng.multinomial(count, lengths / lengths.sum())
+    drawn = [
+        _onsets(source, int(share), first, end, timeline, rng=rng)
+        for (first, end), share in zip(stretches, shares, strict=True)
+    ]
+    onset = np.concatenate([onsets for onsets, _ in drawn])
+    sign = rng.choice([-1.0, 1.0]) * np.concatenate([signs for _, signs in drawn])
     snr_db = rng.uniform(*source.snr_db, onset.size)
     return Plan(onset, snr_db, sign, np.exp(_WIDTH_JITTER * rng.standard_normal(onset.size)))
+
+
+def _onsets(
+    source: Source, count: int, first: int, end: int, timeline: Timeline, *, rng: np.random.Generator
+) -> tuple[FloatArray, FloatArray]:
+    """Onsets in one segment [samples of the file], sorted, and the signs that belong to them."""
+    start_deg = float(timeline.phase(np.array([float(first)]))[0])
+    if source.repetition is not None:
+        times_s = disturber_times(
+            source.repetition,
+            (end - first) / timeline.rate_hz,
+            count,
+            start_deg=start_deg,
+            deg_per_s=timeline.deg_per_sample * timeline.rate_hz,
+            rng=rng,
+        )
+        either = rng.choice([-1.0, 1.0], times_s.size)
+        # what switches on switches off next
+        signs = np.resize([1.0, -1.0], times_s.size) if source.repetition.kind == "switching" else either
+        return np.minimum(first + times_s * timeline.rate_hz, end - 1), signs
+    activity = Activity(None) if source.activity is None else source.activity
+    span_deg = (end - first) * timeline.deg_per_sample
+    found = activity_phases(activity, count, start_deg, span_deg, rng=rng)
+    onset = np.clip(first + (found.phase_deg - start_deg) / timeline.deg_per_sample, first, end - 1)
+    stray = np.where(rng.uniform(size=onset.size) < _STRAY_POLARITY, -1.0, 1.0)
+    return onset, stray * np.sign(found.charge)
 
 
 def plant(
@@ -131,26 +160,6 @@ def plant(
     return tuple(sorted(annotations, key=lambda planted: (planted.onset_sample, str(planted.label))))
 
 
-def _switching_onsets(source: Source, count: int, timeline: Timeline, *, rng: np.random.Generator) -> FloatArray:
-    jitter = rng.uniform(*_JITTER_OF_PERIOD)
-    edges = switching_times(timeline.samples / timeline.rate_hz, source.switching_hz, jitter, rng=rng)
-    chosen = rng.permutation(edges)[:count]
-    return np.asarray(np.minimum(np.sort(chosen) * timeline.rate_hz, timeline.samples - 1))
-
-
-def _discharge_onsets(source: Source, count: int, timeline: Timeline, *, rng: np.random.Generator) -> FloatArray:
-    """Onsets that follow the source's phase pattern, spread over the recorded samples, sorted."""
-    bounds = timeline.bounds()
-    lengths = np.array([end - first for first, end in bounds])
-    onsets = []
-    for (first, end), number in zip(bounds, rng.multinomial(count, lengths / lengths.sum()), strict=True):
-        start_deg = float(timeline.phase(np.array([float(first)]))[0])
-        span_deg = (end - first) * timeline.deg_per_sample
-        drawn = draw_phases(source.pattern, int(number), start_deg, span_deg, rng=rng)
-        onsets.append(np.clip(first + (drawn - start_deg) / timeline.deg_per_sample, first, end - 1))
-    return np.sort(np.concatenate(onsets))
-
-
 def _plant_batch(
     signal: WaveArray, circuit: Circuit, timeline: Timeline, source: Source, plan: Plan
 ) -> list[Annotation]:
@@ -159,7 +168,8 @@ def _plant_batch(
     places = np.floor(begin).astype(np.int64)
     late_s = LEAD_S + (begin - places) / timeline.rate_hz
     currents = np.array([source_spectrum(source.current.stretched(factor), s) for factor in plan.stretch])
-    waves = to_samples(currents * source.response * np.exp(-s * late_s[:, None]), timeline.rate_hz)
+    core = saturated(circuit.sensitivity, saturation_at(circuit.receiver, timeline.phase(plan.onset)))
+    waves = to_samples(currents * source.response * core * np.exp(-s * late_s[:, None]), timeline.rate_hz)
     scales = circuit.noise_v * 10 ** (plan.snr_db / 20) / np.abs(waves).max(axis=1)
     waves *= (scales * plan.sign)[:, None]
     bounds = [timeline.bounds()[int(home)] for home in timeline.home(plan.onset)]

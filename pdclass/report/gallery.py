@@ -1,0 +1,391 @@
+"""The gallery: one self-contained HTML page of what a synthetic world looks like, for an engineer to judge."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import jinja2
+import numpy as np
+from markupsafe import Markup
+
+from pdclass.report.gallery_examples import (
+    LEVEL_HZ,
+    Backdrop,
+    Example,
+    gather_backdrops,
+    gather_crossings,
+    gather_examples,
+)
+from pdclass.report.gallery_physics import (
+    CABLES,
+    CHAINS,
+    CHARGE_US,
+    CYCLES,
+    INJECTED_NS,
+    KINDS,
+    RINGS,
+    STATIONS,
+    TABLE_MHZ,
+    Journey,
+    Spread,
+    chains,
+    converter_intervals,
+    journey,
+    kinds_of,
+    near_ends,
+    phase_patterns,
+    spread,
+)
+from pdclass.report.gallery_plots import (
+    backdrop_figure,
+    chain_figure,
+    distance,
+    example_figure,
+    interval_figure,
+    journey_figure,
+    near_end_figure,
+    pattern_figure,
+    ring_figure,
+    spread_figure,
+)
+from pdclass.report.plots import COLOURS, EDGE
+from pdclass.report.summary import CAUTIONS, SHORT_CAUTION
+from pdclass.sim.ranges import Scenario
+from pdclass.sim.scenario import SIMULATOR_VERSION
+from pdclass.verdict.sentences import three_digits
+
+_WAYS: Mapping[str, str] = {
+    "cable": "on this cable",
+    "neighbour": "on a neighbour's cable, over the busbar",
+    "stress-cone": "core to screen",
+    "box": "core to cable box",
+    "bus": "busbar to enclosure",
+    "equipment": "at equipment on a dropper",
+    "radiated": "radiated into the loops of the station",
+    "screen": "conducted on the screen",
+    "feeder": "along a neighbour's cable",
+    "far-end": "along this cable from its far end",
+}
+
+
+@dataclass(frozen=True)
+class _Group:
+    """One kind of example: its name after `group_of`, and what the page says of it."""
+
+    name: str
+    label: str
+    title: str
+    words: str
+
+
+_GROUPS = (
+    _Group(
+        "near",
+        "cable",
+        "cable, 10 to 100 m away",
+        "The first arrival is still steep and the near end answers to it, so that a discharge in the first hundred "
+        "metres is not easily told from a local one.",
+    ),
+    _Group(
+        "middle",
+        "cable",
+        "cable, 100 to 500 m away",
+        "The edges have become slower, above 10 MHz little is left. What went on from the busbar into other cables "
+        "comes back from their ends, reversed; so does, later, what went the other way on this one.",
+    ),
+    _Group(
+        "far",
+        "cable",
+        "cable, beyond 500 m",
+        "A smooth, lopsided pulse: the high frequencies stay in the cable, the near end is hardly made to ring.",
+    ),
+    _Group(
+        "far end",
+        "cable",
+        "cable, at its far end",
+        "Equipment and termination at the other end of the cable: one whole length travelled, the next arrival two "
+        "lengths later.",
+    ),
+    _Group(
+        "neighbour",
+        "cable",
+        "a neighbour's cable",
+        "It arrives over the busbar. From one sensor alone it cannot be told from a pulse of this cable.",
+    ),
+    _Group(
+        "termination",
+        "local",
+        "local, at the termination",
+        "Nothing travelled: edges are as fast as source and sensor allow. Part of the charge leaves along the cable, "
+        "and its echo from the far end looks like a cable pulse.",
+    ),
+    _Group(
+        "first metres",
+        "local",
+        "local, within 10 m of the termination",
+        "As before; ten metres there and back are about a tenth of a microsecond.",
+    ),
+    _Group(
+        "box",
+        "local",
+        "local, from core to cable box",
+        "The charge does not return by the cable's screen but by the earthed box.",
+    ),
+    _Group(
+        "bus",
+        "switchgear",
+        "switchgear, busbar",
+        "The charge shakes the busbar's ladder of inductances and capacitances; its ring is what the strap carries.",
+    ),
+    _Group(
+        "equipment",
+        "switchgear",
+        "switchgear, transformer or bushing on a dropper",
+        "The same, with the dropper and its equipment as one more resonant circuit.",
+    ),
+    _Group(
+        "converter",
+        "interference",
+        "interference, converter",
+        "Edges of transistors with the ringing of their own circuit, two in every switching period.",
+    ),
+    _Group(
+        "thyristor",
+        "interference",
+        "interference, thyristor bridge",
+        "Slower and lower in frequency; locked to the mains, at both ends of each commutation.",
+    ),
+    _Group(
+        "switch-mode",
+        "interference",
+        "interference, switch-mode supply",
+        "Near the sensor, fast, in bursts whose spacing is a few microseconds.",
+    ),
+    _Group(
+        "arc",
+        "interference",
+        "interference, arc of a contact or brush",
+        "A spark is a spark: the current alone is like a discharge's. What differs is the way it comes.",
+    ),
+    _Group(
+        "radio-packet",
+        "interference",
+        "interference, packet of radio",
+        "A transmitter switched on and off, or a contact that rectifies: one frequency under an envelope.",
+    ),
+    _Group(
+        "line-corona",
+        "interference",
+        "interference, corona on an overhead line",
+        "A discharge in air, but not of the cable system. Where it arrives along a cable, its waveform cannot tell it "
+        "from a distant discharge.",
+    ),
+    _Group(
+        "sferic",
+        "interference",
+        "interference, lightning far away",
+        "Microseconds long, little above a few megahertz; leaders send trains of faster pulses.",
+    ),
+    _Group(
+        "switching-operation",
+        "interference",
+        "interference, switching elsewhere",
+        "An oscillation of the network that was switched; contacts that pre-strike send many.",
+    ),
+)
+_CROSSING = _Group(
+    "background",
+    "interference",
+    "interference, background that crossed the threshold",
+    "Nothing was planted here: noise, carriers and carrier communication where the extraction found a pulse. These "
+    "windows have the height that they have, not one that was chosen.",
+)
+_PATTERN_WORDS: Mapping[str, str] = {
+    "void": "void",
+    "surface": "surface",
+    "floating": "part without potential",
+    "corona": "corona, negative point",
+    "positive-corona": "corona, positive point",
+    "six-pulse": "six-pulse bridge",
+    "twelve-pulse": "twelve-pulse bridge",
+}
+
+
+def gallery_page(scenario: Scenario, *, seed: int) -> str:
+    """The gallery of a scenario as HTML, without scripts and without requests to outside; the same every time.
+
+    Parameters
+    ----------
+    scenario : the synthetic world.
+    seed : of the world, >= 0.
+    """
+    rngs = [np.random.default_rng(child) for child in np.random.SeedSequence(seed).spawn(5)]
+    kinds = kinds_of(scenario.cable)
+    travels = [journey(scenario.cable, kind, rng=rngs[0]) for kind in KINDS if kind in kinds]
+    near = near_ends(scenario, rng=rngs[1])
+    return (
+        _environment()
+        .get_template("gallery.html.j2")
+        .render(
+            scenario=scenario.name,
+            seed=seed,
+            version=SIMULATOR_VERSION,
+            facts=_facts(scenario),
+            groups=_examples(scenario, seed),
+            journeys=[_journey(one, place) for place, one in enumerate(travels)],
+            spreads=[_spread(spread(scenario.cable, kind, seed=seed), f"v{at}") for at, kind in enumerate(kinds)],
+            near_end=_drawn(near_end_figure(near, name="n")),
+            rings=_drawn(ring_figure(near, name="q")),
+            ring=_ring_words(near.ring_mhz, near.ring_q),
+            chain=_drawn(chain_figure(chains(scenario.chain, rng=rngs[2]), name="z")),
+            patterns=_patterns(scenario, rngs[3]),
+            backdrops=[_backdrop(one, f"b{at}") for at, one in enumerate(gather_backdrops(scenario, seed=seed))],
+            counts={"cables": CABLES, "stations": STATIONS, "rings": RINGS, "chains": CHAINS, "cycles": CYCLES},
+            injected_ns=INJECTED_NS,
+            charge_us=CHARGE_US,
+            table_mhz=TABLE_MHZ,
+            level_khz=LEVEL_HZ / 1e3,
+            cautions=CAUTIONS,
+            short_caution=SHORT_CAUTION,
+            colours=COLOURS,
+            edge=EDGE,
+        )
+    )
+
+
+def _environment() -> jinja2.Environment:
+    loader = jinja2.FileSystemLoader(Path(__file__).parent)
+    undefined = jinja2.StrictUndefined
+    environment = jinja2.Environment(
+        loader=loader, autoescape=True, undefined=undefined, trim_blocks=True, lstrip_blocks=True
+    )
+    environment.filters["begin"] = _begin
+    return environment
+
+
+def _begin(words: str) -> str:
+    return words[:1].upper() + words[1:]
+
+
+def _drawn(figure: str) -> Markup:
+    return Markup(figure)  # noqa: S704
+
+
+def _facts(scenario: Scenario) -> list[str]:
+    """What the scenario is, in a few lines."""
+    if scenario.circuit:
+        names = ", ".join(entry.name for entry in scenario.circuit)
+        return [f"circuits that the scenario names: {names}"]
+    cable, near, chain = scenario.cable, scenario.near_end, scenario.chain
+    kinds = ", ".join(f"{name} {weight:g}" for name, weight in cable.kinds.items() if weight > 0)
+    rates = ", ".join(f"{rate / 1e6:g}" for rate in chain.rates_hz)
+    panels = len(near.roles) or f"{near.panels[0]} to {near.panels[1]}"
+    return [
+        f"{scenario.circuits} circuits, each drawn for itself",
+        f"cables of {cable.length_m[0]:g} to {cable.length_m[1]:g} m; kinds by weight: {kinds}",
+        f"near ends of {panels} panels",
+        f"sampled at {rates} MS/s with {min(chain.bits)} to {max(chain.bits)} bit",
+        f"pulses of {scenario.snr_db[0]:g} to {scenario.snr_db[1]:g} dB over the noise, the same for every class",
+    ]
+
+
+def _examples(scenario: Scenario, seed: int) -> list[dict[str, Any]]:
+    found = gather_examples(scenario, {group.name: group.label for group in _GROUPS}, seed=seed)
+    rows = [(group, found[group.name]) for group in _GROUPS]
+    rows.append((_CROSSING, gather_crossings(scenario, seed=seed)))
+    return [
+        {"label": group.label, "title": group.title, "words": group.words, "rows": _rows(f"e{at}", examples)}
+        for at, (group, examples) in enumerate(rows)
+    ]
+
+
+def _rows(name: str, examples: Sequence[Example]) -> list[dict[str, Any]]:
+    return [
+        {"figure": _drawn(example_figure(example, name=f"{name}-{at}")), "caption": _caption(example)}
+        for at, example in enumerate(examples)
+    ]
+
+
+def _caption(example: Example) -> str:
+    low, high = example.band_hz
+    circuit = example.circuit
+    placed = example.distance_m is not None and example.label in ("cable", "local")
+    place = f", {_place_words(example.distance_m or 0.0)}" if placed else ""
+    way = f", {_WAYS[example.way]}" if example.way else ""
+    charge = "" if example.charge_pc is None else f", {_charge_words(example.charge_pc)}"
+    return (
+        f"{example.family}{way}{place}{charge}. Cable: {circuit['cable']}, {float(str(circuit['length_m'])):.0f} m; "
+        f"{circuit['panels']} panels. Chain {three_digits(low / 1e6)} to {three_digits(high / 1e6)} MHz, "
+        f"{example.rate_hz / 1e6:g} MS/s, {circuit['bits']} bit. Peak {three_digits(example.peak_mv)} mV, "
+        f"{example.snr_db:.0f} dB over the noise."
+    )
+
+
+def _charge_words(charge_pc: float) -> str:
+    return f"{three_digits(charge_pc)} pC" if charge_pc < 1000 else f"{three_digits(charge_pc / 1e3)} nC"
+
+
+def _place_words(distance_m: float) -> str:
+    return (
+        "at the termination" if distance_m == 0 else f"{distance_m:.{0 if distance_m >= 10 else 1}f} m from the sensor"
+    )
+
+
+def _journey(found: Journey, place: int) -> dict[str, Any]:
+    rows = [
+        {
+            "distance": distance(step.km),
+            "peak": three_digits(step.peak_share),
+            "rise": three_digits(step.rise_ns),
+            "width": three_digits(step.width_ns),
+            "charge": f"{100 * step.charge_share:.1f}",
+        }
+        for step in found.steps
+    ]
+    losses = [three_digits(loss) for loss in found.db_per_km]
+    return {
+        "kind": found.kind,
+        "losses": losses,
+        "figure": _drawn(journey_figure(found, name=f"j{place}")),
+        "rows": rows,
+    }
+
+
+def _spread(found: Spread, name: str) -> dict[str, Any]:
+    rows = []
+    for mhz in TABLE_MHZ:
+        at = int(np.argmin(np.abs(found.mhz - mhz)))
+        losses = [three_digits(value) for value in found.db_per_km[:, at]]
+        rows.append(
+            {"mhz": f"{mhz:g}", "losses": losses, "speeds": [f"{value:.0f}" for value in found.m_per_us[:, at]]}
+        )
+    return {"kind": found.kind, "figure": _drawn(spread_figure(found, name=name)), "rows": rows}
+
+
+def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
+    return {
+        "mhz": [f"{float(value):.2g}" for value in np.nanpercentile(ring_mhz, [10, 50, 90])],
+        "q": [f"{float(value):.2g}" for value in np.nanpercentile(ring_q, [10, 50, 90])],
+    }
+
+
+def _patterns(scenario: Scenario, rng: np.random.Generator) -> list[dict[str, Any]]:
+    panels = [
+        {"figure": _drawn(pattern_figure(one, name=f"p{at}")), "caption": _PATTERN_WORDS[one.pattern]}
+        for at, one in enumerate(phase_patterns(scenario, rng=rng))
+    ]
+    intervals = converter_intervals(scenario, rng=rng)
+    if intervals is not None:
+        caption = f"converter switching at {intervals.switching_hz / 1e3:.1f} kHz; dashed: one period"
+        panels.append({"figure": _drawn(interval_figure(intervals, name="i")), "caption": caption})
+    return panels
+
+
+def _backdrop(found: Backdrop, name: str) -> dict[str, Any]:
+    carriers = ", ".join(three_digits(mhz) for mhz in found.carriers_mhz)
+    heard = f"carriers at {carriers} MHz" if carriers else "no broadcast carriers"
+    caption = f"{heard}; {found.communication}; {found.rate_hz / 1e6:g} MS/s"
+    return {"figure": _drawn(backdrop_figure(found, name=name)), "caption": f"{_begin(caption)}."}

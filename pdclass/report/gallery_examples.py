@@ -14,7 +14,7 @@ import scipy.signal
 from pdclass.extract import ExtractSettings, extract
 from pdclass.pulses import Annotation, Capture, FloatArray, IntArray
 from pdclass.sim.circuit import Circuit, Source
-from pdclass.sim.drawn_source import PulseRanges
+from pdclass.sim.drawn_source import most_charge_pc
 from pdclass.sim.ranges import Scenario
 from pdclass.sim.receiver import chain_band_hz
 from pdclass.sim.scenario import capture_of, circuit_of
@@ -225,8 +225,7 @@ def _believable_db(world: Scenario, circuit: Circuit, source: Source) -> float:
     """Height over the noise that the largest charge of its kind has; interference has no limit [dB]."""
     if source.label == "interference":
         return float("inf")
-    kind: PulseRanges = getattr(world.source, source.family.replace("-", "_"))
-    most_v = min(kind.charge_pc[1], world.mix.most_charge_pc) * 1e-12 * source.volts_per_coulomb
+    most_v = most_charge_pc(world.source, source.family) * 1e-12 * source.volts_per_coulomb
     return float(20 * np.log10(most_v / circuit.noise_v))
 
 

@@ -11,15 +11,16 @@ from pydantic import BaseModel, ConfigDict, ValidationError
 
 from pdclass.errors import InputError
 
+_LONGEST_FOUND = 100
 _PACKAGE = Path(__file__).resolve().parent
 
 Model = TypeVar("Model", bound="Settings")
 
 
 class Settings(BaseModel):
-    """A frozen set of settings; a key that it does not know is an error."""
+    """A frozen set of settings; a key that it does not know is an error, and so is a number that is not finite."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid")
+    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False)
 
 
 def shipped(kind: str) -> Path:
@@ -57,9 +58,12 @@ def read_settings(path: Path, model: type[Model]) -> Model:
 
 def _first_complaint(error: ValidationError, model: type[Settings]) -> str:
     first = error.errors()[0]
-    where = ".".join(str(part) for part in first["loc"])
+    where = ".".join(str(part) for part in first["loc"]) or "the whole"
     if first["type"] != "extra_forbidden":
-        return f"{where}: {first['msg']}, found {first['input']!r}"
+        # a whole table would hide what is said of it
+        found = repr(first["input"])
+        said = f"{where}: {first['msg'].removeprefix('Value error, ')}"
+        return f"{said}, found {found}" if len(found) <= _LONGEST_FOUND else said
     near = difflib.get_close_matches(str(first["loc"][-1]), _known_keys(model), n=1, cutoff=0.0)
     return f"{where}: unknown key; the nearest known one is '{near[0]}'"
 

@@ -33,6 +33,14 @@ def test_a_wrong_value_is_named_with_its_place(tmp_path):
         read_settings(tmp_path / "s.toml", Receiver)
 
 
+def test_numbers_are_finite(tmp_path):
+    """TOML knows nan and inf; settings do not."""
+    for number in ("nan", "inf"):
+        (tmp_path / "s.toml").write_text(f"rate_hz = {number}\n")
+        with pytest.raises(InputError, match=r"rate_hz: .*finite"):
+            read_settings(tmp_path / "s.toml", Receiver)
+
+
 def test_a_broken_file_is_one_line(tmp_path):
     """What is no TOML, or not there, is an input error that names the file."""
     (tmp_path / "s.toml").write_text("rate_hz = = 1")

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 
+from pdclass.features.arrival import ARRIVAL, measure_arrival
+from pdclass.features.copies import COPIES, measure_copies
 from pdclass.features.echoes import ECHOES, measure_echoes
 from pdclass.features.edges import EDGES, measure_edges
 from pdclass.features.feature import Feature
@@ -22,9 +24,11 @@ FAMILIES: Mapping[str, tuple[tuple[Feature, ...], Measure]] = {
     "ringing": (RINGING, measure_ringing),
     "echoes": (ECHOES, measure_echoes),
     "spread": (SPREAD, measure_spread),
+    "arrival": (ARRIVAL, measure_arrival),
+    "copies": (COPIES, measure_copies),
 }
 
-CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD)
+CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD, *ARRIVAL, *COPIES)
 
 BY_NAME: Mapping[str, Feature] = {feature.name: feature for feature in CATALOGUE}
 

@@ -45,6 +45,7 @@ class Window:
     noise : noise level beside the pulse, in units of the peak; NaN where the pre-trigger has no quiet stretch.
     noise_power : (bins,) noise spectrum scaled to the own samples; NaN likewise.
     reach_hz : highest frequency that the chain carries [Hz].
+    low_hz : lower corner of the chain [Hz]; NaN = unknown.
     snr_db : peak over noise [dB].
     """
 
@@ -57,6 +58,7 @@ class Window:
     noise: float
     noise_power: FloatArray
     reach_hz: float
+    low_hz: float = float("nan")
 
     @property
     def snr_db(self) -> float:
@@ -75,6 +77,11 @@ class Window:
     def edge(self) -> FloatArray:
         """The own samples with twice the lead: where an edge may be looked for, and nowhere else."""
         return self.wave[ONSET - 2 * GUARD : self.end]
+
+    @property
+    def noise_density(self) -> FloatArray:
+        """Noise spectrum for one sample, (bins,) on the grid of `power` from 0 Hz on; NaN where it is unknown."""
+        return self.noise_power / (self.end - ONSET + GUARD)
 
     def power(self) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Frequencies [Hz], power of the own samples and of the noise, within the analysis band.
@@ -125,7 +132,8 @@ def prepared(wave_v: WaveArray, chain: Chain, duration_us: float) -> Window | No
     known_noise = quiet.stop - quiet.start >= _SHORTEST_QUIET
     noise = float(np.median(np.abs(before)) / 0.6744898) if known_noise else np.nan
     noise_power = _noise_power(before, end - ONSET + GUARD, known=known_noise)
-    return Window(clean, raw, end, last, peak, height, noise, noise_power, chain_reach_hz(chain))
+    low_hz = chain.band_hz[0] if chain.band_hz else float("nan")
+    return Window(clean, raw, end, last, peak, height, noise, noise_power, chain_reach_hz(chain), low_hz)
 
 
 def to_analysis_band(wave_v: FloatArray) -> FloatArray:

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 
 from pdclass.extract import ExtractSettings
-from pdclass.jobs.simulate import by_rate, labelled_pulses, scenario_path
+from pdclass.jobs.simulate import joined, labelled_pulses, scenario_path
 from pdclass.jobs.talk import SILENT, Silent, Talk, each
 from pdclass.jobs.train import fit, measured
 from pdclass.model.bundle import BundleParts, write_bundle
@@ -162,17 +162,18 @@ def drawn_pulses(world: Scenario, numbers: range, seed: int, *, jobs: int, talk:
     """Features and pulses of simulated captures, each found by the extractor as in real captures."""
     calls = [(world, number, seed) for number in numbers]
     found = each(_pulses_of, calls, jobs=jobs, talk=talk, words="circuits simulated")
-    values, pulses = measured(list(by_rate([one for one, _ in found]).values()))
-    traits = pd.DataFrame([traits for _, traits in found]).drop_duplicates("circuit").set_index("circuit")
-    return Measured(values, pulses, traits)
+    values = np.concatenate([one.values for one in found])
+    traits = pd.concat([one.traits for one in found])
+    return Measured(values, joined([one.pulses for one in found]), traits[~traits.index.duplicated()])
 
 
-def _pulses_of(world: Scenario, number: int, seed: int) -> tuple[PulseSet, dict[str, Any]]:
+def _pulses_of(world: Scenario, number: int, seed: int) -> Measured:
     circuit = circuit_of(world, number, seed=seed)
     capture = capture_of(world, circuit, number, seed=seed)
     pulses = labelled_pulses(capture, ExtractSettings(false_events_per_cycle=FALSE_EVENTS)).pulses
     kept = pulses.take((pulses.table["label"].notna() | pulses.table["echo_of"].notna()).to_numpy())
-    return kept, {"circuit": circuit.name, **circuit.traits}
+    values, thinned = measured([kept])
+    return Measured(values, thinned, pd.DataFrame(circuit.traits, index=pd.Index([circuit.name], name="circuit")))
 
 
 class _Lines(Silent):

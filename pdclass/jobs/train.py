@@ -111,10 +111,19 @@ def read_tables(given: Sequence[Path]) -> tuple[list[PulseSet], list[str]]:
 def measured(sets: Sequence[PulseSet], names: Sequence[str] | None = None) -> tuple[FloatArray, PulseSet]:
     """Features of pulse sets of any rates, and the pulses as one set with their waves thinned.
 
-    Training looks at features and keeps thinned waves for comparison, so that rates may differ.
+    Training looks at features and keeps thinned waves for comparison, so that rates may differ. Echoes neither teach
+    nor test: their rows are NaN.
     """
-    values = np.concatenate([feature_table(pulses, names) for pulses in sets])
+    values = np.concatenate([_of_those_that_count(pulses, names) for pulses in sets])
     return values, joined([PulseSet(thin(pulses.waves), pulses.chains, pulses.table) for pulses in sets])
+
+
+def _of_those_that_count(pulses: PulseSet, names: Sequence[str] | None) -> FloatArray:
+    alone = pulses.table["echo_of"].isna().to_numpy()
+    own = feature_table(pulses.take(alone), names)
+    values = np.full((len(alone), own.shape[1]), np.nan)
+    values[alone] = own
+    return values
 
 
 def _settings(

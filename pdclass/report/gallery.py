@@ -4,12 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
-import jinja2
 import numpy as np
-from markupsafe import Markup
 
 from pdclass.report.gallery_examples import (
     LEVEL_HZ,
@@ -53,6 +50,7 @@ from pdclass.report.gallery_plots import (
 )
 from pdclass.report.plots import COLOURS, EDGE
 from pdclass.report.summary import CAUTIONS, SHORT_CAUTION
+from pdclass.report.templates import begin, drawn, template
 from pdclass.sim.ranges import Scenario
 from pdclass.sim.scenario import SIMULATOR_VERSION
 from pdclass.verdict.sentences import three_digits
@@ -226,52 +224,30 @@ def gallery_page(scenario: Scenario, *, seed: int) -> str:
     kinds = kinds_of(scenario.cable)
     travels = [journey(scenario.cable, kind, rng=rngs[0]) for kind in KINDS if kind in kinds]
     near = near_ends(scenario, rng=rngs[1])
-    return (
-        _environment()
-        .get_template("gallery.html.j2")
-        .render(
-            scenario=scenario.name,
-            seed=seed,
-            version=SIMULATOR_VERSION,
-            facts=_facts(scenario),
-            groups=_examples(scenario, seed),
-            journeys=[_journey(one, place) for place, one in enumerate(travels)],
-            spreads=[_spread(spread(scenario.cable, kind, seed=seed), f"v{at}") for at, kind in enumerate(kinds)],
-            near_end=_drawn(near_end_figure(near, name="n")),
-            rings=_drawn(ring_figure(near, name="q")),
-            ring=_ring_words(near.ring_mhz, near.ring_q),
-            chain=_drawn(chain_figure(chains(scenario.chain, rng=rngs[2]), name="z")),
-            patterns=_patterns(scenario, rngs[3]),
-            backdrops=[_backdrop(one, f"b{at}") for at, one in enumerate(gather_backdrops(scenario, seed=seed))],
-            counts={"cables": CABLES, "stations": STATIONS, "rings": RINGS, "chains": CHAINS, "cycles": CYCLES},
-            injected_ns=INJECTED_NS,
-            charge_us=CHARGE_US,
-            table_mhz=TABLE_MHZ,
-            level_khz=LEVEL_HZ / 1e3,
-            cautions=CAUTIONS,
-            short_caution=SHORT_CAUTION,
-            colours=COLOURS,
-            edge=EDGE,
-        )
+    return template("gallery.html.j2").render(
+        scenario=scenario.name,
+        seed=seed,
+        version=SIMULATOR_VERSION,
+        facts=_facts(scenario),
+        groups=_examples(scenario, seed),
+        journeys=[_journey(one, place) for place, one in enumerate(travels)],
+        spreads=[_spread(spread(scenario.cable, kind, seed=seed), f"v{at}") for at, kind in enumerate(kinds)],
+        near_end=drawn(near_end_figure(near, name="n")),
+        rings=drawn(ring_figure(near, name="q")),
+        ring=_ring_words(near.ring_mhz, near.ring_q),
+        chain=drawn(chain_figure(chains(scenario.chain, rng=rngs[2]), name="z")),
+        patterns=_patterns(scenario, rngs[3]),
+        backdrops=[_backdrop(one, f"b{at}") for at, one in enumerate(gather_backdrops(scenario, seed=seed))],
+        counts={"cables": CABLES, "stations": STATIONS, "rings": RINGS, "chains": CHAINS, "cycles": CYCLES},
+        injected_ns=INJECTED_NS,
+        charge_us=CHARGE_US,
+        table_mhz=TABLE_MHZ,
+        level_khz=LEVEL_HZ / 1e3,
+        cautions=CAUTIONS,
+        short_caution=SHORT_CAUTION,
+        colours=COLOURS,
+        edge=EDGE,
     )
-
-
-def _environment() -> jinja2.Environment:
-    loader = jinja2.FileSystemLoader(Path(__file__).parent)
-    undefined = jinja2.StrictUndefined
-    environment = jinja2.Environment(
-        loader=loader, autoescape=True, undefined=undefined, trim_blocks=True, lstrip_blocks=True
-    )
-    environment.filters["begin"] = _begin
-    return environment
-
-
-def _begin(words: str) -> str:
-    return words[:1].upper() + words[1:]
-
-
-def _drawn(figure: str) -> Markup:
-    return Markup(figure)  # noqa: S704
 
 
 def _facts(scenario: Scenario) -> list[str]:
@@ -304,7 +280,7 @@ def _examples(scenario: Scenario, seed: int) -> list[dict[str, Any]]:
 
 def _rows(name: str, examples: Sequence[Example]) -> list[dict[str, Any]]:
     return [
-        {"figure": _drawn(example_figure(example, name=f"{name}-{at}")), "caption": _caption(example)}
+        {"figure": drawn(example_figure(example, name=f"{name}-{at}")), "caption": _caption(example)}
         for at, example in enumerate(examples)
     ]
 
@@ -349,7 +325,7 @@ def _journey(found: Journey, place: int) -> dict[str, Any]:
     return {
         "kind": found.kind,
         "losses": losses,
-        "figure": _drawn(journey_figure(found, name=f"j{place}")),
+        "figure": drawn(journey_figure(found, name=f"j{place}")),
         "rows": rows,
     }
 
@@ -362,7 +338,7 @@ def _spread(found: Spread, name: str) -> dict[str, Any]:
         rows.append(
             {"mhz": f"{mhz:g}", "losses": losses, "speeds": [f"{value:.0f}" for value in found.m_per_us[:, at]]}
         )
-    return {"kind": found.kind, "figure": _drawn(spread_figure(found, name=name)), "rows": rows}
+    return {"kind": found.kind, "figure": drawn(spread_figure(found, name=name)), "rows": rows}
 
 
 def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
@@ -374,13 +350,13 @@ def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
 
 def _patterns(scenario: Scenario, rng: np.random.Generator) -> list[dict[str, Any]]:
     panels = [
-        {"figure": _drawn(pattern_figure(one, name=f"p{at}")), "caption": _PATTERN_WORDS[one.pattern]}
+        {"figure": drawn(pattern_figure(one, name=f"p{at}")), "caption": _PATTERN_WORDS[one.pattern]}
         for at, one in enumerate(phase_patterns(scenario, rng=rng))
     ]
     intervals = converter_intervals(scenario, rng=rng)
     if intervals is not None:
         caption = f"converter switching at {intervals.switching_hz / 1e3:.1f} kHz; dashed: one period"
-        panels.append({"figure": _drawn(interval_figure(intervals, name="i")), "caption": caption})
+        panels.append({"figure": drawn(interval_figure(intervals, name="i")), "caption": caption})
     return panels
 
 
@@ -388,4 +364,4 @@ def _backdrop(found: Backdrop, name: str) -> dict[str, Any]:
     carriers = ", ".join(three_digits(mhz) for mhz in found.carriers_mhz)
     heard = f"carriers at {carriers} MHz" if carriers else "no broadcast carriers"
     caption = f"{heard}; {found.communication}; {found.rate_hz / 1e6:g} MS/s"
-    return {"figure": _drawn(backdrop_figure(found, name=name)), "caption": f"{_begin(caption)}."}
+    return {"figure": drawn(backdrop_figure(found, name=name)), "caption": f"{begin(caption)}."}

@@ -1,6 +1,7 @@
 """What the gallery shows of records: one source of each kind at a time, well over the noise; and backgrounds.
 
-Everything is cut out of captures as the scenario makes them, background, chain and digitiser included.
+Everything is cut out of captures as the scenario makes them, background, chain and digitiser included; only the
+heights are chosen, and the digitiser's range is wide enough for them.
 """
 
 from __future__ import annotations

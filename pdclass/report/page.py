@@ -7,10 +7,8 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import jinja2
 import numpy as np
 import pandas as pd
-from markupsafe import Markup
 
 from pdclass.features import measured_edges
 from pdclass.model.bundle import Bundle
@@ -36,6 +34,7 @@ from pdclass.report.summary import (
     unchecked_lines,
     with_names,
 )
+from pdclass.report.templates import drawn, template
 from pdclass.verdict.batch import read_pulse_tables, read_shard_pulses, read_verdicts
 from pdclass.verdict.sentences import (
     CABLE_NOTE,
@@ -86,7 +85,7 @@ def batch_report(
     batch = _read(folder, run, bundle)
     counts = label_counts(batch.verdicts, batch.pulses, bundle.classes, run["captures"])
     doubts = doubt_groups(batch.verdicts)
-    page = _environment().get_template("batch.html.j2")
+    page = template("batch.html.j2")
     return page.render(
         overall=overall_words(counts, run),
         circuits=circuit_words(counts, doubts, run["captures"]),
@@ -113,23 +112,6 @@ def batch_report(
         colours=COLOURS,
         edge=EDGE,
     )
-
-
-def _environment() -> jinja2.Environment:
-    environment = jinja2.Environment(
-        loader=jinja2.FileSystemLoader(Path(__file__).parent),
-        autoescape=True,
-        undefined=jinja2.StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
-    environment.filters["begin"] = _begin
-    return environment
-
-
-def _begin(words: str) -> str:
-    """Words with their first letter large, the rest as it was (units keep theirs)."""
-    return words[:1].upper() + words[1:]
 
 
 def _read(folder: Path, run: Mapping[str, Any], bundle: Bundle) -> _Batch:
@@ -168,7 +150,7 @@ def _panels(batch: _Batch, known: pd.DataFrame, reference: str, name: str) -> li
             continue
         phase, peak = rows["phase_deg"].to_numpy(np.float64), rows["peak_mv"].to_numpy(np.float64)
         figure = phase_scatter(phase, peak, label, limit_mv=limit_mv, offset_known=offset_known, name=f"{name}{label}")
-        panels.append({"label": label, "count": len(rows), "figure": Markup(figure)})  # noqa: S704
+        panels.append({"label": label, "count": len(rows), "figure": drawn(figure)})
     return panels
 
 
@@ -228,7 +210,7 @@ def _card(batch: _Batch, pulse: str, edges: Mapping[str, Any]) -> dict[str, Any]
         "notes": [note for note in standing_notes(row) if note != MAYBE_ECHO_NOTE],
         "doubt": "; ".join([doubt_in_words(row), *(note for note in standing_notes(row) if note == MAYBE_ECHO_NOTE)]),
         "echoes": _echo_words(batch.pulses, pulse, float(row["onset_s"])),
-        "figures": [Markup(drawing) for drawing in drawings],  # noqa: S704
+        "figures": [drawn(drawing) for drawing in drawings],
     }
 
 

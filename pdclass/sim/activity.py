@@ -4,8 +4,7 @@ The field in a gap is that of the applied voltage plus that of the charge which 
 Above the inception field a first electron has to be waited for (statistical time lag); a discharge brings the field
 down to the residual field. The frame is that of L. Niemeyer, "A generalized approach to partial discharge modeling",
 IEEE Trans. Dielectr. Electr. Insul. 2(4), 1995 (from memory), with the simplest law of each part. Without lag, decay
-and residual field it is the three-capacitance model of the textbooks. Corona is a rate that grows with the overvoltage,
-a thyristor bridge commutates at fixed phases.
+and residual field it is the three-capacitance model of the textbooks. Corona is a rate that grows with the overvoltage.
 """
 
 from __future__ import annotations
@@ -111,36 +110,8 @@ class Corona:
         )
 
 
-@dataclass(frozen=True)
-class Firing:
-    """Commutations of a thyristor bridge.
-
-    Attributes
-    ----------
-    firing_deg : phase of one of the commutations [deg], any.
-    per_cycle : 6 or 12.
-    jitter_deg : deviation of a commutation's phase [deg], >= 0.
-
-    Raises
-    ------
-    InputError
-        If a value is out of its bounds.
-    """
-
-    firing_deg: float
-    per_cycle: int
-    jitter_deg: float
-
-    def __post_init__(self) -> None:
-        _check(
-            "thyristor bridge",
-            ("per_cycle", self.per_cycle in (6, 12), self.per_cycle, "6 or 12"),
-            ("jitter_deg", self.jitter_deg >= 0, self.jitter_deg, "a deviation from zero"),
-        )
-
-
 #: What makes pulses at phases of its own.
-Model = Gap | Corona | Firing
+Model = Gap | Corona
 
 
 def discharges(model: Model, cycles: int, *, rng: np.random.Generator) -> Discharges:
@@ -153,9 +124,7 @@ def discharges(model: Model, cycles: int, *, rng: np.random.Generator) -> Discha
     """
     if isinstance(model, Gap):
         return gap_discharges(model, cycles, rng=rng)
-    if isinstance(model, Corona):
-        return corona_discharges(model, cycles, rng=rng)
-    return commutations(model, cycles, rng=rng)
+    return corona_discharges(model, cycles, rng=rng)
 
 
 def gap_discharges(gap: Gap, cycles: int, *, rng: np.random.Generator) -> Discharges:
@@ -209,20 +178,6 @@ def corona_discharges(corona: Corona, cycles: int, *, rng: np.random.Generator) 
     phase_deg = 360.0 * cycle + np.rad2deg(inside) + (180.0 if corona.negative else 0.0)
     sizes = np.exp(corona.spread * rng.standard_normal(phase_deg.size))
     return Discharges(phase_deg, -sizes if corona.negative else sizes)
-
-
-def commutations(firing: Firing, cycles: int, *, rng: np.random.Generator) -> Discharges:
-    """Commutations of a thyristor bridge, of turning sign and equal size.
-
-    Parameters
-    ----------
-    firing : the bridge.
-    cycles : number of cycles, >= 1; the first begins at 0 deg.
-    """
-    apart = 360.0 / firing.per_cycle
-    number = np.arange(cycles * firing.per_cycle)
-    phase_deg = firing.firing_deg % apart + apart * number + firing.jitter_deg * rng.standard_normal(number.size)
-    return Discharges(np.asarray(phase_deg), np.where(number % 2 == 0, 1.0, -1.0))
 
 
 def _half_cycle(

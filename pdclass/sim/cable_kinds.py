@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-from typing import Literal, Self
+from typing import Annotated, Literal, Self
 
 import numpy as np
 from pydantic import model_validator
 from scipy.constants import c as light_m_per_s
 
-from pdclass.settings import Settings
 from pdclass.sim.cable import inductance_share
-from pdclass.sim.draw import Positive, Range
+from pdclass.sim.draw import Nanoseconds, Pair, Range, Ranges, within
 
 Kind = Literal["XLPE", "EPR", "paper", "belted"]
 Area = Literal[50, 70, 95, 120, 150, 185, 240, 300, 400, 500, 630]
@@ -46,7 +45,7 @@ RATED_KV: dict[str, tuple[str, ...]] = {
 }
 
 
-class Materials(Settings):
+class Materials(Ranges):
     """What is drawn of one kind of cable besides its dimensions.
 
     Attributes
@@ -61,13 +60,13 @@ class Materials(Settings):
     joint_spacing_m : length of cable between two joints [m].
     """
 
-    permittivity: Positive
-    loss_tangent: Positive
-    relaxation_step: Range = (0.0, 0.0)
-    relaxation_ns: Positive = (1.0, 30.0)
-    excess_db_per_km: Positive
+    permittivity: Annotated[Pair, within(1.0, 20.0)]
+    loss_tangent: Annotated[Pair, within(1e-6, 1.0)]
+    relaxation_step: Annotated[Pair, within(0.0, 20.0)] = (0.0, 0.0)
+    relaxation_ns: Nanoseconds = (1.0, 30.0)
+    excess_db_per_km: Annotated[Pair, within(1e-6, 1e4, "dB/km")]
     excess_power: Range = (0.6, 0.95)
-    joint_spacing_m: Positive = (300.0, 1000.0)
+    joint_spacing_m: Annotated[Pair, within(10.0, 1e5, "m")] = (300.0, 1000.0)
 
     @model_validator(mode="after")
     def _power_of_a_passive_loss(self) -> Self:

@@ -17,14 +17,14 @@ from pdclass.sim.drawn_cable import DrawnRoute, draw_neighbour, draw_route
 from pdclass.sim.drawn_chain import draw_receiver
 from pdclass.sim.drawn_disturbance import draw_disturber
 from pdclass.sim.drawn_near_end import draw_near_end
-from pdclass.sim.drawn_source import KIND_PATTERNS, draw_discharge, most_charge_pc
+from pdclass.sim.drawn_source import KIND_PATTERNS, Kind, draw_discharge, most_charge_pc
 from pdclass.sim.entries import draw_entry, draw_labels
 from pdclass.sim.grid import LEAD_S, ComplexArray, laplace_grid, to_samples
 from pdclass.sim.interference import Reception, received
 from pdclass.sim.network import route_length_m
 from pdclass.sim.phase import Activity, draw_activity
 from pdclass.sim.ranges import CircuitEntry, Label, Scenario, SourceEntry
-from pdclass.sim.receiver import Receiver, chain_band_hz, chain_response, core_sensitivity
+from pdclass.sim.receiver import Receiver, chain_band_hz, chain_response, core_sensitivity, most_full_scale_db
 from pdclass.sim.source import SourceCurrent, source_spectrum
 from pdclass.sim.station import (
     Station,
@@ -116,12 +116,21 @@ class _Entrance:
 
 @dataclass(frozen=True)
 class _Place:
-    """What every source of a circuit needs: the world, the network, the chain on the grid [V/A], the noise [V]."""
+    """What every source of a circuit needs.
+
+    Attributes
+    ----------
+    scenario, station : the world, and the network solved.
+    chain : strap current to sampled voltage on the grid [V/A].
+    noise_v : of the circuit [V].
+    heights_db : peak over noise, the same for every drawn source of the circuit [dB].
+    """
 
     scenario: Scenario
     station: Station
     chain: ComplexArray
     noise_v: float
+    heights_db: tuple[float, float]
 
 
 def draw_circuit(scenario: Scenario, index: int, *, rng: np.random.Generator) -> Circuit:
@@ -132,13 +141,15 @@ def draw_circuit(scenario: Scenario, index: int, *, rng: np.random.Generator) ->
     chain_rng, cable_rng, near_rng, sky_rng, source_rng = rng.spawn(5)
     receiver = draw_receiver(scenario.chain, rng=chain_rng)
     drawn = draw_route(scenario.cable, entry.length_m, entry.far_end, rng=cable_rng, s=s)
-    near = draw_near_end(scenario.near_end, rng=near_rng)
+    near = draw_near_end(scenario.near_end, sensor_ohm=receiver.inserted_ohm, rng=near_rng)
     neighbours = [draw_neighbour(scenario.cable, drawn.lines, rng=cable_rng, s=s) for _ in range(near.feeders)]
     station = solve_station(near, drawn.route, neighbours)
     chain = chain_response(receiver, s)
     noise_v = log_even(scenario.capture.noise_v, rng=rng)
-    full_scale_db = even(scenario.capture.full_scale_db, rng=rng)
-    place = _Place(scenario, station, chain, noise_v)
+    full_scale_db = min(even(scenario.capture.full_scale_db, rng=rng), most_full_scale_db(receiver.bits))
+    low_db, high_db = scenario.snr_db
+    heights_db = (low_db, max(low_db, min(high_db, full_scale_db + scenario.capture.clipped_db)))
+    place = _Place(scenario, station, chain, noise_v, heights_db)
     sources = _named(place, entry, rng=source_rng) if scenario.circuit else _drawn(place, rng=source_rng)
     return Circuit(
         name=entry.name,
@@ -184,7 +195,7 @@ def _traits(station: Station, drawn: DrawnRoute, receiver: Receiver, sources: tu
 def _named(place: _Place, entry: CircuitEntry, *, rng: np.random.Generator) -> tuple[Source, ...]:
     """The sources that a scenario names, as often as it says."""
     children = rng.spawn(len(entry.sources))
-    drawn = [_draw_source(place, wish, rng=child) for wish, child in zip(entry.sources, children, strict=True)]
+    drawn = [_named_source(place, wish, rng=child) for wish, child in zip(entry.sources, children, strict=True)]
     return tuple(
         replace(one, pulses_per_cycle=wish.pulses_per_cycle) for one, wish in zip(drawn, entry.sources, strict=True)
     )
@@ -194,39 +205,68 @@ def _drawn(place: _Place, *, rng: np.random.Generator) -> tuple[Source, ...]:
     """One to some sources of each class."""
     labels = draw_labels(place.scenario.mix, rng=rng)
     children = rng.spawn(len(labels))
-    return tuple(_believable(place, label, rng=child) for label, child in zip(labels, children, strict=True))
+    return tuple(_audible(place, label, rng=child) for label, child in zip(labels, children, strict=True))
 
 
-def _believable(place: _Place, label: Label, *, rng: np.random.Generator) -> Source:
-    """A source that is heard at the middle of the heights with a charge that its kind has.
+def _audible(place: _Place, label: Label, *, rng: np.random.Generator) -> Source:
+    """A drawn source that is heard at the middle of the heights with a charge that its kind has.
 
-    What would need more, because it lies too far on too lossy a cable or is too slow for the chain, is drawn again:
-    nobody would ever see its pulses.
+    Kind and current must be heard at the termination, whatever the label, so that they tell nothing about it. Then a
+    place is drawn again while it lies too far on too lossy a cable: nobody would ever see its pulses. Where no place
+    will do, the one that is heard best is taken.
     """
-    scenario = place.scenario
-    middle_v = place.noise_v * 10 ** (np.mean(scenario.snr_db) / 20)
+    if label == "interference":
+        return _interference(place, SourceEntry(label=label, pulses_per_cycle=1.0, snr_db=place.heights_db), rng=rng)
+    kind, current = _audible_current(place, rng=rng)
+    tried = []
     for _ in range(_TRIES):
-        source = _draw_source(place, draw_entry(label, scenario, place.station.length_m, rng=rng), rng=rng)
-        if label == "interference" or middle_v <= source.volts_per_coulomb * 1e-12 * most_charge_pc(
-            scenario.source, source.family
-        ):
+        wish = draw_entry(label, place.scenario.mix, place.station.length_m, place.heights_db, rng=rng)
+        tried.append(_discharge(place, wish, kind, current, rng=rng))
+        if _is_heard(place, kind, tried[-1].volts_per_coulomb):
             break
-    return source
+    return max(tried, key=lambda source: source.volts_per_coulomb) if len(tried) == _TRIES else tried[-1]
 
 
-def _draw_source(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) -> Source:
-    activity, repetition = None, None
-    family: str
-    scenario, station = place.scenario, place.station
+def _audible_current(place: _Place, *, rng: np.random.Generator) -> tuple[Kind, SourceCurrent]:
+    at_termination = from_cable(place.station, 0.0) * place.chain
+    for _ in range(_TRIES):
+        kind, current = draw_discharge(place.scenario.source, rng=rng)
+        if _is_heard(place, kind, _nominal(current, at_termination)[1]):
+            break
+    return kind, current
+
+
+def _is_heard(place: _Place, kind: Kind, volts_per_coulomb: float) -> bool:
+    middle_v = place.noise_v * 10 ** (np.mean(place.heights_db) / 20)
+    return bool(middle_v <= volts_per_coulomb * 1e-12 * most_charge_pc(place.scenario.source, kind))
+
+
+def _named_source(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) -> Source:
     if wish.label == "interference":
-        disturber = draw_disturber(scenario.interference, family=wish.family, path=wish.path, rng=rng)
-        family, current, repetition = disturber.family, disturber.current, disturber.repetition
-        entrance = _disturbance(disturber, station, rng=rng)
-    else:
-        kind, current = draw_discharge(scenario.source, kind=wish.kind, rng=rng)
-        family = kind
-        activity = draw_activity(wish.pattern or KIND_PATTERNS[kind], scenario.activity, rng=rng)
-        entrance = _discharge(scenario, wish, station, rng=rng)
+        return _interference(place, wish, rng=rng)
+    kind, current = draw_discharge(place.scenario.source, kind=wish.kind, rng=rng)
+    return _discharge(place, wish, kind, current, rng=rng)
+
+
+def _interference(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) -> Source:
+    disturber = draw_disturber(place.scenario.interference, family=wish.family, path=wish.path, rng=rng)
+    entrance = _disturbance(disturber, place.station, rng=rng)
+    source = _source(place, wish, disturber.family, disturber.current, entrance)
+    if disturber.repetition.pattern == "uniform":
+        return replace(source, repetition=disturber.repetition)
+    # a point in air is a source that lasts, as a void is
+    return replace(source, activity=draw_activity(disturber.repetition.pattern, place.scenario.activity, rng=rng))
+
+
+def _discharge(
+    place: _Place, wish: SourceEntry, kind: Kind, current: SourceCurrent, *, rng: np.random.Generator
+) -> Source:
+    activity = draw_activity(wish.pattern or KIND_PATTERNS[kind], place.scenario.activity, rng=rng)
+    entrance = _entrance(place.scenario, wish, place.station, rng=rng)
+    return replace(_source(place, wish, kind, current, entrance), activity=activity)
+
+
+def _source(place: _Place, wish: SourceEntry, family: str, current: SourceCurrent, entrance: _Entrance) -> Source:
     response = entrance.transfer * place.chain
     delay_s, height = _nominal(current, response)
     return Source(
@@ -240,12 +280,10 @@ def _draw_source(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) 
         volts_per_coulomb=height,
         pulses_per_cycle=None,
         snr_db=wish.snr_db,
-        activity=activity,
-        repetition=repetition,
     )
 
 
-def _discharge(scenario: Scenario, wish: SourceEntry, station: Station, *, rng: np.random.Generator) -> _Entrance:
+def _entrance(scenario: Scenario, wish: SourceEntry, station: Station, *, rng: np.random.Generator) -> _Entrance:
     if wish.label == "switchgear":
         panel = _panel(scenario.mix.own_panel, station, rng=rng)
         if wish.way == "equipment":

@@ -13,7 +13,7 @@ from typing import Literal
 import numpy as np
 
 from pdclass.pulses import FloatArray
-from pdclass.sim.phase import Pattern, draw_phases
+from pdclass.sim.phase import Pattern, draw_phases, half_cycle_sign
 from pdclass.sim.source import SourceCurrent
 
 Family = Literal[
@@ -85,8 +85,8 @@ def disturber_times(
     ----------
     repetition : of the disturber.
     duration_s : length of the stretch [s].
-    count : how many are wanted, >= 0. Bursts, patterns and random ones have as many; a switching or commutating
-        device has no more than its edges in the stretch, and of more only `count` in a row.
+    count : how many are wanted, >= 0. Patterns and random ones have as many, bursts but for those beyond the stretch;
+        a switching or commutating device has no more than its edges in the stretch, and of more only `count` in a row.
     start_deg : phase of the reference voltage at the begin of the stretch [deg].
     deg_per_s : 360 times the mains frequency [deg/s].
     """
@@ -103,6 +103,23 @@ def disturber_times(
     if repetition.kind == "bursts":
         return burst_times(repetition, duration_s, count, rng=rng)
     return np.sort(rng.uniform(0.0, duration_s, count))
+
+
+def disturber_signs(
+    repetition: Repetition, times_s: FloatArray, *, start_deg: float, deg_per_s: float, rng: np.random.Generator
+) -> FloatArray:
+    """Polarities that go with `disturber_times`, +1 or -1, same shape; the arguments as there.
+
+    What switches on switches off next, and a commutation ends against its begin; a corona has the sign of its half
+    cycle; the contacts of one burst have one sign; what comes at random has either.
+    """
+    if repetition.kind == "switching" or repetition.commutations > 0 or repetition.hz > 0:
+        return np.resize([1.0, -1.0], times_s.size)
+    if repetition.kind == "mains-locked":
+        return half_cycle_sign(start_deg + times_s * deg_per_s)
+    apart = np.diff(times_s, prepend=times_s[:1]) > repetition.burst_s
+    burst = np.cumsum(apart) if repetition.kind == "bursts" else np.arange(times_s.size)
+    return np.asarray(rng.choice([-1.0, 1.0], times_s.size)[burst])
 
 
 def switching_times(duration_s: float, switching_hz: float, jitter: float, *, rng: np.random.Generator) -> FloatArray:
@@ -148,7 +165,9 @@ def burst_times(repetition: Repetition, duration_s: float, count: int, *, rng: n
         into = (number + repetition.jitter * rng.standard_normal(count)) / repetition.hz
     else:
         into = rng.uniform(0.0, lasts_s, count)
-    return _within(begins + into, duration_s)
+    times = np.sort(begins + into)
+    # what of a burst longer than the stretch lies beyond it is not heard
+    return np.asarray(times[(times >= 0) & (times < duration_s)])
 
 
 def _in_a_row(edges: FloatArray, count: int, *, rng: np.random.Generator) -> FloatArray:

@@ -5,14 +5,26 @@ Orders of magnitude are common practice without a source unless one is named bes
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from typing import Annotated
 
 import numpy as np
-from pydantic import AfterValidator, Field
+from pydantic import Field
 
-from pdclass.settings import Settings
-from pdclass.sim.draw import Count, Positive, Range, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Count,
+    Hertz,
+    Positive,
+    Range,
+    Ranges,
+    Seconds,
+    Shares,
+    Weights,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+)
 from pdclass.sim.interference import MAN_MADE, Background, Carrier, Communication, Noise, medium_wave_hz
 
 #: Short-wave broadcast bands [Hz] (International Telecommunication Union allotments, from memory).
@@ -37,30 +49,16 @@ OFDM_HZ = {
 _RAMP_S = 50e-6
 _RASTERS = {"9 kHz": 9e3, "10 kHz": 10e3}
 _BANDS = ("medium", "long", "short")
-_ENVIRONMENTS = {"city": 0.3, "residential": 0.4, "rural": 0.25, "quiet-rural": 0.05}
 _COMMUNICATIONS = ("none", *OFDM_HZ, "fsk")
 
 
-def known_names(names: tuple[str, ...]) -> Callable[[dict[str, float]], dict[str, float]]:
-    """A validator of weights that refuses a name which is none of the given ones."""
-
-    def check(weights: dict[str, float]) -> dict[str, float]:
-        odd = sorted(set(weights) - set(names))
-        if odd:
-            raise ValueError(f"a name is one of {', '.join(names)}, not {odd[0]}")
-        return weights
-
-    return check
+EnvironmentWeights = Annotated[Weights, known_names(*MAN_MADE)]
+BandWeights = Annotated[Weights, known_names(*_BANDS)]
+RasterWeights = Annotated[Weights, known_names(*_RASTERS)]
+CommunicationWeights = Annotated[Weights, known_names(*_COMMUNICATIONS)]
 
 
-EnvironmentWeights = Annotated[Weights, AfterValidator(known_names(tuple(MAN_MADE)))]
-BandWeights = Annotated[Weights, AfterValidator(known_names(_BANDS))]
-RasterWeights = Annotated[Weights, AfterValidator(known_names(tuple(_RASTERS)))]
-CommunicationWeights = Annotated[Weights, AfterValidator(known_names(_COMMUNICATIONS))]
-Share = Annotated[float, Field(ge=0, le=1)]
-
-
-class BackgroundRanges(Settings):
+class BackgroundRanges(Ranges):
     """Noise, carriers and communication of a site; heights in units of the white analogue noise's deviation.
 
     Attributes
@@ -83,7 +81,7 @@ class BackgroundRanges(Settings):
 
     converter_noise: Positive = (0.05, 0.6)
     low_noise: Range = (0.0, 1.5)
-    low_noise_hz: Positive = (0.3e6, 5e6)
+    low_noise_hz: Hertz = (0.3e6, 5e6)
     field_noise: Range = (0.0, 1.5)
     environments: EnvironmentWeights = Field(
         default={"city": 0.3, "residential": 0.4, "rural": 0.25, "quiet-rural": 0.05}
@@ -93,7 +91,7 @@ class BackgroundRanges(Settings):
     carriers_hz: tuple[Annotated[float, Field(gt=0, le=50e6)], ...] = ()
     carrier_bands: BandWeights = Field(default={"medium": 0.55, "long": 0.1, "short": 0.35})
     medium_wave_raster: RasterWeights = Field(default={"9 kHz": 0.75, "10 kHz": 0.25})
-    modulation_depth: tuple[Share, Share] = (0.2, 0.6)
+    modulation_depth: Shares = (0.2, 0.6)
     communication: CommunicationWeights = Field(
         default={
             "none": 0.6,
@@ -104,9 +102,9 @@ class BackgroundRanges(Settings):
         }
     )
     communication_deviation: Positive = (0.1, 3.0)
-    frame_s: Positive = (1e-3, 30e-3)
-    pause_s: Positive = (0.5e-3, 30e-3)
-    fsk_hz: Positive = (40e3, 135e3)
+    frame_s: Seconds = (1e-3, 30e-3)
+    pause_s: Seconds = (0.5e-3, 30e-3)
+    fsk_hz: Hertz = (40e3, 135e3)
     fsk_baud: Positive = (300.0, 4800.0)
 
 

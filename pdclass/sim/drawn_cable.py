@@ -5,13 +5,12 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
-from typing import Annotated, Any, Literal, NamedTuple, Self, cast, get_args
+from typing import Annotated, Literal, NamedTuple, Self, cast, get_args
 
 import numpy as np
 from pydantic import Field, model_validator
 
 from pdclass.pulses import FloatArray
-from pdclass.settings import Settings
 from pdclass.sim.belted import Others, belted_screen
 from pdclass.sim.cable import (
     ALUMINIUM_OHM_M,
@@ -41,7 +40,24 @@ from pdclass.sim.cable_kinds import (
     Kind,
     Materials,
 )
-from pdclass.sim.draw import Count, Positive, Range, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Farads,
+    Henries,
+    Nanoseconds,
+    Ohms,
+    Pair,
+    Positive,
+    Ranges,
+    Share,
+    Weights,
+    Whole,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+    within,
+)
 from pdclass.sim.grid import ComplexArray
 from pdclass.sim.measured_line import fit_line, measured_line, read_curve
 from pdclass.sim.network import FarEnd, Joint, Route, Section, far_admittance
@@ -62,7 +78,7 @@ _BUSBAR_OHM = 0.1
 _BUSBAR_H = 0.3
 
 
-class CableRanges(Settings):
+class CableRanges(Ranges):
     """Cables and routes: dimensions of standards, materials and losses drawn widely.
 
     Attributes
@@ -96,75 +112,60 @@ class CableRanges(Settings):
     curve_ohm : characteristic impedance of that line [ohm], where the file has none.
     """
 
-    length_m: Positive = (60.0, 5000.0)
-    kinds: Weights = Field(default={"XLPE": 0.5, "EPR": 0.15, "paper": 0.2, "belted": 0.15})
+    length_m: Annotated[Pair, within(25.0, 1e4, "m")] = (60.0, 5000.0)
+    kinds: Annotated[Weights, known_names(*get_args(Kind))] = Field(
+        default={"XLPE": 0.5, "EPR": 0.15, "paper": 0.2, "belted": 0.15}
+    )
     areas_mm2: Annotated[tuple[Area, ...], Field(min_length=1)] = get_args(Area)
-    copper_share: float = Field(default=0.3, ge=0, le=1)
-    rated_kv: Weights = Field(default={"3.6/6": 0.1, "6/10": 0.25, "8.7/15": 0.2, "12/20": 0.3, "18/30": 0.15})
-    thickness_share: Positive = (0.95, 1.15)
-    semicon_mm: Positive = (0.3, 1.0)
-    tape_mm: Positive = (0.05, 0.5)
+    copper_share: Share = 0.3
+    rated_kv: Annotated[Weights, known_names(*EXTRUDED_MM)] = Field(
+        default={"3.6/6": 0.1, "6/10": 0.25, "8.7/15": 0.2, "12/20": 0.3, "18/30": 0.15}
+    )
+    thickness_share: Annotated[Pair, within(0.2, 5.0)] = (0.95, 1.15)
+    semicon_mm: Annotated[Pair, within(0.01, 10.0, "mm")] = (0.3, 1.0)
+    tape_mm: Annotated[Pair, within(0.01, 10.0, "mm")] = (0.05, 0.5)
     semicon_s_per_m: Positive = (3e-3, 10.0)
     semicon_permittivity: Positive = (10.0, 300.0)
-    old_share: float = Field(default=0.15, ge=0, le=1)
+    old_share: Share = 0.15
     old_semicon_s_per_m: Positive = (1e-3, 0.1)
     old_semicon_permittivity: Positive = (5.0, 50.0)
-    cole_cole_share: float = Field(default=0.5, ge=0, le=1)
+    cole_cole_share: Share = 0.5
     cole_cole_step: Positive = (10.0, 1000.0)
-    cole_cole_ns: Positive = (3.0, 3000.0)
-    cole_cole_spread: Range = (0.0, 0.6)
-    screens: Weights = Field(default={"wires": 0.7, "tape": 0.2, "foil": 0.1})
+    cole_cole_ns: Nanoseconds = (3.0, 3000.0)
+    cole_cole_spread: Annotated[Pair, within(0.0, 0.9)] = (0.0, 0.6)
+    screens: Annotated[Weights, known_names(*get_args(Screen))] = Field(
+        default={"wires": 0.7, "tape": 0.2, "foil": 0.1}
+    )
     screen_mm2: Positive = (10.0, 50.0)
-    earthed_share: float = Field(default=0.7, ge=0, le=1)
+    earthed_share: Share = 0.7
     xlpe: Materials = XLPE
     epr: Materials = EPR
     paper: Materials = PAPER
     belted: Materials = BELTED
-    sections: Weights = Field(default={"1": 0.55, "2": 0.25, "3": 0.15, "4": 0.05})
-    other_kind_share: float = Field(default=0.4, ge=0, le=1)
-    joint_henry: Positive = (5e-9, 200e-9)
-    joint_farad: Positive = (5e-12, 150e-12)
-    joint_ohm: Positive = (1e-4, 0.05)
-    far_ends: Weights = Field(default={"open": 0.2, "transformer": 0.3, "ring": 0.3, "feeders": 0.2})
-    far_stray_f: Positive = (30e-12, 300e-12)
-    far_lead_h: Positive = (0.3e-6, 5e-6)
-    far_lead_ohm: Positive = (0.3, 30.0)
-    transformer_f: Positive = (0.3e-9, 3e-9)
-    transformer_ohm: Positive = (300.0, 5000.0)
-    busbar_f: Positive = (50e-12, 600e-12)
-    feeders: Count = (2, 5)
+    sections: Annotated[Weights, known_names("1", "2", "3", "4")] = Field(
+        default={"1": 0.55, "2": 0.25, "3": 0.15, "4": 0.05}
+    )
+    other_kind_share: Share = 0.4
+    joint_henry: Henries = (5e-9, 200e-9)
+    joint_farad: Farads = (5e-12, 150e-12)
+    joint_ohm: Ohms = (1e-4, 0.05)
+    far_ends: Annotated[Weights, known_names(*get_args(FarEndKind))] = Field(
+        default={"open": 0.2, "transformer": 0.3, "ring": 0.3, "feeders": 0.2}
+    )
+    far_stray_f: Farads = (30e-12, 300e-12)
+    far_lead_h: Henries = (0.3e-6, 5e-6)
+    far_lead_ohm: Ohms = (0.3, 30.0)
+    transformer_f: Farads = (0.3e-9, 3e-9)
+    transformer_ohm: Ohms = (300.0, 5000.0)
+    busbar_f: Farads = (50e-12, 600e-12)
+    feeders: Annotated[Whole, within(1, 50)] = (2, 5)
     curve: str | None = None
-    curve_ohm: Positive = (10.0, 40.0)
-
-    @model_validator(mode="before")
-    @classmethod
-    def _materials_complete_each_other(cls, given: Any) -> Any:
-        """What a scenario does not say of a kind's materials stays as in the base world."""
-        if not isinstance(given, dict):
-            return given
-        usual = {name: cls.model_fields[name].default.model_dump() for name in ("xlpe", "epr", "paper", "belted")}
-        said = {
-            name: {**usual[name], **part} for name, part in given.items() if name in usual and isinstance(part, dict)
-        }
-        return {**given, **said}
+    curve_ohm: Ohms = (10.0, 40.0)
 
     @model_validator(mode="after")
-    def _known_names(self) -> Self:
-        known = {
-            "kinds": get_args(Kind),
-            "rated_kv": tuple(EXTRUDED_MM),
-            "screens": get_args(Screen),
-            "sections": ("1", "2", "3", "4"),
-            "far_ends": get_args(FarEndKind),
-        }
-        for field, names in known.items():
-            odd = sorted(set(getattr(self, field)) - set(names))
-            if odd:
-                raise ValueError(f"{field} knows {', '.join(names)}, not {odd[0]}")
+    def _belted_cables_have_a_voltage(self) -> Self:
         if self.kinds.get("belted", 0) > 0 and not _made_for(self, "belted"):
             raise ValueError(f"belted cables are made for {', '.join(BELTED_MM)} kV, rated_kv has none of these")
-        if self.feeders[0] < 1:
-            raise ValueError("feeders: a busbar at the far end has at least one")
         return self
 
 
@@ -270,13 +271,6 @@ def velocity_spread(
     """Phase velocity of drawn cables of one kind [m/us], (count, frequencies)."""
     lines = _some_lines(ranges, kind, hz, count, rng=rng)
     return np.array([2e-6 * np.pi * hz / line.gamma.imag for line in lines])
-
-
-def impedance_spread(
-    ranges: CableRanges, kind: Kind, hz: FloatArray, count: int, *, rng: np.random.Generator
-) -> FloatArray:
-    """Magnitude of the characteristic impedance of drawn cables of one kind [ohm], (count, frequencies)."""
-    return np.array([np.abs(line.impedance) for line in _some_lines(ranges, kind, hz, count, rng=rng)])
 
 
 def _some_lines(ranges: CableRanges, kind: Kind, hz: FloatArray, count: int, *, rng: np.random.Generator) -> list[Line]:

@@ -2,13 +2,26 @@
 
 from __future__ import annotations
 
-from typing import Annotated
+from typing import Annotated, Self
 
 import numpy as np
-from pydantic import AfterValidator, Field
+from pydantic import AfterValidator, Field, model_validator
 
-from pdclass.settings import Settings
-from pdclass.sim.draw import Positive, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Farads,
+    Ohms,
+    Pair,
+    Ranges,
+    Some,
+    Weights,
+    Whole,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+    within,
+)
 from pdclass.sim.receiver import WIDEST_HZ, AntiAlias, FilterKind, Receiver, SensorLead, transformer_of
 
 _RATES_HZ = (40e6, 62.5e6, 100e6, 125e6, 200e6, 250e6)
@@ -22,28 +35,11 @@ def _known_rates(rates: tuple[float, ...]) -> tuple[float, ...]:
     return rates
 
 
-def _known_filters(weights: dict[str, float]) -> dict[str, float]:
-    if not set(weights) <= set(_FILTERS):
-        raise ValueError(f"a filter is one of {', '.join(_FILTERS)}")
-    return weights
-
-
-def _in_order(pair: tuple[float, float]) -> tuple[float, float]:
-    if pair[0] > pair[1]:
-        raise ValueError("the lower bound stands first")
-    return pair
-
-
 Rates = Annotated[tuple[float, ...], Field(min_length=1), AfterValidator(_known_rates)]
-Ohms = Annotated[tuple[Annotated[float, Field(gt=0)], ...], Field(min_length=1)]
-Share = Annotated[float, Field(ge=0, lt=1)]
-Turns = Annotated[tuple[Annotated[int, Field(ge=1)], int], AfterValidator(_in_order)]
-Shares = Annotated[tuple[Share, Share], AfterValidator(_in_order)]
-Order = Annotated[int, Field(ge=2, le=5)]
-BelowHalf = Annotated[float, Field(gt=0.1, lt=0.5)]
+LeadOhms = Annotated[tuple[Annotated[float, Field(ge=1, le=1000)], ...], Field(min_length=1)]
 
 
-class ChainRanges(Settings):
+class ChainRanges(Ranges):
     """Sensors, leads and digitisers (common practice where no source is named).
 
     Attributes
@@ -70,29 +66,30 @@ class ChainRanges(Settings):
     rates_hz: Rates = (62.5e6, 100e6, 125e6, 200e6, 250e6)
     bits: Annotated[tuple[Annotated[int, Field(ge=8, le=16)], ...], Field(min_length=1)] = (8, 10, 12, 14, 16)
     mains_hz: Annotated[tuple[Annotated[float, Field(gt=10, lt=100)], ...], Field(min_length=1)] = (50.0, 60.0)
-    transfer_ohm: Positive = (1.0, 15.0)
-    low_corner_hz: Positive = (30e3, 300e3)
-    high_corner_hz: Positive = (8e6, 80e6)
-    turns: Turns = (2, 25)
-    high_corner_quality: Positive = (0.3, 1.1)
-    winding_ohm: Positive = (0.1, 2.0)
-    saturation: Shares = (0.0, 0.6)
-    lead_m: Positive = (1.0, 30.0)
-    lead_ohm: Ohms = (
-        50.0,
-        50.0,
-        50.0,
-        50.0,
-        50.0,
-        75.0,
-    )
-    lead_loss_db: Positive = (2.0, 7.0)
-    input_ohm: Positive = (47.5, 52.5)
-    input_farad: Positive = (5e-12, 50e-12)
-    filters: Annotated[Weights, AfterValidator(_known_filters)] = Field(default={"butterworth": 0.6, "bessel": 0.4})
-    filter_order: Annotated[tuple[Order, Order], AfterValidator(_in_order)] = (2, 5)
-    filter_share: Annotated[tuple[BelowHalf, BelowHalf], AfterValidator(_in_order)] = (0.35, 0.45)
-    jitter_s: Positive = (1e-12, 100e-12)
+    transfer_ohm: Annotated[Pair, within(1e-3, 1e3, "V/A")] = (1.0, 15.0)
+    low_corner_hz: Annotated[Pair, within(100.0, 1e7, "Hz")] = (30e3, 300e3)
+    high_corner_hz: Annotated[Pair, within(1e5, 1e9, "Hz")] = (8e6, 80e6)
+    turns: Some = (2, 25)
+    high_corner_quality: Annotated[Pair, within(0.05, 20.0)] = (0.3, 1.1)
+    winding_ohm: Ohms = (0.1, 2.0)
+    saturation: Annotated[Pair, within(0.0, 0.99)] = (0.0, 0.6)
+    lead_m: Annotated[Pair, within(0.01, 300.0, "m")] = (1.0, 30.0)
+    lead_ohm: LeadOhms = (50.0, 50.0, 50.0, 50.0, 50.0, 75.0)
+    lead_loss_db: Annotated[Pair, within(0.01, 100.0, "dB")] = (2.0, 7.0)
+    input_ohm: Annotated[Pair, within(1.0, 1e7, "ohm")] = (47.5, 52.5)
+    input_farad: Farads = (5e-12, 50e-12)
+    filters: Annotated[Weights, known_names(*_FILTERS)] = Field(default={"butterworth": 0.6, "bessel": 0.4})
+    filter_order: Annotated[Whole, within(2, 5)] = (2, 5)
+    filter_share: Annotated[Pair, within(0.1, 0.499)] = (0.35, 0.45)
+    jitter_s: Annotated[Pair, within(1e-15, 1e-8, "s")] = (1e-12, 100e-12)
+
+    @model_validator(mode="after")
+    def _sensors_can_be_built(self) -> Self:
+        if self.transfer_ohm[1] > self.input_ohm[0]:
+            raise ValueError("transfer_ohm stays below input_ohm, which a single turn would give")
+        if self.low_corner_hz[1] >= self.high_corner_hz[0]:
+            raise ValueError("low_corner_hz stays below high_corner_hz")
+        return self
 
 
 def draw_receiver(ranges: ChainRanges, *, rng: np.random.Generator) -> Receiver:

@@ -10,12 +10,26 @@ from dataclasses import replace
 from typing import Annotated, Any, get_args
 
 import numpy as np
-from pydantic import AfterValidator, Field
+from pydantic import Field
 
-from pdclass.settings import Settings
 from pdclass.sim.disturbers import Disturber, Family, Path, Repetition
-from pdclass.sim.draw import Count, Positive, Range, Weights, chosen, even, log_even, whole
-from pdclass.sim.drawn_background import known_names
+from pdclass.sim.draw import (
+    Hertz,
+    Pair,
+    Positive,
+    Range,
+    Ranges,
+    Seconds,
+    Share,
+    Some,
+    Weights,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+    within,
+)
 from pdclass.sim.drawn_source import CORONA_PATTERNS, CoronaCurrentRanges, draw_corona
 from pdclass.sim.grid import LEAD_S
 from pdclass.sim.source import SourceCurrent
@@ -27,23 +41,15 @@ _LONGEST_DECAY_S = 20e-6
 _FEWEST_PERIODS = 3
 _BRIDGES = {"two": 2, "six": 6, "twelve": 12}
 
-PathWeights = Annotated[Weights, AfterValidator(known_names(get_args(Path)))]
-FamilyWeights = Annotated[Weights, AfterValidator(known_names(get_args(Family)))]
-BridgeWeights = Annotated[Weights, AfterValidator(known_names(tuple(_BRIDGES)))]
-
-
-def _at_least_one(pulses: tuple[int, int]) -> tuple[int, int]:
-    if pulses[0] < 1:
-        raise ValueError("a burst has at least one pulse")
-    return pulses
-
-
-Pulses = Annotated[Count, AfterValidator(_at_least_one)]
-Share = Annotated[float, Field(ge=0, le=1)]
+PathWeights = Annotated[Weights, known_names(*get_args(Path))]
+FamilyWeights = Annotated[Weights, known_names(*get_args(Family))]
+BridgeWeights = Annotated[Weights, known_names(*_BRIDGES)]
+#: Flanks, tails and envelopes of a current [s].
+Flank = Annotated[Pair, within(1e-10, 1e-4, "s")]
 _Draw = Callable[..., tuple[SourceCurrent, Repetition]]
 
 
-class ConverterRanges(Settings):
+class ConverterRanges(Ranges):
     """IGBT and silicon-carbide converters: a damped ringing at both edges of the switching period.
 
     Rise times up to 50 ns of silicon carbide: as published in a tutorial on emissions of power electronics.
@@ -57,17 +63,17 @@ class ConverterRanges(Settings):
     paths : how it comes.
     """
 
-    switching_hz: Positive = (2e3, 20e3)
+    switching_hz: Hertz = (2e3, 20e3)
     jitter: Positive = (0.002, 0.02)
-    edge_s: Positive = (25e-9, 150e-9)
-    carbide_edge_s: Positive = (4e-9, 19e-9)
+    edge_s: Flank = (25e-9, 150e-9)
+    carbide_edge_s: Flank = (4e-9, 19e-9)
     carbide_share: Share = 0.3
-    ring_hz: Positive = (0.3e6, 20e6)
+    ring_hz: Hertz = (0.3e6, 20e6)
     ring_q: Positive = (1.5, 20.0)
     paths: PathWeights = Field(default={"radiated": 0.35, "screen": 0.3, "feeder": 0.15, "far-end": 0.2})
 
 
-class ThyristorRanges(Settings):
+class ThyristorRanges(Ranges):
     """Line-commutated bridges: a slower edge and a lower ringing at both ends of each commutation.
 
     Attributes
@@ -83,13 +89,13 @@ class ThyristorRanges(Settings):
     firing_deg: Range = (0.0, 150.0)
     overlap_deg: Positive = (1.0, 20.0)
     jitter_deg: Positive = (0.01, 0.3)
-    edge_s: Positive = (0.08e-6, 1e-6)
-    ring_hz: Positive = (0.1e6, 2e6)
+    edge_s: Flank = (0.08e-6, 1e-6)
+    ring_hz: Hertz = (0.1e6, 2e6)
     ring_q: Positive = (1.5, 10.0)
     paths: PathWeights = Field(default={"radiated": 0.15, "screen": 0.25, "feeder": 0.35, "far-end": 0.25})
 
 
-class SwitchModeRanges(Settings):
+class SwitchModeRanges(Ranges):
     """Switch-mode supplies near the sensor: fast edges in bursts.
 
     Attributes
@@ -101,16 +107,16 @@ class SwitchModeRanges(Settings):
     paths : how it comes.
     """
 
-    switching_hz: Positive = (60e3, 300e3)
+    switching_hz: Hertz = (60e3, 300e3)
     jitter: Positive = (0.001, 0.02)
-    edge_s: Positive = (4e-9, 40e-9)
-    ring_hz: Positive = (1e6, 30e6)
+    edge_s: Flank = (4e-9, 40e-9)
+    ring_hz: Hertz = (1e6, 30e6)
     ring_q: Positive = (2.0, 20.0)
-    burst_pulses: Pulses = (2, 40)
+    burst_pulses: Some = (2, 40)
     paths: PathWeights = Field(default={"radiated": 0.55, "screen": 0.45})
 
 
-class ArcRanges(Settings):
+class ArcRanges(Ranges):
     """Arcs of contacts and brushes.
 
     Attributes
@@ -122,17 +128,17 @@ class ArcRanges(Settings):
     paths : how it comes.
     """
 
-    rise_s: Positive = (3e-9, 40e-9)
+    rise_s: Flank = (3e-9, 40e-9)
     fall_over_rise: Positive = (2.0, 40.0)
     brush_share: Share = 0.3
-    brush_hz: Positive = (200.0, 5e3)
+    brush_hz: Hertz = (200.0, 5e3)
     brush_jitter: Positive = (0.03, 0.2)
-    burst_s: Positive = (0.1e-3, 3e-3)
-    burst_pulses: Pulses = (2, 30)
+    burst_s: Seconds = (0.1e-3, 3e-3)
+    burst_pulses: Some = (2, 30)
     paths: PathWeights = Field(default={"radiated": 0.5, "screen": 0.3, "feeder": 0.1, "far-end": 0.1})
 
 
-class RadioPacketRanges(Settings):
+class RadioPacketRanges(Ranges):
     """Packets of a radio frequency, as rectifying contacts and transmitters switched on and off give.
 
     Attributes
@@ -144,15 +150,15 @@ class RadioPacketRanges(Settings):
     paths : how it comes.
     """
 
-    hz: Positive = (0.3e6, 20e6)
-    length_s: Positive = (1e-6, 20e-6)
+    hz: Annotated[Pair, within(1e4, 1e9, "Hz")] = (0.3e6, 20e6)
+    length_s: Flank = (1e-6, 20e-6)
     burst_share: Share = 0.5
-    burst_s: Positive = (0.1e-3, 3e-3)
-    burst_pulses: Pulses = (2, 20)
+    burst_s: Seconds = (0.1e-3, 3e-3)
+    burst_pulses: Some = (2, 20)
     paths: PathWeights = Field(default={"radiated": 0.8, "screen": 0.2})
 
 
-class LineCoronaRanges(Settings):
+class LineCoronaRanges(Ranges):
     """Corona in air on an overhead line that goes on from this cable or another one.
 
     Attributes
@@ -165,11 +171,11 @@ class LineCoronaRanges(Settings):
 
     current: CoronaCurrentRanges = CoronaCurrentRanges()
     line_km: Positive = (0.03, 5.0)
-    rise_s_per_km: Positive = (10e-9, 100e-9)
+    rise_s_per_km: Seconds = (10e-9, 100e-9)
     paths: PathWeights = Field(default={"radiated": 0.25, "feeder": 0.35, "far-end": 0.4})
 
 
-class SfericRanges(Settings):
+class SfericRanges(Ranges):
     """Lightning: return strokes, and the trains of faster pulses of leaders.
 
     Attributes
@@ -183,19 +189,19 @@ class SfericRanges(Settings):
     """
 
     stroke_share: Share = 0.4
-    stroke_rise_s: Positive = (0.2e-6, 5e-6)
-    stroke_fall_s: Positive = (8e-6, 40e-6)
-    leader_rise_s: Positive = (0.03e-6, 0.5e-6)
-    leader_fall_s: Positive = (0.6e-6, 6e-6)
-    train_s: Positive = (0.3e-3, 3e-3)
-    train_pulses: Pulses = (4, 30)
+    stroke_rise_s: Annotated[Pair, within(1e-8, 1e-4, "s")] = (0.2e-6, 5e-6)
+    stroke_fall_s: Annotated[Pair, within(1e-8, 1e-4, "s")] = (8e-6, 40e-6)
+    leader_rise_s: Flank = (0.03e-6, 0.5e-6)
+    leader_fall_s: Flank = (0.6e-6, 6e-6)
+    train_s: Seconds = (0.3e-3, 3e-3)
+    train_pulses: Some = (4, 30)
     ring_share: Share = 0.3
-    ring_hz: Positive = (20e3, 300e3)
+    ring_hz: Hertz = (20e3, 300e3)
     ring_q: Positive = (0.8, 5.0)
     paths: PathWeights = Field(default={"radiated": 0.55, "feeder": 0.2, "far-end": 0.25})
 
 
-class SwitchingOperationRanges(Settings):
+class SwitchingOperationRanges(Ranges):
     """Breakers, disconnectors and capacitor banks elsewhere: oscillatory transients, many where contacts pre-strike.
 
     Above 500 kHz microseconds, 5 to 500 kHz tens of them (IEEE Std 1159-2019, 4.4.1.2, as quoted).
@@ -208,16 +214,22 @@ class SwitchingOperationRanges(Settings):
     paths : how it comes.
     """
 
-    edge_s: Positive = (10e-9, 200e-9)
-    ring_hz: Positive = (0.05e6, 2e6)
+    edge_s: Flank = (10e-9, 200e-9)
+    ring_hz: Hertz = (0.05e6, 2e6)
     ring_q: Positive = (2.0, 15.0)
-    burst_s: Positive = (0.1e-3, 3e-3)
-    burst_pulses: Pulses = (1, 30)
+    burst_s: Seconds = (0.1e-3, 3e-3)
+    burst_pulses: Some = (1, 30)
     paths: PathWeights = Field(default={"radiated": 0.15, "screen": 0.2, "feeder": 0.35, "far-end": 0.3})
 
 
-class DisturberRanges(Settings):
-    """Impulsive interference: how often each family is drawn, and what each is like."""
+class DisturberRanges(Ranges):
+    """Impulsive interference: how often each family is drawn, and what each is like.
+
+    Attributes
+    ----------
+    families : how often each is drawn.
+    converter, thyristor, switch_mode, arc, radio_packet, line_corona, sferic, switching_operation : each family.
+    """
 
     families: FamilyWeights = Field(
         default={
@@ -268,12 +280,15 @@ def _ringing(
 ) -> SourceCurrent:
     hz, q = log_even(ring_hz, rng=rng), log_even(ring_q, rng=rng)
     edge = min(log_even(edge_s, rng=rng), _SLOWEST_EDGE / hz)
-    return _in_time(SourceCurrent("ringing", edge, min(q / (np.pi * hz), _LONGEST_DECAY_S), hz))
+    return _in_time(SourceCurrent("ringing", edge, min(q / (np.pi * hz), _LONGEST_DECAY_S), hz), 4)
 
 
-def _in_time(current: SourceCurrent) -> SourceCurrent:
-    """The same, so late that the record of a pulse holds four deviations of its rising flank."""
-    return replace(current, offsets_s=(max(0.0, 4 * current.rise_s - LEAD_S),))
+def _in_time(current: SourceCurrent, deviations: float) -> SourceCurrent:
+    """The same, so late that the record of a pulse holds so many deviations of its rising flank.
+
+    What lay before the record would come back at its end, and loud: the record's damping is taken out there.
+    """
+    return replace(current, offsets_s=(max(0.0, deviations * current.rise_s - LEAD_S),))
 
 
 def _exponential(rise_s: float, ratio: tuple[float, float], *, rng: np.random.Generator) -> SourceCurrent:
@@ -320,7 +335,7 @@ def _draw_radio_packet(ranges: RadioPacketRanges, *, rng: np.random.Generator) -
     length_s = max(log_even(ranges.length_s, rng=rng), _FEWEST_PERIODS / hz)
     rise_share = rng.uniform(0.2, 0.5)
     rise_s, fall_s = length_s / 2 * rise_share, length_s / 2 * (1 - rise_share)
-    current = _in_time(SourceCurrent("packet", rise_s, fall_s, hz))
+    current = _in_time(SourceCurrent("packet", rise_s, fall_s, hz), 7)
     if rng.uniform() < ranges.burst_share:
         return current, _bursts(ranges.burst_pulses, ranges.burst_s, rng=rng)
     return current, Repetition("random")

@@ -3,13 +3,29 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from typing import Literal, Self, get_args
+from typing import Annotated, Literal, Self, get_args
 
 import numpy as np
 from pydantic import Field, model_validator
 
-from pdclass.settings import Settings
-from pdclass.sim.draw import Count, Positive, Range, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Farads,
+    Henries,
+    Metres,
+    Ohms,
+    Positive,
+    Range,
+    Ranges,
+    Shares,
+    Weights,
+    Whole,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+    within,
+)
 from pdclass.sim.elements import Grading, Lead, LossyCapacitance, Sheath, SoilWay, Strap, StressCone
 from pdclass.sim.nearend import Feeder, NearEnd, Panel, Winding
 
@@ -20,7 +36,7 @@ Role = Literal["own", "feeder", "transformer", "measuring", "open"]
 LOSS_HZ = 10e6
 
 
-class NearEndRanges(Settings):
+class NearEndRanges(Ranges):
     """Terminations, straps and switchgear; elements are drawn evenly in their logarithm.
 
     A station that is known has the same number twice in every range, and its `roles` written out.
@@ -40,7 +56,6 @@ class NearEndRanges(Settings):
     loss_tangent : of every capacitance at 10 MHz, as a resistance in series.
     strap_m : length of an earth strap [m].
     strap_farad : stray capacitance beside a strap, from the screen's end to earth [F].
-    sensor_ohm : resistance that the sensor inserts into its strap, burden over turns squared [ohm].
     tail_m : conductor from a termination to the busbar of its panel [m].
     section_m : busbar from panel to panel [m].
     dropper_m : from the busbar to the equipment [m].
@@ -70,58 +85,58 @@ class NearEndRanges(Settings):
     """
 
     roles: tuple[Role, ...] = ()
-    panels: Count = (2, 9)
-    own_place: Range = (0.0, 1.0)
-    other_panels: Weights = Field(default={"feeder": 0.5, "transformer": 0.2, "measuring": 0.15, "open": 0.15})
-    lead_henry_per_m: Positive = (0.6e-6, 1.2e-6)
+    panels: Annotated[Whole, within(1, 50)] = (2, 9)
+    own_place: Shares = (0.0, 1.0)
+    other_panels: Annotated[Weights, known_names("feeder", "transformer", "measuring", "open")] = Field(
+        default={"feeder": 0.5, "transformer": 0.2, "measuring": 0.15, "open": 0.15}
+    )
+    lead_henry_per_m: Henries = (0.6e-6, 1.2e-6)
     lead_q: Positive = (15.0, 200.0)
-    contact_ohm: Positive = (1e-3, 50e-3)
+    contact_ohm: Ohms = (1e-3, 50e-3)
     loss_tangent: Positive = (0.002, 0.05)
-    strap_m: Positive = (0.2, 1.5)
-    strap_farad: Positive = (10e-12, 100e-12)
-    sensor_ohm: Positive = (0.05, 1.0)
-    tail_m: Positive = (0.3, 3.0)
-    section_m: Positive = (0.35, 1.2)
-    dropper_m: Positive = (0.2, 2.0)
-    busbar_farad: Positive = (20e-12, 120e-12)
-    equipment_farad: Positive = (30e-12, 300e-12)
-    voltage_transformer_farad: Positive = (50e-12, 500e-12)
-    open_farad: Positive = (5e-12, 40e-12)
-    winding_m: Positive = (0.5, 6.0)
-    winding_farad: Positive = (0.3e-9, 3e-9)
-    cone_farad: Positive = (20e-12, 150e-12)
-    grading_farad: Positive = (10e-12, 60e-12)
-    grading_ohm: Positive = (1e3, 1e8)
-    grading_layer_farad: Positive = (0.1e-12, 3e-12)
-    box_farad: Positive = (5e-12, 30e-12)
-    building_ohm: Positive = (60.0, 250.0)
-    building_m: Positive = (1.0, 15.0)
+    strap_m: Metres = (0.2, 1.5)
+    strap_farad: Farads = (10e-12, 100e-12)
+    tail_m: Metres = (0.3, 3.0)
+    section_m: Metres = (0.35, 1.2)
+    dropper_m: Metres = (0.2, 2.0)
+    busbar_farad: Farads = (20e-12, 120e-12)
+    equipment_farad: Farads = (30e-12, 300e-12)
+    voltage_transformer_farad: Farads = (50e-12, 500e-12)
+    open_farad: Farads = (5e-12, 40e-12)
+    winding_m: Metres = (0.5, 6.0)
+    winding_farad: Farads = (0.3e-9, 3e-9)
+    cone_farad: Farads = (20e-12, 150e-12)
+    grading_farad: Farads = (10e-12, 60e-12)
+    grading_ohm: Ohms = (1e3, 1e8)
+    grading_layer_farad: Farads = (0.1e-12, 3e-12)
+    box_farad: Farads = (5e-12, 30e-12)
+    building_ohm: Ohms = (60.0, 250.0)
+    building_m: Metres = (1.0, 15.0)
     sheath_radius_mm: Positive = (12.0, 35.0)
     sheath_wall_mm: Positive = (1.8, 3.5)
     sheath_permittivity: Positive = (2.3, 5.0)
     soil_ohm_m: Positive = (20.0, 2000.0)
     soil_permittivity: Positive = (5.0, 30.0)
-    soil_m: Positive = (30.0, 3000.0)
-    soil_end_ohm: Positive = (1.0, 50.0)
+    soil_m: Metres = (30.0, 3000.0)
+    soil_end_ohm: Ohms = (1.0, 50.0)
     loop_share: Range = (-0.5, 1.0)
     tail_share: Range = (-1.0, 1.0)
 
     @model_validator(mode="after")
-    def _ladder_is_possible(self) -> Self:
+    def _one_panel_is_the_own(self) -> Self:
         if self.roles and self.roles.count("own") != 1:
             raise ValueError("exactly one of roles is 'own'")
-        if self.panels[0] < 1:
-            raise ValueError("panels: a ladder has one panel or more")
-        if not 0 <= self.own_place[0] <= self.own_place[1] <= 1:
-            raise ValueError("own_place lies between 0 and 1")
-        odd = sorted(set(self.other_panels) - set(get_args(Role)) | {"own"} & set(self.other_panels))
-        if odd:
-            raise ValueError(f"other_panels knows feeder, transformer, measuring, open, not {odd[0]}")
         return self
 
 
-def draw_near_end(ranges: NearEndRanges, *, rng: np.random.Generator) -> NearEnd:
-    """Termination, strap and switchgear at the sensor; its property `feeders` says how many other cables it needs."""
+def draw_near_end(ranges: NearEndRanges, *, sensor_ohm: float = 0.0, rng: np.random.Generator) -> NearEnd:
+    """Termination, strap and switchgear at the sensor; its property `feeders` says how many other cables it needs.
+
+    Parameters
+    ----------
+    ranges : of the elements.
+    sensor_ohm : resistance that the sensor inserts into its own strap, >= 0 [ohm].
+    """
     roles = ranges.roles or _draw_roles(ranges, rng=rng)
     draw = _Elements(ranges, log_even(ranges.lead_q, rng=rng), rng)
     sheath = _draw_sheath(ranges, rng=rng)
@@ -129,7 +144,7 @@ def draw_near_end(ranges: NearEndRanges, *, rng: np.random.Generator) -> NearEnd
         tail=draw.lead(ranges.tail_m),
         termination=StressCone(draw.capacitance(ranges.cone_farad), draw.grading()),
         box=draw.capacitance(ranges.box_farad),
-        strap=draw.strap(log_even(ranges.sensor_ohm, rng=rng)),
+        strap=draw.strap(sensor_ohm),
         soil=draw.soil(),
         panels=tuple(draw.panel(role) for role in roles),
         own=roles.index("own"),

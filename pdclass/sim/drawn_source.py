@@ -13,10 +13,22 @@ from types import MappingProxyType
 from typing import Annotated, Literal, cast, get_args
 
 import numpy as np
-from pydantic import AfterValidator, Field
+from pydantic import Field
 
-from pdclass.settings import Settings
-from pdclass.sim.draw import Count, Positive, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Nanoseconds,
+    Pair,
+    Ranges,
+    Share,
+    Some,
+    Weights,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+    within,
+)
 from pdclass.sim.phase import Pattern
 from pdclass.sim.source import Shape, SourceCurrent, half_width_s, train
 
@@ -30,48 +42,36 @@ KIND_PATTERNS: Mapping[Kind, Pattern] = MappingProxyType(
 #: The same for the point of a corona.
 CORONA_PATTERNS: Mapping[Polarity, Pattern] = MappingProxyType({"negative": "corona", "positive": "positive-corona"})
 
-
-def _only(names: tuple[str, ...]) -> AfterValidator:
-    """A check that weights name nothing else."""
-
-    def known(weights: dict[str, float]) -> dict[str, float]:
-        odd = sorted(set(weights) - set(names))
-        if odd:
-            raise ValueError(f"the names are {', '.join(names)}, not {odd[0]}")
-        return weights
-
-    return AfterValidator(known)
+ShapeWeights = Annotated[Weights, known_names("gaussian", "asymmetric", "exponential", "heidler")]
+KindWeights = Annotated[Weights, known_names(*get_args(Kind))]
+PolarityWeights = Annotated[Weights, known_names(*get_args(Polarity))]
 
 
-ShapeWeights = Annotated[Weights, _only(("gaussian", "asymmetric", "exponential", "heidler"))]
-KindWeights = Annotated[Weights, _only(get_args(Kind))]
-PolarityWeights = Annotated[Weights, _only(get_args(Polarity))]
-
-
-class PulseRanges(Settings):
+class PulseRanges(Ranges):
     """What the current of one kind of discharge is drawn from.
 
     Attributes
     ----------
     width_ns : between half heights, even in its logarithm [ns].
     skew : falling over rising time constant or deviation, even in its logarithm; a gaussian has none.
-    charge_pc : apparent charge, even in its logarithm, where heights do not follow from the signal-to-noise ratio [pC].
+    charge_pc : apparent charge [pC]; heights follow from the signal-to-noise ratio, and a discharge that would need
+        more than the larger one is drawn again.
     shapes : how often each shape is drawn.
     train_share : share of sources whose every discharge is a train of sub-pulses, 0 to 1.
     sub_pulses : of a train.
     spacing_ns : between sub-pulses, even in its logarithm [ns].
     """
 
-    width_ns: Positive
-    skew: Positive
-    charge_pc: Positive
+    width_ns: Nanoseconds
+    skew: Annotated[Pair, within(0.05, 100.0)]
+    charge_pc: Annotated[Pair, within(0.01, 1e9, "pC")]
     shapes: ShapeWeights = Field(default={"gaussian": 0.3, "asymmetric": 0.3, "exponential": 0.2, "heidler": 0.2})
-    train_share: float = Field(default=0.0, ge=0, le=1)
-    sub_pulses: Count = (2, 5)
-    spacing_ns: Positive = (10.0, 100.0)
+    train_share: Share = 0.0
+    sub_pulses: Some = (2, 5)
+    spacing_ns: Nanoseconds = (10.0, 100.0)
 
 
-class SourceRanges(Settings):
+class SourceRanges(Ranges):
     """What the currents of discharges are drawn from: one law for every place.
 
     Attributes
@@ -99,7 +99,7 @@ class SourceRanges(Settings):
     floating: PulseRanges = PulseRanges(width_ns=(2.0, 8.0), skew=(1.0, 4.0), charge_pc=(200.0, 2e4))
 
 
-class CoronaCurrentRanges(Settings):
+class CoronaCurrentRanges(Ranges):
     """What the current of corona at a point in air is drawn from, before it travels along its line.
 
     Attributes
@@ -124,11 +124,6 @@ def draw_discharge(
     """Kind and current of a discharge, whatever its place; the kind is drawn if it is not given."""
     drawn = cast("Kind", chosen(ranges.kinds, rng=rng)) if kind is None else kind
     return drawn, draw_current(_of_kind(ranges, drawn), rng=rng)
-
-
-def draw_charge_pc(ranges: SourceRanges, kind: Kind, *, rng: np.random.Generator) -> float:
-    """Apparent charge of a kind of discharge [pC]."""
-    return log_even(_of_kind(ranges, kind).charge_pc, rng=rng)
 
 
 def most_charge_pc(ranges: SourceRanges, kind: str) -> float:

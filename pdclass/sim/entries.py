@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from pdclass.sim.draw import chosen, whole
-from pdclass.sim.ranges import Label, Mix, Scenario, SourceEntry
+from pdclass.sim.ranges import Label, Mix, SourceEntry
 
 #: Nearest place of a `cable` source and farthest of a `local` one [m].
 NEAR_M = 10.0
@@ -17,12 +17,13 @@ def draw_labels(mix: Mix, *, rng: np.random.Generator) -> list[Label]:
     return [label for label in labels for _ in range(whole(mix.sources, rng=rng))]
 
 
-def draw_entry(label: Label, scenario: Scenario, length_m: float, *, rng: np.random.Generator) -> SourceEntry:
-    """A source of a class somewhere on a circuit of the given length [m]."""
-    mix = scenario.mix
+def draw_entry(
+    label: Label, mix: Mix, length_m: float, heights_db: tuple[float, float], *, rng: np.random.Generator
+) -> SourceEntry:
+    """A source of a class somewhere on a circuit of the given length [m], its pulses so high over the noise [dB]."""
     ways = {"cable": mix.cable_ways, "local": mix.local_ways, "switchgear": mix.switchgear_ways}.get(label)
     way = None if ways is None else chosen(ways, rng=rng)
-    wish = {"label": label, "pulses_per_cycle": 1.0, "snr_db": scenario.snr_db, "way": way}
+    wish = {"label": label, "pulses_per_cycle": 1.0, "snr_db": heights_db, "way": way}
     if label == "cable" and way == "cable":
         wish["distance_m"] = _cable_place_m(mix, length_m, rng=rng)
     if label == "local":

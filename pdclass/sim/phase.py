@@ -4,15 +4,13 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Literal
+from typing import Annotated, Literal
 
 import numpy as np
-from pydantic import Field
 
 from pdclass.pulses import FloatArray
-from pdclass.settings import Settings
-from pdclass.sim.activity import Corona, Discharges, Firing, Gap, Model, discharges
-from pdclass.sim.draw import Positive, Range, chosen, even, log_even
+from pdclass.sim.activity import Corona, Discharges, Gap, Model, discharges
+from pdclass.sim.draw import Pair, Ranges, Share, Shares, chosen, even, log_even, within
 
 Pattern = Literal[
     "void",
@@ -22,8 +20,6 @@ Pattern = Literal[
     "positive-corona",
     "uniform",
     "switching",
-    "six-pulse",
-    "twelve-pulse",
 ]
 
 #: Cycles after which a stretch in which nothing was found counts as quiet.
@@ -34,7 +30,7 @@ _MOST_RUNS = 24
 _REPEATED_DEG = 1.5
 
 
-class GapRanges(Settings):
+class GapRanges(Ranges):
     """What the model of a discharging gap is drawn from (orders of magnitude, from memory).
 
     Attributes
@@ -46,14 +42,14 @@ class GapRanges(Settings):
     asymmetry : inception field of one half cycle over that of the other; either may be the higher one.
     """
 
-    overvoltage: Positive
-    residual: Range
-    lag_deg: Positive
-    memory: Range
-    asymmetry: Positive
+    overvoltage: Annotated[Pair, within(0.01, 99.0)]
+    residual: Annotated[Pair, within(0.0, 0.95)]
+    lag_deg: Annotated[Pair, within(1e-3, 1e4, "deg")]
+    memory: Shares
+    asymmetry: Annotated[Pair, within(1.0, 100.0)]
 
 
-class CoronaRanges(Settings):
+class CoronaRanges(Ranges):
     """What the model of a corona in air is drawn from (orders of magnitude, from memory).
 
     Attributes
@@ -64,21 +60,19 @@ class CoronaRanges(Settings):
     spread : deviation of the logarithm of the charges.
     """
 
-    overvoltage: Positive
-    per_cycle: Positive
-    jitter: Range
-    spread: Range
+    overvoltage: Annotated[Pair, within(0.01, 99.0)]
+    per_cycle: Annotated[Pair, within(0.1, 1e4)]
+    jitter: Shares
+    spread: Annotated[Pair, within(0.0, 5.0)]
 
 
-class ActivityRanges(Settings):
+class ActivityRanges(Ranges):
     """What the activity of a source is drawn from.
 
     Attributes
     ----------
     void, surface, floating : gaps; a surface is unlike in the two half cycles, a floating part is regular.
     corona, positive_corona : point in air, at the negative and at the positive peak.
-    firing_deg : phase of the first commutation of a thyristor bridge [deg].
-    firing_jitter_deg : deviation of its commutations [deg].
     stray_share : share of pulses at any phase, from other places of the same defect, 0 to 1.
     """
 
@@ -97,9 +91,7 @@ class ActivityRanges(Settings):
     positive_corona: CoronaRanges = CoronaRanges(
         overvoltage=(1.02, 1.5), per_cycle=(3.0, 40.0), jitter=(0.6, 1.0), spread=(0.3, 0.8)
     )
-    firing_deg: Range = (0.0, 60.0)
-    firing_jitter_deg: Positive = (0.02, 0.5)
-    stray_share: float = Field(default=0.01, ge=0, le=1)
+    stray_share: Share = 0.01
 
 
 @dataclass(frozen=True)
@@ -121,10 +113,6 @@ def draw_activity(pattern: Pattern, ranges: ActivityRanges | None = None, *, rng
     wide = ActivityRanges() if ranges is None else ranges
     if pattern in ("uniform", "switching"):
         return Activity(None)
-    if pattern in ("six-pulse", "twelve-pulse"):
-        per_cycle = 6 if pattern == "six-pulse" else 12
-        jitter_deg = log_even(wide.firing_jitter_deg, rng=rng)
-        return Activity(Firing(even(wide.firing_deg, rng=rng), per_cycle, jitter_deg))
     if pattern == "corona":
         return Activity(_draw_corona(wide.corona, negative=True, rng=rng), wide.stray_share)
     if pattern == "positive-corona":

@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
-from typing import Literal, Self, get_args
+from types import MappingProxyType
+from typing import Annotated, Literal, Self
 
 from pydantic import Field, model_validator
 
-from pdclass.settings import Settings, read_settings
+from pdclass.settings import read_settings
 from pdclass.sim.disturbers import Family
 from pdclass.sim.disturbers import Path as CouplingPath
-from pdclass.sim.draw import Count, Positive, Range, Weights
+from pdclass.sim.draw import Pair, Ranges, Share, Weights, Whole, known_names, within
 from pdclass.sim.drawn_background import BackgroundRanges
 from pdclass.sim.drawn_cable import CableRanges, FarEndKind
 from pdclass.sim.drawn_chain import ChainRanges
@@ -22,9 +24,14 @@ from pdclass.sim.phase import ActivityRanges, Pattern
 Label = Literal["cable", "local", "switchgear", "interference"]
 #: Ways of a discharge to the strap that its label leaves open.
 Way = Literal["cable", "neighbour", "stress-cone", "box", "bus", "equipment"]
+_WAYS: Mapping[Label, tuple[Way, ...]] = MappingProxyType(
+    {"cable": ("cable", "neighbour"), "local": ("stress-cone", "box"), "switchgear": ("bus", "equipment")}
+)
+#: Peak over noise [dB]; lower ones would leave nothing to annotate.
+Heights = Annotated[Pair, within(0.5, 150.0, "dB")]
 
 
-class CaptureRanges(Settings):
+class CaptureRanges(Ranges):
     """What one capture is like.
 
     Attributes
@@ -33,20 +40,23 @@ class CaptureRanges(Settings):
     pulses : planted pulses in a record of a drawn circuit.
     noise_v : MAD/0.6745 of the background at the digitiser, carriers included [V].
     full_scale_db : of the digitiser over that noise [dB].
+    clipped_db : pulses are at most so much higher than the full scale [dB]: whoever records chooses a range in which
+        few of them clip.
     offset_counts : offset of the digitiser [counts], either sign.
     segments, gap_ms : stretches of the record, and what is lost between them [ms].
     """
 
     duration_ms: float = Field(default=3.0, gt=0.2, le=2000)
-    pulses: Count = (25, 30)
-    noise_v: Positive = (20e-6, 500e-6)
-    full_scale_db: Range = (38.0, 70.0)
-    offset_counts: float = Field(default=4.0, ge=0)
+    pulses: Annotated[Whole, within(0, 100_000)] = (25, 30)
+    noise_v: Annotated[Pair, within(1e-9, 10.0, "V")] = (20e-6, 500e-6)
+    full_scale_db: Annotated[Pair, within(6.0, 150.0, "dB")] = (38.0, 70.0)
+    clipped_db: float = Field(default=3.0, ge=0, le=60)
+    offset_counts: float = Field(default=4.0, ge=0, le=100)
     segments: int = Field(default=1, ge=1, le=64)
-    gap_ms: float = Field(default=5.0, gt=0)
+    gap_ms: float = Field(default=5.0, gt=0, le=1e6)
 
 
-class Mix(Settings):
+class Mix(Ranges):
     """Which sources a drawn circuit has, and how its planted pulses are shared among the classes.
 
     Attributes
@@ -62,52 +72,81 @@ class Mix(Settings):
     own_panel : share of switchgear sources in the panel of this cable, 0 to 1; the rest evenly in the others.
     """
 
-    cable: float = Field(default=0.25, ge=0)
-    local: float = Field(default=0.25, ge=0)
-    switchgear: float = Field(default=0.25, ge=0)
-    interference: float = Field(default=0.25, ge=0)
-    sources: Count = (1, 3)
-    cable_ways: Weights = Field(default={"cable": 0.9, "neighbour": 0.1})
-    far_end_share: float = Field(default=0.2, ge=0, le=1)
-    near_share: float = Field(default=0.2, ge=0, le=1)
-    local_ways: Weights = Field(default={"stress-cone": 0.75, "box": 0.25})
-    local_at_termination: float = Field(default=0.5, ge=0, le=1)
-    switchgear_ways: Weights = Field(default={"bus": 0.5, "equipment": 0.5})
-    own_panel: float = Field(default=0.4, ge=0, le=1)
+    cable: float = Field(default=0.25, ge=0, le=1e6)
+    local: float = Field(default=0.25, ge=0, le=1e6)
+    switchgear: float = Field(default=0.25, ge=0, le=1e6)
+    interference: float = Field(default=0.25, ge=0, le=1e6)
+    sources: Annotated[Whole, within(0, 50)] = (1, 3)
+    cable_ways: Annotated[Weights, known_names(*_WAYS["cable"])] = Field(default={"cable": 0.9, "neighbour": 0.1})
+    far_end_share: Share = 0.2
+    near_share: Share = 0.2
+    local_ways: Annotated[Weights, known_names(*_WAYS["local"])] = Field(default={"stress-cone": 0.75, "box": 0.25})
+    local_at_termination: Share = 0.5
+    switchgear_ways: Annotated[Weights, known_names(*_WAYS["switchgear"])] = Field(
+        default={"bus": 0.5, "equipment": 0.5}
+    )
+    own_panel: Share = 0.4
 
     @model_validator(mode="after")
     def _something_is_planted(self) -> Self:
         if self.cable + self.local + self.switchgear + self.interference <= 0:
             raise ValueError("at least one share is above zero")
-        for field in ("cable_ways", "local_ways", "switchgear_ways"):
-            odd = sorted(set(getattr(self, field)) - set(get_args(Way)))
-            if odd:
-                raise ValueError(f"{field} knows {', '.join(get_args(Way))}, not {odd[0]}")
         return self
 
 
-class SourceEntry(Settings):
-    """One source of an explicit circuit; what it does not say is drawn."""
+class SourceEntry(Ranges):
+    """One source of an explicit circuit; what it does not say is drawn.
+
+    Attributes
+    ----------
+    label : its class.
+    distance_m : along the cable: 10 m to its length for `cable`, 0 to 10 m for `local` [m].
+    pulses_per_cycle : of the mains, on average.
+    snr_db : peak over noise, drawn evenly [dB].
+    pattern, kind : of a discharge: when in the cycle it comes, and what discharges.
+    way : by which it reaches the strap where the label leaves several.
+    family, path : of interference: what sends, and by which path it comes.
+    """
 
     label: Label
     distance_m: float | None = Field(default=None, ge=0)
     pulses_per_cycle: float = Field(gt=0, le=1000)
-    snr_db: Range
+    snr_db: Heights
     pattern: Pattern | None = None
     kind: Kind | None = None
     way: Way | None = None
     family: Family | None = None
     path: CouplingPath | None = None
 
+    @model_validator(mode="after")
+    def _belongs_to_its_label(self) -> Self:
+        ways = _WAYS.get(self.label, ())
+        if self.way is not None and self.way not in ways:
+            raise ValueError(f"way: that of {self.label} is {' or '.join(ways) or 'given by path'}, not {self.way}")
+        of_others = ("pattern", "kind") if self.label == "interference" else ("family", "path")
+        odd = [name for name in of_others if getattr(self, name) is not None]
+        if odd:
+            raise ValueError(f"{odd[0]}: says nothing of {self.label}; leave it out")
+        return self
 
-class CircuitEntry(Settings):
-    """One circuit that a scenario names; what it does not say is drawn."""
+
+class CircuitEntry(Ranges):
+    """One circuit that a scenario names; what it does not say is drawn.
+
+    Attributes
+    ----------
+    name, site, sensor : as they stand in the captures; circuits of one site are one group.
+    conductor : the core that the sensor belongs to.
+    length_m : of its cable [m].
+    far_end : what stands at its other end.
+    sources : what sends pulses; none for a circuit with background alone.
+    """
 
     name: str
     site: str | None = None
     sensor: str
     conductor: Literal["L1", "L2", "L3", "three-core"] | None = None
-    length_m: float = Field(gt=20)
+    length_m: float = Field(gt=20, le=12e3)
     far_end: FarEndKind | None = None
     sources: tuple[SourceEntry, ...] = ()
 
@@ -121,7 +160,7 @@ class CircuitEntry(Settings):
         return self
 
 
-class Scenario(Settings):
+class Scenario(Ranges):
     """A synthetic world: either `circuits` drawn ones, or the ones that it names.
 
     Attributes
@@ -130,12 +169,14 @@ class Scenario(Settings):
     circuits : number of drawn circuits; without effect where circuits are named.
     captures_per_circuit : visits of one sensor to one circuit, each a capture and a session.
     snr_db : peak over noise, drawn evenly from here for every pulse of every class [dB].
+    capture, chain, mix, source, activity, cable, near_end, background, interference : what the parts are drawn from.
+    circuit : named circuits; empty: drawn ones.
     """
 
     name: str = Field(pattern=r"^[a-z0-9][a-z0-9-]*$")
-    circuits: int = Field(default=24, ge=1)
-    captures_per_circuit: int = Field(default=1, ge=1)
-    snr_db: Range = (8.0, 58.0)
+    circuits: int = Field(default=24, ge=1, le=1_000_000)
+    captures_per_circuit: int = Field(default=1, ge=1, le=1_000_000)
+    snr_db: Heights = (8.0, 58.0)
     capture: CaptureRanges = CaptureRanges()
     chain: ChainRanges = ChainRanges()
     mix: Mix = Mix()

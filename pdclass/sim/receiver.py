@@ -29,6 +29,7 @@ FilterKind = Literal["butterworth", "bessel"]
 WIDEST_HZ = 48e6
 #: Travel time of a coaxial lead with solid polyethylene [s/m].
 _LEAD_S_PER_M = 5.05e-9
+_LEAST_NOISE_DB_OF_COUNT = 3.5
 _THIRD_OCTAVE = np.log(2.0) / 3
 _BAND_POINTS = 2401
 _PIECE = 1 << 15
@@ -120,6 +121,11 @@ class Receiver:
     def transfer_ohm(self) -> float:
         """Mid-band transfer impedance at the digitiser [V/A]."""
         return self.load_ohm / self.transformer.turns
+
+    @property
+    def inserted_ohm(self) -> float:
+        """Resistance that the transformer inserts into the strap in mid-band [ohm]."""
+        return self.load_ohm / self.transformer.turns**2
 
     @property
     def low_hz(self) -> float:
@@ -293,6 +299,11 @@ def jittered(signal: WaveArray, rate_hz: float, jitter_s: float, *, rng: np.rand
         stray *= np.float32(np.sqrt(12) * jitter_s * rate_hz)
         taken[first : first + _PIECE] = piece[reach:-reach] + stray
     return taken
+
+
+def most_full_scale_db(bits: int) -> float:
+    """Highest full scale over the noise at which the noise still has 1.5 counts [dB]: `bits`, 8 to 16."""
+    return float(20 * np.log10(2) * (bits - 1) - _LEAST_NOISE_DB_OF_COUNT)
 
 
 def quantise(signal_v: FloatArray | WaveArray, volts_per_count: float, bits: int) -> NDArray[Any]:

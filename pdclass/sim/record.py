@@ -9,7 +9,7 @@ import numpy as np
 
 from pdclass.pulses import Annotation, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.sim.circuit import ONSET_SHARE_OF_PEAK, Circuit, Source
-from pdclass.sim.disturbers import disturber_times
+from pdclass.sim.disturbers import disturber_signs, disturber_times
 from pdclass.sim.grid import LEAD_S, laplace_grid, to_samples
 from pdclass.sim.interference import background_wave
 from pdclass.sim.phase import Activity, activity_phases
@@ -36,6 +36,7 @@ class Timeline:
     rate_hz : samples a second [Hz].
     samples : recorded samples, gaps not counted.
     segments : (segments, 2) first sample in the file, global index.
+    clock : sample of the site's carriers and communication at global index 0: they do not begin with the visit.
     start_deg : phase of the reference voltage at the first sample [deg].
     deg_per_sample : advance of the phase [deg].
     """
@@ -43,6 +44,7 @@ class Timeline:
     rate_hz: float
     samples: int
     segments: IntArray
+    clock: int
     start_deg: float
     deg_per_sample: float
 
@@ -92,14 +94,15 @@ def draw_timeline(ranges: CaptureRanges, circuit: Circuit, *, rng: np.random.Gen
     first = np.arange(ranges.segments) * (samples // ranges.segments)
     gap = round(ranges.gap_ms * 1e-3 * rate_hz)
     segments = np.stack([first, first + gap * np.arange(first.size)], axis=1).astype(np.int64)
-    return Timeline(rate_hz, samples, segments, rng.uniform(0.0, 360.0), 360.0 * circuit.mains_hz / rate_hz)
+    clock, start_deg = int(rng.integers(0, 1 << 32)), rng.uniform(0.0, 360.0)
+    return Timeline(rate_hz, samples, segments, clock, start_deg, 360.0 * circuit.mains_hz / rate_hz)
 
 
 def draw_signal(circuit: Circuit, timeline: Timeline, *, rng: np.random.Generator) -> WaveArray:
     """Noise and carriers of the whole record, (samples,) [V]; MAD/0.6745 of it is the circuit's noise."""
     parts = [
-        background_wave(circuit.reception, int(clock), end - first, rng=rng)
-        for (first, end), clock in zip(timeline.bounds(), timeline.segments[:, 1], strict=True)
+        background_wave(circuit.reception, timeline.clock + int(index), end - first, rng=rng)
+        for (first, end), index in zip(timeline.bounds(), timeline.segments[:, 1], strict=True)
     ]
     signal = np.concatenate(parts)
     probe = signal[:: max(1, signal.size // _NOISE_PROBES)]
@@ -129,17 +132,16 @@ def _onsets(
     """Onsets in one segment [samples of the file], sorted, and the signs that belong to them."""
     start_deg = float(timeline.phase(np.array([float(first)]))[0])
     if source.repetition is not None:
+        deg_per_s = timeline.deg_per_sample * timeline.rate_hz
         times_s = disturber_times(
             source.repetition,
             (end - first) / timeline.rate_hz,
             count,
             start_deg=start_deg,
-            deg_per_s=timeline.deg_per_sample * timeline.rate_hz,
+            deg_per_s=deg_per_s,
             rng=rng,
         )
-        either = rng.choice([-1.0, 1.0], times_s.size)
-        # what switches on switches off next
-        signs = np.resize([1.0, -1.0], times_s.size) if source.repetition.kind == "switching" else either
+        signs = disturber_signs(source.repetition, times_s, start_deg=start_deg, deg_per_s=deg_per_s, rng=rng)
         return np.minimum(first + times_s * timeline.rate_hz, end - 1), signs
     activity = Activity(None) if source.activity is None else source.activity
     span_deg = (end - first) * timeline.deg_per_sample

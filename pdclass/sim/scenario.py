@@ -14,7 +14,7 @@ from pdclass.pulses import Annotation, Capture, Chain, FloatArray, IntArray
 from pdclass.sim.circuit import Circuit, Source, draw_circuit
 from pdclass.sim.draw import whole
 from pdclass.sim.ranges import Scenario, read_scenario
-from pdclass.sim.receiver import chain_band_hz, jittered, quantise
+from pdclass.sim.receiver import chain_band_hz, jittered, most_full_scale_db, quantise
 from pdclass.sim.record import Plan, Timeline, draw_plan, draw_signal, draw_timeline, plant
 
 __all__ = [
@@ -31,8 +31,6 @@ __all__ = [
 SIMULATOR_VERSION = 2
 
 _FIRST_DAY = pd.Timestamp("2025-01-06", tz="UTC")
-_LEAST_NOISE_DB_OF_COUNT = 3.5
-_DB_PER_BIT = 20 * np.log10(2)
 
 
 def capture_count(scenario: Scenario) -> int:
@@ -107,9 +105,10 @@ def _plans(
     plans: list[tuple[Source, Plan]] = []
     missing = 0
     for source, count, child in zip(circuit.sources, counts, children, strict=True):
-        # what a bridge has too few edges for, the next source of interference sends instead
-        plan = draw_plan(source, int(count) + missing, timeline, rng=child)
-        missing = max(0, int(count) + missing - plan.onset.size)
+        asked = int(count) + (missing if source.label == "interference" and not scenario.circuit else 0)
+        plan = draw_plan(source, asked, timeline, rng=child)
+        # what a bridge has too few edges for, the next source of interference of a drawn circuit sends instead
+        missing = asked - plan.onset.size
         plans.append((source, plan))
     return plans
 
@@ -134,8 +133,8 @@ def _share_out(
 
 def _volts_per_count(circuit: Circuit) -> float:
     """Size of a count [V]: the full scale stands above the noise as drawn, the noise above a count in any case."""
-    most_db = _DB_PER_BIT * (circuit.receiver.bits - 1) - _LEAST_NOISE_DB_OF_COUNT
-    full_scale_v = circuit.noise_v * 10 ** (min(circuit.full_scale_db, most_db) / 20)
+    full_scale_db = min(circuit.full_scale_db, most_full_scale_db(circuit.receiver.bits))
+    full_scale_v = circuit.noise_v * 10 ** (full_scale_db / 20)
     return float(full_scale_v / (1 << (circuit.receiver.bits - 1)))
 
 

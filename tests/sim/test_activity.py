@@ -6,9 +6,7 @@ import pytest
 from pdclass.errors import InputError
 from pdclass.sim.activity import (
     Corona,
-    Firing,
     Gap,
-    commutations,
     corona_discharges,
     discharges,
     gap_discharges,
@@ -137,7 +135,7 @@ def test_order_and_span():
 
 def test_same_generator_same_discharges():
     """The model is a function of its generator alone."""
-    for model in (VOID, Corona(1.5, True, 100.0, 0.1, 0.1), Firing(20.0, 6, 0.1)):
+    for model in (VOID, Corona(1.5, True, 100.0, 0.1, 0.1)):
         first, second = (discharges(model, 20, rng=rng(3)) for _ in range(2))
         assert first.phase_deg.tobytes() == second.phase_deg.tobytes()
         assert first.charge.tobytes() == second.charge.tobytes()
@@ -171,17 +169,6 @@ def test_trichel_pulses_are_regular():
     assert steps.std() < 0.1 * steps.mean()
 
 
-@pytest.mark.parametrize("per_cycle", [6, 12])
-def test_commutations_stand_at_fixed_phases(per_cycle):
-    """A bridge commutates once in every sixth or twelfth of a cycle, within its jitter, with turning sign."""
-    found = commutations(Firing(77.0, per_cycle, 0.2), CYCLES, rng=rng())
-    assert found.phase_deg.size == per_cycle * CYCLES
-    apart = 360.0 / per_cycle
-    away = np.mod(found.phase_deg - 77.0 + apart / 2, apart) - apart / 2
-    assert away.std() == pytest.approx(0.2, rel=0.1)
-    assert (found.charge[1:] == -found.charge[:-1]).all()
-
-
 @pytest.mark.parametrize(
     ("build", "field"),
     [
@@ -194,8 +181,6 @@ def test_commutations_stand_at_fixed_phases(per_cycle):
         (lambda: Corona(1.5, True, 0.0, 0.1, 0.1), "per_cycle"),
         (lambda: Corona(1.5, True, 1.0, 2.0, 0.1), "jitter"),
         (lambda: Corona(1.5, True, 1.0, 0.1, -0.1), "spread"),
-        (lambda: Firing(0.0, 5, 0.1), "per_cycle"),
-        (lambda: Firing(0.0, 6, -0.1), "jitter_deg"),
     ],
 )
 def test_impossible_models_are_refused(build, field):

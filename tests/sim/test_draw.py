@@ -1,10 +1,26 @@
 """What is drawn lies in its range, and the same generator draws the same."""
 
+from typing import Annotated
+
 import numpy as np
 import pytest
 from pydantic import TypeAdapter, ValidationError
 
-from pdclass.sim.draw import Positive, Range, Weights, chosen, even, log_even, whole
+from pdclass.sim.draw import (
+    Count,
+    Metres,
+    Positive,
+    Range,
+    Ranges,
+    Shares,
+    Some,
+    Weights,
+    chosen,
+    even,
+    known_names,
+    log_even,
+    whole,
+)
 
 
 def test_numbers_keep_to_their_bounds():
@@ -29,9 +45,36 @@ def test_names_come_as_often_as_their_weights_say():
 
 
 @pytest.mark.parametrize(
-    ("kind", "wrong"), [(Range, (2.0, 1.0)), (Positive, (0.0, 1.0)), (Weights, {"a": 0.0}), (Weights, {"a": -1.0})]
+    ("kind", "wrong"),
+    [
+        (Range, (2.0, 1.0)),
+        (Range, (np.nan, 1.0)),
+        (Positive, (0.0, 1.0)),
+        (Metres, (1.0, np.inf)),
+        (Shares, (0.5, 1.1)),
+        (Count, (-1, 3)),
+        (Some, (0, 3)),
+        (Weights, {"a": 0.0}),
+        (Weights, {"a": -1.0}),
+        (Weights, {"a": 1e308}),
+        (Annotated[Weights, known_names("a", "b")], {"a": 1.0, "c": 1.0}),
+    ],
 )
 def test_impossible_ranges_are_refused(kind, wrong):
     """A range rises, a positive one begins above zero, some weight is above zero."""
     with pytest.raises(ValidationError):
         TypeAdapter(kind).validate_python(wrong)
+
+
+def test_a_table_that_says_a_part_keeps_the_rest():
+    """What a table leaves out is what the field has by default, not what its class has."""
+
+    class Lead(Ranges):
+        length_m: Metres = (1.0, 2.0)
+        turns: Some = (1, 2)
+
+    class Chain(Ranges):
+        lead: Lead = Lead(length_m=(3.0, 4.0), turns=(5, 6))
+
+    assert Chain.model_validate({"lead": {"turns": (7, 8)}}).lead == Lead(length_m=(3.0, 4.0), turns=(7, 8))
+    assert Chain.model_validate({"lead": {}}) == Chain()

@@ -68,8 +68,8 @@ def test_same_seed_same_receiver():
     ("wrong", "complaint"),
     [
         ({"rates_hz": (99e6,)}, "a rate is one of"),
-        ({"filters": {"notch": 1.0}}, "a filter is one of"),
-        ({"saturation": (0.0, 1.0)}, "less than 1"),
+        ({"filters": {"notch": 1.0}}, "one of butterworth, bessel, not notch"),
+        ({"saturation": (0.0, 1.0)}, "both lie between 0 and 0.99"),
         ({"turns": (5, 2)}, "the lower bound stands first"),
         ({"saturation": (0.6, 0.2)}, "the lower bound stands first"),
         ({"rates_hz": ()}, "at least 1 item"),

@@ -119,7 +119,7 @@ def test_corona_is_slower_after_more_line():
     ("wrong", "complaint"),
     [
         ({"families": {"ghost": 1.0}}, "a name is one of converter.*not ghost"),
-        ({"arc": {"burst_pulses": (0, 4)}}, "at least one pulse"),
+        ({"arc": {"burst_pulses": (0, 4)}}, "both lie between 1 and 1000"),
         ({"families": {"arc": 0.0}}, "at least one weight is above zero"),
         ({"arc": {"paths": {"ether": 1.0}}}, "a name is one of radiated.*not ether"),
         ({"thyristor": {"bridges": {"five": 1.0}}}, "a name is one of two, six, twelve"),

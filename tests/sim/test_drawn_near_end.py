@@ -84,7 +84,8 @@ def test_losses_are_those_that_are_stated(drawn):
 
 def test_the_sensor_adds_to_its_own_strap_alone():
     """The inserted resistance stands in the own strap; the other straps have their leads' losses only."""
-    near = _near(3, roles=("own", "feeder"), sensor_ohm=(50.0, 50.0))
+    ranges = NearEndRanges(roles=("own", "feeder"))
+    near = draw_near_end(ranges, sensor_ohm=50.0, rng=np.random.default_rng(3))
     other = near.feeder_list[0].strap.lead
     assert near.strap.lead.ohm > 50
     assert other.ohm < 10
@@ -118,12 +119,12 @@ def test_a_known_station_is_always_the_same():
         ({"roles": ("feeder", "open")}, "exactly one of roles is 'own'"),
         ({"roles": ("own", "own")}, "exactly one of roles is 'own'"),
         ({"roles": ("own", "cupboard")}, "Input should be"),
-        ({"panels": (0, 3)}, "one panel or more"),
-        ({"own_place": (0.5, 1.5)}, "own_place lies between 0 and 1"),
+        ({"panels": (0, 3)}, "both lie between 1 and 50"),
+        ({"own_place": (0.5, 1.5)}, "both lie between 0 and 1"),
         ({"other_panels": {"feeder": 1.0, "spare": 1.0}}, "not spare"),
         ({"other_panels": {"own": 1.0}}, "not own"),
         ({"strap_m": (1.0, 0.5)}, "the lower bound stands first"),
-        ({"strap_m": (0.0, 0.5)}, "greater than 0"),
+        ({"strap_m": (0.0, 0.5)}, "both lie between 0.001 and"),
     ],
 )
 def test_impossible_stations_are_refused(changes, wanted):

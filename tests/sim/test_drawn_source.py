@@ -14,7 +14,6 @@ from pdclass.sim.drawn_source import (
     Polarity,
     PulseRanges,
     SourceRanges,
-    draw_charge_pc,
     draw_corona,
     draw_current,
     draw_discharge,
@@ -57,17 +56,6 @@ def test_widths_lie_in_their_ranges(kind, bounds):
     assert widths.min() >= 0.99 * bounds.width_ns[0]
     assert widths.max() <= 1.01 * bounds.width_ns[1]
     assert np.median(widths) == pytest.approx(np.sqrt(bounds.width_ns[0] * bounds.width_ns[1]), rel=0.15)
-
-
-@pytest.mark.parametrize("kind", KINDS)
-def test_charges_lie_in_their_ranges(kind):
-    """Charges are drawn evenly in their logarithm between the bounds of the kind."""
-    low, high = getattr(RANGES, kind.replace("-", "_")).charge_pc
-    rng = np.random.default_rng(5)
-    charges = np.array([draw_charge_pc(RANGES, kind, rng=rng) for _ in range(500)])
-    assert charges.min() >= low
-    assert charges.max() <= high
-    assert np.median(charges) == pytest.approx(np.sqrt(low * high), rel=0.25)
 
 
 def test_kinds_come_by_their_weights():

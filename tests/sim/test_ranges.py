@@ -1,13 +1,14 @@
 """Scenario files are checked before anything is simulated, and the shipped ones are whole."""
 
+import re
 import tomllib
 
 import pytest
-from pydantic import BaseModel
+from pydantic import BaseModel, ValidationError
 
 from pdclass.errors import InputError
 from pdclass.settings import shipped
-from pdclass.sim.ranges import Scenario, read_scenario
+from pdclass.sim.ranges import CircuitEntry, Scenario, SourceEntry, read_scenario
 
 SHIPPED = sorted(shipped("synthetic").glob("*.toml"))
 NAMED = """
@@ -53,6 +54,65 @@ def test_what_is_wrong_is_named(tmp_path, text, wanted):
     assert str(path) in str(error.value)
     assert wanted in str(error.value)
     assert "\n" not in str(error.value)
+
+
+def _kinds(settings):
+    """The classes of settings within settings."""
+    yield settings
+    for field in settings.model_fields.values():
+        if isinstance(field.default, BaseModel):
+            yield from _kinds(type(field.default))
+
+
+@pytest.mark.parametrize(
+    "kind", dict.fromkeys([*_kinds(Scenario), CircuitEntry, SourceEntry]), ids=lambda kind: kind.__name__
+)
+def test_every_distribution_is_explained(kind):
+    """The docstring of a set of settings names every field that a scenario may set."""
+    assert set(kind.model_fields) <= set(re.findall(r"\w+", kind.__doc__))
+
+
+def _numbers(settings, where=()):
+    """Path and value of every number, pair, list or weighing of numbers in a set of settings."""
+    for name in type(settings).model_fields:
+        value = getattr(settings, name)
+        if isinstance(value, BaseModel):
+            yield from _numbers(value, (*where, name))
+        elif isinstance(value, int | float | dict) or (value and isinstance(value[0], int | float)):
+            yield (*where, name), value
+
+
+def _instead(value, number):
+    if isinstance(value, dict):
+        return dict.fromkeys(value, number)
+    return [number] * len(value) if isinstance(value, tuple) else number
+
+
+@pytest.mark.parametrize("number", [float("nan"), float("inf"), -1e30, 1e30])
+def test_no_distribution_takes_an_absurd_number(number):
+    """Whatever field it stands in, a number that is none, endless or absurd is refused with the field's name."""
+    base = Scenario(name="x")
+    for path, value in _numbers(base):
+        wrong = _instead(value, number)
+        for name in reversed(path):
+            wrong = {name: wrong}
+        with pytest.raises(ValidationError) as error:
+            Scenario.model_validate({"name": "x", **wrong})
+        assert ".".join(path) in str(error.value)
+
+
+@pytest.mark.parametrize(
+    ("wish", "message"),
+    [
+        ({"label": "cable", "way": "bus"}, "way: that of cable is cable or neighbour, not bus"),
+        ({"label": "interference", "kind": "void"}, "kind: says nothing of interference"),
+        ({"label": "local", "family": "arc"}, "family: says nothing of local"),
+    ],
+)
+def test_a_source_is_not_told_what_its_label_cannot_have(wish, message):
+    """What would be passed over in silence is refused instead."""
+    with pytest.raises(ValidationError, match=message):
+        SourceEntry.model_validate({"pulses_per_cycle": 1.0, "snr_db": (10.0, 20.0), **wish})
 
 
 def _unnamed(settings, table, where=""):

@@ -1,0 +1,64 @@
+"""Copies planted with known delay, height and loss are found as such."""
+
+import numpy as np
+import pytest
+from closed_form import double_exponential
+from one_pulse import features_of, single
+from scipy.signal import butter, sosfilt
+
+
+def found(wave, *, noise_v=0.001, **chain):
+    return features_of(single(wave, noise_v=noise_v, **chain))
+
+
+def pulse():
+    return double_exponential(10e-9, 60e-9, span_s=15e-6)
+
+
+def with_copies(*copies):
+    wave = pulse()
+    return wave + sum(height * np.roll(pulse(), delay) for delay, height in copies)
+
+
+def test_two_copies_are_found_with_delay_height_and_sign():
+    """Copies of 0.5 after 3 us and of -0.2 after 8 us, the stronger first; and the ratio of their delays."""
+    values = found(with_copies((300, 0.5), (800, -0.2)))
+    assert values["copy_1_delay_us"] == pytest.approx(3.0, abs=0.02)
+    assert values["copy_1_ratio"] == pytest.approx(0.5, abs=0.03)
+    assert values["copy_2_delay_us"] == pytest.approx(8.0, abs=0.02)
+    assert values["copy_2_ratio"] == pytest.approx(-0.2, abs=0.03)
+    assert values["copy_delay_ratio"] == pytest.approx(8 / 3, abs=0.03)
+    assert values["copy_1_likeness"] > 0.98
+    assert values["copy_2_likeness"] < -0.95
+
+
+def test_a_copy_of_equal_shape_has_one_level_in_every_band():
+    """A copy of 0.5 is 6 dB down at every frequency."""
+    values = found(with_copies((400, 0.5)))
+    for band in ("1_2p5", "2p5_5", "5_9"):
+        assert values[f"copy_1_level_{band}_db"] == pytest.approx(20 * np.log10(0.5), abs=0.5)
+
+
+def test_a_low_passed_copy_loses_its_high_frequencies_and_its_likeness():
+    """Behind a low-pass at 3 MHz the copy is down at 5-9 MHz by what the filter takes, wider and less alike."""
+    filtered = sosfilt(butter(1, 3e6, fs=100e6, output="sos"), pulse())
+    plain, lossy = found(with_copies((400, 0.5))), found(pulse() + 0.5 * np.roll(filtered, 400))
+    fallen = {band: plain[f"copy_1_level_{band}_db"] - lossy[f"copy_1_level_{band}_db"] for band in ("1_2p5", "5_9")}
+    assert fallen["1_2p5"] == pytest.approx(1.2, abs=0.6)
+    assert fallen["5_9"] == pytest.approx(7.8, abs=1.5)
+    assert lossy["copy_1_width_ns"] > plain["copy_1_width_ns"]
+    assert lossy["copy_1_likeness"] < plain["copy_1_likeness"] - 0.03
+
+
+def test_a_pulse_without_copies_has_none():
+    """Where nothing follows a pulse that stands 40 dB out of the noise, every feature of the copies is NaN."""
+    for seed in range(5):
+        values = found(pulse(), noise_v=0.01, seed=seed)
+        strong = values["copy_1_ratio"]
+        assert np.isnan(strong) or abs(strong) < 0.1
+
+
+def test_the_second_copy_is_apart_from_the_first():
+    """The flank of a strong copy is not taken for another one."""
+    values = found(with_copies((500, 0.6), (900, 0.1)))
+    assert values["copy_2_delay_us"] == pytest.approx(9.0, abs=0.02)

@@ -13,11 +13,12 @@ from pdclass.features import feature_digests
 from pdclass.jobs.score import base_bundle
 from pdclass.jobs.simulate import scenario_path
 from pdclass.model.bundle import read_bundle
-from pdclass.report.page import _environment
+from pdclass.report.templates import template
 print(pdclass.__file__)
 print(read_bundle(base_bundle(), feature_digests()).classes)
 print(scenario_path("port-ferrow"))
-_environment().get_template("batch.html.j2")
+for page in ("batch.html.j2", "gallery.html.j2"):
+    template(page)
 """
 
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
-from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -25,9 +24,9 @@ from pdclass.sim.scenario import (
     read_scenario,
 )
 from pdclass.training.card import markdown, with_card
-from pdclass.training.evaluate import evaluate, judge
+from pdclass.training.evaluate import confused, evaluate, judge
 from pdclass.training.settings import TrainSettings
-from pdclass.training.study import CLEAR_DB, Family, Measured, clear, learning_curve, left_out
+from pdclass.training.study import CLEAR_DB, Family, Measured, Trainer, clear, learning_curve, left_out
 
 SEED = 20_250
 #: The circuits of the card's figures come from the same distributions by another seed.
@@ -97,7 +96,7 @@ def make_base(
         "sensor, rate and interference. "
         f"The height of planted pulses over the recorded noise is uniform in decibels from {low:g} to {high:g} dB, the "
         f"same law for every label; pulses were found by the extractor at {FALSE_EVENTS:g} false events a cycle.",
-        studies=_studies(parts, taught, tested, talk),
+        studies=_studies(parts, taught, tested, talk, _trained),
     )
     return write_bundle(out, parts, replace=replace_old)
 
@@ -114,16 +113,24 @@ def _neighbours(parts: BundleParts, tested: Measured) -> str:
     )
 
 
-def _studies(parts: BundleParts, taught: Measured, tested: Measured, talk: Talk) -> list[str]:
-    """Sections of the card: clear pulses, more circuits, families left out."""
+def _studies(
+    parts: BundleParts,
+    taught: Measured,
+    tested: Measured,
+    talk: Talk,
+    train: Trainer,
+    *,
+    least: int = STUDY_CIRCUITS,
+) -> list[str]:
+    """Sections of the card: clear pulses, more circuits, families left out; none for fewer than `least` circuits."""
     count = len(taught.traits)
-    if count < STUDY_CIRCUITS:
+    if count < least:
         return []
     judged = judge(parts, tested.values, tested.pulses)
     talk.say("learning curve")
-    curve = learning_curve(taught, tested, [count // 8, count // 4, count // 2, count], _trained)
+    curve = learning_curve(taught, tested, [count // 8, count // 4, count // 2, count], train)
     talk.say("families left out of training")
-    without = left_out(taught, tested, FAMILIES, _trained, parts)
+    without = left_out(taught, tested, FAMILIES, train, parts)
     return [
         f"## Clear pulses: {CLEAR_DB:g} dB and more over the noise",
         _CLEAR,
@@ -139,19 +146,6 @@ def _studies(parts: BundleParts, taught: Measured, tested: Measured, talk: Talk)
         _LEFT_OUT,
         markdown(without),
     ]
-
-
-def confused(judged: Any) -> pd.DataFrame:
-    """True label by row, likeliest label by column, as shares of the row with its circuits weighing equally."""
-    rows = {}
-    for name in judged.classes:
-        here = judged.of(name)
-        weight = 1.0 / pd.Series(judged.groups[here]).groupby(judged.groups[here]).transform("size").to_numpy(
-            np.float64
-        )
-        found = np.bincount(judged.verdict.likeliest[here], weight, minlength=len(judged.classes))
-        rows[name] = found / found.sum()
-    return pd.DataFrame(rows, index=list(judged.classes)).T.rename_axis("truth")
 
 
 def _trained(values: FloatArray, pulses: PulseSet) -> BundleParts:

@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -28,6 +27,7 @@ from pdclass.report.gallery_physics import (
     TABLE_MHZ,
     Journey,
     Spread,
+    bridge_patterns,
     chains,
     converter_intervals,
     journey,
@@ -48,168 +48,13 @@ from pdclass.report.gallery_plots import (
     ring_figure,
     spread_figure,
 )
+from pdclass.report.gallery_words import CROSSING, GROUPS, PATTERN_WORDS, WAYS
 from pdclass.report.plots import COLOURS, EDGE
 from pdclass.report.summary import CAUTIONS, SHORT_CAUTION
 from pdclass.report.templates import begin, drawn, template
 from pdclass.sim.ranges import Scenario
 from pdclass.sim.scenario import SIMULATOR_VERSION
 from pdclass.verdict.sentences import three_digits
-
-_WAYS: Mapping[str, str] = {
-    "cable": "on this cable",
-    "neighbour": "on a neighbour's cable, over the busbar",
-    "stress-cone": "core to screen",
-    "box": "core to cable box",
-    "bus": "busbar to enclosure",
-    "equipment": "at equipment on a dropper",
-    "radiated": "radiated into the loops of the station",
-    "screen": "conducted on the screen",
-    "feeder": "along a neighbour's cable",
-    "far-end": "along this cable from its far end",
-}
-
-
-@dataclass(frozen=True)
-class _Group:
-    """One kind of example: its name after `group_of`, and what the page says of it."""
-
-    name: str
-    label: str
-    title: str
-    words: str
-
-
-_GROUPS = (
-    _Group(
-        "near",
-        "cable",
-        "cable, 10 to 100 m away",
-        "The first arrival is still steep and the near end answers to it, so that a discharge in the first hundred "
-        "metres is not easily told from a local one.",
-    ),
-    _Group(
-        "middle",
-        "cable",
-        "cable, 100 to 500 m away",
-        "The edges have become slower, above 10 MHz little is left. What went on from the busbar into other cables "
-        "comes back from their ends, reversed; so does, later, what went the other way on this one.",
-    ),
-    _Group(
-        "far",
-        "cable",
-        "cable, beyond 500 m",
-        "A smooth, lopsided pulse: the high frequencies stay in the cable, the near end is hardly made to ring.",
-    ),
-    _Group(
-        "far end",
-        "cable",
-        "cable, at its far end",
-        "Equipment and termination at the other end of the cable: one whole length travelled, the next arrival two "
-        "lengths later.",
-    ),
-    _Group(
-        "neighbour",
-        "cable",
-        "a neighbour's cable",
-        "It arrives over the busbar. From one sensor alone it cannot be told from a pulse of this cable.",
-    ),
-    _Group(
-        "termination",
-        "local",
-        "local, at the termination",
-        "Nothing travelled: edges are as fast as source and sensor allow. Part of the charge leaves along the cable, "
-        "and its echo from the far end looks like a cable pulse.",
-    ),
-    _Group(
-        "first metres",
-        "local",
-        "local, within 10 m of the termination",
-        "As before; ten metres there and back are about a tenth of a microsecond.",
-    ),
-    _Group(
-        "box",
-        "local",
-        "local, from core to cable box",
-        "The charge does not return by the cable's screen but by the earthed box.",
-    ),
-    _Group(
-        "bus",
-        "switchgear",
-        "switchgear, busbar",
-        "The charge shakes the busbar's ladder of inductances and capacitances; its ring is what the strap carries.",
-    ),
-    _Group(
-        "equipment",
-        "switchgear",
-        "switchgear, transformer or bushing on a dropper",
-        "The same, with the dropper and its equipment as one more resonant circuit.",
-    ),
-    _Group(
-        "converter",
-        "interference",
-        "interference, converter",
-        "Edges of transistors with the ringing of their own circuit, two in every switching period.",
-    ),
-    _Group(
-        "thyristor",
-        "interference",
-        "interference, thyristor bridge",
-        "Slower and lower in frequency; locked to the mains, at both ends of each commutation.",
-    ),
-    _Group(
-        "switch-mode",
-        "interference",
-        "interference, switch-mode supply",
-        "Near the sensor, fast, in bursts whose spacing is a few microseconds.",
-    ),
-    _Group(
-        "arc",
-        "interference",
-        "interference, arc of a contact or brush",
-        "A spark is a spark: the current alone is like a discharge's. What differs is the way it comes.",
-    ),
-    _Group(
-        "radio-packet",
-        "interference",
-        "interference, packet of radio",
-        "A transmitter switched on and off, or a contact that rectifies: one frequency under an envelope.",
-    ),
-    _Group(
-        "line-corona",
-        "interference",
-        "interference, corona on an overhead line",
-        "A discharge in air, but not of the cable system. Where it arrives along a cable, its waveform cannot tell it "
-        "from a distant discharge.",
-    ),
-    _Group(
-        "sferic",
-        "interference",
-        "interference, lightning far away",
-        "Microseconds long, little above a few megahertz; leaders send trains of faster pulses.",
-    ),
-    _Group(
-        "switching-operation",
-        "interference",
-        "interference, switching elsewhere",
-        "An oscillation of the network that was switched; contacts that pre-strike send many.",
-    ),
-)
-_CROSSING = _Group(
-    "background",
-    "interference",
-    "interference, background that crossed the threshold",
-    "Nothing was planted here: noise, carriers and carrier communication where the extraction found a pulse. These "
-    "windows have the height that they have, not one that was chosen.",
-)
-_PATTERN_WORDS: Mapping[str, str] = {
-    "void": "void",
-    "surface": "surface",
-    "floating": "part without potential",
-    "corona": "corona, negative point",
-    "positive-corona": "corona, positive point",
-    "six-pulse": "six-pulse bridge",
-    "twelve-pulse": "twelve-pulse bridge",
-}
 
 
 def gallery_page(scenario: Scenario, *, seed: int) -> str:
@@ -269,9 +114,9 @@ def _facts(scenario: Scenario) -> list[str]:
 
 
 def _examples(scenario: Scenario, seed: int) -> list[dict[str, Any]]:
-    found = gather_examples(scenario, {group.name: group.label for group in _GROUPS}, seed=seed)
-    rows = [(group, found[group.name]) for group in _GROUPS]
-    rows.append((_CROSSING, gather_crossings(scenario, seed=seed)))
+    found = gather_examples(scenario, {group.name: group.label for group in GROUPS}, seed=seed)
+    rows = [(group, found[group.name]) for group in GROUPS]
+    rows.append((CROSSING, gather_crossings(scenario, seed=seed)))
     return [
         {"label": group.label, "title": group.title, "words": group.words, "rows": _rows(f"e{at}", examples)}
         for at, (group, examples) in enumerate(rows)
@@ -290,7 +135,7 @@ def _caption(example: Example) -> str:
     circuit = example.circuit
     placed = example.distance_m is not None and example.label in ("cable", "local")
     place = f", {_place_words(example.distance_m or 0.0)}" if placed else ""
-    way = f", {_WAYS[example.way]}" if example.way else ""
+    way = f", {WAYS[example.way]}" if example.way else ""
     charge = "" if example.charge_pc is None else f", {_charge_words(example.charge_pc)}"
     return (
         f"{example.family}{way}{place}{charge}. Cable: {circuit['cable']}, {float(str(circuit['length_m'])):.0f} m; "
@@ -349,9 +194,10 @@ def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
 
 
 def _patterns(scenario: Scenario, rng: np.random.Generator) -> list[dict[str, Any]]:
+    patterns = [*phase_patterns(scenario, rng=rng), *bridge_patterns(scenario, rng=rng)]
     panels = [
-        {"figure": drawn(pattern_figure(one, name=f"p{at}")), "caption": _PATTERN_WORDS[one.pattern]}
-        for at, one in enumerate(phase_patterns(scenario, rng=rng))
+        {"figure": drawn(pattern_figure(one, name=f"p{at}")), "caption": PATTERN_WORDS[one.pattern]}
+        for at, one in enumerate(patterns)
     ]
     intervals = converter_intervals(scenario, rng=rng)
     if intervals is not None:

@@ -10,7 +10,7 @@ import numpy as np
 from pdclass.pulses import FloatArray
 from pdclass.sim.cable import DB_PER_NEPER, Line, line_of
 from pdclass.sim.cable_kinds import Kind
-from pdclass.sim.disturbers import disturber_times
+from pdclass.sim.disturbers import disturber_signs, disturber_times
 from pdclass.sim.draw import log_even
 from pdclass.sim.drawn_cable import CableRanges, attenuation_spread, draw_cable, draw_lines, velocity_spread
 from pdclass.sim.drawn_chain import ChainRanges, draw_receiver
@@ -44,15 +44,19 @@ PATTERNS: tuple[Pattern, ...] = (
     "floating",
     "corona",
     "positive-corona",
-    "six-pulse",
-    "twelve-pulse",
 )
+#: Thyristor bridges by their commutations a cycle.
+BRIDGES = ("six", "twelve")
 
 _SIGMAS_IN_WIDTH = float(np.sqrt(8 * np.log(2)))
 _RATE_HZ = 1e9
 _MEDIAN_OF = 101
 _FOOT_NS = 1000
 _FIRST_HZ, _LAST_HZ = 0.1e6, 50e6
+#: At 50 Hz.
+_DEG_PER_S = 360 * 50.0
+#: More edges than any device has in what is shown of it.
+_ALL_EDGES = 100_000
 
 
 @dataclass(frozen=True)
@@ -215,12 +219,30 @@ def phase_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[Phas
     return found
 
 
+def bridge_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[PhasePattern]:
+    """Fifty cycles of a drawn thyristor bridge of six and one of twelve commutations; only those that the world has."""
+    disturbers = scenario.interference
+    if disturbers.families.get("thyristor", 0) <= 0:
+        return []
+    found = []
+    for bridge in BRIDGES:
+        if disturbers.thyristor.bridges.get(bridge, 0) <= 0:
+            continue
+        one = disturbers.thyristor.model_copy(update={"bridges": {bridge: 1.0}})
+        drawn = draw_disturber(disturbers.model_copy(update={"thyristor": one}), family="thyristor", rng=rng)
+        repetition, at = drawn.repetition, {"start_deg": 0.0, "deg_per_s": _DEG_PER_S}
+        times = disturber_times(repetition, CYCLES * 360 / _DEG_PER_S, _ALL_EDGES, **at, rng=rng)
+        signs = disturber_signs(repetition, times, **at, rng=rng)
+        found.append(PhasePattern(f"{bridge} commutations", np.mod(times * _DEG_PER_S, 360.0), signs))
+    return found
+
+
 def converter_intervals(scenario: Scenario, *, rng: np.random.Generator) -> Intervals | None:
     """Time between the pulses of one drawn converter over two tenths of a second; None where the world has none."""
     if scenario.interference.families.get("converter", 0) <= 0:
         return None
     disturber = draw_disturber(scenario.interference, family="converter", rng=rng)
-    times = disturber_times(disturber.repetition, 0.2, 100_000, start_deg=0.0, deg_per_s=18e3, rng=rng)
+    times = disturber_times(disturber.repetition, 0.2, _ALL_EDGES, start_deg=0.0, deg_per_s=_DEG_PER_S, rng=rng)
     return Intervals(np.diff(times) * 1e6, disturber.repetition.hz)
 
 

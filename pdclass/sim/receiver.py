@@ -119,7 +119,10 @@ class Receiver:
 
     @property
     def transfer_ohm(self) -> float:
-        """Mid-band transfer impedance at the digitiser [V/A]."""
+        """Mid-band transfer impedance at the digitiser, without the lead's loss and mismatch [V/A].
+
+        With them 0.85 to 1.02 of it remains (median over the band; 99 of 100 chains of the base world).
+        """
         return self.load_ohm / self.transformer.turns
 
     @property

@@ -287,6 +287,24 @@ def _confusion(judged: Judged) -> pd.DataFrame:
     return pd.DataFrame(counts, index=pd.Index(judged.classes, name="truth"), columns=names)
 
 
+def confused(judged: Judged) -> pd.DataFrame:
+    """True label by row, likeliest label by column, as shares of the row in which groups weigh equally.
+
+    Returns
+    -------
+    pd.DataFrame
+        Every row sums to one; a class without pulses has none.
+    """
+    rows = {
+        name: [
+            over_groups(judged.verdict.likeliest == place, judged.groups, here) for place in range(len(judged.classes))
+        ]
+        for name in judged.classes
+        if (here := judged.of(name)).any()
+    }
+    return pd.DataFrame(rows, index=list(judged.classes), dtype=np.float64).T.rename_axis("truth")
+
+
 def _by_class(judged: Judged) -> pd.DataFrame:
     rows = [{"class": name, **_row(judged, judged.of(name))} for name in judged.classes]
     return pd.DataFrame(rows).set_index("class")

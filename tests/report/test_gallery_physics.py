@@ -3,7 +3,14 @@
 import numpy as np
 import pytest
 
-from pdclass.report.gallery_physics import converter_intervals, journey, kinds_of, spread, strongest_ring
+from pdclass.report.gallery_physics import (
+    bridge_patterns,
+    converter_intervals,
+    journey,
+    kinds_of,
+    spread,
+    strongest_ring,
+)
 from pdclass.sim.drawn_cable import CableRanges
 from pdclass.sim.ranges import Scenario
 
@@ -65,6 +72,27 @@ def test_two_neighbouring_intervals_of_a_converter_make_its_period():
     """Up to jitter the mean of the intervals is half a period: two edges in each."""
     found = converter_intervals(Scenario(name="w"), rng=np.random.default_rng(4))
     assert found.interval_us.mean() == pytest.approx(0.5e6 / found.switching_hz, rel=0.02)
+
+
+def test_bridges_commutate_at_their_phases():
+    """At both ends of six and of twelve commutations in each of fifty cycles, the ends of turning sign."""
+    patterns = bridge_patterns(Scenario(name="w"), rng=np.random.default_rng(4))
+    for pattern, per_cycle in zip(patterns, (6, 12), strict=True):
+        assert pattern.phase_deg.size == pytest.approx(2 * per_cycle * 50, abs=2)
+        assert set(pattern.size[::2]) | set(pattern.size[1::2]) == {1.0, -1.0}
+        # two sharp places in each sixth or twelfth of the cycle: the firing, and the end of the overlap
+        turns = np.exp(2j * np.pi * per_cycle * pattern.phase_deg / 360)
+        for sign in (1, -1):
+            assert np.abs(turns[pattern.size == sign].mean()) > 0.9
+
+
+def test_a_world_without_bridges_shows_none():
+    """Without thyristors there is no pattern of one, and of bridges only those that the world has."""
+    quiet = Scenario.model_validate({"name": "w", "interference": {"families": {"arc": 1.0}}})
+    assert bridge_patterns(quiet, rng=np.random.default_rng(4)) == []
+    twelve = Scenario.model_validate({"name": "w", "interference": {"thyristor": {"bridges": {"twelve": 1.0}}}})
+    found = bridge_patterns(twelve, rng=np.random.default_rng(4))
+    assert [one.pattern for one in found] == ["twelve commutations"]
 
 
 def test_a_world_without_converters_or_with_a_measured_line_says_so():

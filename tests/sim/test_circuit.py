@@ -1,9 +1,13 @@
 """The label of a source is where its charge enters, and nothing else."""
 
+from collections import Counter
+
 import numpy as np
 import pytest
+from scipy import stats
 
 from pdclass.sim.circuit import draw_circuit
+from pdclass.sim.drawn_source import most_charge_pc
 from pdclass.sim.grid import LEAD_S, laplace_grid, to_samples
 from pdclass.sim.ranges import Scenario
 from pdclass.sim.receiver import saturated
@@ -42,6 +46,28 @@ def test_discharges_have_one_law():
     ]
     error = np.sqrt(sum(width.var() / width.size for width in widths))
     assert max(width.mean() for width in widths) - min(width.mean() for width in widths) < 3 * error
+
+
+def test_the_kind_of_a_discharge_tells_nothing_of_its_place():
+    """Kinds are as frequent in cable, local and switchgear: what is too weak to be heard is so whatever its label."""
+    count = {
+        label: Counter(s.family for s in SOURCES if s.label == label) for label in ("cable", "local", "switchgear")
+    }
+    kinds = sorted(set().union(*count.values()))
+    table = np.array([[held[kind] for kind in kinds] for held in count.values()])
+    assert stats.chi2_contingency(table).pvalue > 1e-3
+
+
+def test_drawn_discharges_have_charges_that_their_kind_has():
+    """At the middle of the heights hardly any needs more charge than its kind has."""
+    too_much = [
+        circuit.noise_v * 10 ** (np.mean(source.snr_db) / 20) / source.volts_per_coulomb * 1e12
+        > most_charge_pc(WORLD.source, source.family)
+        for circuit in CIRCUITS
+        for source in circuit.sources
+        if source.label != "interference"
+    ]
+    assert np.mean(too_much) < 0.03
 
 
 @pytest.mark.parametrize("place", range(0, len(SOURCES), 9))

@@ -3,7 +3,14 @@
 import numpy as np
 import pytest
 
-from pdclass.sim.disturbers import Repetition, burst_times, commutation_times, disturber_times, switching_times
+from pdclass.sim.disturbers import (
+    Repetition,
+    burst_times,
+    commutation_times,
+    disturber_signs,
+    disturber_times,
+    switching_times,
+)
 
 MAINS = {"start_deg": 77.0, "deg_per_s": 360 * 50.0}
 KINDS = [
@@ -95,3 +102,18 @@ def test_corona_keeps_to_its_half_cycle():
     times = disturber_times(repetition, 0.2, 400, **MAINS, rng=np.random.default_rng(11))
     phases = np.mod(77.0 + times * 360 * 50.0, 360.0)
     assert (phases > 180).mean() > 0.9
+
+
+def test_polarities_follow_what_sends():
+    """Edges alternate, corona has the sign of its half cycle, a burst has one sign, random pulses have either."""
+    locked = {"start_deg": 0.0, "deg_per_s": 18000.0}
+
+    def signs(repetition, times):
+        return disturber_signs(repetition, np.array(times), rng=np.random.default_rng(2), **locked)
+
+    assert signs(Repetition("switching", hz=5e3), [1e-4, 2e-4, 3e-4]).tolist() == [1, -1, 1]
+    corona = Repetition("mains-locked", pattern="corona")
+    assert signs(corona, [5e-3, 15e-3, 25e-3]).tolist() == [1, -1, 1]
+    burst = signs(Repetition("bursts", burst_pulses=3, burst_s=1e-4), [0, 2e-5, 4e-5, 5e-3, 5.01e-3])
+    assert len(set(burst[:3])) == len(set(burst[3:])) == 1
+    assert set(signs(Repetition("random"), np.linspace(0, 1e-2, 60))) == {-1.0, 1.0}

@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from pdclass.sim.circuit import draw_circuit
+from pdclass.sim.interference import carriers_wave
 from pdclass.sim.ranges import Scenario
 from pdclass.sim.record import Plan, draw_plan, draw_signal, draw_timeline, plant
 
@@ -101,3 +102,25 @@ def test_converter_has_no_more_pulses_than_edges():
         plan = draw_plan(source, 10_000, timeline, rng=np.random.default_rng(3))
         assert abs(plan.onset.size - 2 * source.repetition.hz * 3e-3) <= 4
     assert converters
+
+
+def test_carriers_do_not_begin_with_the_visit():
+    """Two visits to one circuit hear the same carriers at other instants: their background is not the same."""
+    circuit = next(c for c in map(_circuit, range(24)) if len(c.reception.carriers) > 2)
+    visits = [draw_timeline(WORLD.capture, circuit, rng=np.random.default_rng(seed)) for seed in (1, 2)]
+    assert visits[0].clock != visits[1].clock
+    one, two = (
+        carriers_wave(circuit.reception.carriers, visit.clock, 4000, circuit.receiver.rate_hz) for visit in visits
+    )
+    assert abs(np.corrcoef(one, two)[0, 1]) < 0.9
+
+
+def test_a_point_in_air_has_one_polarity_but_for_strays():
+    """Corona pulses of one source have the sign of their half cycle, as its model says."""
+    sources = [s for index in range(40) for s in _circuit(index).sources if s.family == "line-corona"]
+    cycles = WORLD.capture.model_copy(update={"duration_ms": 40.0})
+    timeline = draw_timeline(cycles, _circuit(0), rng=np.random.default_rng(1))
+    assert sources
+    for source in sources:
+        sign = draw_plan(source, 200, timeline, rng=np.random.default_rng(3)).sign
+        assert abs(sign.mean()) > 0.5

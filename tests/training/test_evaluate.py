@@ -13,9 +13,11 @@ from pdclass.pulses import LABELS, PulseSet
 from pdclass.training.evaluate import (
     CALIBRATION_BINS,
     calibration_error,
+    confused,
     evaluate,
     group_interval,
     half_distance,
+    judge,
     over_groups,
 )
 
@@ -108,6 +110,35 @@ def test_absent_classes_leave_no_figure(parts):
     assert figures["switchgear_as_interference_share"] is None
     assert figures["switchgear_as_interference_high"] is None
     assert figures["cable_half_distance_m"] is None
+
+
+def test_rows_of_confusion_weigh_groups_equally(parts, seen):
+    """Each row is the mean over its circuits of the shares within each, and sums to one."""
+    values, pulses, _ = seen
+    judged = judge(parts, values, pulses)
+    table = confused(judged)
+    frame = pd.DataFrame({
+        "truth": np.array(LABELS, object)[judged.truth], "group": judged.groups,
+        "likeliest": np.array(LABELS, object)[judged.verdict.likeliest],
+    })  # fmt: skip
+    shares = pd.crosstab([frame["truth"], frame["group"]], frame["likeliest"], normalize="index")
+    want = shares.groupby("truth").mean().reindex(index=list(LABELS), columns=list(LABELS), fill_value=0.0)
+    assert table.index.name == "truth"
+    assert table.columns.tolist() == list(LABELS)
+    assert table.to_numpy() == pytest.approx(want.to_numpy())
+    assert table.sum(axis=1).to_numpy() == pytest.approx(1.0)
+
+
+def test_a_small_group_confuses_as_much_as_a_large_one(parts, seen):
+    """By hand: eight pulses of one circuit all right, two of another all taken for local, make one half each."""
+    judged = judge(parts, seen[0], seen[1])
+    ten = judged.where(np.arange(len(judged.truth)) < 10)
+    likeliest = np.repeat([LABELS.index("cable"), LABELS.index("local")], [8, 2])
+    groups = np.array(["a"] * 8 + ["b"] * 2, object)
+    truth = np.full(10, LABELS.index("cable"))
+    table = confused(ten._replace(truth=truth, groups=groups, verdict=ten.verdict._replace(likeliest=likeliest)))
+    assert table.index.tolist() == ["cable"]
+    assert table.loc["cable"].to_dict() == {"cable": 0.5, "local": 0.5, "switchgear": 0.0, "interference": 0.0}
 
 
 def test_bad_input_is_said(parts):

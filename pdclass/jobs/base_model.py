@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import sys
+from collections.abc import Sequence
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -96,7 +98,7 @@ def make_base(
         "sensor, rate and interference. "
         f"The height of planted pulses over the recorded noise is uniform in decibels from {low:g} to {high:g} dB, the "
         f"same law for every label; pulses were found by the extractor at {FALSE_EVENTS:g} false events a cycle.",
-        studies=_studies(parts, taught, tested, talk, _trained),
+        studies=_studies(parts, taught, tested, talk, partial(_trained, jobs=jobs)),
     )
     return write_bundle(out, parts, replace=replace_old)
 
@@ -148,7 +150,12 @@ def _studies(
     ]
 
 
-def _trained(values: FloatArray, pulses: PulseSet) -> BundleParts:
+def _trained(sets: Sequence[Measured], *, jobs: int) -> list[BundleParts]:
+    calls = [(one.values, one.pulses) for one in sets]
+    return each(_fitted, calls, jobs=jobs, talk=SILENT, words="trainings")
+
+
+def _fitted(values: FloatArray, pulses: PulseSet) -> BundleParts:
     return fit(values, pulses, TrainSettings(), provenance={})
 
 

@@ -5,8 +5,9 @@ reference pulses, then clipped at +-8, so that one wild feature weighs in but ca
 The distance between two pulses is the mean absolute difference over the features that both have; the novelty of
 a pulse is its distance to the fifth-nearest reference pulse.
 
-Missing values: a pair that shares fewer than half of the features is not compared, and a pulse that has fewer
-than half of the features, or fewer than five reference pulses to be compared with, is infinitely far.
+Missing values: a feature that a pulse lacks (no later copy, a band within the noise) says nothing of it. A pair is
+compared if it shares half of the features that the pulse has, and a quarter of all; a pulse that has fewer than a
+quarter of all, or fewer than five reference pulses to be compared with, is infinitely far.
 """
 
 from __future__ import annotations
@@ -130,12 +131,13 @@ def _nearest(
     total, shared = np.empty(n_reference), np.empty(n_reference)
     for row in range(rows.shape[0]):
         total[:], shared[:] = 0.0, 0.0
+        own = np.sum(~np.isnan(rows[row]))
         # all reference pulses side by side, feature after feature: each pair is summed in one fixed order
         for f in range(n_features):
             _add_gaps(rows[row, f], columns[f], total, shared)
         best = np.full(neighbours, np.inf)
         for other in range(n_reference):
-            if 2 * shared[other] < n_features or of_reference[other] == of_rows[row]:
+            if 2 * shared[other] < own or 4 * shared[other] < n_features or of_reference[other] == of_rows[row]:
                 continue
             distance, place = total[other] / shared[other], neighbours - 1
             if distance >= best[place]:

@@ -39,7 +39,7 @@ class TrainSettings(Settings):
     mix: dict[str, float] | None = None
     group_by: Literal["circuit-and-site", "circuit"] = "circuit-and-site"
     seed: Annotated[int, Field(ge=0, lt=2**32)] = 0
-    max_trees: Annotated[int, Field(ge=1, le=2000)] = 200
+    max_trees: Annotated[int, Field(ge=1, le=2000)] = 300
     max_depth: Annotated[int, Field(ge=1, le=16)] = 6
     max_leaf_nodes: Annotated[int, Field(ge=2, le=255)] = 24
     learning_rate: Annotated[float, Field(gt=0, le=1)] = 0.1

@@ -8,14 +8,15 @@ from typing import Any, NamedTuple
 import numpy as np
 import pandas as pd
 
-from pdclass.model.bundle import BundleParts, Classifier
+from pdclass.model.bundle import Classifier
 from pdclass.pulses import FloatArray, PulseSet
 from pdclass.training.evaluate import Judged, Mask, clear_figures, judge
 
 #: Pulses below this height over the noise are left out of the studies [dB].
 CLEAR_DB = 15.0
 
-Trainer = Callable[[FloatArray, PulseSet], BundleParts]
+#: Trains on each of some sets of pulses; a job may do so in several processes.
+Trainer = Callable[[Sequence["Measured"]], Sequence[Classifier]]
 
 
 class Measured(NamedTuple):
@@ -69,11 +70,11 @@ def learning_curve(taught: Measured, tested: Measured, counts: Sequence[int], tr
     counts : numbers of circuits, each at most that of `taught`.
     """
     circuits = list(dict.fromkeys(taught.traits.index))
-    rows = []
-    for count in counts:
-        part = taught.where(taught.of_circuits(circuits[:count]))
-        judged = judge(train(part.values, part.pulses), tested.values, tested.pulses)
-        rows.append({"circuits": count, **clear(judged)})
+    parts = [taught.where(taught.of_circuits(circuits[:count])) for count in counts]
+    rows = [
+        {"circuits": count, **clear(judge(classifier, tested.values, tested.pulses))}
+        for count, classifier in zip(counts, train(parts), strict=True)
+    ]
     return pd.DataFrame(rows)
 
 
@@ -82,10 +83,10 @@ def left_out(
 ) -> pd.DataFrame:
     """For each family two rows: taught with and without it, scored on the tested circuits where it is met."""
     rows = []
-    for family in families:
+    trained = train([taught.where(~_of(taught, family)) for family in families])
+    for family, lacking in zip(families, trained, strict=True):
         with_it = tested.where(_met(tested, family))
-        without = taught.where(~_of(taught, family))
-        for word, classifier in (("known", full), ("left out", train(without.values, without.pulses))):
+        for word, classifier in (("known", full), ("left out", lacking)):
             judged = judge(classifier, with_it.values, with_it.pulses)
             met = {"pulses": len(judged.truth), "circuits": len(set(judged.groups))}
             rows.append({"family": family.name, "training": word, **met, **clear(judged)})

@@ -40,15 +40,25 @@ def test_units_do_not_matter():
 
 
 def test_a_pulse_with_too_few_features_is_unfamiliar():
-    """Fewer than half of the features: infinitely far; exactly half: compared."""
+    """Fewer than a quarter of the features: infinitely far; a third: compared, if half of it is shared."""
     values, groups = cloud()
     reference = fit_novelty(values, groups, values, groups)
     asked = np.zeros((2, 6))
-    asked[0, :4], asked[1, :3] = np.nan, np.nan
+    asked[0, :5], asked[1, :4] = np.nan, np.nan
     far = novelty(reference, asked)
     assert np.isinf(far[0])
     assert np.isfinite(far[1])
     assert unfamiliar(reference, far)[0]
+
+
+def test_features_that_a_pulse_lacks_do_not_make_it_unfamiliar():
+    """Pulses of a kind known with half of its features missing are as near as ever."""
+    values, groups = cloud(400)
+    values[::2, 3:] = np.nan
+    reference = fit_novelty(values[:200], groups[:200], values[200:], groups[200:])
+    fresh, _ = cloud(200, 12)
+    fresh[:, 3:] = np.nan
+    assert unfamiliar(reference, novelty(reference, fresh)).mean() < 0.1
 
 
 def test_an_infinitely_far_pulse_is_unfamiliar_even_without_a_limit():

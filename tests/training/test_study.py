@@ -14,6 +14,10 @@ def _trained(values, pulses):
     return train(values, NAMES, DIGESTS, pulses, QUICK)
 
 
+def _each(sets):
+    return [_trained(one.values, one.pulses) for one in sets]
+
+
 def _measured(circuits, seed, prefix):
     values, pulses = blobs(circuits, seed=seed, prefix=prefix)
     names = list(dict.fromkeys(pulses.table["circuit"]))
@@ -36,7 +40,7 @@ def tested():
 
 def test_more_circuits_do_not_harm(taught, tested):
     """The curve has a row for each number of circuits, and all of them do better than a few."""
-    curve = learning_curve(taught, tested, [12, 48], _trained)
+    curve = learning_curve(taught, tested, [12, 48], _each)
     assert curve["circuits"].tolist() == [12, 48]
     assert curve["balanced_accuracy"].iloc[1] > curve["balanced_accuracy"].iloc[0] - 0.02
     assert curve["coverage_least_class"].between(0.6, 1).all()
@@ -45,7 +49,7 @@ def test_more_circuits_do_not_harm(taught, tested):
 def test_the_last_point_is_the_whole_training(taught, tested):
     """Taught with all circuits the curve is what the bundle itself shows."""
     parts = _trained(taught.values, taught.pulses)
-    curve = learning_curve(taught, tested, [48], _trained)
+    curve = learning_curve(taught, tested, [48], _each)
     assert curve.drop(columns="circuits").iloc[0].to_dict() == clear(judge(parts, tested.values, tested.pulses))
 
 
@@ -56,7 +60,7 @@ def test_a_family_left_out_is_scored_where_it_is_met(taught, tested):
         Family("paper", circuits=lambda traits: traits["cable"] == "paper"),
         Family("arc", pulses="arc"),
     )
-    rows = left_out(taught, tested, families, _trained, full)
+    rows = left_out(taught, tested, families, _each, full)
     assert rows[["family", "training"]].to_numpy().tolist() == [
         ["paper", "known"], ["paper", "left out"], ["arc", "known"], ["arc", "left out"],
     ]  # fmt: skip
@@ -67,9 +71,9 @@ def test_nothing_of_a_left_out_family_is_taught(taught, tested):
     """The training without a family sees neither its circuits nor its pulses, and all the rest."""
     seen = []
 
-    def spying(values, pulses):
-        seen.append(pulses.table)
-        return _trained(values, pulses)
+    def spying(sets):
+        seen.extend(one.pulses.table for one in sets)
+        return _each(sets)
 
     full = _trained(taught.values, taught.pulses)
     families = (Family("paper", circuits=lambda traits: traits["cable"] == "paper"), Family("arc", pulses="arc"))

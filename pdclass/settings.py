@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import difflib
 import tomllib
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TypeVar
 
@@ -47,7 +48,7 @@ def read_settings(path: Path, model: type[Model]) -> Model:
         or a value out of bounds.
     """
     try:
-        content = tomllib.loads(path.read_text(encoding="utf-8"))
+        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
     except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
         raise InputError(f"{path}: not readable as TOML: {error}") from None
     try:
@@ -64,8 +65,21 @@ def _first_complaint(error: ValidationError, model: type[Settings]) -> str:
         found = repr(first["input"])
         said = f"{where}: {first['msg'].removeprefix('Value error, ')}"
         return f"{said}, found {found}" if len(found) <= _LONGEST_FOUND else said
-    near = difflib.get_close_matches(str(first["loc"][-1]), _known_keys(model), n=1, cutoff=0.0)
+    odd, here = str(first["loc"][-1]), _fields_at(model, first["loc"][:-1])
+    near = difflib.get_close_matches(odd, here, n=1) or difflib.get_close_matches(
+        odd, _known_keys(model), n=1, cutoff=0.0
+    )
     return f"{where}: unknown key; the nearest known one is '{near[0]}'"
+
+
+def _fields_at(model: type[BaseModel], place: Sequence[int | str]) -> list[str]:
+    """Names of the fields of the table at a place within settings."""
+    for name in place:
+        if isinstance(name, str) and name in model.model_fields:
+            annotation = model.model_fields[name].annotation
+            inner = [one for one in (annotation, *getattr(annotation, "__args__", ())) if isinstance(one, type)]
+            model = next((one for one in inner if issubclass(one, BaseModel)), model)
+    return list(model.model_fields)
 
 
 def _known_keys(model: type[BaseModel]) -> list[str]:

@@ -16,7 +16,7 @@ from pdclass.jobs.gallery import GALLERY, write_gallery
 from pdclass.jobs.talk import SILENT, Talk, each
 from pdclass.pulses import Annotation, Capture, PulseSet
 from pdclass.settings import shipped
-from pdclass.sim.scenario import Scenario, capture_count, read_scenario, simulate_capture
+from pdclass.sim.scenario import Scenario, capture_count, circuit_of, read_scenario, simulate_capture
 
 #: After a planted pulse its echoes may be found for so long; what is found later is background.
 SHADOW_S = 70e-6
@@ -44,7 +44,7 @@ def scenario_path(name: str | Path) -> Path:
     if path.is_file():
         return path
     inside = shipped("synthetic") / f"{path.name.removesuffix('.toml')}.toml"
-    if inside.is_file():
+    if inside.is_file() and path.name == str(name):
         return inside
     known = ", ".join(sorted(file.stem for file in shipped("synthetic").glob("*.toml")))
     raise InputError(f"{name}: no such scenario file; shipped ones are {known}")
@@ -80,9 +80,10 @@ def simulate(
         If the scenario is not usable or the folder is not empty.
     """
     world = read_scenario(scenario_path(scenario))
+    # what cannot be drawn says so before anything of an earlier run is touched
+    circuit_of(world, 1, seed=seed)
     fresh_folder(out, force=force)
-    for old in [*out.glob(f"{world.name}-[0-9]*.sigmf-*"), *out.glob("pulses*.parquet"), *out.glob(GALLERY)]:
-        old.unlink()
+    _clear(out, world.name)
     numbers = range(1, (captures or capture_count(world)) + 1)
     calls = [(world, number, seed, pulses, out) for number in numbers]
     made = each(_capture_to_disk, calls, jobs=jobs, talk=talk, words="captures simulated")
@@ -92,12 +93,31 @@ def simulate(
 
 
 def fresh_folder(out: Path, *, force: bool) -> None:
-    """Make a folder, and refuse one that holds something unless told otherwise."""
-    if out.exists() and not out.is_dir():
-        raise InputError(f"{out}: expected a folder, found a file; choose another name")
-    if out.is_dir() and any(out.iterdir()) and not force:
-        raise InputError(f"{out}: expected an empty folder, found files in it; choose another name or --force")
-    out.mkdir(parents=True, exist_ok=True)
+    """Make a folder, and refuse one that holds something unless told otherwise.
+
+    Raises
+    ------
+    InputError
+        If it is no folder, holds something, or cannot be made.
+    """
+    try:
+        if out.exists() and not out.is_dir():
+            raise InputError(f"{out}: expected a folder, found a file; choose another name")
+        if out.is_dir() and any(out.iterdir()) and not force:
+            raise InputError(f"{out}: expected an empty folder, found files in it; choose another name or --force")
+        out.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise InputError(f"{out}: cannot be made a folder: {error.strerror}; choose another name") from None
+
+
+def _clear(out: Path, name: str) -> None:
+    """Take away what an earlier run of the same world has written."""
+    tables = [out / "pulses.parquet", *out.glob("pulses-*MSps.parquet")]
+    for old in [*out.glob(f"{name}-[0-9][0-9][0-9][0-9]*.sigmf-*"), *tables, out / GALLERY]:
+        try:
+            old.unlink(missing_ok=True)
+        except OSError as error:
+            raise InputError(f"{old}: cannot be replaced: {error.strerror}; choose another --out") from None
 
 
 def labelled_pulses(capture: Capture, settings: ExtractSettings) -> Extraction:

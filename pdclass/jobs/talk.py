@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Iterable, Sequence
 from typing import Any, Protocol, TypeVar
 
 from joblib import Parallel, delayed
+
+#: More processes than this for each core only take memory.
+_MOST_A_CORE = 4
 
 Item = TypeVar("Item")
 Result = TypeVar("Result")
@@ -43,7 +47,8 @@ def each(
 
     Every worker has one thread for linear algebra: spinning threads slow a small machine down many times.
     """
-    if jobs == 1:
+    jobs = min(jobs, len(calls), _MOST_A_CORE * (os.cpu_count() or 1))
+    if jobs <= 1:
         return list(talk.track((function(*call) for call in calls), words, len(calls)))
     pool = Parallel(n_jobs=jobs, return_as="generator", inner_max_num_threads=1, backend="loky")
     return list(talk.track(pool(delayed(function)(*call) for call in calls), words, len(calls)))

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from pdclass.report.gallery_curve import CurveFit, Misfit, curve_fit, curve_journey, curve_name
 from pdclass.report.gallery_examples import (
     LEVEL_HZ,
     Backdrop,
@@ -21,7 +22,6 @@ from pdclass.report.gallery_physics import (
     CHARGE_US,
     CYCLES,
     INJECTED_NS,
-    KINDS,
     RINGS,
     STATIONS,
     TABLE_MHZ,
@@ -39,6 +39,7 @@ from pdclass.report.gallery_physics import (
 from pdclass.report.gallery_plots import (
     backdrop_figure,
     chain_figure,
+    curve_figure,
     distance,
     example_figure,
     interval_figure,
@@ -48,7 +49,8 @@ from pdclass.report.gallery_plots import (
     ring_figure,
     spread_figure,
 )
-from pdclass.report.gallery_words import CROSSING, GROUPS, PATTERN_WORDS, WAYS
+from pdclass.report.gallery_quoted import beside_quoted
+from pdclass.report.gallery_words import CROSSING, CURRENTS, GROUPS, PATTERN_WORDS, WAYS
 from pdclass.report.plots import COLOURS, EDGE
 from pdclass.report.summary import CAUTIONS, SHORT_CAUTION
 from pdclass.report.templates import begin, drawn, template
@@ -66,22 +68,28 @@ def gallery_page(scenario: Scenario, *, seed: int) -> str:
     seed : of the world, >= 0.
     """
     rngs = [np.random.default_rng(child) for child in np.random.SeedSequence(seed).spawn(5)]
-    kinds = kinds_of(scenario.cable)
-    travels = [journey(scenario.cable, kind, rng=rngs[0]) for kind in KINDS if kind in kinds]
+    kinds, curve = kinds_of(scenario.cable), scenario.cable.curve
+    travels = [journey(scenario.cable, kind, rng=rngs[0]) for kind in kinds]
+    travels += [] if curve is None else [curve_journey(curve)]
+    shown = _examples(scenario, seed)
+    patterns = _patterns(scenario, rngs[3])
     near = near_ends(scenario, rng=rngs[1])
     return template("gallery.html.j2").render(
         scenario=scenario.name,
         seed=seed,
         version=SIMULATOR_VERSION,
         facts=_facts(scenario),
-        groups=_examples(scenario, seed),
+        groups=[group for group in shown if group["rows"]],
+        missing=[group["title"] for group in shown if not group["rows"]],
         journeys=[_journey(one, place) for place, one in enumerate(travels)],
         spreads=[_spread(spread(scenario.cable, kind, seed=seed), f"v{at}") for at, kind in enumerate(kinds)],
+        curve=None if curve is None else _curve(scenario, curve_fit(curve)),
         near_end=drawn(near_end_figure(near, name="n")),
         rings=drawn(ring_figure(near, name="q")),
         ring=_ring_words(near.ring_mhz, near.ring_q),
         chain=drawn(chain_figure(chains(scenario.chain, rng=rngs[2]), name="z")),
-        patterns=_patterns(scenario, rngs[3]),
+        patterns=list(patterns.values()),
+        missing_patterns=[words for name, words in PATTERN_WORDS.items() if name not in patterns],
         backdrops=[_backdrop(one, f"b{at}") for at, one in enumerate(gather_backdrops(scenario, seed=seed))],
         counts={"cables": CABLES, "stations": STATIONS, "rings": RINGS, "chains": CHAINS, "cycles": CYCLES},
         injected_ns=INJECTED_NS,
@@ -97,20 +105,42 @@ def gallery_page(scenario: Scenario, *, seed: int) -> str:
 
 def _facts(scenario: Scenario) -> list[str]:
     """What the scenario is, in a few lines."""
+    chain, panels = scenario.chain, scenario.near_end.panels
+    rates = ", ".join(f"{rate / 1e6:g}" for rate in chain.rates_hz)
+    own = len(scenario.near_end.roles)
+    return [
+        *_circuit_facts(scenario),
+        f"near ends of {own or _span(*panels)} panels",
+        f"sampled at {rates} MS/s with {_span(min(chain.bits), max(chain.bits))} bit",
+    ]
+
+
+def _circuit_facts(scenario: Scenario) -> list[str]:
+    lines = _line_words(scenario)
     if scenario.circuit:
         names = ", ".join(entry.name for entry in scenario.circuit)
-        return [f"circuits that the scenario names: {names}"]
-    cable, near, chain = scenario.cable, scenario.near_end, scenario.chain
-    kinds = ", ".join(f"{name} {weight:g}" for name, weight in cable.kinds.items() if weight > 0)
-    rates = ", ".join(f"{rate / 1e6:g}" for rate in chain.rates_hz)
-    panels = len(near.roles) or f"{near.panels[0]} to {near.panels[1]}"
+        return [f"circuits that the scenario names: {names}", f"cables: {lines}"]
+    count = f"{scenario.circuits} circuits, each drawn for itself" if scenario.circuits > 1 else "one circuit, drawn"
     return [
-        f"{scenario.circuits} circuits, each drawn for itself",
-        f"cables of {cable.length_m[0]:g} to {cable.length_m[1]:g} m; kinds by weight: {kinds}",
-        f"near ends of {panels} panels",
-        f"sampled at {rates} MS/s with {min(chain.bits)} to {max(chain.bits)} bit",
-        f"pulses of {scenario.snr_db[0]:g} to {scenario.snr_db[1]:g} dB over the noise, the same for every class",
+        count,
+        f"cables of {_span(*scenario.cable.length_m)} m: {lines}",
+        f"pulses of {_span(*scenario.snr_db)} dB over the noise, the same for every class",
     ]
+
+
+def _line_words(scenario: Scenario) -> str:
+    cable = scenario.cable
+    if cable.curve is not None:
+        return curve_name(cable.curve)
+    kinds = {name: weight for name, weight in cable.kinds.items() if weight > 0}
+    if len(kinds) == 1:
+        return f"{next(iter(kinds))}"
+    return f"kinds by weight: {', '.join(f'{name} {weight:g}' for name, weight in kinds.items())}"
+
+
+def _span(low: float, high: float) -> str:
+    """A range in words; a known value by itself."""
+    return f"{low:g}" if low == high else f"{low:g} to {high:g}"
 
 
 def _examples(scenario: Scenario, seed: int) -> list[dict[str, Any]]:
@@ -137,11 +167,13 @@ def _caption(example: Example) -> str:
     place = f", {_place_words(example.distance_m or 0.0)}" if placed else ""
     way = f", {WAYS[example.way]}" if example.way else ""
     charge = "" if example.charge_pc is None else f", {_charge_words(example.charge_pc)}"
+    faint = " A faint one: the largest charge of its kind is not seen better here." if example.faint else ""
     return (
-        f"{example.family}{way}{place}{charge}. Cable: {circuit['cable']}, {float(str(circuit['length_m'])):.0f} m; "
-        f"{circuit['panels']} panels. Chain {three_digits(low / 1e6)} to {three_digits(high / 1e6)} MHz, "
+        f"{CURRENTS.get(example.family, example.family)}{way}{place}{charge}. "
+        f"Cable: {circuit['cable']}, {float(str(circuit['length_m'])):.0f} m; {circuit['panels']} panels. "
+        f"Chain {three_digits(low / 1e6)} to {three_digits(high / 1e6)} MHz, "
         f"{example.rate_hz / 1e6:g} MS/s, {circuit['bits']} bit. Peak {three_digits(example.peak_mv)} mV, "
-        f"{example.snr_db:.0f} dB over the noise."
+        f"{example.snr_db:.0f} dB over the noise.{faint}"
     )
 
 
@@ -183,7 +215,30 @@ def _spread(found: Spread, name: str) -> dict[str, Any]:
         rows.append(
             {"mhz": f"{mhz:g}", "losses": losses, "speeds": [f"{value:.0f}" for value in found.m_per_us[:, at]]}
         )
-    return {"kind": found.kind, "figure": drawn(spread_figure(found, name=name)), "rows": rows}
+    return {
+        "kind": found.kind,
+        "figure": drawn(spread_figure(found, name=name)),
+        "rows": rows,
+        "beside": beside_quoted(found),
+    }
+
+
+def _curve(scenario: Scenario, fit: CurveFit) -> dict[str, Any]:
+    ohm = fit.impedance_ohm
+    drawn_ohm = f"{_span(*scenario.cable.curve_ohm)} ohm, drawn: the curve has none"
+    return {
+        "name": fit.name,
+        "figure": drawn(curve_figure(fit, name="c")),
+        "span": f"{len(fit.points_mhz)} points from {fit.points_mhz[0]:.3g} to {fit.points_mhz[-1]:.3g} MHz",
+        "loss": _misfit_words(fit.attenuation),
+        "speed": _misfit_words(fit.velocity),
+        "impedance": drawn_ohm if ohm is None else f"{three_digits(ohm)} ohm, the mean of the curve's",
+    }
+
+
+def _misfit_words(misfit: Misfit) -> str:
+    side = "above" if misfit.share > 0 else "below"
+    return f"{100 * abs(misfit.share):.2g} % {side} the measured one (at {misfit.mhz:.3g} MHz)"
 
 
 def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
@@ -193,16 +248,16 @@ def _ring_words(ring_mhz: Any, ring_q: Any) -> dict[str, list[str]]:
     }
 
 
-def _patterns(scenario: Scenario, rng: np.random.Generator) -> list[dict[str, Any]]:
-    patterns = [*phase_patterns(scenario, rng=rng), *bridge_patterns(scenario, rng=rng)]
-    panels = [
-        {"figure": drawn(pattern_figure(one, name=f"p{at}")), "caption": PATTERN_WORDS[one.pattern]}
-        for at, one in enumerate(patterns)
-    ]
+def _patterns(scenario: Scenario, rng: np.random.Generator) -> dict[str, list[dict[str, Any]]]:
+    """Panels of each pattern that the world has, by its name."""
+    panels: dict[str, list[dict[str, Any]]] = {}
+    for at, one in enumerate([*phase_patterns(scenario, rng=rng), *bridge_patterns(scenario, rng=rng)]):
+        panel = {"figure": drawn(pattern_figure(one, name=f"p{at}")), "caption": PATTERN_WORDS[one.pattern]}
+        panels.setdefault(one.pattern, []).append(panel)
     intervals = converter_intervals(scenario, rng=rng)
     if intervals is not None:
         caption = f"converter switching at {intervals.switching_hz / 1e3:.1f} kHz; dashed: one period"
-        panels.append({"figure": drawn(interval_figure(intervals, name="i")), "caption": caption})
+        panels["converter"] = [{"figure": drawn(interval_figure(intervals, name="i")), "caption": caption}]
     return panels
 
 

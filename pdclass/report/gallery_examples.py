@@ -31,7 +31,10 @@ LEVEL_HZ = 10e3
 _NEAR_M, _FAR_M = 100.0, 500.0
 _MOST_CIRCUITS = 90
 _SNR_DB = (36.0, 48.0)
+#: Where the largest charge of its kind does not reach this, another source is looked for, or it is called faint [dB].
 _LEAST_DB = 26.0
+#: Where it does not even reach this, there is no pulse to be seen [dB].
+_SEEN_DB = 6.0
 _FULL_SCALE_DB = 60.0
 _DB_PER_BIT = 20 * np.log10(2)
 #: So far below the most that its bits allow over the noise, a pulse is not clipped [dB].
@@ -53,6 +56,7 @@ class Example:
     label, family, way : of the source.
     distance_m : along the cable [m], or None.
     charge_pc : that was planted [pC], or None for interference.
+    faint : whether the largest charge of its kind gives no more than this.
     circuit : what its circuit is like, in words and figures.
     rate_hz, band_hz : of the chain [Hz].
     snr_db, peak_mv : of the window's largest sample over the noise [dB], and itself [mV].
@@ -76,6 +80,7 @@ class Example:
     mhz: FloatArray
     level_db: FloatArray
     floor_db: FloatArray
+    faint: bool = False
 
 
 @dataclass(frozen=True)
@@ -137,9 +142,9 @@ def gather_examples(scenario: Scenario, groups: Mapping[str, str], *, seed: int)
         circuit = circuit_of(world, number, seed=seed)
         for source in circuit.sources:
             name = group_of(source, float(circuit.traits["length_m"]))
-            faint = _believable_db(world, circuit, source) < _LEAST_DB
             # a world of named circuits has no others to choose from
-            if name not in open_groups or (faint and not world.circuit):
+            wanted_db = _SEEN_DB if world.circuit else _LEAST_DB
+            if name not in open_groups or _believable_db(world, circuit, source) < wanted_db:
                 continue
             example = _example(world, circuit, source, number, seed=seed)
             if example is not None:
@@ -212,13 +217,14 @@ def _example(world: Scenario, circuit: Circuit, source: Source, number: int, *, 
     if inside.size == 0:
         return None
     note = capture.annotations[int(np.flatnonzero(onsets == inside[0])[0])]
-    return _cut(capture, circuit, note, source.way)
+    faint = _believable_db(world, circuit, source) < _LEAST_DB
+    return replace(_cut(capture, circuit, note, source.way), faint=faint)
 
 
 def _heights(world: Scenario, circuit: Circuit, source: Source) -> tuple[float, float]:
-    """Heights over the noise that neither clip nor need more charge than such a discharge has [dB]."""
+    """Heights over the noise that neither clip nor need more charge than such a discharge has, however faint [dB]."""
     unclipped_db = _DB_PER_BIT * (circuit.receiver.bits - 1) - _HEADROOM_DB
-    most_db = min(_SNR_DB[1], unclipped_db, max(_LEAST_DB, _believable_db(world, circuit, source)))
+    most_db = min(_SNR_DB[1], unclipped_db, _believable_db(world, circuit, source))
     return min(_SNR_DB[0], most_db), most_db
 
 

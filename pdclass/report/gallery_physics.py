@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import get_args
 
 import numpy as np
 
 from pdclass.pulses import FloatArray
-from pdclass.sim.cable import DB_PER_NEPER, Line, line_of
+from pdclass.report.gallery_world import families_of, patterns_of
+from pdclass.sim.cable import DB_PER_NEPER, line_of
 from pdclass.sim.cable_kinds import Kind
 from pdclass.sim.disturbers import disturber_signs, disturber_times
 from pdclass.sim.draw import log_even
@@ -24,8 +26,6 @@ from pdclass.sim.receiver import anti_alias_response, sensor_response
 from pdclass.sim.source import SourceCurrent, source_spectrum
 from pdclass.sim.station import Station, from_bus, from_cable, from_screen, solve_station
 
-#: Kinds of cable of which the way of a pulse is followed.
-KINDS: tuple[Kind, ...] = ("XLPE", "EPR", "paper")
 DISTANCES_KM = (0.0, 0.05, 0.2, 0.5, 1.0, 2.0, 5.0)
 TABLE_MHZ = (1.0, 10.0, 30.0)
 #: Width of the injected current between half heights [ns].
@@ -149,16 +149,22 @@ def journey(ranges: CableRanges, kind: Kind, *, rng: np.random.Generator) -> Jou
     """A current 5 ns wide along a matched cable: of 101 drawn ones that of median attenuation at 10 MHz."""
     cables = [draw_cable(ranges, kind, rng=rng) for _ in range(_MEDIAN_OF)]
     at_hz = np.array(TABLE_MHZ) * 1e6
-    losses = np.array([_db_per_km(line_of(cable, _s_of(at_hz))) for cable in cables])
+    losses = np.array([_db_per_km(line_of(cable, _s_of(at_hz)).gamma) for cable in cables])
     middle = int(np.argsort(losses[:, 1], kind="stable")[_MEDIAN_OF // 2])
+    return followed(kind, lambda s: line_of(cables[middle], s).gamma)
+
+
+def followed(kind: str, propagation: Callable[[ComplexArray], ComplexArray]) -> Journey:
+    """A current 5 ns wide along a matched line of a propagation constant [1/m] over complex frequencies [1/s]."""
+    losses = _db_per_km(propagation(_s_of(np.array(TABLE_MHZ) * 1e6)))
     fine = (DAMPING_PER_S + 2j * np.pi * np.arange(round(_RATE_HZ / 2 * RECORD_S) + 1) / RECORD_S).astype(np.complex128)
-    line = line_of(cables[middle], fine)
+    gamma = propagation(fine)
     sigma_s = INJECTED_NS * 1e-9 / _SIGMAS_IN_WIDTH
     sent = source_spectrum(SourceCurrent("gaussian", sigma_s, sigma_s), fine) * np.exp(-fine * LEAD_S)
     time_ns = np.arange(-100.0, 2001.0, 2.0)
     steps, waves = [], []
     for km in DISTANCES_KM:
-        arrived = to_samples(np.asarray(sent * np.exp(-line.gamma * (km * 1e3))), _RATE_HZ)
+        arrived = to_samples(np.asarray(sent * np.exp(-gamma * (km * 1e3))), _RATE_HZ)
         step, wave = _measured(km, arrived, time_ns)
         steps.append(step)
         waves.append(wave)
@@ -167,7 +173,7 @@ def journey(ranges: CableRanges, kind: Kind, *, rng: np.random.Generator) -> Jou
         Step(s.km, s.peak_share / first.peak_share, s.rise_ns, s.width_ns, s.charge_share / first.charge_share)
         for s in steps
     )
-    return Journey(kind, tuple(losses[middle].tolist()), shared, time_ns, np.array(waves))
+    return Journey(kind, tuple(losses.tolist()), shared, time_ns, np.array(waves))
 
 
 def spread(ranges: CableRanges, kind: Kind, *, seed: int) -> Spread:
@@ -209,9 +215,10 @@ def chains(ranges: ChainRanges, *, rng: np.random.Generator) -> Chains:
 
 
 def phase_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[PhasePattern]:
-    """Fifty cycles of one drawn source of each pattern."""
+    """Fifty cycles of one drawn source of each pattern that the world has."""
     found = []
-    for pattern in PATTERNS:
+    had = patterns_of(scenario)
+    for pattern in (one for one in PATTERNS if one in had):
         activity = draw_activity(pattern, scenario.activity, rng=rng)
         pulses = activity_phases(activity, PULSES, 0.0, 360.0 * CYCLES, rng=rng)
         largest = max(float(np.abs(pulses.charge).max(initial=0.0)), 1e-12)
@@ -222,7 +229,7 @@ def phase_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[Phas
 def bridge_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[PhasePattern]:
     """Fifty cycles of a drawn thyristor bridge of six and one of twelve commutations; only those that the world has."""
     disturbers = scenario.interference
-    if disturbers.families.get("thyristor", 0) <= 0:
+    if "thyristor" not in families_of(scenario):
         return []
     found = []
     for bridge in BRIDGES:
@@ -239,7 +246,7 @@ def bridge_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[Pha
 
 def converter_intervals(scenario: Scenario, *, rng: np.random.Generator) -> Intervals | None:
     """Time between the pulses of one drawn converter over two tenths of a second; None where the world has none."""
-    if scenario.interference.families.get("converter", 0) <= 0:
+    if "converter" not in families_of(scenario):
         return None
     disturber = draw_disturber(scenario.interference, family="converter", rng=rng)
     times = disturber_times(disturber.repetition, 0.2, _ALL_EDGES, start_deg=0.0, deg_per_s=_DEG_PER_S, rng=rng)
@@ -265,8 +272,8 @@ def _s_of(hz: FloatArray) -> ComplexArray:
     return np.asarray(2j * np.pi * hz, np.complex128)
 
 
-def _db_per_km(line: Line) -> FloatArray:
-    return np.asarray(line.gamma.real * DB_PER_NEPER * 1e3)
+def _db_per_km(gamma: ComplexArray) -> FloatArray:
+    return np.asarray(gamma.real * DB_PER_NEPER * 1e3)
 
 
 def _tenths(values: FloatArray) -> FloatArray:

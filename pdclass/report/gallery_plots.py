@@ -2,37 +2,26 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
 
 from pdclass.pulses import FloatArray
+from pdclass.report.gallery_curve import CurveFit
 from pdclass.report.gallery_examples import AFTER_US, BAND_MHZ, BEFORE_US, Backdrop, Example
 from pdclass.report.gallery_physics import DISTANCES_KM, Chains, Intervals, Journey, NearEnds, PhasePattern, Spread
+from pdclass.report.gallery_quoted import QUOTED_DB_PER_KM, QUOTED_M_PER_US
 from pdclass.report.plots import COLOURS, EDGE, MARKERS, Panel, panels_figure
 
 _FIRST_US = 2.5
 _LOWEST_DB = -70.0
 _WHOLE_POINTS = 300
 _MANY = "#8f8bb5"
+_DECADES = (0.01, 0.1, 1.0, 10.0, 100.0, 1000.0)
 #: From the source to 5 km: dark to light, told apart by dashes as well.
 _SHADES = ("#222222", "#332288", "#4f44a0", "#6f68b4", "#908cc8", "#a9a6d6", "#c0bee3")
 _DASHES: tuple[tuple[float, ...], ...] = ((), (), (6, 1.5), (4, 1.5), (2.5, 1.2), (1.2, 1.2), (6, 1.5, 1.2, 1.5))
-
-#: Ranges quoted in the trade, from memory, orders of magnitude: attenuation [MHz: least, most dB/km], velocity [m/us].
-QUOTED_DB_PER_KM: Mapping[str, Mapping[float, tuple[float, float]]] = {
-    "XLPE": {1.0: (1.0, 10.0), 10.0: (10.0, 60.0)},
-    "EPR": {10.0: (10.0, 600.0)},
-    "paper": {1.0: (2.0, 50.0), 10.0: (20.0, 300.0)},
-    "belted": {1.0: (2.0, 50.0), 10.0: (20.0, 300.0)},
-}
-QUOTED_M_PER_US: Mapping[str, tuple[float, float]] = {
-    "XLPE": (160.0, 180.0),
-    "EPR": (150.0, 170.0),
-    "paper": (150.0, 165.0),
-    "belted": (150.0, 165.0),
-}
 
 
 def example_figure(example: Example, *, name: str) -> str:
@@ -99,6 +88,30 @@ def spread_figure(spread: Spread, *, name: str) -> str:
         speed.set_ylabel("[m/µs]")
 
     return panels_figure(name, f"attenuation and velocity of drawn {spread.kind} cables", (9.2, 2.2), draw, (1.0, 1.0))
+
+
+def curve_figure(fit: CurveFit, *, name: str) -> str:
+    """Measured points against the line fitted to them: attenuation and velocity."""
+
+    def draw(panels: Sequence[Panel]) -> None:
+        pairs = ((fit.points_db_per_km, fit.db_per_km), (fit.points_m_per_us, fit.m_per_us))
+        for axes, (points, line) in zip(panels, pairs, strict=True):
+            axes.plot(fit.mhz, line, color=COLOURS["cable"], lw=1.5)
+            axes.plot(fit.points_mhz, points, ls="none", marker="o", mfc="white", mec=EDGE, mew=0.9, ms=4)
+            _log_axis(axes, (float(fit.mhz[0]), float(fit.mhz[-1])))
+        loss, speed = panels
+        loss.set_yscale("log")
+        marks = [mark for mark in _DECADES if fit.db_per_km[0] / 10 < mark < fit.db_per_km[-1] * 10]
+        loss.set_yticks(marks, [f"{mark:g}" for mark in marks])
+        loss.minorticks_off()
+        loss.set_ylabel("[dB/km]")
+        # never so near that rounding of the points looks like a misfit
+        low, high = float(fit.m_per_us.min()), float(fit.m_per_us.max())
+        room = max(0.1 * (high - low), 3.0)
+        speed.set_ylim(low - room, high + room)
+        speed.set_ylabel("[m/µs]")
+
+    return panels_figure(name, f"attenuation and velocity of the {fit.name}", (9.2, 2.2), draw, (1.0, 1.0))
 
 
 def near_end_figure(found: NearEnds, *, name: str) -> str:

@@ -1,4 +1,4 @@
-"""What the gallery says of each kind of example, way and pattern."""
+"""What the gallery says of each kind of example, current, way and pattern."""
 
 from __future__ import annotations
 
@@ -17,6 +17,16 @@ WAYS: Mapping[str, str] = {
     "screen": "conducted on the screen",
     "feeder": "along a neighbour's cable",
     "far-end": "along this cable from its far end",
+}
+
+
+#: Currents of discharges: named after what sends such ones, wherever they are planted.
+CURRENTS: Mapping[str, str] = {
+    "void": "current as of a void",
+    "aged-void": "current as of an aged void",
+    "interface": "current as of a discharge at an interface",
+    "surface": "current as of a surface discharge",
+    "floating": "current as of a spark to a floating part",
 }
 
 
@@ -43,8 +53,10 @@ GROUPS = (
         "middle",
         "cable",
         "cable, 100 to 500 m away",
-        "The edges have become slower, above 10 MHz little is left. What went on from the busbar into other cables "
-        "comes back from their ends, reversed; so does, later, what went the other way on this one.",
+        "The edges have become slower, above 10 MHz little is left. What went the other way on this cable comes back "
+        "from its far end: with its sign from an open end, reversed from a lower impedance (a busbar with cables). "
+        "What went on from the busbar into other cables comes back from their ends and passes the strap the other "
+        "way, so that there an open end reverses and a lower impedance does not.",
     ),
     Group(
         "far",
@@ -163,4 +175,5 @@ PATTERN_WORDS: Mapping[str, str] = {
     "positive-corona": "corona, positive point",
     "six commutations": "thyristor bridge, both ends of six commutations",
     "twelve commutations": "thyristor bridge, both ends of twelve commutations",
+    "converter": "times between the pulses of a converter",
 }

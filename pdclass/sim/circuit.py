@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from pdclass.errors import InputError, complaint
 from pdclass.sim.disturbers import Disturber, Repetition
 from pdclass.sim.draw import even, log_even
 from pdclass.sim.drawn_background import draw_background
@@ -18,7 +19,7 @@ from pdclass.sim.drawn_chain import draw_receiver
 from pdclass.sim.drawn_disturbance import draw_disturber
 from pdclass.sim.drawn_near_end import draw_near_end
 from pdclass.sim.drawn_source import KIND_PATTERNS, Kind, draw_discharge, most_charge_pc
-from pdclass.sim.entries import draw_entry, draw_labels
+from pdclass.sim.entries import completed, draw_entry, draw_labels
 from pdclass.sim.grid import LEAD_S, ComplexArray, laplace_grid, to_samples
 from pdclass.sim.interference import Reception, received
 from pdclass.sim.network import route_length_m
@@ -195,6 +196,8 @@ def _traits(station: Station, drawn: DrawnRoute, receiver: Receiver, sources: tu
 def _named(place: _Place, entry: CircuitEntry, *, rng: np.random.Generator) -> tuple[Source, ...]:
     """The sources that a scenario names, as often as it says."""
     children = rng.spawn(len(entry.sources))
+    for wish in entry.sources:
+        _check_neighbour(place, entry, wish)
     drawn = [_named_source(place, wish, rng=child) for wish, child in zip(entry.sources, children, strict=True)]
     return tuple(
         replace(one, pulses_per_cycle=wish.pulses_per_cycle) for one, wish in zip(drawn, entry.sources, strict=True)
@@ -244,8 +247,17 @@ def _is_heard(place: _Place, kind: Kind, volts_per_coulomb: float) -> bool:
 def _named_source(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) -> Source:
     if wish.label == "interference":
         return _interference(place, wish, rng=rng)
+    whole = completed(wish, place.scenario.mix, place.station.length_m, rng=rng)
     kind, current = draw_discharge(place.scenario.source, kind=wish.kind, rng=rng)
-    return _discharge(place, wish, kind, current, rng=rng)
+    return _discharge(place, whole, kind, current, rng=rng)
+
+
+def _check_neighbour(place: _Place, entry: CircuitEntry, wish: SourceEntry) -> None:
+    if place.station.neighbours or (wish.way != "neighbour" and wish.path != "feeder"):
+        return
+    found, advice = "a station without one", "give the near end more panels or a role 'feeder', or choose another way"
+    where = f"circuit '{entry.name}'"
+    raise InputError(complaint(where, "sources", expected="another cable on the busbar", found=found, advice=advice))
 
 
 def _interference(place: _Place, wish: SourceEntry, *, rng: np.random.Generator) -> Source:

@@ -159,7 +159,7 @@ class CableRanges(Ranges):
     transformer_ohm: Ohms = (300.0, 5000.0)
     busbar_f: Farads = (50e-12, 600e-12)
     feeders: Annotated[Whole, within(1, 50)] = (2, 5)
-    curve: str | None = None
+    curve: str | None = Field(default=None, min_length=1)
     curve_ohm: Ohms = (10.0, 40.0)
 
     @model_validator(mode="after")

@@ -31,7 +31,7 @@ _LEAD_LOSS_HZ = 10e6
 
 def _known_rates(rates: tuple[float, ...]) -> tuple[float, ...]:
     if not set(rates) <= set(_RATES_HZ):
-        raise ValueError(f"a rate is one of {', '.join(f'{rate:g}' for rate in _RATES_HZ)}")
+        raise ValueError(f"a rate is one of {', '.join(f'{rate / 1e6:g}e6' for rate in _RATES_HZ)} Hz")
     return rates
 
 

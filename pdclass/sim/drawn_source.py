@@ -15,20 +15,7 @@ from typing import Annotated, Literal, cast, get_args
 import numpy as np
 from pydantic import Field
 
-from pdclass.sim.draw import (
-    Nanoseconds,
-    Pair,
-    Ranges,
-    Share,
-    Some,
-    Weights,
-    chosen,
-    even,
-    known_names,
-    log_even,
-    whole,
-    within,
-)
+from pdclass.sim.draw import Pair, Ranges, Share, Weights, Whole, chosen, even, known_names, log_even, whole, within
 from pdclass.sim.phase import Pattern
 from pdclass.sim.source import Shape, SourceCurrent, half_width_s, train
 
@@ -62,13 +49,13 @@ class PulseRanges(Ranges):
     spacing_ns : between sub-pulses, even in its logarithm [ns].
     """
 
-    width_ns: Nanoseconds
+    width_ns: Annotated[Pair, within(0.01, 5e3, "ns")]
     skew: Annotated[Pair, within(0.05, 100.0)]
     charge_pc: Annotated[Pair, within(0.01, 1e9, "pC")]
     shapes: ShapeWeights = Field(default={"gaussian": 0.3, "asymmetric": 0.3, "exponential": 0.2, "heidler": 0.2})
     train_share: Share = 0.0
-    sub_pulses: Some = (2, 5)
-    spacing_ns: Nanoseconds = (10.0, 100.0)
+    sub_pulses: Annotated[Whole, within(1, 20)] = (2, 5)
+    spacing_ns: Annotated[Pair, within(0.01, 2e3, "ns")] = (10.0, 100.0)
 
 
 class SourceRanges(Ranges):

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from typing import cast
+
 import numpy as np
 
 from pdclass.sim.draw import chosen, whole
-from pdclass.sim.ranges import Label, Mix, SourceEntry
+from pdclass.sim.ranges import Label, Mix, SourceEntry, Way
 
 #: Nearest place of a `cable` source and farthest of a `local` one [m].
 NEAR_M = 10.0
@@ -21,15 +24,27 @@ def draw_entry(
     label: Label, mix: Mix, length_m: float, heights_db: tuple[float, float], *, rng: np.random.Generator
 ) -> SourceEntry:
     """A source of a class somewhere on a circuit of the given length [m], its pulses so high over the noise [dB]."""
-    ways = {"cable": mix.cable_ways, "local": mix.local_ways, "switchgear": mix.switchgear_ways}.get(label)
-    way = None if ways is None else chosen(ways, rng=rng)
-    wish = {"label": label, "pulses_per_cycle": 1.0, "snr_db": heights_db, "way": way}
-    if label == "cable" and way == "cable":
-        wish["distance_m"] = _cable_place_m(mix, length_m, rng=rng)
-    if label == "local":
-        at_end = way == "box" or rng.uniform() < mix.local_at_termination
-        wish["distance_m"] = 0.0 if at_end else NEAR_M * rng.uniform()
-    return SourceEntry.model_validate(wish)
+    return completed(SourceEntry(label=label, pulses_per_cycle=1.0, snr_db=heights_db), mix, length_m, rng=rng)
+
+
+def completed(wish: SourceEntry, mix: Mix, length_m: float, *, rng: np.random.Generator) -> SourceEntry:
+    """The same source with the way and the place that it does not say, drawn as the mix has them."""
+    way, place_m = wish.way, wish.distance_m
+    if wish.label == "cable":
+        way = way or ("cable" if place_m is not None else _way(mix.cable_ways, rng=rng))
+        if way == "cable" and place_m is None:
+            place_m = _cable_place_m(mix, length_m, rng=rng)
+    elif wish.label == "local":
+        way = way or ("stress-cone" if place_m is not None else _way(mix.local_ways, rng=rng))
+        if place_m is None and way == "stress-cone":
+            place_m = 0.0 if rng.uniform() < mix.local_at_termination else NEAR_M * rng.uniform()
+    elif wish.label == "switchgear":
+        way = way or _way(mix.switchgear_ways, rng=rng)
+    return wish.model_copy(update={"way": way, "distance_m": place_m})
+
+
+def _way(weights: Mapping[str, float], *, rng: np.random.Generator) -> Way:
+    return cast("Way", chosen(weights, rng=rng))
 
 
 def _cable_place_m(mix: Mix, length_m: float, *, rng: np.random.Generator) -> float:

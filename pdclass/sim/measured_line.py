@@ -10,6 +10,7 @@ from __future__ import annotations
 import csv
 from dataclasses import dataclass
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,7 +32,12 @@ LEAST_SPAN = 10.0
 ATTENUATION_TOLERANCE = 0.25
 VELOCITY_TOLERANCE = 0.05
 IMPEDANCE_TOLERANCE = 0.5
+#: Least and most attenuation at 10 MHz [dB/km], elsewhere times sqrt(f / 10 MHz); outside, the unit is another one.
+#: Far wider than medium-voltage cables are (a few to some hundred dB/km at 10 MHz; from memory).
+PLAUSIBLE_DB_PER_KM = (0.5, 2000.0)
+PLAUSIBLE_AT_HZ = 10e6
 _LARGEST_FILE = 1 << 20
+_COMMAS = "separate the fields by commas, not semicolons"
 _POWERS = (0.5, 0.6, 0.7, 0.8, 0.9)
 _PER_DECADE = 3
 # one per cent of the velocity counts as much as this many of the attenuation
@@ -82,12 +88,12 @@ def read_curve(path: Path) -> MeasuredCurve:
     Raises
     ------
     InputError
-        If the file cannot be read, lacks a column, or holds something that is no number, or if the curve has too
-        few points, no rising frequencies, an attenuation that is not above zero or a velocity above that of light.
+        If the file cannot be read, is separated by something else than commas, lacks a column, has a row with another
+        number of fields than its header, or holds something that is no number, or if `check_curve` refuses the curve.
     """
-    rows = _read_rows(path)
-    columns = {name: _numbers(path, rows, name) for name in COLUMNS}
-    impedance = _numbers(path, rows, IMPEDANCE_COLUMN) if IMPEDANCE_COLUMN in rows[0] else None
+    table = _read_table(path)
+    columns = {name: _numbers(path, table, name) for name in COLUMNS}
+    impedance = _numbers(path, table, IMPEDANCE_COLUMN) if IMPEDANCE_COLUMN in table.header else None
     hz, loss, speed = (columns[name] for name in COLUMNS)
     curve = MeasuredCurve(str(path), hz, loss, speed, impedance)
     check_curve(curve)
@@ -101,7 +107,8 @@ def check_curve(curve: MeasuredCurve) -> None:
     ------
     InputError
         If it has too few points or too narrow a span, frequencies that do not rise, an attenuation or impedance
-        that is not above zero, or a velocity that is not above zero and up to that of light.
+        that is not above zero, an attenuation that is none of a cable in dB/km, or a velocity that is not above zero
+        and up to that of light.
     """
     hz = curve.freq_hz
     if hz.size < FEWEST_POINTS:
@@ -113,6 +120,7 @@ def check_curve(curve: MeasuredCurve) -> None:
     loss, speed = curve.attenuation_db_per_km, curve.velocity_m_per_us
     advice = "a cable without power of its own loses some at every frequency"
     _each(curve, "attenuation_db_per_km", loss, loss > 0, "above zero (passive)", advice)
+    _check_unit(curve)
     possible = (speed > 0) & (speed <= light_m_per_s / 1e6)
     advice = "check unit and reference length"
     _each(curve, "velocity_m_per_us", speed, possible, "above zero, up to 299.792458", advice)
@@ -195,6 +203,23 @@ def measured_line(fitted: FittedLine, s: ComplexArray, *, impedance_ohm: float |
     return Line(propagation_of(fitted, s), np.full(s.shape, complex(ohm)))
 
 
+def _check_unit(curve: MeasuredCurve) -> None:
+    """Look at the point nearest to 10 MHz, where cables are least unlike each other."""
+    at = int(np.argmin(np.abs(np.log(curve.freq_hz / PLAUSIBLE_AT_HZ))))
+    hz, loss = float(curve.freq_hz[at]), float(curve.attenuation_db_per_km[at])
+    least, most = (bound * np.sqrt(hz / PLAUSIBLE_AT_HZ) for bound in PLAUSIBLE_DB_PER_KM)
+    if not least <= loss <= most:
+        low, high = PLAUSIBLE_DB_PER_KM
+        expected = f"{_short(least)} to {_short(most)} dB/km ({low:g} to {high:g} at 10 MHz, by the root of frequency)"
+        advice = "check the units: dB/km, not dB/m, dB over the whole cable or Np/m; Hz, not MHz"
+        raise _wrong(curve, f"attenuation_db_per_km at {hz:g} Hz", expected, f"{loss:g}", advice)
+
+
+def _short(value: float) -> str:
+    """Three digits without an exponent."""
+    return f"{float(f'{value:.3g}'):g}"
+
+
 def _time_constants(freq_hz: FloatArray) -> FloatArray:
     """Time constants of relaxations [s] from the lowest to somewhat above the highest frequency of a curve."""
     lowest, highest = 1 / (2 * np.pi * freq_hz[0]), 1 / (2 * np.pi * 3 * freq_hz[-1])
@@ -237,31 +262,79 @@ def _wrong(curve: MeasuredCurve, field: str, expected: object, found: object, ad
     return InputError(complaint(curve.where, field, expected=expected, found=found, advice=advice))
 
 
-def _read_rows(path: Path) -> list[dict[str, str]]:
+class _Table(NamedTuple):
+    """Names of the columns, and (line of the file, fields) of every row."""
+
+    header: list[str]
+    rows: list[tuple[int, list[str]]]
+
+
+def _read_table(path: Path) -> _Table:
+    lines = _read_lines(path)
+    if len(lines) < 2:
+        raise InputError(complaint(path, "rows", expected="a header and a curve", found="none", advice="fill it"))
+    (_, first), *rows = lines
+    header = [name.strip() for name in first]
+    if not set(COLUMNS) & set(header) and any(";" in name or "\t" in name for name in header):
+        advice = "separate the fields by commas and write numbers with a point, 1.5"
+        raise InputError(complaint(path, "header", expected="commas", found=repr(",".join(first)), advice=advice))
+    if len(set(header)) < len(header):
+        found = ", ".join(header)
+        raise InputError(complaint(path, "header", expected="each name once", found=found, advice="rename a column"))
+    for number, fields in rows:
+        if len(fields) != len(header):
+            expected = f"{len(header)} fields as in the header"
+            advice = _field_advice(fields, len(header))
+            raise InputError(complaint(path, f"line {number}", expected=expected, found=len(fields), advice=advice))
+    return _Table(header, rows)
+
+
+def _field_advice(fields: list[str], wanted: int) -> str:
+    if any(";" in field for field in fields):
+        return _COMMAS
+    if len(fields) > wanted:
+        return "a decimal comma? write 1.5, not 1,5; or a comma at the end?"
+    return "complete the row"
+
+
+def _number_advice(field: str) -> str:
+    if ";" in field:
+        return _COMMAS
+    return "write 1.5, not 1,5" if "," in field else "correct it"
+
+
+def _read_lines(path: Path) -> list[tuple[int, list[str]]]:
+    """(line of the file, fields) of every line that is not empty."""
+    if not path.is_file():
+        found = "a folder" if path.is_dir() else "no file"
+        advice = "`[cable] curve` names a file, which is looked for beside the scenario file"
+        raise InputError(complaint(path, "curve", expected="a CSV file", found=found, advice=advice))
     try:
         if path.stat().st_size > _LARGEST_FILE:
             advice = "thin the curve out"
             raise InputError(complaint(path, "size", expected="at most 1 MiB", found="more", advice=advice))
-        with path.open(encoding="utf-8-sig", newline="") as lines:
-            rows = list(csv.DictReader(lines))
+        with path.open(encoding="utf-8-sig", newline="") as text:
+            lines = csv.reader(text)
+            return [(lines.line_num, fields) for fields in lines if any(field.strip() for field in fields)]
     except (OSError, UnicodeDecodeError, csv.Error) as error:
         raise InputError(f"{path}: not readable as CSV: {error}") from None
-    if not rows:
-        raise InputError(complaint(path, "rows", expected="a header and a curve", found="none", advice="fill it"))
-    return rows
 
 
-def _numbers(path: Path, rows: list[dict[str, str]], name: str) -> FloatArray:
-    if name not in rows[0]:
-        found = ", ".join(str(key) for key in rows[0])
+def _numbers(path: Path, table: _Table, name: str) -> FloatArray:
+    if name not in table.header:
+        found = ", ".join(table.header)
         raise InputError(complaint(path, "header", expected=name, found=found, advice="name the columns so"))
-    values = np.empty(len(rows))
-    for number, row in enumerate(rows):
+    column = table.header.index(name)
+    values = np.empty(len(table.rows))
+    for place, (number, fields) in enumerate(table.rows):
         try:
-            values[number] = float(row[name])
-        except (TypeError, ValueError):
-            values[number] = np.nan
-        if not np.isfinite(values[number]):
-            where = f"line {number + 2}, {name}"
-            raise InputError(complaint(path, where, expected="a number", found=repr(row[name]), advice="correct it"))
+            values[place] = float(fields[column])
+        except ValueError:
+            values[place] = np.nan
+        if not np.isfinite(values[place]):
+            found = fields[column]
+            advice = _number_advice(found)
+            raise InputError(
+                complaint(path, f"line {number}, {name}", expected="a number", found=repr(found), advice=advice)
+            )
     return values

@@ -42,7 +42,7 @@ class GapRanges(Ranges):
     asymmetry : inception field of one half cycle over that of the other; either may be the higher one.
     """
 
-    overvoltage: Annotated[Pair, within(0.01, 99.0)]
+    overvoltage: Annotated[Pair, within(1.001, 99.0)]
     residual: Annotated[Pair, within(0.0, 0.95)]
     lag_deg: Annotated[Pair, within(1e-3, 1e4, "deg")]
     memory: Shares
@@ -60,7 +60,7 @@ class CoronaRanges(Ranges):
     spread : deviation of the logarithm of the charges.
     """
 
-    overvoltage: Annotated[Pair, within(0.01, 99.0)]
+    overvoltage: Annotated[Pair, within(1.001, 99.0)]
     per_cycle: Annotated[Pair, within(0.1, 1e4)]
     jitter: Shares
     spread: Annotated[Pair, within(0.0, 5.0)]

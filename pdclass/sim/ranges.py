@@ -27,6 +27,8 @@ Way = Literal["cable", "neighbour", "stress-cone", "box", "bus", "equipment"]
 _WAYS: Mapping[Label, tuple[Way, ...]] = MappingProxyType(
     {"cable": ("cable", "neighbour"), "local": ("stress-cone", "box"), "switchgear": ("bus", "equipment")}
 )
+#: The way of each class that has a distance.
+_PLACES: Mapping[Label, Way] = MappingProxyType({"cable": "cable", "local": "stress-cone"})
 #: Peak over noise [dB]; lower ones would leave nothing to annotate.
 Heights = Annotated[Pair, within(0.5, 150.0, "dB")]
 
@@ -95,14 +97,14 @@ class Mix(Ranges):
 
 
 class SourceEntry(Ranges):
-    """One source of an explicit circuit; what it does not say is drawn.
+    """One source of an explicit circuit; what it does not say is drawn as in the mix.
 
     Attributes
     ----------
     label : its class.
     distance_m : along the cable: 10 m to its length for `cable`, 0 to 10 m for `local` [m].
-    pulses_per_cycle : of the mains, on average.
-    snr_db : peak over noise, drawn evenly [dB].
+    pulses_per_cycle : of the mains, on average; what switches or commutates has no more than its edges.
+    snr_db : peak over noise, drawn evenly, whatever the digitiser's full scale [dB].
     pattern, kind : of a discharge: when in the cycle it comes, and what discharges.
     way : by which it reaches the strap where the label leaves several.
     family, path : of interference: what sends, and by which path it comes.
@@ -123,6 +125,8 @@ class SourceEntry(Ranges):
         ways = _WAYS.get(self.label, ())
         if self.way is not None and self.way not in ways:
             raise ValueError(f"way: that of {self.label} is {' or '.join(ways) or 'given by path'}, not {self.way}")
+        if self.distance_m is not None and (self.label not in _PLACES or self.way not in {None, _PLACES[self.label]}):
+            raise ValueError(f"distance_m: says nothing of {self.way or self.label}; leave it out")
         of_others = ("pattern", "kind") if self.label == "interference" else ("family", "path")
         odd = [name for name in of_others if getattr(self, name) is not None]
         if odd:
@@ -142,9 +146,9 @@ class CircuitEntry(Ranges):
     sources : what sends pulses; none for a circuit with background alone.
     """
 
-    name: str
+    name: str = Field(min_length=1)
     site: str | None = None
-    sensor: str
+    sensor: str = Field(min_length=1)
     conductor: Literal["L1", "L2", "L3", "three-core"] | None = None
     length_m: float = Field(gt=20, le=12e3)
     far_end: FarEndKind | None = None

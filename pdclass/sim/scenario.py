@@ -30,6 +30,8 @@ __all__ = [
 #: Goes up whenever the same scenario and seed give other samples than before.
 SIMULATOR_VERSION = 2
 
+#: So many fit into memory with all that is planted on them.
+_MOST_SAMPLES = 60_000_000
 _FIRST_DAY = pd.Timestamp("2025-01-06", tz="UTC")
 
 
@@ -68,6 +70,11 @@ def circuit_of(scenario: Scenario, number: int, *, seed: int) -> Circuit:
 def capture_of(scenario: Scenario, circuit: Circuit, number: int, *, seed: int, pulses: int | None = None) -> Capture:
     """Capture `number`, taken of its circuit; arguments and errors as for `simulate_capture`."""
     _check(("capture", number, 1), ("seed", seed, 0), ("pulses", pulses or 0, 0))
+    samples = scenario.capture.duration_ms * 1e-3 * circuit.receiver.rate_hz
+    if samples > _MOST_SAMPLES:
+        expected, advice = f"at most {_MOST_SAMPLES:,} samples in one capture", "shorten it, or take more captures"
+        found = f"{samples:,.0f}"
+        raise InputError(complaint(scenario.name, "capture.duration_ms", expected=expected, found=found, advice=advice))
     index, session = _circuit_and_session(scenario, number)
     visit = np.random.SeedSequence(seed, spawn_key=(1, index, session))
     time_rng, noise_rng, plan_rng, offset_rng, jitter_rng = np.random.default_rng(visit).spawn(5)

@@ -275,3 +275,34 @@ def test_two_captures_of_one_name_are_both_extracted(tiny_world, tmp_path):
     assert read_pulses(tmp_path / "p.parquet")[0].table["capture_digest"].nunique() == 2
     again = extract_captures([*named, pair[0]], tmp_path / "q.parquet")
     assert "holds the same samples as night" in again.skipped[0]
+
+
+def test_a_failing_simulation_leaves_an_earlier_one_alone(tmp_path):
+    """A scenario that cannot be drawn says so before anything is deleted, and foreign files are never touched."""
+    simulate("tiny", tmp_path / "world", captures=1)
+    (tmp_path / "world" / "pulses-mine.parquet").write_bytes(b"mine")
+    before = tree_digest(tmp_path / "world")
+    scenario = tmp_path / "tiny.toml"
+    scenario.write_text('name = "tiny"\n[cable]\ncurve = "none.csv"', encoding="utf-8")
+    with pytest.raises(InputError, match=r"none\.csv"):
+        simulate(scenario, tmp_path / "world", force=True)
+    assert tree_digest(tmp_path / "world") == before
+    simulate("tiny", tmp_path / "world", captures=1, force=True)
+    assert (tmp_path / "world" / "pulses-mine.parquet").read_bytes() == b"mine"
+
+
+def test_an_impossible_folder_is_one_line(tmp_path):
+    """A folder below a file, and a scenario below a folder that is not there, are errors of the user."""
+    (tmp_path / "file").write_text("x")
+    with pytest.raises(InputError, match="cannot be made a folder"):
+        simulate("tiny", tmp_path / "file" / "x", captures=1)
+    with pytest.raises(InputError, match="no such scenario"):
+        simulate("nowhere/tiny", tmp_path / "out", captures=1)
+
+
+def test_a_record_too_long_for_memory_is_refused(tmp_path):
+    """Two seconds at 250 MS/s say how much is possible."""
+    scenario = tmp_path / "long.toml"
+    scenario.write_text('name = "long"\n[capture]\nduration_ms = 2000.0\n[chain]\nrates_hz = [250e6]', encoding="utf-8")
+    with pytest.raises(InputError, match="60,000,000 samples"):
+        simulate(scenario, tmp_path / "out", captures=1)

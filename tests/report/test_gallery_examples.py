@@ -9,6 +9,7 @@ from gallery_samples import world
 from pdclass.report.gallery_examples import gather_backdrops, gather_examples, group_of
 from pdclass.sim.scenario import circuit_of
 
+FIELDS = ("void", "aged_void", "interface", "surface", "floating")
 TEMPLATE = circuit_of(world(), 1, seed=1).sources[0]
 
 
@@ -67,3 +68,24 @@ def test_a_background_shows_the_carrier_that_the_scenario_names():
     at = int(np.argmin(np.abs(found.mhz - 5.0)))
     assert found.level_db[at] > np.median(found.level_db[at - 30 : at + 30]) + 10
     assert found.carriers_mhz == (5.0,)
+
+
+def limited(most_pc):
+    """The examples of the same world where no kind of discharge has more charge than this."""
+    named = world()
+    charge = {"charge_pc": (0.01, most_pc)}
+    kinds = {name: getattr(named.source, name).model_copy(update=charge) for name in FIELDS}
+    little = named.model_copy(update={"source": named.source.model_copy(update=kinds)})
+    return gather_examples(little, {"middle": "cable", "bus": "switchgear"}, seed=3)
+
+
+@pytest.mark.parametrize("name", ["middle", "bus"])
+def test_no_example_has_much_more_charge_than_its_kind(examples, name):
+    """A faint named source keeps the limit of its kind, give or take the spread of widths, and is called faint."""
+    (usual,) = examples[name]
+    assert not usual.faint
+    most_pc = usual.charge_pc * 10 ** (-(usual.snr_db - 16.0) / 20)
+    (example,) = limited(most_pc)[name]
+    assert example.faint
+    assert 0.8 * most_pc < example.charge_pc < 1.3 * most_pc
+    assert limited(most_pc / 10)[name] == []

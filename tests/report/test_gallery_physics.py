@@ -8,6 +8,7 @@ from pdclass.report.gallery_physics import (
     converter_intervals,
     journey,
     kinds_of,
+    phase_patterns,
     spread,
     strongest_ring,
 )
@@ -101,3 +102,13 @@ def test_a_world_without_converters_or_with_a_measured_line_says_so():
     assert converter_intervals(quiet, rng=np.random.default_rng(4)) is None
     assert kinds_of(CableRanges(curve="line.csv")) == ()
     assert kinds_of(CableRanges(kinds={"paper": 1.0, "EPR": 0.0})) == ("paper",)
+
+
+def test_patterns_are_those_that_a_world_can_have():
+    """A named world has the patterns of its sources, a drawn one those of its kinds and corona."""
+    wide = {one.pattern for one in phase_patterns(Scenario(name="w"), rng=np.random.default_rng(4))}
+    assert wide == {"void", "surface", "floating", "corona", "positive-corona"}
+    source = {"label": "switchgear", "kind": "floating", "pulses_per_cycle": 1.0, "snr_db": [20.0, 30.0]}
+    circuit = {"name": "A", "sensor": "s", "length_m": 300.0, "sources": [source]}
+    narrow = Scenario.model_validate({"name": "w", "circuit": [circuit]})
+    assert {one.pattern for one in phase_patterns(narrow, rng=np.random.default_rng(4))} == {"floating"}

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
+from pdclass.errors import InputError
 from pdclass.sim.circuit import draw_circuit
 from pdclass.sim.drawn_source import most_charge_pc
 from pdclass.sim.grid import LEAD_S, laplace_grid, to_samples
@@ -103,3 +104,34 @@ def test_traits_tell_what_a_circuit_is_like():
         assert circuit.traits["cable"] in {"XLPE", "EPR", "paper", "belted"}
         assert 2 <= circuit.traits["panels"] <= 9
         assert circuit.traits["low_hz"] < circuit.traits["high_hz"] <= circuit.receiver.rate_hz / 2
+
+
+def _named_world(source, **near_end):
+    return Scenario.model_validate({
+        "name": "named",
+        "near_end": near_end,
+        "circuit": [{"name": "Mole End", "sensor": "s", "length_m": 800.0, "sources": [
+            {"pulses_per_cycle": 5.0, "snr_db": [20.0, 30.0], **source}
+        ]}],
+    })  # fmt: skip
+
+
+def test_what_a_named_source_does_not_say_is_drawn():
+    """Way and place of a named source are drawn as in the mix, unless it says them."""
+    drawn = [
+        draw_circuit(_named_world({"label": "local"}), 0, rng=np.random.default_rng(seed)).sources[0]
+        for seed in range(24)
+    ]
+    assert {source.way for source in drawn} == {"stress-cone", "box"}
+    assert len({source.distance_m for source in drawn}) > 3
+    said = draw_circuit(_named_world({"label": "cable", "distance_m": 300.0}), 0, rng=np.random.default_rng(1))
+    assert (said.sources[0].way, said.sources[0].distance_m) == ("cable", 300.0)
+
+
+@pytest.mark.parametrize(
+    "source", [{"label": "cable", "way": "neighbour"}, {"label": "interference", "path": "feeder"}]
+)
+def test_a_named_neighbour_must_be_there(source):
+    """A source on a neighbour's cable of a station without one is refused, naming the circuit."""
+    with pytest.raises(InputError, match=r"Mole End.*another cable on the busbar"):
+        draw_circuit(_named_world(source, roles=("own",)), 0, rng=np.random.default_rng(1))

@@ -1,6 +1,7 @@
 """A line from a measured curve is passive, causal, and the cable that was measured."""
 
 from dataclasses import replace
+from typing import get_args
 
 import numpy as np
 import pytest
@@ -17,8 +18,11 @@ from pdclass.sim.cable import (
     line_of,
     nominal_impedance,
 )
+from pdclass.sim.cable_kinds import Kind
+from pdclass.sim.drawn_cable import CableRanges, attenuation_spread, draw_lines
 from pdclass.sim.grid import LEAD_S, laplace_grid, to_samples
 from pdclass.sim.measured_line import (
+    PLAUSIBLE_DB_PER_KM,
     FittedLine,
     MeasuredCurve,
     fit_line,
@@ -26,6 +30,7 @@ from pdclass.sim.measured_line import (
     propagation_of,
     read_curve,
 )
+from pdclass.sim.ranges import read_scenario
 
 XLPE = Cable(
     9.1e-3, 9.7e-3, 15.2e-3, 15.8e-3, 0.3e-3, ALUMINIUM_OHM_M, COPPER_OHM_M, 2.3, 1e-3, excess_db_per_km=12.0,
@@ -146,6 +151,7 @@ def bent(**columns):
 
 
 GOOD = curve_of(XLPE)
+HEAD = "freq_hz,attenuation_db_per_km,velocity_m_per_us\n"
 WAVY = 1 + 0.6 * np.sin(np.arange(BAND_HZ.size) * 1.5)
 
 
@@ -163,6 +169,12 @@ WAVY = 1 + 0.6 * np.sin(np.arange(BAND_HZ.size) * 1.5)
         (bent(velocity_m_per_us=np.linspace(90.0, 185.0, 40)), "contradict causality"),
         (bent(impedance_ohm=np.linspace(5.0, 50.0, 40)), "within 50 % of the mean"),
         (bent(impedance_ohm=np.zeros(40)), "impedance_ohm at 50000 Hz: expected above zero"),
+        (
+            bent(attenuation_db_per_km=GOOD.attenuation_db_per_km / 1000),
+            r"expected 0.\d+ to 2\d\d\d dB/km \(0.5 to 2000 at",
+        ),
+        (bent(attenuation_db_per_km=GOOD.attenuation_db_per_km * 1000), "found .*; check the units: dB/km, not dB/m"),
+        (bent(freq_hz=BAND_HZ / 1e6), "check the units: .* Hz, not MHz"),
     ],
 )
 def test_impossible_curves_are_refused(curve, message):
@@ -176,9 +188,16 @@ def test_impossible_curves_are_refused(curve, message):
     [
         ("freq_hz,attenuation_db_per_km\n1e5,2\n", "header: expected velocity_m_per_us"),
         ("freq_hz,attenuation_db_per_km,velocity_m_per_us\n1e5,two,170\n", "line 2, attenuation_db_per_km"),
-        ("freq_hz,attenuation_db_per_km,velocity_m_per_us\n1e5,2\n", "line 2, velocity_m_per_us"),
+        (HEAD + "1e5,2\n", "line 2: expected 3 fields as in the header, found 2; complete the row"),
+        (HEAD + "\n1e5,2,170\n1e5,1,02,170,9\n", "line 4: expected 3 fields .*, found 5; a decimal comma"),
+        (HEAD + "1e5;1,02;170,9\n", "line 2, freq_hz: .*; separate the fields by commas, not semicolons"),
+        (HEAD + "1e5;1.02;170.9\n", "line 2: expected 3 fields .*; separate the fields by commas, not semicolons"),
+        (HEAD + '1e5,"1,02",170\n', "line 2, attenuation_db_per_km: .*; write 1.5, not 1,5"),
+        (HEAD.replace(",", ";") + "1e5;1,02;170,9\n", "header: expected commas, found 'freq_hz;.*with a point, 1.5"),
+        ("freq_hz," + HEAD + "1,1e5,2,170\n", "header: expected each name once"),
         ("freq_hz,attenuation_db_per_km,velocity_m_per_us\n1e5,nan,170\n", "expected a number, found 'nan'"),
         ("", "rows: expected a header and a curve, found none"),
+        (HEAD, "rows: expected a header and a curve, found none"),
         ("x" * (2 << 20), "at most 1 MiB"),
     ],
 )
@@ -187,8 +206,48 @@ def test_broken_files_are_refused(tmp_path, text, message):
     path = written(tmp_path / "line.csv", text)
     with pytest.raises(InputError, match=message):
         read_curve(path)
-    with pytest.raises(InputError, match="not readable as CSV"):
+
+
+def test_what_is_no_file_is_said(tmp_path):
+    """A curve that is not there is looked for beside the scenario, and a folder (an empty name too) is none."""
+    with pytest.raises(
+        InputError, match=r"absent.csv: curve: expected a CSV file, found no file; .* beside the scenario"
+    ):
         read_curve(tmp_path / "absent.csv")
+    with pytest.raises(InputError, match="expected a CSV file, found a folder"):
+        read_curve(tmp_path)
+    (tmp_path / "binary.csv").write_bytes(b"\xff\xfe\x00")
+    with pytest.raises(InputError, match="not readable as CSV"):
+        read_curve(tmp_path / "binary.csv")
+
+
+def first_line(scenario):
+    """The first line of the cable that a scenario file names."""
+    return draw_lines(read_scenario(scenario).cable, 1, rng=np.random.default_rng(1), s=laplace_grid())[0][0]
+
+
+@pytest.mark.parametrize("name", ["", ".", "gone.csv"])
+def test_a_scenario_without_its_curve_is_refused(tmp_path, name):
+    """An empty name, a folder or a file that is not there never becomes the base world's cable."""
+    scenario = written(tmp_path / "own.toml", f'name = "own"\n[cable]\ncurve = "{name}"\n')
+    with pytest.raises(InputError, match="curve"):
+        first_line(scenario)
+
+
+def test_spaces_about_names_and_numbers_do_no_harm(tmp_path):
+    """Names of columns are stripped, and empty lines are passed over."""
+    rows = "".join(f" {1e5 * 10 ** (i / 2)} , {2 * 10 ** (i / 4)} , {170 + i}\n\n" for i in range(6))
+    curve = read_curve(written(tmp_path / "line.csv", HEAD.replace(",", " , ") + rows))
+    assert curve.velocity_m_per_us == pytest.approx(170.0 + np.arange(6))
+
+
+@pytest.mark.parametrize("kind", get_args(Kind))
+def test_the_plausible_attenuations_hold_every_drawn_cable(kind):
+    """Bounds that ask for the unit lie well outside the base world: three times from every drawn cable."""
+    hz = np.array([1e6, 10e6, 40e6])
+    drawn = attenuation_spread(CableRanges(), kind, hz, 100, rng=np.random.default_rng(1)) / np.sqrt(hz / 10e6)
+    assert drawn.min() > 3 * PLAUSIBLE_DB_PER_KM[0]
+    assert drawn.max() < PLAUSIBLE_DB_PER_KM[1] / 3
 
 
 def test_a_line_of_one_part():

@@ -140,3 +140,20 @@ def test_a_measured_curve_is_looked_for_beside_its_scenario(tmp_path):
     path = tmp_path / "own.toml"
     path.write_text('name = "own"\n[cable]\ncurve = "line.csv"', encoding="utf-8")
     assert read_scenario(path).cable.curve == str(tmp_path / "line.csv")
+
+
+def test_a_distance_where_there_is_none_is_refused(tmp_path):
+    """A distance of a switchgear source, or of one in the cable box, is an error rather than ignored."""
+    path = tmp_path / "scenario.toml"
+    for label, more in (("switchgear", ""), ("interference", ""), ("local", 'way = "box"\n')):
+        path.write_text(NAMED.format(label=label, place=5.0) + more, encoding="utf-8")
+        with pytest.raises(InputError, match="distance_m: says nothing of"):
+            read_scenario(path)
+
+
+def test_the_nearest_key_is_looked_for_at_its_place(tmp_path):
+    """A mistyped table gets the table's name, not a key of some other table."""
+    path = tmp_path / "scenario.toml"
+    path.write_text('name = "x"\n[cabel]\nsections = {}', encoding="utf-8")
+    with pytest.raises(InputError, match="nearest known one is 'cable'"):
+        read_scenario(path)

@@ -96,8 +96,10 @@ def make_base(
         trained_on=f"Trained on simulated pulses alone: {count} circuits of the world `{path.stem}` "
         f"(seed {SEED}, simulator version {SIMULATOR_VERSION}), each with its own cable, near end, "
         "sensor, rate and interference. "
-        f"The height of planted pulses over the recorded noise is uniform in decibels from {low:g} to {high:g} dB, the "
-        f"same law for every label; pulses were found by the extractor at {FALSE_EVENTS:g} false events a cycle.",
+        f"The height of planted pulses over the recorded noise is uniform in decibels from {low:g} to {high:g} dB, or "
+        f"to {world.capture.clipped_db:g} dB over the circuit's full scale where that is less: the same law for every "
+        "label of a circuit. Pulses were found by the extractor with its limit set for "
+        f"{FALSE_EVENTS:g} false events a cycle.",
         studies=_studies(parts, taught, tested, talk, partial(_trained, jobs=jobs)),
     )
     return write_bundle(out, parts, replace=replace_old)

@@ -12,7 +12,7 @@ from pdclass.pulses import FloatArray
 from pdclass.report.gallery_world import families_of, patterns_of
 from pdclass.sim.cable import DB_PER_NEPER, line_of
 from pdclass.sim.cable_kinds import Kind
-from pdclass.sim.disturbers import disturber_signs, disturber_times
+from pdclass.sim.disturbers import Repetition, disturber_signs, disturber_times
 from pdclass.sim.draw import log_even
 from pdclass.sim.drawn_cable import CableRanges, attenuation_spread, draw_cable, draw_lines, velocity_spread
 from pdclass.sim.drawn_chain import ChainRanges, draw_receiver
@@ -237,9 +237,8 @@ def bridge_patterns(scenario: Scenario, *, rng: np.random.Generator) -> list[Pha
             continue
         one = disturbers.thyristor.model_copy(update={"bridges": {bridge: 1.0}})
         drawn = draw_disturber(disturbers.model_copy(update={"thyristor": one}), family="thyristor", rng=rng)
-        repetition, at = drawn.repetition, {"start_deg": 0.0, "deg_per_s": _DEG_PER_S}
-        times = disturber_times(repetition, CYCLES * 360 / _DEG_PER_S, _ALL_EDGES, **at, rng=rng)
-        signs = disturber_signs(repetition, times, **at, rng=rng)
+        times = _all_times(drawn.repetition, CYCLES * 360 / _DEG_PER_S, rng=rng)
+        signs = disturber_signs(drawn.repetition, times, rng=rng)
         found.append(PhasePattern(f"{bridge} commutations", np.mod(times * _DEG_PER_S, 360.0), signs))
     return found
 
@@ -249,8 +248,12 @@ def converter_intervals(scenario: Scenario, *, rng: np.random.Generator) -> Inte
     if "converter" not in families_of(scenario):
         return None
     disturber = draw_disturber(scenario.interference, family="converter", rng=rng)
-    times = disturber_times(disturber.repetition, 0.2, _ALL_EDGES, start_deg=0.0, deg_per_s=_DEG_PER_S, rng=rng)
+    times = _all_times(disturber.repetition, 0.2, rng=rng)
     return Intervals(np.diff(times) * 1e6, disturber.repetition.hz)
+
+
+def _all_times(repetition: Repetition, duration_s: float, *, rng: np.random.Generator) -> FloatArray:
+    return disturber_times(repetition, duration_s, _ALL_EDGES, start_deg=0.0, deg_per_s=_DEG_PER_S, rng=rng)
 
 
 def strongest_ring(hz: FloatArray, gain: FloatArray) -> tuple[float, float]:

@@ -264,7 +264,7 @@ def _interference(place: _Place, wish: SourceEntry, *, rng: np.random.Generator)
     disturber = draw_disturber(place.scenario.interference, family=wish.family, path=wish.path, rng=rng)
     entrance = _disturbance(disturber, place.station, rng=rng)
     source = _source(place, wish, disturber.family, disturber.current, entrance)
-    if disturber.repetition.pattern == "uniform":
+    if disturber.repetition.pattern is None:
         return replace(source, repetition=disturber.repetition)
     # a point in air is a source that lasts, as a void is
     return replace(source, activity=draw_activity(disturber.repetition.pattern, place.scenario.activity, rng=rng))

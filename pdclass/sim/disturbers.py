@@ -12,8 +12,9 @@ from typing import Literal
 
 import numpy as np
 
+from pdclass.errors import InputError, complaint
 from pdclass.pulses import FloatArray
-from pdclass.sim.phase import Pattern, draw_phases, half_cycle_sign
+from pdclass.sim.phase import Pattern
 from pdclass.sim.source import SourceCurrent
 
 Family = Literal[
@@ -36,28 +37,28 @@ class Repetition:
 
     Attributes
     ----------
-    kind : `random`, evenly; `switching`, two edges a period of `hz`; `mains-locked`, `commutations` a mains cycle,
-        or after the phase pattern of a discharge in air; `bursts`, groups of `burst_pulses`.
+    kind : `random`, evenly; `switching`, two edges a period of `hz`; `mains-locked`, `commutations` a mains cycle;
+        `bursts`, groups of `burst_pulses`; `pattern`, that of a discharge in air, whose times an activity gives.
     hz : switching frequency, in bursts that of the pulses within one; 0 there for pulses at random [Hz].
     jitter : standard deviation of an edge as a share of the period of `hz`, >= 0.
-    commutations : a mains cycle; 0 where `pattern` decides.
+    commutations : a mains cycle.
     firing_deg, overlap_deg : phase of the first commutation, and how long one lasts; both its ends send [deg].
     jitter_deg : standard deviation of the firing [deg], >= 0.
-    pattern : phase pattern without commutations.
     burst_pulses : pulses in a burst, >= 1.
     burst_s : its duration where the pulses in it are at random [s].
+    pattern : phase pattern of the kind `pattern`, else None.
     """
 
-    kind: Literal["random", "switching", "mains-locked", "bursts"]
+    kind: Literal["random", "switching", "mains-locked", "bursts", "pattern"]
     hz: float = 0.0
     jitter: float = 0.0
     commutations: int = 0
     firing_deg: float = 0.0
     overlap_deg: float = 0.0
     jitter_deg: float = 0.0
-    pattern: Pattern = "uniform"
     burst_pulses: int = 1
     burst_s: float = 0.0
+    pattern: Pattern | None = None
 
 
 @dataclass(frozen=True)
@@ -85,38 +86,38 @@ def disturber_times(
     ----------
     repetition : of the disturber.
     duration_s : length of the stretch [s].
-    count : how many are wanted, >= 0. Patterns and random ones have as many, bursts but for those beyond the stretch;
+    count : how many are wanted, >= 0. Random ones have as many, bursts but for those beyond the stretch;
         a switching or commutating device has no more than its edges in the stretch, and of more only `count` in a row.
     start_deg : phase of the reference voltage at the begin of the stretch [deg].
     deg_per_s : 360 times the mains frequency [deg/s].
+
+    Raises
+    ------
+    InputError
+        If the repetition is a phase pattern.
     """
     if repetition.kind == "switching":
         edges = switching_times(duration_s, repetition.hz, repetition.jitter, rng=rng)
         return _in_a_row(edges, count, rng=rng)
-    if repetition.kind == "mains-locked" and repetition.commutations > 0:
+    if repetition.kind == "mains-locked":
         edges = commutation_times(repetition, duration_s, start_deg, deg_per_s, rng=rng)
         return _in_a_row(edges, count, rng=rng)
-    if repetition.kind == "mains-locked":
-        span_deg = duration_s * deg_per_s
-        phases = draw_phases(repetition.pattern, count, start_deg, span_deg, rng=rng)
-        return _within((phases - start_deg) / deg_per_s, duration_s)
     if repetition.kind == "bursts":
         return burst_times(repetition, duration_s, count, rng=rng)
-    return np.sort(rng.uniform(0.0, duration_s, count))
+    if repetition.kind == "random":
+        return np.sort(rng.uniform(0.0, duration_s, count))
+    advice = "draw an activity of its pattern"
+    raise InputError(complaint("disturber", "kind", expected="a repetition", found=repetition.kind, advice=advice))
 
 
-def disturber_signs(
-    repetition: Repetition, times_s: FloatArray, *, start_deg: float, deg_per_s: float, rng: np.random.Generator
-) -> FloatArray:
-    """Polarities that go with `disturber_times`, +1 or -1, same shape; the arguments as there.
+def disturber_signs(repetition: Repetition, times_s: FloatArray, *, rng: np.random.Generator) -> FloatArray:
+    """Polarities that go with `disturber_times` [s], +1 or -1, same shape.
 
-    What switches on switches off next, and a commutation ends against its begin; a corona has the sign of its half
-    cycle; the contacts of one burst have one sign; what comes at random has either.
+    What switches on switches off next, and a commutation ends against its begin; the contacts of one burst have one
+    sign; what comes at random has either.
     """
-    if repetition.kind == "switching" or repetition.commutations > 0 or repetition.hz > 0:
+    if repetition.kind in {"switching", "mains-locked"} or repetition.hz > 0:
         return np.resize([1.0, -1.0], times_s.size)
-    if repetition.kind == "mains-locked":
-        return half_cycle_sign(start_deg + times_s * deg_per_s)
     apart = np.diff(times_s, prepend=times_s[:1]) > repetition.burst_s
     burst = np.cumsum(apart) if repetition.kind == "bursts" else np.arange(times_s.size)
     return np.asarray(rng.choice([-1.0, 1.0], times_s.size)[burst])

@@ -346,7 +346,7 @@ def _draw_line_corona(ranges: LineCoronaRanges, *, rng: np.random.Generator) -> 
     travelled_s = log_even(ranges.line_km, rng=rng) * log_even(ranges.rise_s_per_km, rng=rng)
     rise_s, fall_s = np.hypot([current.rise_s, current.fall_s], travelled_s).tolist()
     arriving = replace(current, rise_s=rise_s, fall_s=fall_s)
-    return arriving, Repetition("mains-locked", pattern=CORONA_PATTERNS[polarity])
+    return arriving, Repetition("pattern", pattern=CORONA_PATTERNS[polarity])
 
 
 def _draw_sferic(ranges: SfericRanges, *, rng: np.random.Generator) -> tuple[SourceCurrent, Repetition]:

@@ -154,28 +154,6 @@ def activity_phases(
     return Discharges(phase_deg[order], np.concatenate([found.charge, stray])[order])
 
 
-def draw_phases(
-    pattern: Pattern,
-    count: int,
-    start_deg: float,
-    span_deg: float,
-    *,
-    rng: np.random.Generator,
-    activity: Activity | None = None,
-) -> FloatArray:
-    """Unwrapped phases of `count` pulses within a stretch, (count,) [deg], rising.
-
-    Parameters
-    ----------
-    pattern : kind of source, from which an activity is drawn if none is given.
-    count : number of pulses, >= 0.
-    start_deg, span_deg : first phase and length of the stretch [deg].
-    activity : of the source, where it lasts over several stretches.
-    """
-    lasting = draw_activity(pattern, rng=rng) if activity is None else activity
-    return activity_phases(lasting, count, start_deg, span_deg, rng=rng).phase_deg
-
-
 def half_cycle_sign(phase_deg: FloatArray) -> FloatArray:
     """+1 in the positive half cycle, -1 in the negative one, same shape."""
     return np.where(np.mod(phase_deg, 360.0) < 180.0, 1.0, -1.0)

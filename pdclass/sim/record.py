@@ -141,7 +141,7 @@ def _onsets(
             deg_per_s=deg_per_s,
             rng=rng,
         )
-        signs = disturber_signs(source.repetition, times_s, start_deg=start_deg, deg_per_s=deg_per_s, rng=rng)
+        signs = disturber_signs(source.repetition, times_s, rng=rng)
         return np.minimum(first + times_s * timeline.rate_hz, end - 1), signs
     activity = Activity(None) if source.activity is None else source.activity
     span_deg = (end - first) * timeline.deg_per_sample

@@ -68,7 +68,7 @@ def test_currents_fit_into_a_record(family):
         ("switch-mode", {"bursts"}),
         ("arc", {"switching", "bursts"}),
         ("radio-packet", {"random", "bursts"}),
-        ("line-corona", {"mains-locked"}),
+        ("line-corona", {"pattern"}),
         ("sferic", {"random", "bursts"}),
         ("switching-operation", {"bursts"}),
     ],

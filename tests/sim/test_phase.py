@@ -13,7 +13,6 @@ from pdclass.sim.phase import (
     Pattern,
     activity_phases,
     draw_activity,
-    draw_phases,
     half_cycle_sign,
 )
 
@@ -46,9 +45,15 @@ def test_same_generator_same_pulses(pattern):
     assert runs[0] == runs[1]
 
 
+def phases_of(pattern, count, span_deg, seed):
+    """Phases of one drawn source [deg]."""
+    one = rng(seed)
+    return activity_phases(draw_activity(pattern, rng=one), count, 0.0, span_deg, rng=one).phase_deg
+
+
 def test_void_lies_in_the_rising_quarters():
     """Over fifty drawn voids most pulses come while the voltage runs towards a peak, hardly any just after one."""
-    phases = [draw_phases("void", 200, 0.0, 3600.0, rng=rng(seed)) for seed in range(50)]
+    phases = [phases_of("void", 200, 3600.0, seed) for seed in range(50)]
     half = np.mod(np.concatenate(phases), 180.0)
     assert (half < 90).mean() > 0.7
     assert ((half > 100) & (half < 130)).mean() < 0.05
@@ -58,7 +63,7 @@ def test_surface_is_unlike_in_the_half_cycles():
     """A surface's two half cycles differ in number by more than a void's do."""
 
     def difference(pattern):
-        signs = [half_cycle_sign(draw_phases(pattern, 200, 0.0, 7200.0, rng=rng(seed))).mean() for seed in range(60)]
+        signs = [half_cycle_sign(phases_of(pattern, 200, 7200.0, seed)).mean() for seed in range(60)]
         return np.mean(np.abs(signs))
 
     assert difference("surface") > 2 * difference("void")
@@ -135,7 +140,7 @@ def test_activity_lasts_over_stretches():
     """With an activity given, two stretches of the same source keep to the same phases."""
     activity = Activity(Gap(1.9, 0.6, 0.0))
     first, second = (
-        np.unique(np.round(np.mod(draw_phases("void", 50, start, 720.0, rng=rng(), activity=activity), 360), 3))
+        np.unique(np.round(np.mod(activity_phases(activity, 50, start, 720.0, rng=rng()).phase_deg, 360), 3))
         for start in (0.0, 7200.0)
     )
     assert set(second) <= set(first) | {360.0}

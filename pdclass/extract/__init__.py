@@ -1,5 +1,6 @@
 """From a capture's stream of samples to its pulses."""
 
-from pdclass.extract.stream import Extraction, ExtractSettings, extract
+from pdclass.extract.background import ExtractSettings
+from pdclass.extract.stream import Extraction, extract
 
 __all__ = ["ExtractSettings", "Extraction", "extract"]

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 
 from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
 from pdclass.features.edges import measured_places
-from pdclass.features.window import ONSET, STEP_NS, Window, prepared
+from pdclass.features.window import ONSET, STEP_NS, Window, Windows, prepared, stacked
 from pdclass.pulses import FloatArray, PulseSet
+
+#: So many windows stay in the fast cache of a processor; no result depends on it.
+BATCH = 128
 
 
 def feature_table(pulses: PulseSet, names: Sequence[str] | None = None) -> FloatArray:
@@ -36,10 +39,12 @@ def feature_table(pulses: PulseSet, names: Sequence[str] | None = None) -> Float
         raise RefusedError(f"feature '{unknown[0]}' is not in this version's catalogue; use the version that has it")
     families = [name for name, (features, _) in FAMILIES.items() if any(f.name in wanted for f in features)]
     values = np.full((len(pulses.table), len(wanted)), np.nan)
-    for row, window in enumerate(_windows(pulses)):
-        if window is not None:
-            found = _measured(window, families)
-            values[row] = [found.get(name, np.nan) for name in wanted]
+    for first in range(0, len(values), BATCH):
+        rows = range(first, min(first + BATCH, len(values)))
+        usable = [(row, window) for row in rows if (window := _window(pulses, row)) is not None]
+        if usable:
+            found = _measured(stacked([window for _, window in usable]), families)
+            values[[row for row, _ in usable]] = np.stack([found[name] for name in wanted], axis=1)
     return values
 
 
@@ -60,26 +65,19 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     return {**shown, **times, "end": (window.end - ONSET) * STEP_NS / 1e3}
 
 
-def _windows(pulses: PulseSet) -> Iterator[Window | None]:
-    """One window at a time: prepared windows are larger than stored ones, and tables may be long."""
-    return (_window(pulses, place) for place in range(len(pulses.table)))
-
-
 def _window(pulses: PulseSet, place: int) -> Window | None:
     chain = pulses.chains[int(pulses.table["chain"].iloc[place])]
     return prepared(pulses.waves[place], chain, float(pulses.table["duration_us"].iloc[place]))
 
 
-def _measured(window: Window, families: Sequence[str]) -> dict[str, float]:
+def _measured(windows: Windows, families: Sequence[str]) -> dict[str, FloatArray]:
     """Values of some families, those NaN that the chain or the noise does not allow or that leave their range."""
-    found: dict[str, float] = {}
+    found: dict[str, FloatArray] = {}
     for family in families:
         features, measure = FAMILIES[family]
-        values = measure(window)
-        for feature in features:
-            value = values[feature.name]
+        for feature, values in zip(features, measure(windows).T, strict=True):
             low, high = feature.valid_range
-            carried = window.reach_hz >= feature.needs_hz
-            clear = feature.needs_snr_db == 0 or window.snr_db >= feature.needs_snr_db
-            found[feature.name] = value if carried and clear and low <= value <= high else np.nan
+            carried = windows.reach_hz >= feature.needs_hz
+            clear = (feature.needs_snr_db == 0) | (windows.snr_db >= feature.needs_snr_db)
+            found[feature.name] = np.where(carried & clear & (values >= low) & (values <= high), values, np.nan)
     return found

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -93,6 +94,50 @@ class Window:
         frequency_hz = scipy.fft.rfftfreq(_SPECTRUM_FFT, 1 / ANALYSIS_RATE_HZ)
         inside = (frequency_hz >= ANALYSIS_BAND_HZ[0]) & (frequency_hz <= ANALYSIS_BAND_HZ[1])
         return frequency_hz[inside], spectrum[inside], noise[inside]
+
+
+@dataclass(frozen=True)
+class Windows:
+    """A batch of pulses ready for measuring: the fields of `Window`, one row a pulse.
+
+    Attributes
+    ----------
+    wave, raw : (pulses, SAMPLES) carriers reduced, and with them, in units of the peak.
+    end, last, peak : (pulses,) int64 places as of `Window`.
+    height_v, noise, reach_hz, low_hz : (pulses,) as of `Window`.
+    noise_power : (pulses, bins) noise spectrum scaled to the own samples.
+    """
+
+    wave: FloatArray
+    raw: FloatArray
+    end: IntArray
+    last: IntArray
+    peak: IntArray
+    height_v: FloatArray
+    noise: FloatArray
+    noise_power: FloatArray
+    reach_hz: FloatArray
+    low_hz: FloatArray
+
+    def __len__(self) -> int:
+        return len(self.wave)
+
+    @property
+    def snr_db(self) -> FloatArray:
+        """Peak over noise after the carriers are reduced [dB], (pulses,); NaN where the noise is unknown."""
+        known = np.where(self.noise > 0, self.noise, np.nan)
+        return np.asarray(-20 * np.log10(known))
+
+    def row(self, place: int) -> Window:
+        """One pulse alone."""
+        fields = ("wave", "raw", "end", "last", "peak", "height_v", "noise", "noise_power", "reach_hz", "low_hz")
+        return Window(*(getattr(self, name)[place] for name in fields))
+
+
+def stacked(windows: Sequence[Window]) -> Windows:
+    """Single windows as one batch."""
+    fields = ("wave", "raw", "end", "last", "peak", "height_v", "noise", "noise_power", "reach_hz", "low_hz")
+    return Windows(*(np.array([getattr(window, name) for window in windows]) for name in fields))
 
 
 def chain_reach_hz(chain: Chain) -> float:

@@ -29,6 +29,12 @@ class TooFewError(PdclassError):
     exit_code = 4
 
 
+class MissingPartError(PdclassError):
+    """An optional part of the installation is missing (exit code 5); the message names the extra."""
+
+    exit_code = 5
+
+
 class SkippedInputsError(PdclassError):
     """The work is done, but some inputs were skipped (exit code 6)."""
 

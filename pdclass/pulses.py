@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any, cast
@@ -17,6 +18,9 @@ IntArray = NDArray[np.int64]
 LABELS = ("cable", "local", "switchgear", "interference")
 UNDECIDED = "undecided"
 BASES = ("dissected", "isolated", "located", "cross-checked", "expert", "simulated")
+
+#: A class of the user's own: letters, digits, spaces, `_` and `-`, so that it can name a column and stand in a list.
+_OWN_CLASS = re.compile(r"[^\W_][\w -]{0,38}[^\W_]")
 
 WINDOW_S = 20e-6
 ONSET_SHARE = 0.25
@@ -140,11 +144,14 @@ class PulseSet:
     waves : (pulses, samples) float32 [V]; samples outside the record are NaN; the onset is a quarter in.
     chains : the chains that the `chain` column counts into.
     table : one row a pulse, indexed by `pulse_id`, with the columns of `TABLE_COLUMNS`.
+    own_classes : labels beside `LABELS` that the table may hold, each with the one of `LABELS` that it is a kind of,
+        or "" for none.
     """
 
     waves: WaveArray
     chains: tuple[Chain, ...]
     table: pd.DataFrame
+    own_classes: Mapping[str, str] = field(default_factory=dict)
 
     @property
     def rate_hz(self) -> float:
@@ -153,7 +160,12 @@ class PulseSet:
 
     def take(self, places: NDArray[Any]) -> PulseSet:
         """The pulses at the given places (integer positions or a boolean mask)."""
-        return PulseSet(self.waves[places], self.chains, self.table.iloc[places])
+        return PulseSet(self.waves[places], self.chains, self.table.iloc[places], self.own_classes)
+
+
+def is_own_class(name: str) -> bool:
+    """Whether a text can name a class of the user's own: 2 to 40 letters, digits, spaces, `_`, `-`; none of ours."""
+    return _OWN_CLASS.fullmatch(name) is not None and name not in {*LABELS, UNDECIDED}
 
 
 def window_samples(rate_hz: float) -> int:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from typing import Any
 
 import numpy as np
@@ -31,11 +31,18 @@ _WITHOUT_NULLS = ("pulse_id", "circuit", "session", "chain")
 
 
 def column_values(
-    where: str, name: str, found: Any, kind: Any, parts: list[Any], notes: list[str], fill: str | None = None
+    where: str,
+    name: str,
+    found: Any,
+    kind: Any,
+    parts: list[Any],
+    notes: list[str],
+    fill: str | None = None,
+    own_classes: Collection[str] = (),
 ) -> Any:
     """The values of one column as an array of the contract's type; text as objects with None for null.
 
-    `fill` stands in for nulls of a text column.
+    `fill` stands in for nulls of a text column; `own_classes` are labels beside ours.
 
     Raises
     ------
@@ -47,7 +54,7 @@ def column_values(
     if name in _WITHOUT_NULLS and not valid.all() and fill is None:
         raise _wrong(where, name, int(np.argmin(valid)), "a value", "nothing", _supply(name))
     if pa.types.is_string(kind):
-        return _texts(where, name, parts, fill)
+        return _texts(where, name, parts, fill, own_classes)
     if pa.types.is_timestamp(kind):
         return _times(where, name, parts)
     if not valid.all() and not pa.types.is_floating(kind):
@@ -76,7 +83,7 @@ def _supply(name: str) -> str:
     return f"write it{option}, or leave the row out"
 
 
-def _texts(where: str, name: str, parts: list[Any], fill: str | None) -> NDArray[Any]:
+def _texts(where: str, name: str, parts: list[Any], fill: str | None, own_classes: Collection[str]) -> NDArray[Any]:
     values: list[str | None] = []
     for part in parts:
         # distinct texts are checked and held once: a small file may repeat a large one very often
@@ -86,7 +93,7 @@ def _texts(where: str, name: str, parts: list[Any], fill: str | None) -> NDArray
         values += [fill if code is None else words[code] or fill for code in codes]
     array = np.empty(len(values), object)
     array[:] = values
-    _check_words(where, name, array)
+    _check_words(where, name, array, own_classes)
     return array
 
 
@@ -102,9 +109,9 @@ def _words(where: str, name: str, dictionary: Any, row: int) -> list[str | None]
     return [word or None for word in words]
 
 
-def _check_words(where: str, name: str, values: NDArray[Any]) -> None:
+def _check_words(where: str, name: str, values: NDArray[Any], own_classes: Collection[str]) -> None:
     known: dict[str | None, bool] = {}
-    choices = CHOICES.get(name)
+    choices = (*LABELS, *own_classes) if name == "label" else CHOICES.get(name)
     expected = f"one line of text, 1 to {TEXT_LIMIT} characters"
     expected = expected if choices is None else "null or one of " + ", ".join(choices)
     for row, word in enumerate(values):

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from types import MappingProxyType
 
+from pdclass.capture.maps import Map
 from pdclass.settings import Settings
 
 #: The command-line option that supplies each fill-in.
@@ -26,9 +27,10 @@ class FillIns(Settings):
     """Values for fields that a file lacks; where the file has the field, the file wins.
 
     Bounds are checked where a fill-in is used, by the rules of the field that it stands in for, so that
-    the message can name the option.
+    the message can name the option. `map` says what the columns of a CSV trace are; other kinds of capture need none.
     """
 
+    map: Map | None = None
     rate_hz: float | None = None
     volts_per_count: float | None = None
     circuit: str | None = None

@@ -4,14 +4,17 @@ from __future__ import annotations
 
 from pathlib import Path
 
+from pdclass.capture.arrays import HDF5_ENDINGS, NPZ_ENDINGS
 from pdclass.capture.fill import FillIns
 from pdclass.capture.recording import META_ENDING, SAMPLES_ENDING
 from pdclass.capture.sigmf import read_sigmf
+from pdclass.capture.traces import read_array_capture, read_trace
 from pdclass.errors import InputError, complaint
 from pdclass.pulses import Capture
 
+TRACE_ENDING = ".csv"
 _LONGEST_NAME = 120
-_READ = "a SigMF recording (NAME.sigmf-meta, NAME.sigmf-data or NAME)"
+_READ = "a SigMF recording (NAME.sigmf-meta, NAME.sigmf-data or NAME), .npz, .h5, or .csv with a map"
 
 
 def open_capture(path: Path | str, fill: FillIns | None = None) -> Capture:
@@ -21,10 +24,16 @@ def open_capture(path: Path | str, fill: FillIns | None = None) -> Capture:
     ------
     InputError
         If the path is a folder, has an ending that is not read, or anything about the file is wrong.
+    MissingPartError
+        If the extra that reads this kind is not installed.
     """
     path = Path(path)
     check_name(path)
     try:
+        if path.suffix in (*NPZ_ENDINGS, *HDF5_ENDINGS):
+            return read_array_capture(path, fill or FillIns())
+        if path.suffix == TRACE_ENDING:
+            return read_trace(path, fill or FillIns())
         _refuse_other_kinds(path)
         return read_sigmf(path, fill or FillIns())
     except OSError as error:

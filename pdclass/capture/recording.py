@@ -87,6 +87,15 @@ def map_samples(path: Path, layout: Layout) -> tuple[NDArray[Any], str]:
     return counts, digest
 
 
+def check_counts(path: Path, counts: NDArray[Any], layout: Layout) -> None:
+    """Refuse samples in memory that `map_samples` would refuse in a file; errors as there."""
+    if counts.size < 2:
+        advice = "record again"
+        raise InputError(complaint(path, "samples", expected="at least 2", found=str(counts.size), advice=advice))
+    _check_finite(path, counts, 0)
+    _check_extremes(path, float(counts.min()), float(counts.max()), layout)
+
+
 def _count(path: Path, size: int, layout: Layout) -> int:
     room = size - layout.header_bytes - layout.trailing_bytes
     unit = layout.dtype.itemsize

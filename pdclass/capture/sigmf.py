@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from difflib import get_close_matches
 from pathlib import Path
@@ -25,6 +25,12 @@ COUPLINGS = ("strap", "cable-strap-led-back", "core")
 ARROWS = ("to-earth", "to-cable")
 PHASE_REFERENCES = ("own", "L1-earth", "L2-earth", "L3-earth", "low-voltage-socket")
 
+#: Fields of `global` that a file of another kind may have, under the same names without prefix.
+PLAIN_FIELDS = (
+    *("sample_rate", "volts_per_count", "circuit", "sensor", "session", "adc_bits", "transfer_ohm", "band_hz"),
+    *("mains_hz", "response", "site", "conductor", "coupling", "arrow", "phase_reference", "phase_uncertainty_deg"),
+    *("sampled_with", "sample_count"),
+)
 _FILL_FIELDS = {"rate_hz": "core:sample_rate"} | {name: f"pdclass:{name}" for name in OPTIONS if name != "rate_hz"}
 _OWN_FIELDS = tuple(
     f"pdclass:{name}"
@@ -77,6 +83,47 @@ def read_sigmf(path: Path, fill: FillIns) -> Capture:
     capture, layout = describe(fields, content, recording_stem(path).name)
     counts, digest = map_samples(samples_path, layout)
     return _placed(replace(capture, counts=counts, digest=digest), fields, content)
+
+
+def read_fields(
+    path: Path,
+    datatype: str,
+    said: Mapping[str, Any],
+    starts: Sequence[Mapping[str, Any]],
+    samples: int,
+    fill: FillIns,
+) -> tuple[Capture, Layout]:
+    """A capture without its samples from fields of the same names without prefix, as other kinds of file have them.
+
+    Parameters
+    ----------
+    path : the file.
+    datatype : SigMF name of the samples' type.
+    said : fields of `PLAIN_FIELDS`.
+    starts : entries of `captures[]`.
+    samples : samples of the file.
+    fill : what the file lacks.
+
+    Raises
+    ------
+    InputError
+        If a field is missing, out of bounds or contradictory; it is named without prefix.
+    """
+    stated = {("core:" if name == "sample_rate" else "pdclass:") + name: value for name, value in said.items()}
+    content = {
+        "global": {"core:version": "1.2.0", "core:datatype": datatype, **stated},
+        "captures": [{_start_field(name): value for name, value in start.items()} for start in starts],
+    }
+    try:
+        fields = _global_fields(path, content, fill)
+        capture, layout = describe(fields, content, path.stem)
+        return _placed(replace(capture, counts=np.zeros(1, layout.dtype)), fields, content, samples), layout
+    except InputError as error:
+        raise InputError(str(error).replace("pdclass:", "").replace("core:", "")) from None
+
+
+def _start_field(name: str) -> str:
+    return ("pdclass:" if name == "phase_deg" else "core:") + name
 
 
 def describe(fields: Fields, content: Mapping[str, Any], name: str) -> tuple[Capture, Layout]:

@@ -21,11 +21,22 @@ from pdclass.capture.tables_writer import ARROW_TYPES, TABLE_FORMAT, TABLE_KEY
 from pdclass.capture.waves import check_waves, peak_v, pretrigger_noise_v, signal_to_noise_db, wave_rows
 from pdclass.digest import loose_pulse_id
 from pdclass.errors import InputError, complaint
-from pdclass.pulses import SIMULATED_COLUMNS, TABLE_COLUMNS, Chain, PulseSet, WaveArray, typed_table, window_samples
+from pdclass.pulses import (
+    LABELS,
+    SIMULATED_COLUMNS,
+    TABLE_COLUMNS,
+    Chain,
+    PulseSet,
+    WaveArray,
+    is_own_class,
+    typed_table,
+    window_samples,
+)
 
 WAVE_LIMIT_BYTES = 16 << 30
 COLUMN_LIMIT_BYTES = 2 << 30
 COLUMN_LIMIT = 2000
+CLASS_LIMIT = 100
 ROW_LIMIT = 20_000_000
 _ROWS_A_BATCH = 1024
 # waves a few times too long are read, to name the row; a row that stands for a billion samples is not
@@ -142,7 +153,8 @@ def _read(opened: _Opened, fill: FillIns) -> tuple[PulseSet, list[str]]:
     check_waves(opened.where, waves)
     filled = Fields(opened.where, {}, "", {name: getattr(fill, name) for name in _FILLED}, OPTIONS)
     texts = {name: filled.text(name) for name in _FILLED}
-    columns = _columns(opened, len(chains), texts, notes)
+    own_classes = _own_classes(opened)
+    columns = _columns(opened, len(chains), texts, notes, own_classes)
     columns |= {
         name: np.full(opened.rows, text, object)
         for name, text in texts.items()
@@ -156,7 +168,7 @@ def _read(opened: _Opened, fill: FillIns) -> tuple[PulseSet, list[str]]:
     _derive(opened, columns, waves, notes)
     simulated = any(name in columns for name in SIMULATED_COLUMNS)
     table = typed_table(pd.DataFrame(columns, index=ids), ids, simulated=simulated)
-    return PulseSet(waves, chains, _with_lost_parents(opened.where, table, notes)), notes
+    return PulseSet(waves, chains, _with_lost_parents(opened.where, table, notes), own_classes), notes
 
 
 def _with_lost_parents(where: str, table: pd.DataFrame, notes: list[str]) -> pd.DataFrame:
@@ -266,13 +278,25 @@ def _check_rows(opened: _Opened, name: str, found: int) -> None:
         raise opened.wrong(name, f"{opened.rows} rows", f"{found} rows", "the file is damaged; copy it again")
 
 
-def _columns(opened: _Opened, chains: int, texts: dict[str, str | None], notes: list[str]) -> dict[str, Any]:
+def _own_classes(opened: _Opened) -> dict[str, str]:
+    classes = opened.said.get("classes", {})
+    fits = isinstance(classes, dict) and len(classes) <= CLASS_LIMIT
+    if not fits or not all(is_own_class(name) and kind in {"", *LABELS} for name, kind in classes.items()):
+        expected = f'at most {CLASS_LIMIT} own classes, each with one of ours or ""'
+        raise opened.wrong("pdclass.classes", expected, shown(classes), "write the table again")
+    return {str(name): str(kind) for name, kind in classes.items()}
+
+
+def _columns(
+    opened: _Opened, chains: int, texts: dict[str, str | None], notes: list[str], own_classes: dict[str, str]
+) -> dict[str, Any]:
     columns: dict[str, Any] = {}
     for name in (name for name in _KNOWN if name in opened.names):
         parts = list(_batches(opened, name))
         _check_rows(opened, name, sum(len(part) for part in parts))
         kind = ARROW_TYPES[_KNOWN[name]]
-        columns[name] = column_values(opened.where, name, opened.type_of(name), kind, parts, notes, texts.get(name))
+        found = opened.type_of(name)
+        columns[name] = column_values(opened.where, name, found, kind, parts, notes, texts.get(name), own_classes)
     if "chain" in columns and not np.all((columns["chain"] >= 0) & (columns["chain"] < chains)):
         row = int(np.argmax((columns["chain"] < 0) | (columns["chain"] >= chains)))
         found = int(columns["chain"][row])

@@ -63,10 +63,11 @@ def write_pulses(path: Path, pulses: PulseSet) -> None:
             writer.write_table(_rows(pulses, start, schema))
 
 
-def table_content(chains: tuple[Chain, ...]) -> str:
-    """The JSON text of the file metadata key `pdclass`."""
+def table_content(chains: tuple[Chain, ...], own_classes: Mapping[str, str] | None = None) -> str:
+    """The JSON text of the file metadata key `pdclass`; own classes stand in it where there are any."""
     rows = [{name: value for name, value in asdict(chain).items() if name != "rate_hz"} for chain in chains]
-    return canonical_json({"format": TABLE_FORMAT, "rate_hz": chains[0].rate_hz, "chains": rows})
+    own = {"classes": dict(own_classes)} if own_classes else {}
+    return canonical_json({"format": TABLE_FORMAT, "rate_hz": chains[0].rate_hz, "chains": rows, **own})
 
 
 def _schema(path: Path, pulses: PulseSet) -> Any:
@@ -80,7 +81,7 @@ def _schema(path: Path, pulses: PulseSet) -> Any:
     fields = [pa.field("pulse_id", pa.string(), nullable=False)]
     fields += [pa.field(name, ARROW_TYPES[kind]) for name, kind in columns.items()]
     fields.append(pa.field("wave", pa.list_(pa.float32(), pulses.waves.shape[1])))
-    return pa.schema(fields, metadata={TABLE_KEY: table_content(pulses.chains).encode()})
+    return pa.schema(fields, metadata={TABLE_KEY: table_content(pulses.chains, pulses.own_classes).encode()})
 
 
 def _check_readable(path: Path, pulses: PulseSet) -> None:

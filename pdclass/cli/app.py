@@ -43,6 +43,7 @@ def _root(
 app.command("demo")(worlds.demo)
 app.command("simulate")(worlds.simulate)
 app.command("extract")(scoring.extract)
+app.command("import")(scoring.import_pulses)
 app.command("train")(learning.train)
 app.command("evaluate")(learning.evaluate)
 app.command("score")(scoring.score)

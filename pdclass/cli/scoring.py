@@ -1,4 +1,4 @@
-"""Commands from captures to verdicts: extract, score."""
+"""Commands from captures to verdicts: extract, import, score."""
 
 from __future__ import annotations
 
@@ -15,6 +15,7 @@ from pdclass.cli.talking import (
     JOBS,
     JSON,
     MAINS,
+    MAP,
     RATE,
     SENSOR,
     SESSION,
@@ -29,8 +30,9 @@ if TYPE_CHECKING:
 
 
 def extract(
-    captures: list[Path] = typer.Argument(help="Captures (SigMF).", metavar="CAPTURE"),
+    captures: list[Path] = typer.Argument(help="Captures (SigMF, .npz, .h5, or .csv with a map).", metavar="CAPTURE"),
     out: Path = typer.Option(..., "--out", help="Pulse table to write (.parquet)."),
+    map_path: Path = MAP,
     rate_hz: float = RATE,
     volts_per_count: float = COUNT,
     circuit: str = CIRCUIT,
@@ -47,7 +49,7 @@ def extract(
     from pdclass.jobs import extract as job
 
     talk = Terminal()
-    fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
+    fill = _fill_ins(map_path, rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
     done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=talk)
     lines, rows = [], []
     for name, found in zip(done.names, done.found, strict=True):
@@ -63,12 +65,31 @@ def extract(
     _say_skipped(done.skipped, talk)
 
 
+def import_pulses(
+    files: list[Path] = typer.Argument(help="Files of pulses, one a row: .csv, .npz, .h5, .parquet.", metavar="FILE"),
+    map_path: Path = typer.Option(..., "--map", help="What their columns, units and labels are (TOML)."),
+    out: Path = typer.Option(..., "--out", help="Pulse table to write (.parquet)."),
+    force: bool = FORCE,
+    as_json: bool = JSON,
+) -> None:
+    """Bring somebody else's pulses into a pulse table."""
+    from pdclass.jobs import import_pulses as job
+
+    talk = Terminal()
+    done = job.import_pulses(files, map_path, out, force=force, talk=talk)
+    lines = [*done.notes, *done.lines, f"pulses: {out}", f"next: pdclass score {out} --out verdicts"]
+    content = {"out": out, "pulses": done.pulses, "notes": done.notes, "skipped": done.skipped}
+    result(lines, content, as_json=as_json)
+    _say_skipped(done.skipped, talk)
+
+
 def score(
     inputs: list[Path] = typer.Argument(
-        help="Captures (SigMF), pulse tables (.parquet), or folders of them.", metavar="INPUT"
+        help="Captures (SigMF, .npz, .h5, .csv with a map), pulse tables, or folders of them.", metavar="INPUT"
     ),
     out: Path = typer.Option(..., "--out", help="Folder for the verdicts."),
     bundle: Path = typer.Option(None, "--bundle", help="Model; the shipped base bundle by default."),
+    map_path: Path = MAP,
     rate_hz: float = RATE,
     volts_per_count: float = COUNT,
     circuit: str = CIRCUIT,
@@ -86,7 +107,7 @@ def score(
     """Give every pulse of captures or pulse tables its verdict with reasons, and write a report."""
     from pdclass.jobs import score as job
 
-    fill = _fill_ins(rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
+    fill = _fill_ins(map_path, rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
     talk = Terminal()
     done = job.score_inputs(
         inputs, out, bundle=bundle, fill=fill, jobs=jobs, as_csv=csv, report=report, force=force, talk=talk
@@ -107,6 +128,7 @@ def _say_skipped(skipped: tuple[str, ...], talk: Terminal) -> None:
 
 
 def _fill_ins(
+    map_path: Path | None,
     rate_hz: float | None,
     volts_per_count: float | None,
     circuit: str | None,
@@ -116,9 +138,10 @@ def _fill_ins(
     band_hz: str | None,
     mains_hz: float | None,
 ) -> FillIns:
-    from pdclass.capture import FillIns
+    from pdclass.capture import FillIns, read_map
 
     return FillIns(
+        map=None if map_path is None else read_map(map_path),
         rate_hz=rate_hz,
         volts_per_count=volts_per_count,
         circuit=circuit,

@@ -70,6 +70,11 @@ RATE = typer.Option(None, "--rate-hz", help="Sampling rate [Hz], where the file 
 COUNT = typer.Option(None, "--volts-per-count", help="Size of a count [V], where the file does not state it.")
 BAND = typer.Option(None, "--band-hz", help="Corners of the chain [Hz], where not stated.", metavar="LOW,HIGH")
 MAINS = typer.Option(None, "--mains-hz", help="Mains frequency [Hz], where the file does not state it.")
+MAP = typer.Option(None, "--map", help="What the columns of a CSV trace are (TOML).", metavar="MAP.toml")
+LABELS = typer.Option(None, "--labels", help="Label file (CSV); replaces the tables' labels.", metavar="CSV")
+CLASSES = typer.Option(
+    None, "--classes", help="Own classes in it: NAME, or NAME=LABEL for a kind of LABEL.", metavar="NAME[=LABEL],..."
+)
 JSON = typer.Option(False, "--json", help="Print the result as JSON.")
 JOBS = typer.Option(1, "--jobs", min=1, help="Processes; does not change the result.")
 FORCE = typer.Option(False, "--force", help="Replace what an earlier run has written there.")

@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, Literal
 
 from pdclass.features import feature_digests
 from pdclass.jobs.simulate import fresh_folder
 from pdclass.jobs.talk import SILENT, Talk
-from pdclass.jobs.train import measured, read_tables
+from pdclass.jobs.train import labelled_tables, measured, own_classes_of
 from pdclass.model.bundle import Bundle, read_bundle
 from pdclass.pulses import PulseSet
 from pdclass.training.card import evaluation_text, spoken
@@ -29,9 +29,19 @@ class Evaluated:
 
 
 def evaluate_bundle(
-    bundle: Path, pulses: Sequence[Path], out: Path, *, force: bool = False, talk: Talk = SILENT
+    bundle: Path,
+    pulses: Sequence[Path],
+    out: Path,
+    *,
+    labels: Path | None = None,
+    classes: Mapping[str, str] | None = None,
+    force: bool = False,
+    talk: Talk = SILENT,
 ) -> Evaluated:
     """Evaluate a bundle and write `evaluation.md`.
+
+    `labels` and `classes` are as for `train_bundle`. A label that the bundle does not know is judged as the label
+    that it is a kind of, where that is stated and known.
 
     Raises
     ------
@@ -39,15 +49,36 @@ def evaluate_bundle(
         If no pulse is labelled.
     """
     model = read_bundle(bundle, feature_digests())
-    sets, notes = read_tables(pulses)
+    sets, notes = labelled_tables(pulses, labels, classes)
+    sets, judged_as = _as_known(sets, model.classes)
     values, together = measured(sets, model.features)
     talk.say(f"{len(together.table)} pulses measured")
     seen = _seen(model, together)
     found = evaluate(model, values, together)
     fresh_folder(out, force=force)
     write_text(out / "evaluation.md", evaluation_text(found, title=f"Bundle {model.digest[:16]}", warnings=seen))
-    lines = (*notes, *seen, *spoken(found.figures))
+    lines = (*notes, *judged_as, *seen, *spoken(found.figures))
     return Evaluated(found.figures, out / "evaluation.md", lines)
+
+
+def _as_known(sets: Sequence[PulseSet], known: Sequence[str]) -> tuple[list[PulseSet], list[str]]:
+    """The pulse sets with own classes that a bundle does not know turned into what they are a kind of."""
+    kinds = {
+        name: kind for one in sets for name, kind in one.own_classes.items() if name not in known and kind in known
+    }
+    count = {name: sum(int((one.table["label"] == name).sum()) for one in sets) for name in kinds}
+    changed = [replace(one, table=one.table.assign(label=one.table["label"].replace(kinds))) for one in sets]
+    notes = [
+        f"'{name}' is judged as {kinds[name]}, which it is a kind of: {number} pulses"
+        for name, number in sorted(count.items())
+        if number
+    ]
+    notes += [
+        f"warning: '{name}' is a kind of interference; the dangerous cell counts 'interference' alone"
+        for name, kind in sorted(own_classes_of(sets).items())
+        if kind == "interference" and name in known
+    ]
+    return changed, notes
 
 
 def _seen(model: Bundle, pulses: PulseSet) -> tuple[str, ...]:

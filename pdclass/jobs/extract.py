@@ -42,12 +42,7 @@ def extract_captures(
     InputError
         If no capture is readable, captures differ in rate, or the table exists and `force` is not given.
     """
-    if out.suffix != ".parquet":
-        raise InputError(f"{out}: --out: expected a name that ends in .parquet; choose one")
-    if out.exists() and not force:
-        raise InputError(f"{out}: exists already; choose another name or --force")
-    if not out.resolve().parent.is_dir():
-        raise InputError(f"{out.resolve().parent}: no such folder; make it first")
+    check_table_place(out, force=force)
     calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in dict.fromkeys(captures)]
     made = _once(each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures looked at"))
     read = [one for one in made if not isinstance(one, str)]
@@ -57,6 +52,22 @@ def extract_captures(
     _one_rate(read)
     write_pulses(out, joined([extraction.pulses for _, extraction in read]))
     return Extracted(out, tuple(name for name, _ in read), tuple(extraction for _, extraction in read), skipped)
+
+
+def check_table_place(out: Path, *, force: bool) -> None:
+    """Refuse a place where a pulse table cannot, or may not, be written.
+
+    Raises
+    ------
+    InputError
+        If the name has another ending, exists and `force` is not given, or its folder is not there.
+    """
+    if out.suffix != ".parquet":
+        raise InputError(f"{out}: --out: expected a name that ends in .parquet; choose one")
+    if out.exists() and not force:
+        raise InputError(f"{out}: exists already; choose another name or --force")
+    if not out.resolve().parent.is_dir():
+        raise InputError(f"{out.resolve().parent}: no such folder; make it first")
 
 
 def _once(made: Sequence[tuple[str, Extraction] | str]) -> list[tuple[str, Extraction] | str]:

@@ -11,7 +11,7 @@ from typing import Any
 import pandas as pd
 
 from pdclass import __version__
-from pdclass.capture import FillIns, check_name, open_capture, read_pulses
+from pdclass.capture import HDF5_ENDINGS, NPZ_ENDINGS, FillIns, check_name, open_capture, read_pulses
 from pdclass.digest import file_digest
 from pdclass.errors import InputError, PdclassError
 from pdclass.extract import ExtractSettings, extract
@@ -25,6 +25,8 @@ from pdclass.verdict import batch
 from pdclass.verdict.score import not_checked, score
 
 _TABLE = ".parquet"
+#: Captures that a folder is searched for beside SigMF; a CSV could be anything, and is named.
+ARRAYS = (*NPZ_ENDINGS, *HDF5_ENDINGS)
 
 
 @dataclass(frozen=True)
@@ -157,12 +159,15 @@ def _expanded(given: Path, talk: Talk) -> list[Path]:
     """The inputs a path stands for: itself, or what a folder holds."""
     if not given.is_dir():
         return [given]
-    found = sorted([*given.glob("*.sigmf-meta"), *given.glob("*.parquet")])
+    captures_there = [*given.glob("*.sigmf-meta"), *(path for ending in ARRAYS for path in given.glob(f"*{ending}"))]
+    found = sorted([*captures_there, *given.glob("*.parquet")])
     if (given / "run.json").is_file():
         found = sorted((given / "pulses").glob("*.parquet"))
     if not found:
-        raise InputError(f"{given}: no captures (.sigmf-meta) or pulse tables (.parquet) in this folder; name another")
-    captures = [path for path in found if path.suffix == ".sigmf-meta"]
+        raise InputError(
+            f"{given}: no captures (.sigmf-meta, .npz, .h5) or pulse tables (.parquet) in this folder; name another"
+        )
+    captures = [path for path in found if path.suffix != _TABLE]
     if captures and len(captures) < len(found):
         talk.say(f"{given}: its {len(captures)} captures are scored; name its pulse tables to score those")
     return captures or found

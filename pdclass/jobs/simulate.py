@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from pdclass.capture import write_pulses, write_sigmf
+from pdclass.capture import together, write_pulses, write_sigmf
 from pdclass.errors import InputError
 from pdclass.extract import Extraction, ExtractSettings, extract
 from pdclass.jobs.gallery import GALLERY, write_gallery
@@ -170,7 +170,8 @@ def joined(sets: Sequence[PulseSet]) -> PulseSet:
     for pulses in sets:
         place = np.array([chains.index(chain) for chain in pulses.chains], np.int16)
         tables.append(pulses.table.assign(chain=place[pulses.table["chain"].to_numpy(np.int64)]))
-    return PulseSet(np.concatenate([pulses.waves for pulses in sets]), tuple(chains), pd.concat(tables))
+    own_classes = together("own classes", *(pulses.own_classes for pulses in sets))
+    return PulseSet(np.concatenate([pulses.waves for pulses in sets]), tuple(chains), pd.concat(tables), own_classes)
 
 
 def _capture_to_disk(world: Scenario, number: int, seed: int, pulses: int | None, out: Path) -> tuple[Path, PulseSet]:

@@ -3,21 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
+import pandas as pd
 from pydantic import ValidationError
 
-from pdclass.capture import read_pulses
+from pdclass.capture import double_notes, join_labels, read_labels, read_pulses, together
 from pdclass.digest import file_digest
 from pdclass.errors import InputError
 from pdclass.features import ANALYSIS_BAND_HZ, ANALYSIS_RATE_HZ, CATALOGUE, feature_digests, feature_table
+from pdclass.jobs.inventory import inventory_lines
 from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk
 from pdclass.model.bundle import BundleParts, check_place, write_bundle
 from pdclass.model.columns import thin
-from pdclass.pulses import LABELS, FloatArray, PulseSet
+from pdclass.pulses import LABELS, FloatArray, PulseSet, is_own_class
 from pdclass.training.card import with_card
 from pdclass.training.fit import train
 from pdclass.training.settings import TrainSettings
@@ -42,12 +44,17 @@ def train_bundle(
     error_rate: float = 0.10,
     mix: Mapping[str, float] | None = None,
     group: str | None = None,
+    labels: Path | None = None,
+    classes: Mapping[str, str] | None = None,
     private: bool = False,
     seed: int = 0,
     force: bool = False,
     talk: Talk = SILENT,
 ) -> Trained:
     """Fit, calibrate and write a bundle.
+
+    `labels` is a label file that replaces what the tables say of the pulses it names; `classes` are own classes that
+    may stand in it, each with the one of our labels that it is a kind of, or "".
 
     Raises
     ------
@@ -58,11 +65,15 @@ def train_bundle(
     """
     settings = _settings(error_rate, mix, group, private=private, seed=seed)
     check_place(out, replace=force)
-    sets, notes = read_tables(pulses)
+    sets, notes = labelled_tables(pulses, labels, classes)
     talk.say(f"{sum(len(one.table) for one in sets)} pulses read")
+    notes += inventory_lines(pd.concat([one.table for one in sets]), _rates(sets))
     values, together = measured(sets)
     talk.say(f"{values.shape[1]} features measured; fitting")
-    provenance = {"inputs": [{"name": path.name, "digest": file_digest(path)} for path in tables_of(pulses)]}
+    files = [*tables_of(pulses), *([] if labels is None else [labels])]
+    provenance: dict[str, object] = {"inputs": [{"name": path.name, "digest": file_digest(path)} for path in files]}
+    if together_classes := own_classes_of(sets):
+        provenance["own_classes"] = together_classes
     parts = fit(values, together, settings, provenance=provenance)
     parts = with_card(parts, None, title="Bundle trained on labelled pulses")
     digest = write_bundle(out, parts, replace=force)
@@ -108,6 +119,36 @@ def read_tables(given: Sequence[Path]) -> tuple[list[PulseSet], list[str]]:
     return [pulses for pulses, _ in read], [note for _, notes in read for note in notes]
 
 
+def labelled_tables(
+    given: Sequence[Path], labels: Path | None, classes: Mapping[str, str] | None = None
+) -> tuple[list[PulseSet], list[str]]:
+    """The pulse sets of some tables with the labels of a file, and notes of both.
+
+    Raises
+    ------
+    InputError
+        If a table or the label file is not usable, or a class is a kind of two things.
+    """
+    sets, notes = read_tables(given)
+    whole = together("own classes", *(one.own_classes for one in sets), classes or {})
+    sets = [replace(one, own_classes=whole) for one in sets]
+    if labels is not None:
+        found = join_labels(sets, read_labels(labels, whole))
+        sets, notes = list(found.sets), [*notes, *found.notes]
+    return sets, [*notes, *double_notes(sets)]
+
+
+def own_classes_of(sets: Sequence[PulseSet]) -> dict[str, str]:
+    """The own classes that labels of some pulse sets are, each with what it is a kind of."""
+    used = {str(name) for one in sets for name in one.table["label"].dropna().unique()}
+    return {name: kind for one in sets for name, kind in one.own_classes.items() if name in used}
+
+
+def _rates(sets: Sequence[PulseSet]) -> FloatArray:
+    """The sampling rate of every pulse [Hz]."""
+    return np.concatenate([np.full(len(one.table), one.rate_hz) for one in sets])
+
+
 def measured(sets: Sequence[PulseSet], names: Sequence[str] | None = None) -> tuple[FloatArray, PulseSet]:
     """Features of pulse sets of any rates, and the pulses as one set with their waves thinned.
 
@@ -115,7 +156,7 @@ def measured(sets: Sequence[PulseSet], names: Sequence[str] | None = None) -> tu
     nor test: their rows are NaN.
     """
     values = np.concatenate([_of_those_that_count(pulses, names) for pulses in sets])
-    return values, joined([PulseSet(thin(pulses.waves), pulses.chains, pulses.table) for pulses in sets])
+    return values, joined([replace(pulses, waves=thin(pulses.waves)) for pulses in sets])
 
 
 def _of_those_that_count(pulses: PulseSet, names: Sequence[str] | None) -> FloatArray:
@@ -127,7 +168,12 @@ def _of_those_that_count(pulses: PulseSet, names: Sequence[str] | None) -> Float
 
 
 def _settings(
-    error_rate: float, mix: Mapping[str, float] | None, group: str | None, *, private: bool, seed: int
+    error_rate: float,
+    mix: Mapping[str, float] | None,
+    group: str | None,
+    *,
+    private: bool,
+    seed: int,
 ) -> TrainSettings:
     if not 0.01 <= error_rate <= 0.5:
         raise InputError(f"--error-rate: expected 0.01 to 0.5, found {error_rate:g}; choose one between")
@@ -145,7 +191,8 @@ def _settings(
 
 
 def _check_mix(mix: Mapping[str, float]) -> None:
-    strange = sorted(set(mix) - set(LABELS))
+    # classes of the user's own stand in tables that have not been read yet; `checked_mix` knows them
+    strange = sorted(name for name in set(mix) - set(LABELS) if not is_own_class(name))
     if strange:
         raise InputError(f"--mix: expected shares of {', '.join(LABELS)}, found '{strange[0]}'; correct the name")
     low = [name for name, share in mix.items() if not share >= _SMALLEST_SHARE]

@@ -13,7 +13,7 @@ from typing import Annotated, Any, Self
 from pydantic import ConfigDict, Field, model_validator
 
 from pdclass.digest import json_digest
-from pdclass.pulses import LABELS
+from pdclass.pulses import LABELS, is_own_class
 from pdclass.settings import Settings
 
 FORMAT = 1
@@ -95,8 +95,8 @@ class Manifest(_Part):
     @model_validator(mode="after")
     def _lengths_agree(self) -> Self:
         k, f = len(self.classes), len(self.features)
-        if len(set(self.classes)) != k or not set(self.classes) <= set(LABELS):
-            raise ValueError(f"classes must be different ones of {', '.join(LABELS)}")
+        if len(set(self.classes)) != k or not all(name in LABELS or is_own_class(name) for name in self.classes):
+            raise ValueError(f"classes must be different, each one of {', '.join(LABELS)} or a name for a class")
         if len(self.shift) != k or len(self.limits) != k or set(self.mix) != set(self.classes):
             raise ValueError("shift, limits and mix must have one entry a class")
         if not math.isclose(math.fsum(self.mix.values()), 1.0, abs_tol=1e-9):

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import platform
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from importlib.metadata import version
 from typing import Any, NamedTuple
 
@@ -73,7 +73,7 @@ def train(
     kept = usable(pulses.table)
     kept = kept[np.argsort(pulses.table.index.to_numpy(str)[kept], kind="stable")]
     pulses, rows = pulses.take(kept), rows[kept]
-    classes = _classes(pulses.table)
+    classes = _classes(pulses.table, pulses.own_classes)
     examples = _examples(rows, pulses.table, classes, settings)
     shared = _share(examples, classes, settings)
     fitted, how = _fit(examples, shared, len(classes), settings)
@@ -130,15 +130,16 @@ def checked_mix(mix: Mapping[str, float] | None, classes: Sequence[str]) -> dict
     return {name: float(mix[name]) for name in classes}
 
 
-def _classes(table: pd.DataFrame) -> tuple[str, ...]:
-    found = set(table["label"])
-    odd = sorted(str(label) for label in found - set(LABELS))
+def _classes(table: pd.DataFrame, own_classes: Collection[str]) -> tuple[str, ...]:
+    """The labels that there are: ours in their order, then the user's own by name."""
+    found, known = set(table["label"]), (*LABELS, *sorted(own_classes))
+    odd = sorted(str(label) for label in found - set(known))
     if odd:
-        raise InputError(f"label: expected one of {', '.join(LABELS)}, found '{odd[0]}'; correct the labels")
+        raise InputError(f"label: expected one of {', '.join(known)}, found '{odd[0]}'; correct the labels")
     twice = table.index[table.index.duplicated()]
     if len(twice):
         raise InputError(f"pulse {twice[0]}: expected once among the labelled pulses, found twice; drop one table")
-    return tuple(label for label in LABELS if label in found)
+    return tuple(label for label in known if label in found)
 
 
 def _examples(rows: FloatArray, table: pd.DataFrame, classes: Sequence[str], settings: TrainSettings) -> Examples:

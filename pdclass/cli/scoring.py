@@ -32,6 +32,8 @@ if TYPE_CHECKING:
 def extract(
     captures: list[Path] = typer.Argument(help="Captures (SigMF, .npz, .h5, or .csv with a map).", metavar="CAPTURE"),
     out: Path = typer.Option(..., "--out", help="Pulse table to write (.parquet)."),
+    sheet: Path = typer.Option(None, "--sheet", help="Folder for pictures to label and labels.csv.", metavar="DIR"),
+    sheet_pulses: int = typer.Option(200, "--sheet-pulses", min=1, max=2000, help="Most pulses that it shows."),
     map_path: Path = MAP,
     rate_hz: float = RATE,
     volts_per_count: float = COUNT,
@@ -50,7 +52,9 @@ def extract(
 
     talk = Terminal()
     fill = _fill_ins(map_path, rate_hz, volts_per_count, circuit, site, sensor, session, band_hz, mains_hz)
-    done = job.extract_captures(captures, out, fill=fill, jobs=jobs, force=force, talk=talk)
+    done = job.extract_captures(
+        captures, out, fill=fill, jobs=jobs, sheet=sheet, sheet_pulses=sheet_pulses, force=force, talk=talk
+    )
     lines, rows = [], []
     for name, found in zip(done.names, done.found, strict=True):
         limit_mv, pulses = found.detection_limit_v * 1e3, found.found - found.echoes
@@ -60,8 +64,18 @@ def extract(
         )
         lines += found.notes
         rows.append({"capture": name, "pulses": pulses, "echoes": found.echoes, "limit_mv": limit_mv})
-    lines += [f"pulses: {out}", f"next: pdclass score {out} --out verdicts"]
-    result(lines, {"out": out, "captures": rows, "skipped": done.skipped}, as_json=as_json)
+    lines += [f"pulses: {out}"]
+    if done.sheet is not None:
+        shown = f"{done.sheet.shown} of {done.sheet.found} pulses"
+        lines += [f"sheet: {done.sheet.page} ({shown}); fill in {done.sheet.labels}"]
+        lines += [f"next: pdclass train {out} MORE.parquet --labels {done.sheet.labels} --out own-bundle"]
+    else:
+        lines += [f"next: pdclass score {out} --out verdicts"]
+    result(
+        lines,
+        {"out": out, "sheet": done.sheet and done.sheet.page, "captures": rows, "skipped": done.skipped},
+        as_json=as_json,
+    )
     _say_skipped(done.skipped, talk)
 
 

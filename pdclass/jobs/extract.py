@@ -9,6 +9,7 @@ from pathlib import Path
 from pdclass.capture import FillIns, open_capture, write_pulses
 from pdclass.errors import InputError
 from pdclass.extract import Extraction, ExtractSettings, extract
+from pdclass.jobs.sheet import MOST_ASKED, MOST_SHOWN, Sheet, check_sheet_place, write_sheet
 from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk, each
 
@@ -21,6 +22,17 @@ class Extracted:
     names: tuple[str, ...]
     found: tuple[Extraction, ...]
     skipped: tuple[str, ...]
+    sheet: Sheet | None = None
+
+
+@dataclass(frozen=True)
+class _Looked:
+    """One capture that could be read."""
+
+    name: str
+    digest: str
+    phase_reference: str | None
+    found: Extraction
 
 
 def extract_captures(
@@ -30,19 +42,26 @@ def extract_captures(
     fill: FillIns | None = None,
     settings: ExtractSettings | None = None,
     jobs: int = 1,
+    sheet: Path | None = None,
+    sheet_pulses: int = MOST_SHOWN,
     force: bool = False,
     talk: Talk = SILENT,
 ) -> Extracted:
-    """Find the pulses of captures and write them as one pulse table.
+    """Find the pulses of captures and write them as one pulse table, and a sheet to label them if one is asked for.
 
     A capture that cannot be read is reported and skipped; when none can be, nothing is written.
 
     Raises
     ------
     InputError
-        If no capture is readable, captures differ in rate, or the table exists and `force` is not given.
+        If no capture is readable, captures differ in rate, the table exists and `force` is not given, or the
+        sheet's folder holds something.
     """
     check_table_place(out, force=force)
+    if not 1 <= sheet_pulses <= MOST_ASKED:
+        raise InputError(f"--sheet-pulses: expected 1 to {MOST_ASKED}, found {sheet_pulses}; choose one between")
+    if sheet is not None:
+        check_sheet_place(sheet, force=force)
     calls = [(path, fill or FillIns(), settings or ExtractSettings()) for path in dict.fromkeys(captures)]
     made = _once(each(_pulses_of, calls, jobs=jobs, talk=talk, words="captures looked at"))
     read = [one for one in made if not isinstance(one, str)]
@@ -50,8 +69,13 @@ def extract_captures(
     if not read:
         raise InputError("; ".join(skipped))
     _one_rate(read)
-    write_pulses(out, joined([extraction.pulses for _, extraction in read]))
-    return Extracted(out, tuple(name for name, _ in read), tuple(extraction for _, extraction in read), skipped)
+    whole = joined([one.found.pulses for one in read])
+    write_pulses(out, whole)
+    drawn = None
+    if sheet is not None:
+        references = {one.digest: one.phase_reference for one in read}
+        drawn = write_sheet(whole, sheet, references, most=sheet_pulses, talk=talk)
+    return Extracted(out, tuple(one.name for one in read), tuple(one.found for one in read), skipped, drawn)
 
 
 def check_table_place(out: Path, *, force: bool) -> None:
@@ -70,25 +94,24 @@ def check_table_place(out: Path, *, force: bool) -> None:
         raise InputError(f"{out.resolve().parent}: no such folder; make it first")
 
 
-def _once(made: Sequence[tuple[str, Extraction] | str]) -> list[tuple[str, Extraction] | str]:
+def _once(made: Sequence[_Looked | str]) -> list[_Looked | str]:
     """The same without captures whose samples came before: a pulse has one name and stands there once."""
     holders: dict[str, str] = {}
-    kept: list[tuple[str, Extraction] | str] = []
+    kept: list[_Looked | str] = []
     for one in made:
-        if isinstance(one, str) or not len(one[1].pulses.table):
+        if isinstance(one, str) or not len(one.found.pulses.table):
             kept.append(one)
             continue
-        digest = str(one[1].pulses.table["capture_digest"].iloc[0])
-        former = holders.get(digest)
-        holders.setdefault(digest, one[0])
+        former = holders.get(one.digest)
+        holders.setdefault(one.digest, one.name)
         kept.append(
-            one if former is None else f"{one[0]}: holds the same samples as {former}; give each recording once"
+            one if former is None else f"{one.name}: holds the same samples as {former}; give each recording once"
         )
     return kept
 
 
-def _one_rate(read: Sequence[tuple[str, Extraction]]) -> None:
-    rates = {extraction.pulses.rate_hz: name for name, extraction in read}
+def _one_rate(read: Sequence[_Looked]) -> None:
+    rates = {one.found.pulses.rate_hz: one.name for one in read}
     if len(rates) > 1:
         (first, one), (second, other) = list(rates.items())[:2]
         raise InputError(
@@ -97,10 +120,10 @@ def _one_rate(read: Sequence[tuple[str, Extraction]]) -> None:
         )
 
 
-def _pulses_of(path: Path, fill: FillIns, settings: ExtractSettings) -> tuple[str, Extraction] | str:
-    """Name and pulses of a capture, or why it could not be read."""
+def _pulses_of(path: Path, fill: FillIns, settings: ExtractSettings) -> _Looked | str:
+    """A capture with its pulses, or why it could not be read."""
     try:
         capture = open_capture(path, fill)
-        return capture.name, extract(capture, settings)
+        return _Looked(capture.name, capture.digest, capture.phase_reference, extract(capture, settings))
     except InputError as error:
         return str(error)

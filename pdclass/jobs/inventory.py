@@ -77,7 +77,8 @@ def _bands(snr_db: FloatArray) -> Any:
     """The band of each height in words, in the order of height."""
     names = [f"{_edge(low, high)} dB" for low, high in itertools.pairwise(SNR_EDGES_DB)]
     place = np.clip(np.searchsorted(SNR_EDGES_DB, snr_db, side="right") - 1, 0, len(names) - 1)
-    return pd.Categorical.from_codes(np.where(np.isnan(snr_db), len(names), place).tolist(), [*names, "not known"])
+    words = np.array([*names, "not known"], object)
+    return pd.Categorical(words[np.where(np.isnan(snr_db), len(names), place)], categories=words.tolist())
 
 
 def _edge(low: float, high: float) -> str:

@@ -12,7 +12,7 @@ from pdclass.report.gallery_curve import CurveFit
 from pdclass.report.gallery_examples import AFTER_US, BAND_MHZ, BEFORE_US, Backdrop, Example
 from pdclass.report.gallery_physics import DISTANCES_KM, Chains, Intervals, Journey, NearEnds, PhasePattern, Spread
 from pdclass.report.gallery_quoted import QUOTED_DB_PER_KM, QUOTED_M_PER_US
-from pdclass.report.plots import COLOURS, EDGE, MARKERS, Panel, panels_figure
+from pdclass.report.plots import COLOURS, EDGE, MARKERS, Panel, cased, envelope, log_axis, panels_figure
 
 _FIRST_US = 2.5
 _LOWEST_DB = -70.0
@@ -30,17 +30,17 @@ def example_figure(example: Example, *, name: str) -> str:
     def draw(panels: Sequence[Panel]) -> None:
         first, whole, spectrum = panels
         _wave(first, example.time_us, example.wave, example.label, (-0.4, _FIRST_US))
-        _wave(whole, *_envelope(example.time_us, example.wave, _WHOLE_POINTS), example.label, (-BEFORE_US, AFTER_US))
+        _wave(whole, *envelope(example.time_us, example.wave, _WHOLE_POINTS), example.label, (-BEFORE_US, AFTER_US))
         first.set_xticks([0, 1, 2])
         whole.set_xticks([-5, 0, 5, 10, 15])
         first.set_ylabel("over the peak")
         first.set_xlabel("time from onset [µs]")
         whole.set_xlabel("time from onset [µs]")
         whole.tick_params(labelleft=False)
-        _cased(spectrum, example.mhz, example.level_db, example.label)
+        cased(spectrum, example.mhz, example.level_db, example.label)
         # on top: where the pulse has sunk into the background both lines are one
         spectrum.plot(example.mhz, example.floor_db, color=EDGE, lw=0.7, dashes=(3, 2))
-        _log_axis(spectrum, BAND_MHZ)
+        log_axis(spectrum, BAND_MHZ)
         spectrum.set_ylim(_LOWEST_DB, 4)
         spectrum.set_yticks([-60, -40, -20, 0])
         spectrum.set_ylabel("[dB]")
@@ -72,7 +72,7 @@ def spread_figure(spread: Spread, *, name: str) -> str:
         for axes, (low, middle, high) in zip(panels, (spread.db_per_km, spread.m_per_us), strict=True):
             axes.fill_between(spread.mhz, low, high, color="#dcdaf0", lw=0)
             axes.plot(spread.mhz, middle, color=COLOURS["cable"], lw=1.5)
-            _log_axis(axes, (0.1, 50.0))
+            log_axis(axes, (0.1, 50.0))
         loss, speed = panels
         for mhz, bounds in QUOTED_DB_PER_KM.get(spread.kind, {}).items():
             loss.plot([mhz, mhz], bounds, color=EDGE, lw=1.2, marker="_", ms=9, mew=1.4)
@@ -98,7 +98,7 @@ def curve_figure(fit: CurveFit, *, name: str) -> str:
         for axes, (points, line) in zip(panels, pairs, strict=True):
             axes.plot(fit.mhz, line, color=COLOURS["cable"], lw=1.5)
             axes.plot(fit.points_mhz, points, ls="none", marker="o", mfc="white", mec=EDGE, mew=0.9, ms=4)
-            _log_axis(axes, (float(fit.mhz[0]), float(fit.mhz[-1])))
+            log_axis(axes, (float(fit.mhz[0]), float(fit.mhz[-1])))
         loss, speed = panels
         loss.set_yscale("log")
         marks = [mark for mark in _DECADES if fit.db_per_km[0] / 10 < mark < fit.db_per_km[-1] * 10]
@@ -122,7 +122,7 @@ def near_end_figure(found: NearEnds, *, name: str) -> str:
         for axes, (place, gains) in zip(panels, places, strict=True):
             _bundle(axes, found.mhz, 20 * np.log10(gains))
             axes.set_title(place, fontsize=8.5)
-            _log_axis(axes, (0.1, 60.0))
+            log_axis(axes, (0.1, 60.0))
             axes.set_ylim(-50, 25)
         panels[0].set_ylabel("[dB]")
 
@@ -135,7 +135,7 @@ def ring_figure(found: NearEnds, *, name: str) -> str:
     def draw(panels: Sequence[Panel]) -> None:
         known = np.isfinite(found.ring_q)
         _histogram(panels[0], found.ring_mhz[known], np.geomspace(1, 60, 19))
-        _log_axis(panels[0], (1.0, 60.0), "strongest ring [MHz]")
+        log_axis(panels[0], (1.0, 60.0), "strongest ring [MHz]")
         panels[0].set_xticks([1, 3, 10, 30], ["1", "3", "10", "30"])
         panels[0].minorticks_off()
         _histogram(panels[1], found.ring_q[known], np.linspace(0, 40, 21))
@@ -152,7 +152,7 @@ def chain_figure(found: Chains, *, name: str) -> str:
         axes = panels[0]
         for gain in found.ohm:
             axes.plot(found.mhz, gain, color=_MANY, lw=0.9)
-        _log_axis(axes, (0.01, 100.0))
+        log_axis(axes, (0.01, 100.0))
         axes.set_yscale("log")
         axes.set_ylim(0.02, 40)
         axes.set_yticks([0.1, 1, 10], ["0.1", "1", "10"])
@@ -200,10 +200,10 @@ def backdrop_figure(found: Backdrop, *, name: str) -> str:
 
     def draw(panels: Sequence[Panel]) -> None:
         level, stretch, slow = panels
-        _cased(level, found.mhz, found.level_db, "interference")
-        _log_axis(level, (0.03, 50.0))
+        cased(level, found.mhz, found.level_db, "interference")
+        log_axis(level, (0.03, 50.0))
         level.set_ylabel("[dB over 1 µV]")
-        stretch.plot(*_envelope(found.time_us, found.wave_mv, 700), color=EDGE, lw=0.5)
+        stretch.plot(*envelope(found.time_us, found.wave_mv, 700), color=EDGE, lw=0.5)
         stretch.set_xlabel("time [µs]")
         stretch.set_ylabel("[mV]")
         slow.plot(found.slow_ms, found.slow_mv, color=EDGE, lw=0.8)
@@ -219,16 +219,10 @@ def distance(km: float) -> str:
     return "at the source" if km == 0 else f"{km * 1e3:g} m" if km < 1 else f"{km:g} km"
 
 
-def _cased(axes: Panel, x: FloatArray, y: FloatArray, label: str) -> None:
-    """A line in the colour of its label with a dark edge."""
-    axes.plot(x, y, color=EDGE, lw=1.6)
-    axes.plot(x, y, color=COLOURS.get(label, EDGE), lw=1.0)
-
-
 def _wave(axes: Panel, time_us: FloatArray, wave: FloatArray, label: str, span: tuple[float, float]) -> None:
     shown = (time_us >= span[0]) & (time_us <= span[1])
     axes.axhline(0, color="#999999", lw=0.5)
-    _cased(axes, time_us[shown], wave[shown], label)
+    cased(axes, time_us[shown], wave[shown], label)
     axes.set_xlim(span)
     axes.set_ylim(-1.12, 1.12)
 
@@ -242,24 +236,3 @@ def _bundle(axes: Panel, x: FloatArray, rows: FloatArray) -> None:
 
 def _histogram(axes: Panel, values: FloatArray, edges: FloatArray) -> None:
     axes.hist(np.clip(values, edges[0], edges[-1]), bins=edges.tolist(), color="#dcdaf0", ec=EDGE, lw=0.6)
-
-
-def _log_axis(axes: Panel, span: tuple[float, float], words: str = "frequency [MHz]") -> None:
-    axes.set_xscale("log")
-    axes.set_xlim(span)
-    marks = [mark for mark in (0.01, 0.1, 1.0, 10.0, 100.0) if span[0] <= mark <= span[1]]
-    axes.set_xticks(marks, [f"{mark:g}" for mark in marks])
-    axes.minorticks_off()
-    axes.set_xlabel(words)
-
-
-def _envelope(x: FloatArray, y: FloatArray, steps: int) -> tuple[FloatArray, FloatArray]:
-    """Least and most within each of about so many steps, in the order in which they come; short series as they are."""
-    size = -(-y.size // steps)
-    if size < 3:
-        return x, y
-    # the last value again, to fill the last step
-    blocks = np.pad(y, (0, -y.size % size), mode="edge").reshape(-1, size)
-    places = np.sort(np.stack([blocks.argmin(axis=1), blocks.argmax(axis=1)], axis=1), axis=1)
-    flat = np.minimum((places + size * np.arange(len(blocks))[:, None]).ravel(), y.size - 1)
-    return x[flat], y[flat]

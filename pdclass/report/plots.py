@@ -159,6 +159,34 @@ def panels_figure(
         return _lightened(_svg(figure, name, title))
 
 
+def cased(axes: Panel, x: FloatArray, y: FloatArray, label: str) -> None:
+    """A line in the colour of its label with a dark edge."""
+    axes.plot(x, y, color=EDGE, lw=1.6)
+    axes.plot(x, y, color=COLOURS.get(label, EDGE), lw=1.0)
+
+
+def log_axis(axes: Panel, span: tuple[float, float], words: str = "frequency [MHz]") -> None:
+    """A logarithmic scale from and to the given ends, marked at decades only."""
+    axes.set_xscale("log")
+    axes.set_xlim(span)
+    marks = [mark for mark in (0.01, 0.1, 1.0, 10.0, 100.0) if span[0] <= mark <= span[1]]
+    axes.set_xticks(marks, [f"{mark:g}" for mark in marks])
+    axes.minorticks_off()
+    axes.set_xlabel(words)
+
+
+def envelope(x: FloatArray, y: FloatArray, steps: int) -> tuple[FloatArray, FloatArray]:
+    """Least and most within each of about so many steps, in the order in which they come; short series as they are."""
+    size = -(-y.size // steps)
+    if size < 3:
+        return x, y
+    # the last value again, to fill the last step
+    blocks = np.pad(y, (0, -y.size % size), mode="edge").reshape(-1, size)
+    places = np.sort(np.stack([blocks.argmin(axis=1), blocks.argmax(axis=1)], axis=1), axis=1)
+    flat = np.minimum((places + size * np.arange(len(blocks))[:, None]).ravel(), y.size - 1)
+    return x[flat], y[flat]
+
+
 def _lightened(svg: str) -> str:
     """The same drawing to 0.1 pt, without ids that nothing refers to, spaces, and what says nothing."""
     short = _PLACES.sub(_rounded, svg)

@@ -19,6 +19,10 @@ LABELS = ("cable", "local", "switchgear", "interference")
 UNDECIDED = "undecided"
 BASES = ("dissected", "isolated", "located", "cross-checked", "expert", "simulated")
 
+#: Words that tables of counts use beside the labels.
+_TAKEN = frozenset(
+    {UNDECIDED, "pulses", "echo", "echoes", "none", "nothing planted", "unlabelled", "unfamiliar", "outside"}
+)
 #: A class of the user's own: letters, digits, spaces, `_` and `-`, so that it can name a column and stand in a list.
 _OWN_CLASS = re.compile(r"[^\W_][\w -]{0,38}[^\W_]")
 
@@ -164,8 +168,8 @@ class PulseSet:
 
 
 def is_own_class(name: str) -> bool:
-    """Whether a text can name a class of the user's own: 2 to 40 letters, digits, spaces, `_`, `-`; none of ours."""
-    return _OWN_CLASS.fullmatch(name) is not None and name not in {*LABELS, UNDECIDED}
+    """Whether a text can name a class of the user's own: 2 to 40 letters, digits, spaces, `_`, `-`, no word of ours."""
+    return _OWN_CLASS.fullmatch(name) is not None and name not in {*LABELS, *_TAKEN}
 
 
 def window_samples(rate_hz: float) -> int:
@@ -212,6 +216,15 @@ def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simul
     given.index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
     wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
     return pd.DataFrame({name: _typed(given, name, kind) for name, kind in wanted.items()}, index=given.index)
+
+
+def with_texts(table: pd.DataFrame, **columns: Any) -> pd.DataFrame:
+    """The table with columns of text replaced, given as (pulses,) of str; whatever is no text becomes None."""
+    held = {}
+    for name, values in columns.items():
+        words = [word if isinstance(word, str) else None for word in values]
+        held[name] = pd.Series(words, index=table.index, dtype="object")
+    return table.assign(**held)
 
 
 def _typed(given: pd.DataFrame, name: str, kind: str) -> pd.Series[Any]:

@@ -19,7 +19,7 @@ from pdclass.capture.fields import is_name, shown
 from pdclass.capture.maps import nearest
 from pdclass.digest import array_digest
 from pdclass.errors import InputError, complaint
-from pdclass.pulses import BASES, LABELS, FloatArray, PulseSet
+from pdclass.pulses import BASES, LABELS, FloatArray, PulseSet, with_texts
 
 #: Columns of a label file, in order.
 LABEL_COLUMNS = (*("pulse_id", "capture_digest", "sensor", "onset_sample", "label", "basis", "labelled_by", "comment"),)
@@ -122,7 +122,7 @@ def join_labels(sets: Sequence[PulseSet], labels: LabelFile) -> Joined:
     labelled, first = [], 0
     for pulses in sets:
         span = slice(first, first + len(pulses.table))
-        fresh = pulses.table.assign(label=label[span], basis=basis[span], labelled_by=by[span])
+        fresh = with_texts(pulses.table, label=label[span], basis=basis[span], labelled_by=by[span])
         labelled.append(replace(pulses, table=fresh))
         first = span.stop
     echoes = [

@@ -94,7 +94,10 @@ def _capture(
         advice = "write the file again"
         found = f"{counts.size} samples"
         raise InputError(complaint(path, "sample_count", expected=layout.samples, found=found, advice=advice))
-    check_counts(path, counts, layout)
+    try:
+        check_counts(path, counts, layout)
+    except InputError as error:
+        raise InputError(str(error).replace("pdclass:", "")) from None
     counts.flags.writeable = False
     return replace(capture, counts=counts, digest=bytes_digest(path))
 

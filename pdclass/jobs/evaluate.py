@@ -12,7 +12,7 @@ from pdclass.jobs.simulate import fresh_folder
 from pdclass.jobs.talk import SILENT, Talk
 from pdclass.jobs.train import labelled_tables, measured, own_classes_of
 from pdclass.model.bundle import Bundle, read_bundle
-from pdclass.pulses import PulseSet
+from pdclass.pulses import PulseSet, with_texts
 from pdclass.training.card import evaluation_text, spoken
 from pdclass.training.evaluate import evaluate
 from pdclass.training.groups import group_names
@@ -67,7 +67,10 @@ def _as_known(sets: Sequence[PulseSet], known: Sequence[str]) -> tuple[list[Puls
         name: kind for one in sets for name, kind in one.own_classes.items() if name not in known and kind in known
     }
     count = {name: sum(int((one.table["label"] == name).sum()) for one in sets) for name in kinds}
-    changed = [replace(one, table=one.table.assign(label=one.table["label"].replace(kinds))) for one in sets]
+    changed = [
+        replace(one, table=with_texts(one.table, label=[kinds.get(name, name) for name in one.table["label"]]))
+        for one in sets
+    ]
     notes = [
         f"'{name}' is judged as {kinds[name]}, which it is a kind of: {number} pulses"
         for name, number in sorted(count.items())

@@ -17,7 +17,7 @@ from pdclass.jobs.extract import check_table_place
 from pdclass.jobs.inventory import inventory_lines
 from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk
-from pdclass.pulses import FloatArray, PulseSet, WaveArray
+from pdclass.pulses import FloatArray, PulseSet, WaveArray, with_texts
 
 #: Samples of one periodogram of the rows' background, and how many past ones predict the next.
 PIECE_SAMPLES, ORDER = 256, 32
@@ -147,7 +147,7 @@ def _each_once(pulses: PulseSet) -> tuple[PulseSet, list[str]]:
     labels = table["label"].groupby(table.index).nunique()
     contrary = table.index.isin(labels[labels > 1].index)
     first = table["label"].groupby(table.index).transform("first")
-    fresh = table.assign(label=first.astype("object").mask(contrary, None))
+    fresh = with_texts(table, label=[None if bad else word for bad, word in zip(contrary, first, strict=True)])
     notes = [f"{int(again.sum())} pulses stand in two files; kept once"]
     notes += [f"{int((labels > 1).sum())} of them with two labels; left unlabelled"] if contrary.any() else []
     kept = PulseSet(pulses.waves, pulses.chains, fresh, pulses.own_classes)

@@ -338,6 +338,11 @@ def _doubt_words(total: pd.Series[int], own: Mapping[str, int]) -> str:
 def _who(total: pd.Series[int], own: Mapping[str, int]) -> str:
     discharges = [name for name in WHO_ACTS if name != "interference" and total.get(name, 0)]
     calls = [f"for {name} ({total[name]}), {WHO_ACTS[name]}" for name in sorted(discharges, key=lambda n: -total[n])]
+    # a class of the user's own may be a discharge: it is never passed over in silence
+    others = [
+        str(name) for name in total.index if name not in {*WHO_ACTS, UNDECIDED, "pulses", "echoes"} and total[name]
+    ]
+    calls += [f"for {name} ({total[name]}), whoever was agreed for this class" for name in others]
     for labels, who in WHO_ACTS_TOGETHER.items():
         if count := own.get(set_in_words(labels), 0):
             calls.append(f"for those open between {' and '.join(labels)} ({count}), {who}")

@@ -2,31 +2,8 @@
 
 import re
 
-import numpy as np
-
-from pdclass.report.gallery_plots import _envelope, distance
+from pdclass.report.gallery_plots import distance
 from pdclass.report.plots import panels_figure
-
-
-def test_an_envelope_keeps_every_extreme_and_the_end():
-    """A single spike survives, values come in their order, and the last step is drawn."""
-    x = np.arange(10_001.0)
-    y = np.zeros(10_001)
-    y[777], y[9_999] = 5.0, -4.0
-    thin_x, thin_y = _envelope(x, y, 200)
-    assert thin_y.max() == 5.0
-    assert thin_y.min() == -4.0
-    assert np.all(np.diff(thin_x) >= 0)
-    assert thin_x.size < 500
-    assert thin_x[-1] > 9_900
-
-
-def test_a_short_series_stays_as_it_is():
-    """What fits is not thinned."""
-    x = np.arange(100.0)
-    thin_x, thin_y = _envelope(x, x**2, 60)
-    assert np.array_equal(thin_x, x)
-    assert np.array_equal(thin_y, x**2)
 
 
 def test_distances_are_written_as_one_says_them():

@@ -8,7 +8,7 @@ import pytest
 
 from pdclass.features import measured_edges
 from pdclass.pulses import LABELS, UNDECIDED
-from pdclass.report.plots import COLOURS, MARKERS, edge_figure, phase_scatter, pulse_figure, thinned_places
+from pdclass.report.plots import COLOURS, MARKERS, edge_figure, envelope, phase_scatter, pulse_figure, thinned_places
 
 
 @pytest.fixture(scope="module")
@@ -90,3 +90,24 @@ def test_crossings_that_were_not_measured_are_not_drawn(edges):
     missing = {**edges, "fall_10": np.nan, "fall_50": np.nan}
     marks = [edge_figure(each, "cable", name="e").count("fill: #ffffff; stroke: #222222") for each in (edges, missing)]
     assert marks[0] - marks[1] == 2
+
+
+def test_an_envelope_keeps_every_extreme_and_the_end():
+    """A single spike survives, values come in their order, and the last step is drawn."""
+    x = np.arange(10_001.0)
+    y = np.zeros(10_001)
+    y[777], y[9_999] = 5.0, -4.0
+    thin_x, thin_y = envelope(x, y, 200)
+    assert thin_y.max() == 5.0
+    assert thin_y.min() == -4.0
+    assert np.all(np.diff(thin_x) >= 0)
+    assert thin_x.size < 500
+    assert thin_x[-1] > 9_900
+
+
+def test_a_short_series_stays_as_it_is():
+    """What fits is not thinned."""
+    x = np.arange(100.0)
+    thin_x, thin_y = envelope(x, x**2, 60)
+    assert np.array_equal(thin_x, x)
+    assert np.array_equal(thin_y, x**2)

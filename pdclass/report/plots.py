@@ -31,6 +31,7 @@ Panel = Axes
 MOST_POINTS = 400
 
 _PLACES = re.compile(r' (?:d|x|y)="[^"]*"')
+_HASHED = re.compile(r"(?<=-)[a-zA-Z]+[0-9a-f]{10}(?=[\")])")
 _LONG_NUMBER = re.compile(r"-?\d+\.\d{2,}")
 _IDLE = (
     (re.compile(r'<g id="[^"]*"'), "<g"),
@@ -185,6 +186,15 @@ def envelope(x: FloatArray, y: FloatArray, steps: int) -> tuple[FloatArray, Floa
     places = np.sort(np.stack([blocks.argmin(axis=1), blocks.argmax(axis=1)], axis=1), axis=1)
     flat = np.minimum((places + size * np.arange(len(blocks))[:, None]).ravel(), y.size - 1)
     return x[flat], y[flat]
+
+
+def with_numbered_ids(figure: str) -> str:
+    """The same drawing with its ids counted in their order.
+
+    Those of the drawing library hash places to the last digit, which the layout does not always give alike.
+    """
+    numbers = {name: f"i{place}" for place, name in enumerate(dict.fromkeys(_HASHED.findall(figure)))}
+    return _HASHED.sub(lambda found: numbers[found[0]], figure)
 
 
 def _lightened(svg: str) -> str:

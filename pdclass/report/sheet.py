@@ -12,7 +12,16 @@ import scipy.signal
 
 from pdclass.capture import LABEL_COLUMNS
 from pdclass.pulses import BASES, LABELS, FloatArray, PulseSet, onset_in_window
-from pdclass.report.plots import COLOURS, EDGE, Panel, envelope, log_axis, panels_figure, thinned_places
+from pdclass.report.plots import (
+    COLOURS,
+    EDGE,
+    Panel,
+    envelope,
+    log_axis,
+    panels_figure,
+    thinned_places,
+    with_numbered_ids,
+)
 from pdclass.report.sheet_choice import Chosen
 from pdclass.report.summary import CAUTIONS, MEANING, NOT_STATED, SHORT_CAUTION, phase_words
 from pdclass.report.templates import drawn, template
@@ -134,7 +143,7 @@ def _figure(pulses: PulseSet, place: int, reference: str | None, name: str) -> s
         _draw_pattern(pattern, phase, offset_known=offset_known)
 
     title = f"pulse {name[1:]}: first microseconds, whole window, spectrum, phase pattern"
-    return panels_figure(name, title, (11.0, 1.8), draw, (1.0, 1.2, 1.0, 1.0))
+    return with_numbered_ids(panels_figure(name, title, (11.0, 1.8), draw, (1.0, 1.2, 1.0, 1.0)))
 
 
 def _draw_waves(first: Panel, whole: Panel, time_us: FloatArray, wave_mv: FloatArray) -> None:

@@ -15,6 +15,8 @@ from pdclass.training.evaluate import SNR_EDGES_DB
 
 #: Above so many pulses of one band only so many, evenly taken in their order, are compared with each other.
 MOST_COMPARED = 2000
+#: A feature farther out than this counts as this far: one odd number does not make a pulse unlike all others.
+FARTHEST = 4.0
 
 
 @dataclass(frozen=True)
@@ -30,7 +32,7 @@ def chosen_pulses(pulses: PulseSet, most: int) -> list[Chosen]:
 
     With more pulses than that the places are shared evenly over the bands of height that hold pulses (what a thin
     band leaves free goes to the others). Within a band pulses are parted into as many heaps of like ones, by Ward's
-    method on the ranks of their features, and of each heap the pulse nearest to its middle is shown.
+    method on their scaled features, and of each heap the pulse nearest to its middle is shown.
 
     References
     ----------
@@ -39,7 +41,7 @@ def chosen_pulses(pulses: PulseSet, most: int) -> list[Chosen]:
     alone = np.flatnonzero(pulses.table["echo_of"].isna().to_numpy())
     if len(alone) <= most:
         return [Chosen(int(place), 1) for place in alone]
-    values = _ranks(feature_table(pulses.take(alone)))
+    values = _scaled(feature_table(pulses.take(alone)))
     snr = pulses.table["snr_db"].to_numpy(np.float64)[alone]
     band = np.searchsorted(SNR_EDGES_DB[1:-1], np.nan_to_num(snr, nan=-np.inf), side="right")
     members = [np.flatnonzero(band == number) for number in range(len(SNR_EDGES_DB) - 1)]
@@ -53,14 +55,21 @@ def chosen_pulses(pulses: PulseSet, most: int) -> list[Chosen]:
     return sorted(found, key=lambda one: one.place)
 
 
-def _ranks(values: FloatArray) -> FloatArray:
-    """Each feature as its rank among the pulses, 0 to 1; what is unmeasurable lies in the middle."""
-    ranks = np.full(values.shape, 0.5)
+def _scaled(values: FloatArray) -> FloatArray:
+    """Features from their median in units of half the distance between quartiles, at most `FARTHEST` of them.
+
+    What is unmeasurable lies in the middle; so does a feature that hardly ever differs.
+    """
+    scaled = np.zeros(values.shape)
     for column in range(values.shape[1]):
-        known = np.flatnonzero(~np.isnan(values[:, column]))
-        order = known[np.argsort(values[known, column], kind="stable")]
-        ranks[order, column] = (np.arange(len(order)) + 0.5) / max(len(order), 1)
-    return ranks
+        known = ~np.isnan(values[:, column])
+        if not known.any():
+            continue
+        low, middle, high = np.percentile(values[known, column], [25, 50, 75])
+        if high > low:
+            away = (values[known, column] - middle) / ((high - low) / 2)
+            scaled[known, column] = np.clip(away, -FARTHEST, FARTHEST)
+    return scaled
 
 
 def _shared_evenly(sizes: list[int], most: int) -> list[int]:

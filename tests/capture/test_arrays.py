@@ -45,6 +45,14 @@ def refusal(path, needed=("a",)):
     return message
 
 
+def complaint_of(path):
+    """What is said against a file that holds twenty numbers, None where they come back."""
+    try:
+        return None if read_arrays(path, ["a"], ["b"])["a"].size == 20 else "another size"
+    except InputError as error:
+        return str(error)
+
+
 def test_plain_arrays_come_back(tmp_path):
     """Numbers and text of any order and packing come back; what nobody asks for does not."""
     wanted = {"a": np.arange(6, dtype=">i2").reshape(2, 3), "b": np.array("Quay"), "c": np.asfortranarray(np.eye(3))}
@@ -109,10 +117,8 @@ def test_a_damaged_archive_ends_in_one_line(tmp_path, place, value):
     content = bytearray(path.read_bytes())
     content[place % len(content)] = value
     path.write_bytes(content)
-    try:
-        assert read_arrays(path, ["a"], ["b"])["a"].size == 20
-    except InputError as error:
-        assert "\n" not in str(error)
+    complaint = complaint_of(path)
+    assert complaint is None or (complaint.startswith(str(path)) and "\n" not in complaint)
 
 
 @pytest.fixture

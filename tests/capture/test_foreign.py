@@ -26,10 +26,14 @@ def rows_of(path, map_path):
     return read_rows(path, read_map(map_path))
 
 
+def cut(path, map_path):
+    rows = rows_of(path, map_path)
+    return pulses_of(rows, rows.onsets)
+
+
 def refusal(path, map_path):
     with pytest.raises(InputError) as caught:
-        rows = rows_of(path, map_path)
-        pulses_of(rows, rows.onsets)
+        cut(path, map_path)
     message = str(caught.value)
     assert message.startswith(str(path))
     assert "\n" not in message

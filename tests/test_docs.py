@@ -7,7 +7,9 @@ import subprocess
 import sys
 from pathlib import Path
 
+import foreign_files
 import numpy as np
+import pandas as pd
 import pytest
 from typer.main import get_command
 
@@ -31,9 +33,9 @@ def pdclass(*arguments, cwd):
     )
 
 
-def shown_commands():
-    """Commands in the README's console blocks, without the prompt and without what they printed."""
-    blocks = re.findall(r"```console\n(.*?)```", README, flags=re.DOTALL)
+def shown_commands(page=README):
+    """Commands in a page's console blocks, without the prompt and without what they printed."""
+    blocks = re.findall(r"```console\n(.*?)```", page, flags=re.DOTALL)
     lines = [line for block in blocks for line in block.replace("\\\n", " ").splitlines()]
     return [line.removeprefix("$ ") for line in lines if line.startswith("$ pdclass ")]
 
@@ -87,6 +89,41 @@ def test_the_world_shown_is_simulated_with_its_measured_cable(tmp_path):
     assert done.returncode == 0, done.stderr
     assert {path.name for path in (tmp_path / "own-world").iterdir()} >= {"pulses.parquet", "gallery.html"}
     assert open_capture(tmp_path / "own-world" / "own-0001.sigmf-meta").chain.rate_hz == 100e6
+
+
+def fill_in(labels):
+    """Name the pulses of a sheet as somebody would: some of them, and some left open."""
+    rows = pd.read_csv(labels, dtype=str)
+    words = ["interference", "cable", None]
+    rows["label"] = [words[place % 3] for place in range(len(rows))]
+    rows["basis"] = ["expert" if place % 3 < 2 else None for place in range(len(rows))]
+    rows.to_csv(labels, index=False)
+
+
+def test_the_page_on_own_labels_is_worked_through(tmp_path):
+    """Maps as shown, files that fit them, and every command of the page, in order; the sheet is filled in between."""
+    page = (ROOT / "docs" / "own-labels.md").read_text(encoding="utf-8")
+    foreign_files.write_csv(tmp_path)
+    foreign_files.write_trace(tmp_path)
+    shown_maps = re.findall(r"```toml\n(.*?)```", page, flags=re.DOTALL)
+    for name, text in zip(("rows.toml", "trace.toml"), shown_maps, strict=True):
+        (tmp_path / name).write_text(text, encoding="utf-8")
+    printed = {}
+    for command in shown_commands(page):
+        words = [
+            word
+            for part in shlex.split(command)[1:]
+            for word in (sorted(map(str, tmp_path.glob(part))) if "*" in part else [part])
+        ]
+        done = pdclass(*words, cwd=tmp_path)
+        assert done.returncode == 0, (command, done.stderr)
+        printed[words[0]] = done.stdout + done.stderr
+        if "--sheet" in words:
+            fill_in(tmp_path / "sheet" / "labels.csv")
+    assert "rows name a pulse of the tables" in printed["train"]
+    assert "labelled by circuit: " in printed["train"]
+    assert "  crane drive: 1 pulses of 1 circuit" in printed["import"]
+    assert (tmp_path / "evaluation" / "evaluation.md").is_file()
 
 
 @pytest.mark.parametrize("path", MARKDOWN, ids=lambda path: path.name)

@@ -17,7 +17,7 @@ from pdclass.report.templates import template
 print(pdclass.__file__)
 print(read_bundle(base_bundle(), feature_digests()).classes)
 print(scenario_path("port-ferrow"))
-for page in ("batch.html.j2", "gallery.html.j2"):
+for page in ("batch.html.j2", "gallery.html.j2", "sheet.html.j2"):
     template(page)
 """
 

@@ -15,6 +15,7 @@ from pdclass.capture.delimited import read_columns, read_header
 from pdclass.capture.fields import shown
 from pdclass.capture.fill import FillIns
 from pdclass.capture.foreign import time_rate_hz
+from pdclass.capture.guard import open_plain
 from pdclass.capture.maps import RATE_SLACK, WAVE_UNITS, Map
 from pdclass.capture.recording import check_counts
 from pdclass.capture.sigmf import PLAIN_FIELDS, read_fields
@@ -65,6 +66,8 @@ def read_trace(path: Path, fill: FillIns) -> Capture:
         If there is no map or one of rows, a column is missing, the time column contradicts the rate by more than
         0.1 % or has gaps, a sample is above 1 kV or no multiple of the stated count, or a field is missing.
     """
+    # a file that is not there is said before a map that is not
+    open_plain(path).close()
     given = fill.map
     if given is None:
         advice = 'say with --map what its columns are (kind = "trace")'

@@ -40,7 +40,8 @@ def train(
     )
     lines = [*done.notes, f"bundle: {out}, digest {done.digest[:16]}", f"card: {out / 'card.md'}"]
     lines.append(f"next: pdclass evaluate {out} OTHER-PULSES.parquet --out evaluation")
-    result(lines, {"bundle": out, "digest": done.digest, "notes": done.notes}, as_json=as_json)
+    content = {"bundle": out, "digest": done.digest, "notes": done.notes, "pulses": done.pulses}
+    result(lines, content, as_json=as_json)
 
 
 def evaluate(

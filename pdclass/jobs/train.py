@@ -30,11 +30,12 @@ _SMALLEST_SHARE = 0.001
 
 @dataclass(frozen=True)
 class Trained:
-    """The bundle's digest and what the user should know about it."""
+    """The bundle's digest, what the user should know about it, and what it was trained on (said before the fit)."""
 
     out: Path
     digest: str
     notes: tuple[str, ...]
+    pulses: tuple[str, ...] = ()
 
 
 def train_bundle(
@@ -67,7 +68,10 @@ def train_bundle(
     check_place(out, replace=force)
     sets, notes = labelled_tables(pulses, labels, classes)
     talk.say(f"{sum(len(one.table) for one in sets)} pulses read")
-    notes += inventory_lines(pd.concat([one.table for one in sets]), _rates(sets))
+    found = inventory_lines(pd.concat([one.table for one in sets]), _rates(sets))
+    # said before the fit: where that refuses for too few labels, here stands which there are
+    for line in (*notes, *found):
+        talk.say(line)
     values, together = measured(sets)
     talk.say(f"{values.shape[1]} features measured; fitting")
     files = [*tables_of(pulses), *([] if labels is None else [labels])]
@@ -77,7 +81,7 @@ def train_bundle(
     parts = fit(values, together, settings, provenance=provenance)
     parts = with_card(parts, None, title="Bundle trained on labelled pulses")
     digest = write_bundle(out, parts, replace=force)
-    return Trained(out, digest, (*notes, *parts.account["notes"]))
+    return Trained(out, digest, tuple(parts.account["notes"]), (*notes, *found))
 
 
 def fit(

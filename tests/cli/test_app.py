@@ -4,6 +4,7 @@ import json
 import subprocess
 import sys
 
+import foreign_files
 import pytest
 
 from pdclass.capture import write_sigmf
@@ -38,6 +39,12 @@ def folder(tmp_path_factory):
         (["train", "p.parquet", "--out", "b", "--error-rate", "2"], 2, "0.01 to 0.5"),
         (["train", "p.parquet", "--out", "b", "--group", "pulse"], 2, "--group"),
         (["evaluate", "nobundle", "p.parquet", "--out", "e"], 2, "nobundle"),
+        (["extract", "one-0001.sigmf-meta", "--out", "p.parquet", "--map", "none.toml"], 2, "none.toml"),
+        (["extract", "trace.csv", "--out", "p.parquet"], 2, "trace.csv: no such file"),
+        (["import", "rows.csv", "--map", "none.toml", "--out", "p.parquet"], 2, "none.toml: not readable as TOML"),
+        (["import", "rows.csv", "--out", "p.parquet"], 2, "--map"),
+        (["train", "p.parquet", "--out", "b", "--classes", "cable"], 2, "--classes"),
+        (["evaluate", "nobundle", "p.parquet", "--out", "e", "--classes", "a=b"], 2, "--classes"),
         (["simulate", "nothere", "--out", "w"], 2, "shipped ones are base, port-ferrow, tiny"),
         (["score", "one-0001.sigmf-meta", "--out", "."], 2, "without inputs"),
     ],
@@ -60,6 +67,29 @@ def test_a_skipped_input_ends_with_six_and_the_rest_is_done(folder, tmp_path):
     assert done.returncode == 6
     assert "bad.sigmf-meta" in done.stderr
     assert (tmp_path / "v" / "run.json").is_file()
+
+
+def test_import_writes_a_table_and_says_what_is_in_it(tmp_path):
+    """Good files are imported, a bad one is skipped with exit code 6, and the next command is named."""
+    (tmp_path / "bad.csv").write_text("nothing of the kind\n")
+    good, map_path = foreign_files.write_csv(tmp_path), foreign_files.write_map(tmp_path)
+    done = pdclass("import", good, "bad.csv", "--map", map_path, "--out", "p.parquet", cwd=tmp_path)
+    assert done.returncode == 6
+    assert "bad.csv: columns.wave" in done.stderr
+    assert "  crane drive: 1 pulses of 1 circuit" in done.stdout
+    assert done.stdout.splitlines()[-1] == "next: pdclass score p.parquet --out verdicts"
+    assert (tmp_path / "p.parquet").is_file()
+
+
+def test_a_missing_extra_ends_with_five(tmp_path):
+    """Where the part that reads HDF5 is not installed, the exit code is 5 and the extra is named."""
+    (tmp_path / "night.h5").write_bytes(b"\x89HDF\r\n\x1a\n" + bytes(100))
+    code = "import sys; sys.modules['h5py'] = None; from pdclass.cli.app import main; main()"
+    command = [sys.executable, "-c", code, "extract", "night.h5", "--out", "p.parquet"]
+    done = subprocess.run(command, capture_output=True, text=True, cwd=tmp_path, check=False)
+    assert done.returncode == 5
+    assert "pip install 'pdclass[hdf5]'" in done.stderr
+    assert done.stdout == ""
 
 
 def test_json_is_json(folder, tmp_path):

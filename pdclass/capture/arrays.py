@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import contextlib
 import os
+import tokenize
 import zipfile
 import zlib
-from collections.abc import Callable, Collection, Iterator, Mapping
+from collections.abc import Callable, Collection, Iterator
 from pathlib import Path
 from typing import Any, BinaryIO
 
@@ -15,6 +16,7 @@ from numpy.lib import format as npy
 from numpy.typing import NDArray
 
 from pdclass.capture.guard import open_plain
+from pdclass.capture.heaps import heaps_are_sound
 from pdclass.capture.maps import nearest
 from pdclass.digest import file_digest
 from pdclass.errors import InputError, MissingPartError, complaint
@@ -32,8 +34,6 @@ _PLAIN_KINDS = "biufUS"
 
 NPZ_ENDINGS = (".npz",)
 HDF5_ENDINGS = (".h5", ".hdf5")
-
-Arrays = Mapping[str, NDArray[Any]]
 
 
 def read_arrays(path: Path, needed: Collection[str], wanted: Collection[str] = ()) -> dict[str, NDArray[Any]]:
@@ -100,7 +100,7 @@ def _npz_errors(path: Path) -> Iterator[None]:
     except (zipfile.BadZipFile, zipfile.LargeZipFile, EOFError, OSError, ValueError, NotImplementedError) as error:
         reason = " ".join(str(error).split())[:160]
         raise InputError(f"{path}: not readable as NPZ ({reason}); copy it again, or write it again") from None
-    except (RuntimeError, SyntaxError, LookupError, OverflowError, zlib.error) as error:
+    except (RuntimeError, SyntaxError, LookupError, OverflowError, zlib.error, tokenize.TokenError) as error:
         raise InputError(f"{path}: damaged NPZ file ({type(error).__name__}: {error}); copy it again") from None
 
 
@@ -172,6 +172,8 @@ def _check_mark(path: Path, file: BinaryIO) -> None:
     head = file.read(len(_HDF5_MARK))
     if head != _HDF5_MARK:
         raise _wrong(path, "kind", "an HDF5 file", f"a file that begins with {head!r}", "check the name's ending")
+    if not heaps_are_sound(file):
+        raise _wrong(path, "heap of texts", "objects that fill it", "a damaged one", "copy the file again")
 
 
 def _hdf5_library(path: Path) -> Any:

@@ -82,7 +82,10 @@ def read_labels(path: Path, own_classes: Iterable[str] = ()) -> LabelFile:
         advice = "write pulse_id, or capture_digest and onset_sample"
         raise opened.wrong("header", "columns that name the pulse", ", ".join(opened.names)[:100], advice)
     numbers = [name for name in known if name == "onset_sample"]
-    columns = read_columns(opened, numbers, [name for name in known if name not in numbers])
+    columns = {
+        name: column if name in numbers else _unquoted(column)
+        for name, column in read_columns(opened, numbers, [name for name in known if name not in numbers]).items()
+    }
     count = len(columns["label"])
     if count > ROW_LIMIT:
         raise opened.wrong("rows", f"at most {ROW_LIMIT}", count, "split the file")
@@ -264,6 +267,13 @@ def _listed(where: str, words: str, items: Sequence[str]) -> list[str]:
         return []
     more = f" and {len(items) - MOST_LISTED} more" if len(items) > MOST_LISTED else ""
     return [f"{where}: {len(items)} {words}: {', '.join(items[:MOST_LISTED])}{more}"]
+
+
+def _unquoted(words: NDArray[Any]) -> NDArray[Any]:
+    """Words without the apostrophe that `_safe` has put before them."""
+    plain = np.empty(len(words), object)
+    plain[:] = [w[1:] if w is not None and w.startswith("'") and w[1:].startswith(_FORMULA) else w for w in words]
+    return plain
 
 
 def _safe(cell: Any) -> str:

@@ -281,7 +281,7 @@ def _check_rows(opened: _Opened, name: str, found: int) -> None:
 def _own_classes(opened: _Opened) -> dict[str, str]:
     classes = opened.said.get("classes", {})
     fits = isinstance(classes, dict) and len(classes) <= CLASS_LIMIT
-    if not fits or not all(is_own_class(name) and kind in {"", *LABELS} for name, kind in classes.items()):
+    if not fits or not all(is_own_class(name) and kind in ("", *LABELS) for name, kind in classes.items()):
         expected = f'at most {CLASS_LIMIT} own classes, each with one of ours or ""'
         raise opened.wrong("pdclass.classes", expected, shown(classes), "write the table again")
     return {str(name): str(kind) for name, kind in classes.items()}

@@ -14,7 +14,7 @@ import pyarrow.parquet as pq
 from pdclass.capture.waves import check_waves
 from pdclass.digest import canonical_json
 from pdclass.errors import InputError, complaint
-from pdclass.pulses import SIMULATED_COLUMNS, TABLE_COLUMNS, Chain, PulseSet, window_samples
+from pdclass.pulses import LABELS, SIMULATED_COLUMNS, TABLE_COLUMNS, Chain, PulseSet, window_samples
 from pdclass.writing import whole_file
 
 TABLE_KEY = b"pdclass"
@@ -41,7 +41,7 @@ def write_pulses(path: Path, pulses: PulseSet) -> None:
     ------
     InputError
         If there is no chain, the chains differ in rate, the window is not 20 us long, a pulse stands twice, a
-        wave could not be read back, or the file cannot be written.
+        wave or a label could not be read back, or the file cannot be written.
     """
     schema = _schema(path, pulses)
     _check_readable(path, pulses)
@@ -95,6 +95,10 @@ def _check_readable(path: Path, pulses: PulseSet) -> None:
         found = pulses.table.index[pulses.table.index.duplicated()][0]
         advice = "leave one of the pulses out"
         raise InputError(complaint(path, "pulse_id", expected="each pulse once", found=found, advice=advice))
+    odd = set(pulses.table["label"].dropna()) - {*LABELS, *pulses.own_classes}
+    if odd:
+        expected, found = "labels of ours or declared own classes", repr(min(odd))
+        raise InputError(complaint(path, "label", expected=expected, found=found, advice="declare the class"))
     check_waves(str(path), pulses.waves)
 
 

@@ -187,6 +187,23 @@ def test_a_filter_that_would_load_code_is_refused(hdf5):
     assert "filter 305" in refusal(hdf5, ["odd"])
 
 
+def test_a_heap_without_sizes_is_refused(tmp_path):
+    """Texts whose heap was damaged so that the library would go round for ever are refused before it looks."""
+    h5py = pytest.importorskip("h5py")
+    path = tmp_path / "x.h5"
+    with h5py.File(path, "w") as file:
+        file["a"] = "Quay Road"
+        file["b"] = "HF1"
+    content = bytearray(path.read_bytes())
+    heap = content.index(b"GCOL")
+    assert str(read_arrays(path, ["a"])["a"]) == "Quay Road"
+    for place, value in ((heap + 24, 57), (heap + 24, 255), (heap + 9, 0), (heap + 15, 1)):
+        damaged = bytearray(content)
+        damaged[place] = value
+        path.write_bytes(damaged)
+        assert "heap of texts" in refusal(path)
+
+
 def test_other_files_are_no_hdf5(tmp_path):
     """The first bytes decide before the library is asked."""
     (tmp_path / "x.h5").write_bytes(b"not at all")

@@ -17,8 +17,8 @@ from foreign_files import (
 )
 
 from pdclass.capture import read_pulses, write_pulses
-from pdclass.capture.foreign import pulses_of, read_rows
-from pdclass.capture.maps import read_map
+from pdclass.capture.foreign import pulses_of, read_rows, time_rate_hz
+from pdclass.capture.maps import Map, read_map
 from pdclass.errors import InputError
 
 
@@ -146,13 +146,31 @@ def test_a_time_axis_agrees_with_the_rate_or_is_refused(tmp_path, step, fits):
         assert "time: expected 1e+08 samples a second" in refusal(tmp_path / "rows.npz", map_path)
 
 
-def test_a_time_axis_with_a_gap_is_refused(tmp_path):
-    """Times that do not rise evenly are no axis of one stretch."""
+@pytest.mark.parametrize("missing", [1, 5])
+def test_a_time_axis_with_a_gap_is_refused(tmp_path, missing):
+    """Times that do not rise evenly are no axis of one stretch, be it for a single sample."""
     time = np.arange(1500) * 10.0
-    time[700:] += 50.0
+    time[700:] += 10.0 * missing
     np.savez(tmp_path / "rows.npz", waves=waves_mv(), t=time, **columns())
     changes = ('label = "type"', 'label = "type"\ntime = "t"'), ("[units]", '[units]\ntime = "ns"')
+    changes += (("rate_hz = 100e6\n", ""),)
     assert "times that rise evenly" in refusal(tmp_path / "rows.npz", write_map(tmp_path, *changes, wave="waves"))
+
+
+@pytest.mark.parametrize(("samples", "gap", "fits"), [(200_000, 0, True), (200_000, 30, False)])
+def test_times_printed_with_few_digits_are_an_axis(samples, gap, fits):
+    """Six digits are ten samples wide at the end of 2 ms in ns: no gap for that, and one of 30 samples still shows."""
+    ns = np.arange(samples) * 10.0
+    ns[samples // 2 :] += 10.0 * gap
+    printed = np.array([float(f"{value:.5g}") for value in ns])
+    given = Map.model_validate(
+        {"kind": "trace", "columns": {"time": "t", "volts": "v"}, "units": {"time": "ns"}, "fixed": {}}
+    )
+    if fits:
+        assert time_rate_hz("x", given, printed) == pytest.approx(1e8, rel=1e-4)
+    else:
+        with pytest.raises(InputError, match="rise evenly"):
+            time_rate_hz("x", given, printed)
 
 
 def test_the_rate_may_stand_in_the_file(tmp_path):

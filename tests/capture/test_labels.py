@@ -171,6 +171,7 @@ def test_a_sheet_comes_back_as_it_was(tmp_path):
     found = read_labels(path)
     assert found.rows["pulse_id"].tolist() == ["0123456789abcdef", "11"]
     assert found.rows["onset_sample"].tolist() == [2.0**40, 3.0]
-    assert found.rows["comment"].tolist() == ["'=1+1", 'says "no", twice']
+    assert found.rows["comment"].tolist() == ["=1+1", 'says "no", twice']
+    assert "'=1+1" in path.read_text(encoding="utf-8")
     assert found.rows["label"].tolist() == ["cable", None]
     assert np.isnan(read_labels(path).rows["onset_sample"]).sum() == 0

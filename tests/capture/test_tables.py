@@ -474,3 +474,21 @@ def test_a_row_that_stands_for_very_many_samples_is_refused_unread(foreign, make
     message = refusal(foreign(wave=pa.array(rows, pa.list_(pa.float32()))))
     assert "wave: expected 10000 samples in 5 rows" in message
     assert "found 108000 samples" in message
+
+
+@pytest.mark.parametrize(
+    "classes", [["crane drive"], {"crane drive": "noise"}, {"cable": ""}, {"a|b": ""}, {"x1": 3}, {"x1": []}, 7]
+)
+def test_wrong_own_classes_are_refused(foreign, classes):
+    """Own classes in the metadata are names, each with one of ours or nothing."""
+    assert "pdclass.classes" in refusal(foreign({"format": 1, "rate_hz": 100e6, "classes": classes}))
+
+
+def test_own_classes_are_labels_where_they_are_declared(foreign):
+    """A declared class may stand in the label column, an undeclared one not."""
+    label = pa.array(["crane drive", None, "cable", None, None])
+    declared = {"format": 1, "rate_hz": 100e6, "classes": {"crane drive": "interference"}}
+    pulses, _ = read_pulses(foreign(declared, label=label))
+    assert pulses.table["label"].iloc[0] == "crane drive"
+    assert pulses.take(np.array([0])).own_classes == {"crane drive": "interference"}
+    assert "label, row 0" in refusal(foreign(label=label))

@@ -70,3 +70,14 @@ def test_a_missing_folder_is_named(tmp_path, make_pulses):
     """A folder that is not there gives one line."""
     with pytest.raises(InputError, match="cannot be written"):
         write_pulses(tmp_path / "nowhere" / "p.parquet", make_pulses())
+
+
+def test_a_label_that_could_not_be_read_back_is_refused(tmp_path, make_pulses):
+    """A class that is neither ours nor declared is not written; declared it is, and stands in the metadata."""
+    pulses = make_pulses()
+    odd = replace(pulses, table=pulses.table.assign(label="crane drive"))
+    with pytest.raises(InputError, match="'crane drive'"):
+        write_pulses(tmp_path / "p.parquet", odd)
+    write_pulses(tmp_path / "p.parquet", replace(odd, own_classes={"crane drive": "interference"}))
+    said = json.loads(pq.read_schema(tmp_path / "p.parquet").metadata[b"pdclass"])
+    assert said["classes"] == {"crane drive": "interference"}

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from closed_form import as_capture
 
-from pdclass.pulses import TABLE_COLUMNS, Chain, phase_deg, typed_table
+from pdclass.pulses import TABLE_COLUMNS, Chain, is_own_class, phase_deg, typed_table, with_texts
 
 
 @pytest.fixture
@@ -45,3 +45,27 @@ def test_a_typed_table_has_every_column_in_order():
     assert table["site"].isna().all()
     assert table["snr_db"].dtype == np.float32
     assert not table["clipped"].any()
+
+
+@pytest.mark.parametrize("name", ["crane drive", "void_2", "Hohlraum-größer", "ab"])
+def test_names_that_can_be_a_class(name):
+    """Letters of any script, digits, spaces, underscores and hyphens make a class of one's own."""
+    assert is_own_class(name)
+
+
+@pytest.mark.parametrize(
+    "name",
+    ["", "a", "cable", "undecided", "pulses", "echoes", "none", "a|b", "a,b", "=a", " ab", "ab ", "a\nb", "a" * 41],
+)
+def test_names_that_cannot_be_a_class(name):
+    """Our labels, words of our tables, and what could not stand in a column name, a list or a cell are refused."""
+    assert not is_own_class(name)
+
+
+def test_texts_are_replaced_as_the_contract_has_them():
+    """Whatever is no text becomes None, and the column stays one of objects."""
+    table = with_texts(
+        typed_table({"label": ["cable", None, "local"]}, ["a", "b", "c"]), label=["x1", float("nan"), None]
+    )
+    assert table["label"].tolist() == ["x1", None, None]
+    assert table["label"].dtype == object

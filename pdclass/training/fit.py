@@ -130,7 +130,7 @@ def checked_mix(mix: Mapping[str, float] | None, classes: Sequence[str]) -> dict
     return {name: float(mix[name]) for name in classes}
 
 
-def _classes(table: pd.DataFrame, own_classes: Collection[str]) -> tuple[str, ...]:
+def _classes(table: pd.DataFrame, own_classes: Collection[str] = ()) -> tuple[str, ...]:
     """The labels that there are: ours in their order, then the user's own by name."""
     found, known = set(table["label"]), (*LABELS, *sorted(own_classes))
     odd = sorted(str(label) for label in found - set(known))

@@ -132,7 +132,7 @@ def test_a_file_that_is_too_large_is_refused_unread(folder):
         ({"format": True}, "format"),
         ({"temperature": 0.0}, "temperature"),
         ({"temperature": "1"}, "temperature"),
-        ({"classes": ["cable", "local", "switchgear", "frog"]}, "classes"),
+        ({"classes": ["cable", "local", "switchgear", "frog|toad"]}, "classes"),
         ({"classes": ["cable", "local", "switchgear", "switchgear"]}, "classes"),
         ({"shift": [0.0]}, "one entry a class"),
         ({"limits": [0.5, None]}, "one entry a class"),

@@ -72,6 +72,15 @@ def test_doubts_are_grouped_by_cause_and_none_is_lost(verdicts):
     assert outside.circuits == {"=Depot $x_1$": 8}
 
 
+def test_a_class_of_ones_own_is_not_passed_over(verdicts, pulses, run):
+    """Pulses decided as a class that is none of ours are named among those to act on: it may be a discharge."""
+    void = verdicts.assign(label="void", decided=True)
+    counts = label_counts(void, pulses, ("cable", "void"), run["captures"])
+    for _, words in circuit_words(counts, doubt_groups(void), run["captures"]):
+        assert "for void (" in words
+        assert "No pulse was decided as a discharge" not in words
+
+
 def test_circuit_words_say_labels_doubt_and_who_acts(verdicts, pulses, run):
     """The paragraph of a circuit counts labels and doubts and names the crews, without a word on severity."""
     counts = label_counts(verdicts, pulses, LABELS, run["captures"])

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -19,7 +19,7 @@ from pdclass.jobs.simulate import joined
 from pdclass.jobs.talk import SILENT, Talk
 from pdclass.model.bundle import BundleParts, check_place, write_bundle
 from pdclass.model.columns import thin
-from pdclass.pulses import LABELS, FloatArray, PulseSet, is_own_class
+from pdclass.pulses import LABELS, FloatArray, PulseSet
 from pdclass.training.card import with_card
 from pdclass.training.fit import train
 from pdclass.training.settings import TrainSettings
@@ -64,7 +64,7 @@ def train_bundle(
     TooFewError
         If there are too few groups, altogether or of a class.
     """
-    settings = _settings(error_rate, mix, group, private=private, seed=seed)
+    settings = _settings(error_rate, mix, group, classes=classes or {}, private=private, seed=seed)
     check_place(out, replace=force)
     sets, notes = labelled_tables(pulses, labels, classes)
     talk.say(f"{sum(len(one.table) for one in sets)} pulses read")
@@ -176,6 +176,7 @@ def _settings(
     mix: Mapping[str, float] | None,
     group: str | None,
     *,
+    classes: Collection[str],
     private: bool,
     seed: int,
 ) -> TrainSettings:
@@ -184,7 +185,7 @@ def _settings(
     if group not in {None, "circuit"}:
         raise InputError(f"--group: expected circuit, found {group!r}; leave it out for circuit and site")
     if mix is not None:
-        _check_mix(mix)
+        _check_mix(mix, classes)
     by = "circuit-and-site" if group is None else group
     chosen = {"error_rate": error_rate, "mix": mix, "group_by": by, "private": private, "seed": seed}
     try:
@@ -194,11 +195,12 @@ def _settings(
         raise InputError(f"{first['loc'][0]}: {first['msg']}, found {first['input']!r}") from None
 
 
-def _check_mix(mix: Mapping[str, float]) -> None:
-    # classes of the user's own stand in tables that have not been read yet; `checked_mix` knows them
-    strange = sorted(name for name in set(mix) - set(LABELS) if not is_own_class(name))
+def _check_mix(mix: Mapping[str, float], classes: Collection[str]) -> None:
+    known = (*LABELS, *classes)
+    strange = sorted(set(mix) - set(known))
     if strange:
-        raise InputError(f"--mix: expected shares of {', '.join(LABELS)}, found '{strange[0]}'; correct the name")
+        expected, advice = ", ".join(known), "correct the name, or name a class of your own with --classes"
+        raise InputError(f"--mix: expected shares of {expected}, found '{strange[0]}'; {advice}")
     low = [name for name, share in mix.items() if not share >= _SMALLEST_SHARE]
     if low:
         raise InputError(f"--mix: {low[0]}: expected at least {_SMALLEST_SHARE}, found {mix[low[0]]:g}; raise it")

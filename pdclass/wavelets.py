@@ -6,14 +6,13 @@ does not use it; it stays as the reference that the extraction is measured again
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from functools import cache
 from typing import Any, Literal
 
 import numpy as np
 import pywt
-import scipy.optimize
-import scipy.special
 from numpy.typing import NDArray
 
 from pdclass.errors import InputError
@@ -119,17 +118,21 @@ def minimax_factor(count: int) -> float:
     It solves (n + 1) r(t, 0) = 1 + t², r the risk of soft thresholding (Donoho and Johnstone, 1994, section 2.2; from
     memory).
     """
-
-    def excess(threshold: float) -> float:
-        return (count + 1) * _risk_at_zero(threshold) - 1 - threshold**2
-
-    return float(scipy.optimize.brentq(excess, 0.0, universal_factor(count) + 1.0))
+    low, high = 0.0, universal_factor(count) + 1.0
+    for _ in range(60):
+        middle = 0.5 * (low + high)
+        if (count + 1) * _risk_at_zero(middle) > 1 + middle**2:
+            low = middle
+        else:
+            high = middle
+    return high
 
 
 def _risk_at_zero(threshold: float) -> float:
     """Mean square of a standard normal after soft thresholding."""
-    density = np.exp(-0.5 * threshold**2) / np.sqrt(2 * np.pi)
-    return float(2 * ((1 + threshold**2) * scipy.special.ndtr(-threshold) - threshold * density))
+    density = math.exp(-0.5 * threshold**2) / math.sqrt(2 * math.pi)
+    beyond = 0.5 * math.erfc(threshold / math.sqrt(2))
+    return 2 * ((1 + threshold**2) * beyond - threshold * density)
 
 
 def sure_factor(coefficients: Samples) -> float:

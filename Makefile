@@ -25,7 +25,7 @@ format: $(VENV)/dev.stamp
 	$(BIN)/ruff check --fix .
 
 bench: $(VENV)/dev.stamp
-	for bench in benchmarks/*.py; do $(BIN)/python $$bench || exit 1; done
+	$(BIN)/python benchmarks/results.py
 
 model: $(VENV)/dev.stamp
 	$(BIN)/python -m pdclass.jobs.base_model models/base

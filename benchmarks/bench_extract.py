@@ -72,7 +72,11 @@ def between_bursts(calls):
     rows = []
     for kind in ("ringing", "noisy"):
         for name, call in calls.items():
-            by_pulses = [burst_cycle(12.0, 70 + seed, kind, planted=planted) for planted in (True, False) for seed in range(BURST_CYCLES)]
+            by_pulses = [
+                burst_cycle(12.0, 70 + seed, kind, planted=planted)
+                for planted in (True, False)
+                for seed in range(BURST_CYCLES)
+            ]
             hits = [found(call(counts), onsets, BURST_NEAR).mean() for counts, onsets in by_pulses]
             rows.append((kind, name, np.mean(hits[:BURST_CYCLES]), np.mean(hits[BURST_CYCLES:])))
     return rows
@@ -89,15 +93,29 @@ def main():
         faster = measuring.times_faster(spent, name, "wavedec")
         seen = [measuring.percent(share) for share in by_height.get(name, [None] * len(HEIGHTS))]
         kinds = [measuring.percent(share) for share in by_kind.get(name, [None] * len(KINDS))]
-        rows.append((WORDS[name], thresholds.get(name), rate, faster, quiet.get(name), " / ".join(seen), " / ".join(kinds)))
+        rows.append(
+            (WORDS[name], thresholds.get(name), rate, faster, quiet.get(name), " / ".join(seen), " / ".join(kinds))
+        )
     heights = " / ".join(f"{height:g}" for height in HEIGHTS)
     print("Speed and what is found at about one false event a cycle.")
     measuring.table(
-        ("detector", "threshold [noise levels]", "MS/s", "× `wavedec`", "false a cycle", f"found % at peak/sigma {heights}", f"at 8: {' / '.join(KINDS)}"),
+        (
+            "detector",
+            "threshold [noise levels]",
+            "MS/s",
+            "× `wavedec`",
+            "false a cycle",
+            f"found % at peak/sigma {heights}",
+            f"at 8: {' / '.join(KINDS)}",
+        ),
         rows,
     )
-    print("Bursts of 3 us, five times as high as the pulses, every 10 us; pulses at peak/sigma 12 that begin outside a burst.")
-    print("Found: an event within 0.3 us of the onset. By chance: the same places in the same record without the pulses.")
+    print(
+        "Bursts of 3 us, five times as high as the pulses, every 10 us; pulses at peak/sigma 12 that begin outside a burst."
+    )
+    print(
+        "Found: an event within 0.3 us of the onset. By chance: the same places in the same record without the pulses."
+    )
     bursts = between_bursts(calls)
     measuring.table(
         ("bursts", "detector", "found %", "by chance %"),
@@ -110,7 +128,11 @@ def main():
             ("whole extraction, × `wavedec`", "at least", 1.8, measuring.times_faster(spent, "whole", "wavedec")),
             ("found % at peak/sigma 8", "at least", 95, 100 * own[HEIGHTS.index(8.0)]),
             ("false events a cycle", "at most", 1, quiet["whole"]),
-            *((f"found % between {kind} bursts", "at least", 90, 100 * hit) for kind, name, hit, _ in bursts if name == "whole"),
+            *(
+                (f"found % between {kind} bursts", "at least", 90, 100 * hit)
+                for kind, name, hit, _ in bursts
+                if name == "whole"
+            ),
         ]
     )
     measuring.weak(

@@ -84,7 +84,9 @@ def main(gigabytes):
     if not Path("/proc/self/status").exists():
         raise SystemExit("memory is measured on Linux only")
     if shutil.disk_usage(tempfile.gettempdir()).free < 1.2e9 * gigabytes:
-        raise SystemExit(f"{tempfile.gettempdir()}: {1.2 * gigabytes:.3g} GB of free disk are needed; give a smaller size, or set TMPDIR")
+        raise SystemExit(
+            f"{tempfile.gettempdir()}: {1.2 * gigabytes:.3g} GB of free disk are needed; give a smaller size, or set TMPDIR"
+        )
     with tempfile.TemporaryDirectory() as folder:
         meta = write_capture(Path(folder) / "large", gigabytes)
         done = subprocess.run([sys.executable, __file__, "--child", str(meta)], capture_output=True, text=True)

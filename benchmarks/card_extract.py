@@ -45,7 +45,9 @@ def calibrated(world, count):
     """The lowest threshold of the plain detector with at most one false event a cycle in the background."""
     seen, cycles = [], 0.0
     for number in range(1, count + 1):
-        capture = capture_of(world, circuit_of(world, number, seed=SEED_CALIBRATION), number, seed=SEED_CALIBRATION, pulses=0)
+        capture = capture_of(
+            world, circuit_of(world, number, seed=SEED_CALIBRATION), number, seed=SEED_CALIBRATION, pulses=0
+        )
         seen.append(plain_crossings(capture))
         cycles += capture.duration_s * capture.chain.mains_hz
     for threshold in GRID:
@@ -135,7 +137,13 @@ def by_height(rows):
 def by_limit(rows):
     band = pd.cut(rows["over_limit"], LIMIT_EDGES, right=False)
     lines = [
-        (label, *(measuring.percent(part["own_s"].notna().mean()) for _, part in rows[rows["label"] == label].groupby(band, observed=False)))
+        (
+            label,
+            *(
+                measuring.percent(part["own_s"].notna().mean())
+                for _, part in rows[rows["label"] == label].groupby(band, observed=False)
+            ),
+        )
         for label in LABELS
     ]
     print("Found % by peak over the smallest findable pulse that the capture states (a Gaussian of 50 ns).")
@@ -163,13 +171,29 @@ def by_disturbance(rows, beyond):
         there = beyond[beyond["beside"].str.split("|").map(lambda names, f=family: f in names)]
         rates = there[["own", "plain"]].sum() / there["cycles"].sum()
         lines.append((family, both(here), str(len(here)), both(sent), str(len(sent)), rates["own"], rates["plain"]))
-    print("Beside each family of interference: discharges of 4 to 18 dB, the family's own pulses, and events that nothing")
-    print("planted explains (later than 60 us after any planted pulse, echoes left out); in brackets the plain detector.")
+    print(
+        "Beside each family of interference: discharges of 4 to 18 dB, the family's own pulses, and events that nothing"
+    )
+    print(
+        "planted explains (later than 60 us after any planted pulse, echoes left out); in brackets the plain detector."
+    )
     measuring.table(
-        ("beside", "discharges found %", "discharges", "own pulses found %", "own pulses", "unexplained a cycle", "plain"), lines
+        (
+            "beside",
+            "discharges found %",
+            "discharges",
+            "own pulses found %",
+            "own pulses",
+            "unexplained a cycle",
+            "plain",
+        ),
+        lines,
     )
     carriers = pd.cut(discharge["carriers"], CARRIER_EDGES, right=False)
-    lines = [(words, both(part), str(len(part))) for words, (_, part) in zip(CARRIER_WORDS, discharge.groupby(carriers, observed=False))]
+    lines = [
+        (words, both(part), str(len(part)))
+        for words, (_, part) in zip(CARRIER_WORDS, discharge.groupby(carriers, observed=False))
+    ]
     print("Discharges of 4 to 18 dB by the number of broadcast carriers in the record.")
     measuring.table(("carriers", "found %", "discharges"), lines)
 
@@ -214,10 +238,21 @@ def draw(rows, alone):
         for name, style, words in (("own_s", "-", "pdclass"), ("plain_s", "--", "plain wavelet detector")):
             hits = np.array([part[name].notna().sum() for part in groups])
             low, high = interval(hits, np.maximum(counts, 1))
-            panel.fill_between(middles, 100 * low, 100 * high, color=COLOURS[label], alpha=0.18 if style == "-" else 0.09, lw=0)
+            panel.fill_between(
+                middles, 100 * low, 100 * high, color=COLOURS[label], alpha=0.18 if style == "-" else 0.09, lw=0
+            )
             panel.plot(
-                middles, 100 * hits / np.maximum(counts, 1), style, color=COLOURS[label], lw=1.8, marker=MARKERS[label],
-                ms=6, mec=EDGE, mew=0.7, mfc=COLOURS[label] if style == "-" else "white", label=words,
+                middles,
+                100 * hits / np.maximum(counts, 1),
+                style,
+                color=COLOURS[label],
+                lw=1.8,
+                marker=MARKERS[label],
+                ms=6,
+                mec=EDGE,
+                mew=0.7,
+                mfc=COLOURS[label] if style == "-" else "white",
+                label=words,
             )
         panel.set_title(f"{label} ({len(own)} pulses)", fontsize=10, loc="left")
         panel.set_ylim(-3, 104)
@@ -245,7 +280,9 @@ def main(count):
     rows = pd.concat([part for part, _ in parts], ignore_index=True)
     beyond = pd.DataFrame([one for _, one in parts])
     alone = pd.DataFrame([quiet(world, number, threshold) for number in range(1, count // 2 + 1)])
-    print(f"{count} circuits, {len(rows)} planted pulses that stand apart; the plain detector's threshold: {threshold:.1f} noise levels.\n")
+    print(
+        f"{count} circuits, {len(rows)} planted pulses that stand apart; the plain detector's threshold: {threshold:.1f} noise levels.\n"
+    )
     by_height(rows)
     by_limit(rows)
     by_onset(rows[rows["label"] != "interference"])
@@ -257,7 +294,12 @@ def main(count):
     taken = rows[rows["own_s"].notna() & (rows["label"] != "interference")]
     measuring.aims(
         [
-            ("found % of discharges of 18 to 20 dB (peak 8 to 10 times the noise)", "at least", 95, 100 * eight[eight["label"] != "interference"]["own_s"].notna().mean()),
+            (
+                "found % of discharges of 18 to 20 dB (peak 8 to 10 times the noise)",
+                "at least",
+                95,
+                100 * eight[eight["label"] != "interference"]["own_s"].notna().mean(),
+            ),
             ("false events a cycle in the background", "at most", 1, alone["own"].sum() / alone["cycles"].sum()),
         ]
     )

@@ -117,5 +117,7 @@ def _burst(kind, length, rng):
     if kind == "ringing":
         wave = np.exp(-t / 0.6e-6) * np.sin(2 * np.pi * 6e6 * t)
     else:
-        wave = np.convolve(rng.normal(size=length + 8), np.hanning(9), "valid") * np.minimum(1, 20 * np.sin(np.pi * t / 3e-6))
+        wave = np.convolve(rng.normal(size=length + 8), np.hanning(9), "valid") * np.minimum(
+            1, 20 * np.sin(np.pi * t / 3e-6)
+        )
     return wave / np.abs(wave).max()

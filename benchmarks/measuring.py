@@ -61,7 +61,10 @@ def aims(rows):
     met = {"at least": lambda reached, aim: reached >= aim, "at most": lambda reached, aim: reached <= aim}
     table(
         ("aim", "", "reached", "met"),
-        [(what, f"{side} {aim:g}", reached, "yes" if met[side](reached, aim) else "**no**") for what, side, aim, reached in rows],
+        [
+            (what, f"{side} {aim:g}", reached, "yes" if met[side](reached, aim) else "**no**")
+            for what, side, aim, reached in rows
+        ],
     )
 
 

@@ -91,10 +91,18 @@ def main():
     for name in (*PEERS, "kernel", "whole"):
         rate = samples / np.median(spent[name]) / 1e6
         faster = measuring.times_faster(spent, name, "wavedec")
-        seen = [measuring.percent(share) for share in by_height.get(name, [None] * len(HEIGHTS))]
-        kinds = [measuring.percent(share) for share in by_kind.get(name, [None] * len(KINDS))]
+        seen = [measuring.percent(share) for share in by_height.get(name, [])]
+        kinds = [measuring.percent(share) for share in by_kind.get(name, [])]
         rows.append(
-            (WORDS[name], thresholds.get(name), rate, faster, quiet.get(name), " / ".join(seen), " / ".join(kinds))
+            (
+                WORDS[name],
+                thresholds.get(name),
+                rate,
+                faster,
+                quiet.get(name),
+                " / ".join(seen) or None,
+                " / ".join(kinds) or None,
+            )
         )
     heights = " / ".join(f"{height:g}" for height in HEIGHTS)
     print("Speed and what is found at about one false event a cycle.")

@@ -8,8 +8,7 @@ import numpy as np
 import scipy.signal
 from cycles import RATE_HZ, SAMPLES, captured, cycle
 
-from pdclass.extract import ExtractSettings, extract
-from pdclass.extract.background import measure_background, scanned
+from pdclass.extract import ExtractSettings, background, extract
 from pdclass.wavelets import DETECTOR_APART, Crossings, crossing_events, noise_level, scale_crossings
 
 GRID = np.arange(3.5, 14.0, 0.1)
@@ -66,10 +65,9 @@ def own_events(counts):
 def own_flags(counts):
     """The detection kernel alone: background, whitening, bank, flags, in blocks; how many samples left the background."""
     capture = captured(counts)
-    background = measure_background(capture, ExtractSettings())
-    bounds = (0, counts.size)
+    held, bounds = background.measure_background(capture, ExtractSettings()), (0, counts.size)
     flagged = 0
     for first in range(0, counts.size, BLOCK_SAMPLES):
         last = min(first + BLOCK_SAMPLES, counts.size)
-        flagged += int(np.count_nonzero(scanned(counts, background, bounds, first, last)[1]))
+        flagged += int(np.count_nonzero(background.scanned(counts, held, bounds, first, last)[1]))
     return flagged

@@ -54,6 +54,7 @@ def section(name):
     script = HERE / f"{name}.py"
     words = ast.get_docstring(ast.parse(script.read_text(encoding="utf-8")))
     title, _, rest = words.partition("\n")
+    title = title.rstrip(".")
     begun = time.monotonic()
     done = subprocess.run([sys.executable, str(script)], capture_output=True, text=True, timeout=60 * MINUTES_EACH)
     spent = f"{(time.monotonic() - begun) / 60:.1f}"
@@ -62,12 +63,22 @@ def section(name):
         print(done.stderr, file=sys.stderr)
         last = done.stderr.strip().splitlines()[-1:] or ["no message"]
         return f"## {title}\n\n`{script.name}` **failed**: {last[0]}\n", False
-    return f"## {title}\n\n`{script.name}`. {rest.strip()}\n\n{done.stdout.strip()}\n", True
+    return f"## {title}\n\n`{script.name}`\n\n{rest.strip()}\n\n{done.stdout.strip()}\n", True
+
+
+def missed(sections):
+    """The aims that were not reached, from the tables of all benchmarks."""
+    lines = [line for words in sections for line in words.splitlines() if line.endswith("| **no** |")]
+    if not lines:
+        return "Every aim below was reached.\n"
+    rows = [" | ".join(cell.strip() for cell in line.strip("|").split("|")[:3]) for line in lines]
+    return "Not reached:\n\n| aim | | reached |\n| --- | --- | --- |\n" + "".join(f"| {row} |\n" for row in rows)
 
 
 def main():
     sections = [section(name) for name in BENCHES]
-    text = "\n".join([head(), *(words for words, _ in sections)])
+    texts = [words for words, _ in sections]
+    text = "\n".join([head(), missed(texts), *texts])
     while "\n\n\n" in text:
         text = text.replace("\n\n\n", "\n\n")
     (HERE / "RESULTS.md").write_text(text, encoding="utf-8")

@@ -35,7 +35,9 @@ RUN_SAMPLES, RUNS_PER_FIT = 4096, 64
 _SMALLEST_PIECE = 512
 _LEVEL_PIECES, _LEVEL_COMB = 64, 128
 #: Where more than this share of samples lies beyond so many noise levels, the background is impulsive.
-IMPULSIVE_SHARE, IMPULSIVE_LEVELS = 0.05, 4.0
+IMPULSIVE_SHARE, IMPULSIVE_LEVELS = 0.003, 4.0
+#: A long impulse lasts so long [s].
+IMPULSE_S = 2e-6
 GATE_LEVELS = 4.0
 _ROUGH_RUNS = 8
 #: A local level counts where it is above that of the stretch by so many times the chance of its estimate.
@@ -114,6 +116,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
     dither = bank.dither_table(counts)
     level = _record_level(counts, bounds, piece, dither)
     scales = min(int(np.log2(WIDEST_BOX_S * rate_hz)), int(np.log2(bank.LONGEST_BOX))) + 1
+    impulse = round(IMPULSE_S * rate_hz)
     filters, limits, gains = [], [], []
     for inside, spectra in _stretches(counts, epochs, piece, level):
         spectrum = whiten.noise_spectrum(spectra) + _rounding(counts, piece)
@@ -122,7 +125,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
                 f"{capture.name}: samples: expected finite values with noise, found neither; check the sensor"
             )
         taps = whiten.whitening_filter(spectrum, FILTER_ORDER)
-        taps, noise, raised = _levels(counts, (dither, level), taps, epochs[inside], scales)
+        taps, noise, raised = _levels(counts, (dither, level), taps, epochs[inside], scales, impulse)
         if not noise.min() > 0:
             raise InputError(
                 f"{capture.name}: no noise in the record (most samples are equal); is the sensor connected?"
@@ -278,7 +281,7 @@ def _epoch_spectra(counts: NDArray[Any], epochs: IntArray, piece: int, pieces: i
 
 
 def _levels(
-    counts: NDArray[Any], spread: tuple[WaveArray, float], taps: WaveArray, epochs: IntArray, scales: int
+    counts: NDArray[Any], spread: tuple[WaveArray, float], taps: WaveArray, epochs: IntArray, scales: int, impulse: int
 ) -> tuple[WaveArray, FloatArray, FloatArray]:
     """The stretch's filter, the noise level of every scale, and by how much each epoch raises it.
 
@@ -293,7 +296,7 @@ def _levels(
     runs = _runs(epochs)
     gate, rough = np.inf, _rough_level(counts, spread, taps, runs)
     if rough[1] > IMPULSIVE_SHARE:
-        taps = whiten.gated_filter(_raw_runs(counts, spread, runs), taps)
+        taps = whiten.gated_filter(_raw_runs(counts, spread, runs), taps, impulse)
         gate = GATE_LEVELS * _rough_level(counts, spread, taps, runs)[0]
         rough = (gate / GATE_LEVELS, 0.0)
     marks = rough[0] * np.sqrt(2.0 ** np.arange(scales))

@@ -19,7 +19,10 @@ _LIFTS = (1e-6, 1e-4, 1e-2, 1.0)
 #: So many deviations of the quieter samples lie within the gate; the quarter of a normal law's samples lies within
 #: the other number of them.
 _GATE, _QUARTER = 3.5, 0.3186394
-_PASSES = 3
+#: What two epochs share counts where it rises by so many times more than in most bins.
+_CLEAR_RISE = 1.5
+_PASSES = 2
+_LEAST_KEPT = 0.1
 #: Every so many-th sample serves the noise level: neighbours tell nearly the same.
 _COMB = 7
 _SPOILT_BEFORE, _SPOILT_AFTER = 16, 48
@@ -71,7 +74,8 @@ def noise_spectrum(epochs: WaveArray) -> FloatArray:
     usual = np.partition(np.ascontiguousarray(epochs.T), middle, axis=1)[:, middle].astype(np.float64)
     shared = np.minimum(epochs[1:], epochs[:-1]) if len(epochs) > 1 else epochs
     rise = shared.max(axis=0) / np.maximum(usual, 1e-30)
-    return np.asarray(usual * np.maximum(1.0, rise / np.median(rise)), np.float64)
+    rise /= _CLEAR_RISE * np.median(rise)
+    return np.asarray(usual * np.maximum(1.0, rise), np.float64)
 
 
 def whitening_filter(spectrum: FloatArray, order: int) -> WaveArray:
@@ -98,21 +102,27 @@ def _predictor(correlation: FloatArray) -> WaveArray:
     return np.concatenate([[1.0], -past]).astype(np.float32)
 
 
-def gated_filter(signals: WaveArray, taps: WaveArray) -> WaveArray:
+def gated_filter(signals: WaveArray, taps: WaveArray, impulse: int) -> WaveArray:
     """A whitening filter for what lies between impulses, from the samples that no impulse touches.
 
     What stands out of the whitened signals is cut from the raw ones, with what it spoils, and the filter is fitted
-    to the autocorrelation of the rest, sum(x m x' m') / sum(m m') over pairs a lag apart; three times over.
+    to the autocorrelation of the rest, sum(x m x' m') / sum(m m') over pairs a lag apart; again and again. The
+    first filter has learnt the impulses and lets only their beginnings stand out: then `impulse` samples are cut.
 
     Parameters
     ----------
     signals : (pieces, samples) float32 raw pieces without their level.
     taps : (order + 1,) the filter that the impulses spoilt.
+    impulse : samples that a long impulse lasts.
     """
-    order = taps.size - 1
-    for _ in range(_PASSES):
+    order, kept = taps.size - 1, np.ones(signals.shape, np.bool_)
+    for after in (max(impulse, _SPOILT_AFTER), *(_SPOILT_AFTER,) * _PASSES):
         white = np.stack([np.convolve(signal, taps)[: signal.size] for signal in signals])
-        kept = ~_spoilt(np.abs(white) > _GATE * quiet_level(white))
+        fewer = kept & ~_spoilt(np.abs(white) > _GATE * quiet_level(white), after)
+        if fewer.mean() < _LEAST_KEPT:
+            break
+        # what was cut stays cut: the filter must not learn the impulses again
+        kept = fewer
         taps = _stable_predictor(_gated_correlation(signals, kept, order))
     return taps
 
@@ -123,10 +133,10 @@ def quiet_level(white: WaveArray) -> float:
     return float(np.partition(height, height.size // 4)[height.size // 4]) / _QUARTER
 
 
-def _spoilt(out: NDArray[np.bool_]) -> NDArray[np.bool_]:
+def _spoilt(out: NDArray[np.bool_], after: int) -> NDArray[np.bool_]:
     """Samples near those that stand out, (pieces, samples)."""
-    count = np.cumsum(np.pad(out, ((0, 0), (_SPOILT_AFTER + 1, _SPOILT_BEFORE))), axis=1)
-    return np.asarray(count[:, _SPOILT_BEFORE + _SPOILT_AFTER + 1 :] > count[:, : -_SPOILT_BEFORE - _SPOILT_AFTER - 1])
+    count = np.cumsum(np.pad(out, ((0, 0), (after + 1, _SPOILT_BEFORE))), axis=1)
+    return np.asarray(count[:, _SPOILT_BEFORE + after + 1 :] > count[:, : -_SPOILT_BEFORE - after - 1])
 
 
 def _gated_correlation(signals: WaveArray, kept: NDArray[np.bool_], order: int) -> FloatArray:

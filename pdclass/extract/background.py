@@ -19,10 +19,11 @@ from scipy.special import ndtri
 from pdclass.errors import InputError
 from pdclass.extract import bank, whiten
 from pdclass.extract.events import threshold_sigmas
+from pdclass.extract.fir import TAPS
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.settings import Settings
 
-FILTER_ORDER = 63
+FILTER_ORDER = TAPS - 1
 WIDEST_BOX_S = 2e-6
 #: A filter is at most a stretch of 64 epochs old (about 20 ms), a raised threshold at most one epoch.
 EPOCH_S = 0.3e-3

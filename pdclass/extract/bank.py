@@ -12,6 +12,7 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.extract.fir import TAPS, filter_into
 from pdclass.pulses import IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
@@ -24,24 +25,6 @@ LONGEST_BOX = 4096
 _CHUNK = 128
 #: A sample that stands out spoils so many before it and after it.
 _SPOILT_BEFORE, _SPOILT_AFTER = 16, 32
-
-
-@_njit
-def whiten_into(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # pragma: no cover - compiled
-    """Write `out[i] = sum_k taps[k] signal[i + order - k]`, eight taps a pass (their number is a multiple of 8)."""
-    n, order = out.size, taps.size - 1
-    for k in range(0, taps.size, 8):
-        a, b, c, d = taps[k], taps[k + 1], taps[k + 2], taps[k + 3]
-        e, f, g, h = taps[k + 4], taps[k + 5], taps[k + 6], taps[k + 7]
-        late = signal[order - k - 7 :]
-        s, t, u, v = late[7 : 7 + n], late[6 : 6 + n], late[5 : 5 + n], late[4 : 4 + n]
-        w, x, y, z = late[3 : 3 + n], late[2 : 2 + n], late[1 : 1 + n], late[:n]
-        if k == 0:
-            for i in range(n):
-                out[i] = a * s[i] + b * t[i] + c * u[i] + d * v[i] + e * w[i] + f * x[i] + g * y[i] + h * z[i]
-        else:
-            for i in range(n):
-                out[i] += a * s[i] + b * t[i] + c * u[i] + d * v[i] + e * w[i] + f * x[i] + g * y[i] + h * z[i]
 
 
 @_njit
@@ -181,7 +164,7 @@ def scan_into(
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
         taps, own = filters[epoch // grid[1]], boxes[: high - low]
         load_before(counts, dither, level, taps, bounds, low - order, raw[: own.size + order])
-        whiten_into(raw, taps, own)
+        filter_into(raw, taps, own)
         gain = gains[epoch]
         for i in range(end - begin):
             white[begin - first + i] = gain * own[begin - low + i]
@@ -212,7 +195,7 @@ def runs_into(
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
         taps, own = filters[epoch // grid[1]], boxes[: high - low]
         load_before(counts, dither, level, taps, bounds, low - order, raw[: own.size + order])
-        whiten_into(raw, taps, own)
+        filter_into(raw, taps, own)
         if flag_boxes(own, spare[: own.size], limits[epoch], block - low, flags[: end - block]):
             count = _add_runs(flags, block, runs, count)
             flags[:] = False
@@ -339,7 +322,7 @@ def white_run(
         load_signal(counts, dither, level, run[2], run[0] + begin, raw[begin : begin + SUB_BLOCK])
     for begin in range(0, white.size, SUB_BLOCK):
         size = min(SUB_BLOCK, white.size - begin)
-        whiten_into(raw[begin : begin + size + order], taps, white[begin : begin + size])
+        filter_into(raw[begin : begin + size + order], taps, white[begin : begin + size])
     return white
 
 
@@ -395,8 +378,8 @@ def whitened(
 
 
 def padded(taps: WaveArray) -> WaveArray:
-    """A filter with zeros behind it up to the next multiple of eight taps."""
-    return np.concatenate([taps, np.zeros(-taps.size % 8, np.float32)]).astype(np.float32)
+    """A filter of at most 64 taps with zeros behind it."""
+    return np.concatenate([taps, np.zeros(TAPS - taps.size)]).astype(np.float32)
 
 
 def joined_runs(runs: IntArray, gap: int) -> IntArray:

@@ -32,11 +32,12 @@ _HALF = EPOCHS_PER_STRETCH // 2
 #: Of every epoch so many pieces tell the spectrum and a run of so many samples the noise levels; where a stretch has
 #: few epochs, as many more as give these sums.
 PIECES_PER_EPOCH, PIECES_PER_FIT = 3, 128
-RUN_SAMPLES, RUNS_PER_FIT = 4096, 64
+RUN_SAMPLES, RUNS_PER_FIT = 2048, 128
 _SMALLEST_PIECE = 512
 _LEVEL_PIECES, _LEVEL_COMB = 64, 128
-#: Where more than this share of samples lies beyond so many noise levels, the background is impulsive.
-IMPULSIVE_SHARE, IMPULSIVE_LEVELS = 0.003, 4.0
+#: Where in more than this share of stretches of this many samples something stands out by so many noise levels, the
+#: background is impulsive: too few pieces are left from which its spectrum could be told.
+IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.4, 1024, 6.0
 #: A long impulse lasts so long [s].
 IMPULSE_S = 2e-6
 GATE_LEVELS = 4.0
@@ -270,14 +271,15 @@ def _epoch_spectra(counts: NDArray[Any], epochs: IntArray, piece: int, pieces: i
     long = epochs[epochs[:, 1] - epochs[:, 0] >= piece]
     room = np.maximum(1, 2 * (long[:, 1] - long[:, 0]) // piece - 1)
     spectra = np.empty((len(long), piece // 2 + 1), np.float32)
+    taper = np.hanning(piece).astype(np.float32)
     # short epochs hold fewer pieces, every other one overlapping half of the next
     for fitting in np.unique(np.minimum(room, pieces)).tolist():
         rows = np.flatnonzero(np.minimum(room, pieces) == fitting)
         steps = np.arange(1, fitting + 1) / (fitting + 1)
         spare = long[rows, 1] - long[rows, 0] - piece
         starts = (long[rows, 0][:, None] + (spare[:, None] * steps).astype(np.int64)).reshape(-1)
-        signals = bank.gathered(counts, starts, piece, level).reshape(len(rows), fitting, piece)
-        spectra[rows] = whiten.lower_median(whiten.powers(signals))
+        signals = bank.gathered(counts, starts, level, taper).reshape(len(rows), fitting, piece)
+        spectra[rows] = whiten.middle_power(signals)
     return spectra
 
 
@@ -295,20 +297,22 @@ def _levels(
     """
     dither, level = spread
     runs = _runs(epochs)
-    gate, rough = np.inf, _rough_level(counts, spread, taps, runs)
-    if rough[1] > IMPULSIVE_SHARE:
+    gate, white = np.inf, _few_whitened(counts, spread, taps, runs)
+    if _is_impulsive(white):
         taps = whiten.gated_filter(_raw_runs(counts, spread, runs), taps, impulse)
-        gate = GATE_LEVELS * _rough_level(counts, spread, taps, runs)[0]
-        rough = (gate / GATE_LEVELS, 0.0)
-    marks = rough[0] * np.sqrt(2.0 ** np.arange(scales))
+        white = _few_whitened(counts, spread, taps, runs)
+        gate = GATE_LEVELS * whiten.quiet_level(white)
+    marks = whiten.quiet_level(white) * np.sqrt(2.0 ** np.arange(scales))
     above, looked = bank.count_runs(counts, dither, level, taps, runs, gate, marks.astype(np.float32))
     usual = marks * _ratio(above.sum(axis=0), looked.sum(axis=0))
     raised = np.maximum(
         _raise(marks / usual, _windowed(above), _windowed(looked), _CHANCE_NEAR),
         _raise(marks / usual, above, looked, _CHANCE_LONE),
     )
-    beside = np.pad(raised, ((1, 1), (0, 0)), mode="edge")
-    return taps, usual, np.maximum(np.maximum(beside[:-2], beside[2:]), raised)
+    beside = raised.copy()
+    beside[1:] = np.maximum(beside[1:], raised[:-1])
+    beside[:-1] = np.maximum(beside[:-1], raised[1:])
+    return taps, usual, beside
 
 
 def _runs(epochs: IntArray) -> IntArray:
@@ -320,14 +324,16 @@ def _runs(epochs: IntArray) -> IntArray:
     return np.stack([begins, begins + own, epochs[:, 2]], axis=1)
 
 
-def _rough_level(
-    counts: NDArray[Any], spread: tuple[WaveArray, float], taps: WaveArray, runs: IntArray
-) -> tuple[float, float]:
-    """Noise level of a few whitened runs [count], and the share of their samples far above it."""
+def _few_whitened(counts: NDArray[Any], spread: tuple[WaveArray, float], taps: WaveArray, runs: IntArray) -> WaveArray:
     chosen = runs[np.unique(np.linspace(0, len(runs) - 1, _ROUGH_RUNS).astype(np.int64))]
-    white = np.abs(np.concatenate([bank.white_run(counts, *spread, taps, run) for run in chosen]))
-    level = whiten.quiet_level(white)
-    return level, float(np.mean(white > IMPULSIVE_LEVELS * level))
+    return np.concatenate([bank.white_run(counts, *spread, taps, run) for run in chosen])
+
+
+def _is_impulsive(white: WaveArray) -> bool:
+    """Whether impulses come so often that hardly a stretch of the whitened samples is without one."""
+    samples = min(IMPULSIVE_SAMPLES, white.size)
+    parts = np.abs(white[: white.size // samples * samples]).reshape(-1, samples)
+    return bool(np.mean(parts.max(axis=1) > IMPULSIVE_LEVELS * whiten.quiet_level(white)) > IMPULSIVE_SHARE)
 
 
 def _raw_runs(counts: NDArray[Any], spread: tuple[WaveArray, float], runs: IntArray) -> WaveArray:
@@ -352,9 +358,11 @@ def _ratio(above: IntArray, looked: IntArray) -> FloatArray:
 
 def _windowed(sums: IntArray) -> IntArray:
     """Sums over the epochs near each one."""
-    total = np.pad(sums.cumsum(axis=0), ((_NEAR_EPOCHS // 2 + 1, 0), (0, 0)))
-    total = np.pad(total, ((0, _NEAR_EPOCHS // 2), (0, 0)), mode="edge")
-    return np.asarray(total[_NEAR_EPOCHS:] - total[:-_NEAR_EPOCHS])
+    count, half = len(sums), _NEAR_EPOCHS // 2
+    total = np.zeros((count + 2 * half + 1, sums.shape[1]), np.int64)
+    total[half + 1 : half + 1 + count] = sums.cumsum(axis=0)
+    total[half + 1 + count :] = total[half + count]
+    return total[_NEAR_EPOCHS:] - total[:-_NEAR_EPOCHS]
 
 
 def _raise(marks: FloatArray, above: IntArray, looked: IntArray, chances: float) -> FloatArray:

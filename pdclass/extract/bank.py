@@ -75,7 +75,7 @@ def load_before(
 
 
 @_njit
-def _above(wave: WaveArray, limit: float) -> int:  # pragma: no cover - compiled
+def _above(wave: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     fired = np.int32(0)
     for i in range(wave.size):
         fired |= np.int32(abs(wave[i]) > limit)
@@ -83,7 +83,7 @@ def _above(wave: WaveArray, limit: float) -> int:  # pragma: no cover - compiled
 
 
 @_njit
-def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> int:  # pragma: no cover - compiled
+def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     """Boxes of twice `half` samples from those of half of it, and whether any leaves the limit."""
     fired = np.int32(0)
     ahead = wave[half : half + out.size]
@@ -265,7 +265,7 @@ def count_above(
 
 
 @_njit
-def _count(wave: WaveArray, mark: float) -> int:  # pragma: no cover - compiled
+def _count(wave: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     for i in range(wave.size):
         beyond += np.int32(abs(wave[i]) > mark)
@@ -273,7 +273,7 @@ def _count(wave: WaveArray, mark: float) -> int:  # pragma: no cover - compiled
 
 
 @_njit
-def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> int:  # pragma: no cover - compiled
+def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     ahead = wave[half : half + out.size]
     for i in range(out.size):
@@ -284,7 +284,7 @@ def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> i
 
 
 @_njit
-def _numbers(wave: WaveArray) -> int:  # pragma: no cover - compiled
+def _numbers(wave: WaveArray) -> Any:  # pragma: no cover - compiled
     seen = np.int32(0)
     for i in range(wave.size):
         seen += np.int32(wave[i] == wave[i])
@@ -328,15 +328,15 @@ def white_run(
 
 @_njit
 def gathered(
-    counts: NDArray[Any], starts: IntArray, piece: int, level: float
+    counts: NDArray[Any], starts: IntArray, level: float, taper: WaveArray
 ) -> WaveArray:  # pragma: no cover - compiled
-    """Pieces of a record without its level, (pieces, samples) float32."""
+    """Tapered pieces of a record without its level, (pieces, samples) float32."""
     shift = np.float32(level)
-    out = np.empty((starts.size, piece), np.float32)
+    out = np.empty((starts.size, taper.size), np.float32)
     for row in range(starts.size):
-        own, line = counts[starts[row] : starts[row] + piece], out[row]
-        for i in range(piece):
-            line[i] = np.float32(own[i]) - shift
+        own, line = counts[starts[row] : starts[row] + taper.size], out[row]
+        for i in range(taper.size):
+            line[i] = (np.float32(own[i]) - shift) * taper[i]
     return out
 
 

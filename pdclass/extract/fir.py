@@ -53,7 +53,6 @@ def _sums(builder: Any, source: Any, weights: Any) -> list[Any]:
     return sums
 
 
-@intrinsic  # type: ignore[untyped-decorator]
 def _tile(typing: Any, signal: Any, taps: Any, out: Any, at: Any) -> Any:  # noqa: ARG001 - numba's form
     """Outputs `at` to `at` + 96 of a filter; the arrays are contiguous float32."""
 
@@ -67,6 +66,9 @@ def _tile(typing: Any, signal: Any, taps: Any, out: Any, at: Any) -> Any:  # noq
         return context.get_dummy_value()
 
     return types.void(signal, taps, out, types.int64), generate
+
+
+_write_tile: Any = intrinsic(_tile)
 
 
 @_njit
@@ -94,5 +96,5 @@ def filter_into(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # 
         _one_by_one(signal, taps, out)
         return
     for at in range(0, out.size - TILE + 1, TILE):
-        _tile(signal, taps, out, at)
-    _tile(signal, taps, out, out.size - TILE)
+        _write_tile(signal, taps, out, at)
+    _write_tile(signal, taps, out, out.size - TILE)

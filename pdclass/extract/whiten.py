@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+import numba
 import numpy as np
 import scipy.fft
-import scipy.linalg
 from numpy.typing import NDArray
 
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
+_njit = numba.njit(cache=True, nogil=True)
 PIECE_SAMPLES = 1024
 #: A floor under the spectrum, as a share of its mean: keeps the recursion stable when a filter has emptied a band.
 _FLOOR = 1e-9
@@ -22,6 +23,7 @@ _GATE, _QUARTER = 3.5, 0.3186394
 #: What two epochs share counts where it rises by so many times more than in most bins.
 _CLEAR_RISE = 1.5
 _PASSES = 2
+_THREE = 3
 _LEAST_KEPT = 0.1
 #: Every so many-th sample serves the noise level: neighbours tell nearly the same.
 _COMB = 7
@@ -41,19 +43,28 @@ def spread_starts(bounds: Sequence[tuple[int, int]], piece: int, count: int) -> 
     return starts[np.linspace(0, len(starts) - 1, count).astype(np.int64)]
 
 
-def powers(signals: WaveArray) -> WaveArray:
-    """Hann-windowed periodograms of pieces, (..., samples) -> (..., samples // 2 + 1)."""
-    spectra = scipy.fft.rfft(signals * np.hanning(signals.shape[-1]).astype(np.float32))
-    return np.asarray(spectra.real**2 + spectra.imag**2, np.float32)
+def middle_power(signals: WaveArray) -> WaveArray:
+    """Lower median over tapered pieces of their periodograms, (epochs, pieces, samples) -> (epochs, bins)."""
+    spectra = scipy.fft.rfft(signals)
+    if signals.shape[1] == _THREE:
+        return np.asarray(_middle_of_three(spectra))
+    middle = (signals.shape[1] - 1) // 2
+    return np.asarray(np.partition(spectra.real**2 + spectra.imag**2, middle, axis=1)[:, middle], np.float32)
 
 
-def lower_median(power: WaveArray) -> WaveArray:
-    """The lower median over pieces, (epochs, pieces, bins) -> (epochs, bins)."""
-    pieces = power.shape[1]
-    if pieces == 3:
-        first, second, third = power[:, 0], power[:, 1], power[:, 2]
-        return np.asarray(np.maximum(np.minimum(first, second), np.minimum(np.maximum(first, second), third)))
-    return np.asarray(np.partition(power, (pieces - 1) // 2, axis=1)[:, (pieces - 1) // 2])
+@_njit
+def _middle_of_three(spectra: NDArray[np.complex64]) -> WaveArray:  # pragma: no cover - compiled
+    epochs, _, bins = spectra.shape
+    out = np.empty((epochs, bins), np.float32)
+    for row in range(epochs):
+        first, second, third, line = spectra[row, 0], spectra[row, 1], spectra[row, 2], out[row]
+        for i in range(bins):
+            a = first[i].real * first[i].real + first[i].imag * first[i].imag
+            b = second[i].real * second[i].real + second[i].imag * second[i].imag
+            c = third[i].real * third[i].real + third[i].imag * third[i].imag
+            # the last term lets no NaN or infinity pass unseen
+            line[i] = max(min(a, b), min(max(a, b), c)) + np.float32(0.0) * (a + b + c)
+    return out
 
 
 def noise_spectrum(epochs: WaveArray) -> FloatArray:
@@ -94,12 +105,28 @@ def whitening_filter(spectrum: FloatArray, order: int) -> WaveArray:
     ----------
     N. Levinson, J. Math. Phys. 25, 261-278, 1946 (from memory).
     """
-    return _predictor(scipy.fft.irfft(spectrum + _FLOOR * spectrum.mean())[: order + 1])
+    return _levinson(scipy.fft.irfft(spectrum + _FLOOR * spectrum.mean())[: order + 1])[0]
 
 
-def _predictor(correlation: FloatArray) -> WaveArray:
-    past = scipy.linalg.solve_toeplitz(correlation[:-1], correlation[1:])
-    return np.concatenate([[1.0], -past]).astype(np.float32)
+@_njit
+def _levinson(correlation: FloatArray) -> tuple[WaveArray, float]:  # pragma: no cover - compiled
+    """The filter of an autocorrelation, and the power that it leaves (0 or less: no spectrum has that)."""
+    order, left = correlation.size - 1, correlation[0]
+    taps, past = np.zeros(order + 1), np.zeros(order + 1)
+    taps[0] = 1.0
+    for m in range(1, order + 1):
+        total = correlation[m]
+        for i in range(1, m):
+            total += taps[i] * correlation[m - i]
+        reflection = -total / left
+        past[:m] = taps[:m]
+        for i in range(1, m):
+            taps[i] = past[i] + reflection * past[m - i]
+        taps[m] = reflection
+        left *= 1 - reflection * reflection
+        if left <= 0:
+            break
+    return taps.astype(np.float32), left
 
 
 def gated_filter(signals: WaveArray, taps: WaveArray, impulse: int) -> WaveArray:
@@ -152,6 +179,7 @@ def _stable_predictor(correlation: FloatArray) -> WaveArray:
     for lift in _LIFTS:
         lifted = correlation.copy()
         lifted[0] *= 1 + lift
-        if np.linalg.eigvalsh(scipy.linalg.toeplitz(lifted)).min() > 0:
+        taps, left = _levinson(lifted)
+        if left > 0:
             break
-    return _predictor(lifted)
+    return taps

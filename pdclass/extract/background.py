@@ -37,13 +37,16 @@ _SMALLEST_PIECE = 512
 _LEVEL_PIECES, _LEVEL_COMB = 64, 128
 #: Where in more than this share of stretches of this many samples something stands out by so many noise levels, the
 #: background is impulsive: too few pieces are left from which its spectrum could be told.
-IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.4, 1024, 6.0
+IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.25, 512, 6.0
 #: A long impulse lasts so long [s].
 IMPULSE_S = 2e-6
-GATE_LEVELS = 4.0
+#: Noise levels are told from what lies below so many of them; where more than this share of an epoch would be cut,
+#: and the background is not impulsive, it is the background that has risen there.
+GATE_LEVELS, MOST_CUT = 4.0, 0.3
 _ROUGH_RUNS = 8
 #: A local level counts where it is above that of the stretch by so many times the chance of its estimate.
 _CHANCE_NEAR, _CHANCE_LONE = 2.0, 3.0
+_LEAST_RAISE = 0.1
 _NEAR_EPOCHS = 5
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.
 LIMIT_PULSE_WIDTH_S = 50e-9
@@ -297,13 +300,16 @@ def _levels(
     """
     dither, level = spread
     runs = _runs(epochs)
-    gate, white = np.inf, _few_whitened(counts, spread, taps, runs)
+    most, white = MOST_CUT, _few_whitened(counts, spread, taps, runs)
     if _is_impulsive(white):
         taps = whiten.gated_filter(_raw_runs(counts, spread, runs), taps, impulse)
         white = _few_whitened(counts, spread, taps, runs)
-        gate = GATE_LEVELS * whiten.quiet_level(white)
-    marks = whiten.quiet_level(white) * np.sqrt(2.0 ** np.arange(scales))
-    above, looked = bank.count_runs(counts, dither, level, taps, runs, gate, marks.astype(np.float32))
+        most = 1.0
+    rough = whiten.quiet_level(white)
+    marks = rough * np.sqrt(2.0 ** np.arange(scales))
+    above, looked = bank.count_runs(
+        counts, dither, level, taps, runs, (GATE_LEVELS * rough, most), marks.astype(np.float32)
+    )
     usual = marks * _ratio(above.sum(axis=0), looked.sum(axis=0))
     raised = np.maximum(
         _raise(marks / usual, _windowed(above), _windowed(looked), _CHANCE_NEAR),
@@ -372,4 +378,4 @@ def _raise(marks: FloatArray, above: IntArray, looked: IntArray, chances: float)
     """
     ratio = marks * _ratio(above, looked)
     chance = np.sqrt(2.0 ** np.arange(marks.size) / np.maximum(looked, 1))
-    return np.where((ratio > 1 + chances * chance) & (looked > 0), ratio, 1.0)
+    return np.where((ratio > 1 + np.maximum(chances * chance, _LEAST_RAISE)) & (looked > 0), ratio, 1.0)

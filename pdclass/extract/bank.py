@@ -227,29 +227,37 @@ def _add_runs(flags: NDArray[np.bool_], first: int, runs: IntArray, count: int) 
 
 
 @_njit
-def _cut_out(white: WaveArray, gate: float) -> None:  # pragma: no cover - compiled
-    """NaN for what stands out and for what it spoils around it."""
-    clear = 0
+def _cut_out(white: WaveArray, gate: float, most: float) -> bool:  # pragma: no cover - compiled
+    """NaN for what stands out and what it spoils around it, unless that is more than a share; whether it did so."""
     size = white.size
     spoilt = np.zeros(size, np.bool_)
-    for i in range(size):
-        if abs(white[i]) > gate:
-            for j in range(max(clear, i - _SPOILT_BEFORE), min(size, i + _SPOILT_AFTER)):
-                spoilt[j] = True
-            clear = min(size, i + _SPOILT_AFTER)
+    clear, count = 0, 0
+    for begin in range(0, size, _CHUNK):
+        if not _above(white[begin : begin + _CHUNK], gate):
+            continue
+        for i in range(begin, min(begin + _CHUNK, size)):
+            if abs(white[i]) > gate:
+                for j in range(max(clear, i - _SPOILT_BEFORE), min(size, i + _SPOILT_AFTER)):
+                    spoilt[j] = True
+                    count += 1
+                clear = min(size, i + _SPOILT_AFTER)
+    if count == 0 or count > most * size:
+        return False
     for i in range(size):
         if spoilt[i]:
             white[i] = np.nan
+    return True
 
 
 @_njit
 def count_above(
-    white: WaveArray, gate: float, marks: WaveArray, above: IntArray, looked: IntArray
+    white: WaveArray, gate: tuple[float, float], marks: WaveArray, above: IntArray, looked: IntArray
 ) -> None:  # pragma: no cover - compiled
-    """Count the box sums of every scale beyond its mark, and all, those without a sample beyond `gate`."""
-    gated = gate < np.inf
-    if gated:
-        _cut_out(white, gate)
+    """Count the box sums of every scale beyond its mark, and all, without those that hold a sample beyond the gate.
+
+    `gate` = (height, largest share of samples that may be cut: where more stands out, that is the background).
+    """
+    gated = _cut_out(white, np.float32(gate[0]), gate[1])
     boxes, other, usable = white, np.empty(white.size, np.float32), white.size
     for scale in range(marks.size):
         half = (1 << scale) >> 1
@@ -298,7 +306,7 @@ def count_runs(
     level: float,
     taps: WaveArray,
     runs: IntArray,
-    gate: float,
+    gate: tuple[float, float],
     marks: WaveArray,
 ) -> tuple[IntArray, IntArray]:  # pragma: no cover - compiled
     """`count_above` for runs (first, one past last, start of the segment) of a record, (runs, scales) each."""

@@ -257,7 +257,8 @@ def count_above(
 
     `gate` = (height, largest share of samples that may be cut: where more stands out, that is the background).
     """
-    gated = _cut_out(white, np.float32(gate[0]), gate[1])
+    height: Any = np.float32(gate[0])
+    gated = _cut_out(white, height, gate[1])
     boxes, other, usable = white, np.empty(white.size, np.float32), white.size
     for scale in range(marks.size):
         half = (1 << scale) >> 1

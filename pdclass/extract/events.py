@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-import math
-
 import numba
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtri
 
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
@@ -206,17 +205,8 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
     for _ in range(20):
         places = samples_per_cycle * np.minimum(1.0, sigmas**2 / widths)
         chances = np.minimum(false_events / scales / places, 1.0)
-        sigmas = np.array([_normal_quantile(chance / 2) for chance in chances])
-    return sigmas
-
-
-def _normal_quantile(tail: float) -> float:
-    """The z beyond which the standard normal law leaves the share `tail`, by bisection on erfc."""
-    low, high = 0.0, 40.0
-    for _ in range(200):
-        middle = (low + high) / 2
-        low, high = (middle, high) if math.erfc(middle / math.sqrt(2)) / 2 > tail else (low, middle)
-    return high
+        sigmas = -ndtri(chances / 2)
+    return np.asarray(sigmas)
 
 
 def mad_noise(values: NDArray[np.float64]) -> float:

@@ -12,7 +12,14 @@ from numpy.typing import NDArray
 from pdclass import digest
 from pdclass.errors import InputError
 from pdclass.extract import bank
-from pdclass.extract.background import Background, ExtractSettings, detection_limit_counts, measure_background
+from pdclass.extract.background import (
+    Background,
+    ExtractSettings,
+    detection_limit_counts,
+    flagged_runs,
+    measure_background,
+    scanned,
+)
 from pdclass.extract.echoes import SHAPE_S, Event, find_echoes
 from pdclass.extract.events import ATTACK_S, event_end, event_starts, mad_noise
 from pdclass.pulses import (
@@ -106,14 +113,7 @@ def _segment_events(
     capture: Capture, background: Background, bounds: tuple[int, int], block_samples: int
 ) -> list[Event]:
     rate_hz = capture.chain.rate_hz
-    runs = bank.flagged_runs(
-        capture.counts,
-        background.taps,
-        background.offset,
-        background.limits,
-        bounds,
-        block_samples=block_samples,
-    )
+    runs = flagged_runs(capture.counts, background, bounds)
     events: list[Event] = []
     longest = round(LONGEST_CLUSTER_S * rate_hz)
     for first, last in bank.joined_runs(runs, round(JOIN_S * rate_hz)).tolist():
@@ -130,8 +130,7 @@ def _cluster_events(
     rate_hz = capture.chain.rate_hz
     margin, window = round(MARGIN_S * rate_hz), window_samples(rate_hz)
     begin, end = max(bounds[0], inside[0] - margin), min(bounds[1], inside[1] + window)
-    white = bank.whitened(capture.counts, background.taps, background.offset, bounds, begin, end)
-    white /= np.float32(background.noise)
+    white, _ = scanned(capture.counts, background, bounds, begin, end)
     starts = event_starts(white, rate_hz, (inside[0] - begin, inside[1] - begin), continued=continued)
     limits = [*starts[1:], white.size]
     ends = [event_end(white, start, limit, rate_hz) for start, limit in zip(starts, limits, strict=False)]

@@ -1,5 +1,7 @@
 """The background follows what changes in a record, and what is held against it does not depend on cuts."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from closed_form import as_capture, background, double_exponential
@@ -108,7 +110,7 @@ def test_no_bit_depends_on_where_the_record_is_cut(dtype):
         white, flags = scanned(capture.counts, held, bounds, *bounds)
         for step in (997, 4096, 50_000):
             cuts = [*range(bounds[0], bounds[1], step), bounds[1]]
-            parts = [scanned(capture.counts, held, bounds, a, b) for a, b in zip(cuts[:-1], cuts[1:], strict=True)]
+            parts = [scanned(capture.counts, held, bounds, a, b) for a, b in pairwise(cuts)]
             assert np.concatenate([part[0] for part in parts]).tobytes() == white.tobytes()
             assert np.array_equal(np.concatenate([part[1] for part in parts]), flags)
         edges = np.flatnonzero(np.diff(np.concatenate([[False], flags, [False]]))).reshape(-1, 2) + bounds[0]

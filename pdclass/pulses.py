@@ -34,6 +34,7 @@ TABLE_COLUMNS: Mapping[str, str] = {
     "chain": "int16",
     "onset_sample": "int64",
     "onset_s": "float64",
+    "onset_std_ns": "float32",
     "time_utc": "datetime64[ns, UTC]",
     "phase_deg": "float32",
     "noise_v": "float32",
@@ -196,18 +197,22 @@ def phase_deg(capture: Capture, sample: IntArray) -> WaveArray:
 
 def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simulated: bool = False) -> pd.DataFrame:
     """A table with every column of the contract in order and type; absent columns are null (clipped: False)."""
-    given = pd.DataFrame(rows)
-    given.index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
+    index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
     wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
-    return pd.DataFrame({name: _typed(given, name, kind) for name, kind in wanted.items()}, index=given.index)
+    return pd.DataFrame({name: _typed(rows.get(name), kind, index) for name, kind in wanted.items()}, index=index)
 
 
-def _typed(given: pd.DataFrame, name: str, kind: str) -> pd.Series[Any]:
-    if name not in given:
-        absent: Any = {"bool": False, "int16": 0, "int64": 0}.get(kind)
-        column = pd.Series(absent, index=given.index, dtype="object")
-    else:
-        column = given[name]
+def _typed(given: Any, kind: str, index: Any) -> pd.Series[Any]:
+    """One column; a single value stands for every row, None for no value."""
+    if given is None:
+        given = {"bool": False, "int16": 0, "int64": 0, "str": None}.get(kind, np.nan)
     if kind == "str":
-        return column.astype("object").where(column.notna(), None)
-    return column.astype(cast(Any, kind))
+        column = np.empty(len(index), object)
+        column[:] = given
+        column[pd.isna(column)] = None
+        return pd.Series(column, index=index, dtype="object")
+    if kind.startswith("datetime"):
+        return pd.Series(pd.NaT if np.isscalar(given) else pd.DatetimeIndex(given), index=index, dtype=cast(Any, kind))
+    column = np.empty(len(index), kind)
+    column[:] = given
+    return pd.Series(column, index=index)

@@ -1,0 +1,153 @@
+"""The pass over a record, stretch by stretch: from samples that leave the background to events in order."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numba
+import numpy as np
+from numpy.typing import NDArray
+
+from pdclass.extract.background import Background, scanned
+from pdclass.extract.cut import clipped_samples
+from pdclass.extract.echoes import SHAPE_S
+from pdclass.extract.events import ATTACK_S, events_of_pieces, in_order
+from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
+
+_njit = numba.njit(cache=True, nogil=True)
+
+BLOCK_SAMPLES = 1 << 20
+#: A wide box flags up to half its width before and after its cause; what lies nearer is one cluster.
+JOIN_S = 1.3e-6
+#: Noise looked at before a cluster.
+MARGIN_S = 4e-6
+#: A longer burst is looked at piece by piece, counted from its own start; a cut is no new beginning.
+LONGEST_CLUSTER_S = 400e-6
+_LOOK = 256
+
+
+@dataclass(frozen=True)
+class Events:
+    """Events of one segment or of several, by onset.
+
+    Attributes
+    ----------
+    places : (events, 2) onset and one past the last sample, in the file.
+    feet : (events, 2) refined instant, counted from the onset, and its standard uncertainty [samples].
+    shapes : (events, samples) float32, the beginning of each event whitened, zero after its end.
+    clipped : samples of the segment at the end of the digitiser's range.
+    """
+
+    places: IntArray
+    feet: FloatArray
+    shapes: WaveArray
+    clipped: int = 0
+
+
+def segment_events(
+    capture: Capture, background: Background, bounds: tuple[int, int], block_samples: int = BLOCK_SAMPLES
+) -> Events:
+    """Events of one segment.
+
+    Each block is whitened once, with what its clusters need before and after it; a piece of a cluster belongs to the
+    block in which it begins, so that the block size changes nothing.
+    """
+    rate_hz = capture.chain.rate_hz
+    margin, gap, longest = (round(span * rate_hz) for span in (MARGIN_S, JOIN_S, LONGEST_CLUSTER_S))
+    window, shape = window_samples(rate_hz), round(SHAPE_S * rate_hz)
+    found = [Events(np.zeros((0, 2), np.int64), np.zeros((0, 2)), np.zeros((0, shape), np.float32))]
+    clipped = 0
+    begun = np.array([bounds[0] - gap, bounds[0] - gap])
+    for first in range(bounds[0], bounds[1], block_samples):
+        last = min(first + block_samples, bounds[1])
+        begin, end = max(bounds[0], first - margin), min(bounds[1], last + longest + max(gap, window))
+        clipped += clipped_samples(capture, first, last)
+        white, flags = scanned(capture.counts, background, bounds, begin, end)
+        clusters = _clusters(flags.view(np.uint8), first - begin, last - begin, gap, begun - begin) + begin
+        begun = _open_cluster(clusters, flags[first - begin : last - begin], begun, last)
+        pieces = _pieces(clusters, (first, last), bounds, longest, (margin, window))
+        if len(pieces):
+            pieces[:, :4] -= begin
+            places, feet = events_of_pieces(white, pieces, rate_hz)
+            found.append(Events(places + begin, feet, _shapes(white, places, shape)))
+    return _ordered(found, max(2, round(ATTACK_S * rate_hz)), clipped)
+
+
+@_njit
+def _clusters(
+    flags: NDArray[np.uint8], first: int, last: int, gap: int, begun: IntArray
+) -> IntArray:  # pragma: no cover - compiled
+    """Runs of flagged samples from `first` on, neighbours closer than `gap` joined, of those that begin before `last`.
+
+    `begun` = (first, one past the last flagged sample) of the cluster before, which the first run may continue.
+    """
+    rows = np.empty((64, 2), np.int64)
+    rows[0] = begun
+    count = 1
+    at = first
+    while at < flags.size:
+        stop = min(at + _LOOK, flags.size)
+        some = np.uint8(0)
+        for i in range(at, stop):
+            some |= flags[i]
+        if some:
+            for i in range(at, stop):
+                if flags[i] == 0:
+                    continue
+                if i - rows[count - 1, 1] >= gap:
+                    if i >= last:
+                        return rows[:count]
+                    if count == len(rows):
+                        rows = np.concatenate((rows, np.empty((count, 2), np.int64)))
+                    rows[count, 0] = i
+                    count += 1
+                rows[count - 1, 1] = i + 1
+        elif at - rows[count - 1, 1] >= gap and at >= last:
+            break
+        at = stop
+    return rows[:count]
+
+
+def _open_cluster(clusters: IntArray, flags: NDArray[np.bool_], before: IntArray, last: int) -> IntArray:
+    """The cluster that the next block may continue: its first sample, and one past its last one before `last`."""
+    first, end = (int(value) for value in clusters[-1])
+    if end > last:
+        tail = np.flatnonzero(flags[max(first - last, -flags.size) :])
+        end = last - min(last - first, flags.size) + int(tail[-1]) + 1 if len(tail) else int(before[1])
+    return np.array([first, end])
+
+
+def _pieces(
+    clusters: IntArray, block: tuple[int, int], bounds: tuple[int, int], longest: int, around: tuple[int, int]
+) -> IntArray:
+    """Pieces of clusters that begin in a block, as `piece_events` wants them, places in the file."""
+    rows = []
+    for first, last in clusters.tolist():
+        skipped = max(0, -(-(block[0] - first) // longest))
+        for begin in range(first + skipped * longest, min(last, block[1]), longest):
+            end = min(begin + longest, last)
+            early, late = max(bounds[0], begin - around[0]), min(bounds[1], end + around[1])
+            rows.append((early, begin, end, late, int(begin > first)))
+    return np.array(rows, np.int64).reshape(-1, 5)
+
+
+@_njit
+def _shapes(white: WaveArray, places: IntArray, longest: int) -> WaveArray:  # pragma: no cover - compiled
+    shapes = np.zeros((len(places), longest), np.float32)
+    for row in range(len(places)):
+        length = min(places[row, 1] - places[row, 0], longest)
+        shapes[row, :length] = white[places[row, 0] : places[row, 0] + length]
+    return shapes
+
+
+def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
+    """All events by onset, what neighbouring pieces found twice once."""
+    places = np.concatenate([part.places for part in found])
+    order = np.argsort(places[:, 0], kind="stable")
+    onsets, ends = places[order, 0], places[order, 1]
+    kept = in_order(onsets, ends, apart)
+    shapes = np.concatenate([part.shapes for part in found])[order[kept]]
+    lengths = (ends - onsets)[kept]
+    shapes[np.arange(shapes.shape[1]) >= lengths[:, None]] = 0.0
+    feet = np.concatenate([part.feet for part in found])[order[kept]]
+    return Events(np.stack([onsets[kept], ends[kept]], axis=1), feet, shapes, clipped)

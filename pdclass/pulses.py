@@ -199,20 +199,33 @@ def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simul
     """A table with every column of the contract in order and type; absent columns are null (clipped: False)."""
     index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
     wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
-    return pd.DataFrame({name: _typed(rows.get(name), kind, index) for name, kind in wanted.items()}, index=index)
+    texts = [name for name, kind in wanted.items() if kind == "str"]
+    # one frame of all texts: pandas looks into every object column that it is given alone
+    block = np.empty((len(index), len(texts)), object)
+    for place, name in enumerate(texts):
+        block[:, place] = _text(rows.get(name))
+    written = pd.DataFrame(block, index=index, columns=texts, dtype="object")
+    columns = {
+        name: written[name] if kind == "str" else _numbers(rows.get(name), kind, len(index))
+        for name, kind in wanted.items()
+    }
+    return pd.DataFrame(columns, index=index)
 
 
-def _typed(given: Any, kind: str, index: Any) -> pd.Series[Any]:
-    """One column; a single value stands for every row, None for no value."""
-    if given is None:
-        given = {"bool": False, "int16": 0, "int64": 0, "str": None}.get(kind, np.nan)
-    if kind == "str":
-        column = np.empty(len(index), object)
-        column[:] = given
-        column[pd.isna(column)] = None
-        return pd.Series(column, index=index, dtype="object")
+def _text(given: Any) -> Any:
+    """One text or None for every row, or a text or None a row."""
+    if given is None or isinstance(given, str):
+        return given
+    column = np.array(given, object)
+    column[pd.isna(column)] = None
+    return column
+
+
+def _numbers(given: Any, kind: str, count: int) -> Any:
+    """A column of numbers or times; a single value stands for every row, None for no value."""
     if kind.startswith("datetime"):
-        return pd.Series(pd.NaT if np.isscalar(given) else pd.DatetimeIndex(given), index=index, dtype=cast(Any, kind))
-    column = np.empty(len(index), kind)
-    column[:] = given
-    return pd.Series(column, index=index)
+        times = np.full(count, "NaT", "M8[ns]") if given is None else given
+        return pd.DatetimeIndex(times, tz="UTC").as_unit("ns")
+    column = np.empty(count, kind)
+    column[:] = {"bool": False, "int16": 0, "int64": 0}.get(kind, np.nan) if given is None else given
+    return column

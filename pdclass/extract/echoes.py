@@ -43,7 +43,7 @@ TRAIN_REACH = 1.5
 SHAPE_S = 3e-6
 #: What is not even so alike after a few of the paths is not looked at after all of them.
 HARDLY_ALIKE = 0.4
-_FEW = (slice(0, 3, 2), slice(0, 11, 2))
+_FEW = (np.repeat([0, 2], 6), np.tile(np.arange(0, 11, 2), 2))
 _BATCH = 16
 _SHIFT_S = 0.3e-6
 
@@ -98,7 +98,8 @@ def find_echoes(
         return echoes, maybes
     strong = np.searchsorted(np.sort(peaks), SMALLER * peaks[pairs.parent], side="left")
     alone = len(peaks) - strong < LONE_PARENTS
-    proven = _recurring(pairs, rate_hz, longest_s) & ~_of_a_train(onsets, peaks, pairs, rate_hz)
+    proven = _recurring(pairs, rate_hz, longest_s)
+    proven[proven] = ~_of_a_train(onsets, peaks, pairs.delay[proven], rate_hz)
     sure = proven | (alone & pairs.slower & (pairs.alike >= ALIKE_SURE))
     for place in np.lexsort((-pairs.alike, pairs.child)).tolist():
         child, parent = int(pairs.child[place]), int(pairs.parent[place])
@@ -135,10 +136,10 @@ def _recurring(pairs: Pairs, rate_hz: float, longest_s: float) -> NDArray[np.boo
     return proven
 
 
-def _of_a_train(onsets: IntArray, peaks: FloatArray, pairs: Pairs, rate_hz: float) -> NDArray[np.bool_]:
-    """Which likenesses have a delay at which larger or equal events follow, too: a train, and no echoes."""
+def _of_a_train(onsets: IntArray, peaks: FloatArray, delay: IntArray, rate_hz: float) -> NDArray[np.bool_]:
+    """Which delays are those at which larger or equal events follow, too: a train, and no echoes."""
     reach = RECURRENCE_S * rate_hz
-    keys, which = np.unique(np.rint(pairs.delay / reach), return_inverse=True)
+    keys, which = np.unique(np.rint(delay / reach), return_inverse=True)
     trains = np.zeros(len(keys), np.bool_)
     for number, key in enumerate(keys.tolist()):
         aim = onsets + key * reach
@@ -179,7 +180,9 @@ def path_likeness(parent: WaveArray, child: WaveArray, rate_hz: float) -> FloatA
     lengths = np.minimum([parent.size, child.size], longest)
     waves[0, : lengths[0]], waves[1, : lengths[1]] = parent[:longest], child[:longest]
     spectra = _spectra(waves, rate_hz)
-    return _after_paths(spectra[:1], spectra[1:], waves[1:], lengths[1:], rate_hz, (slice(None), slice(None)))[0]
+    ends, paths = (part.reshape(1, -1) for part in np.indices((len(FAR_ENDS_S), len(PATHS_S))))
+    alike = _after_paths(spectra[:1], spectra[1:], (waves[1:], lengths[1:]), rate_hz, (ends, paths))
+    return alike.reshape(len(FAR_ENDS_S), len(PATHS_S))
 
 
 def pair_likeness(
@@ -192,7 +195,8 @@ def pair_likeness(
 
     Returns
     -------
-    (pairs, far ends, paths) between 0 and 1; 0 where not looked at, a few paths having shown no likeness.
+    (pairs, far ends, paths) between 0 and 1; 0 where not looked at: a few paths are tried first, then, where these
+    show some likeness, those beside the best one.
 
     References
     ----------
@@ -204,17 +208,27 @@ def pair_likeness(
     spectra = _spectra(waves[events], rate_hz)
     first, second = places[: len(parents)], places[len(parents) :]
 
-    def measured(rows: IntArray, which: tuple[slice, slice]) -> None:
+    def measured(rows: IntArray, ends: IntArray, paths: IntArray) -> None:
         for start in range(0, len(rows), _BATCH):
-            batch = rows[start : start + _BATCH]
-            copies, sizes = waves[children[batch]], lengths[children[batch]]
-            scores[(batch, *which)] = _after_paths(
-                spectra[first[batch]], spectra[second[batch]], copies, sizes, rate_hz, which
-            )
+            cut = slice(start, start + _BATCH)
+            batch, which = rows[cut], (ends[cut], paths[cut])
+            copies = (waves[children[batch]], lengths[children[batch]])
+            alike = _after_paths(spectra[first[batch]], spectra[second[batch]], copies, rate_hz, which)
+            scores[batch[:, None], which[0], which[1]] = alike
 
-    measured(np.arange(len(parents)), _FEW)
-    measured(np.flatnonzero(scores.max(axis=(1, 2), initial=0.0) >= HARDLY_ALIKE), (slice(None), slice(None)))
+    every = np.arange(len(parents))
+    measured(every, *(np.broadcast_to(part, (len(every), part.size)) for part in _FEW))
+    near = scores.max(axis=(1, 2), initial=0.0) >= HARDLY_ALIKE
+    measured(every[near], *_around(scores[near]))
     return scores
+
+
+def _around(scores: FloatArray) -> tuple[IntArray, IntArray]:
+    """(pairs, tried) far ends and paths beside the best ones so far: three paths and none, after every far end."""
+    best = np.clip(scores.max(axis=1).argmax(axis=1), 1, len(PATHS_S) - 2)
+    paths = np.column_stack([np.zeros_like(best), best - 1, best, best + 1])
+    ends = np.tile(np.repeat(np.arange(len(FAR_ENDS_S)), paths.shape[1]), (len(best), 1))
+    return ends, np.tile(paths, (1, len(FAR_ENDS_S)))
 
 
 def _size(rate_hz: float) -> int:
@@ -228,20 +242,18 @@ def _spectra(waves: WaveArray, rate_hz: float) -> NDArray[np.complex64]:
 def _after_paths(
     originals: NDArray[np.complex64],
     targets: NDArray[np.complex64],
-    copies: WaveArray,
-    sizes: IntArray,
+    copies: tuple[WaveArray, IntArray],
     rate_hz: float,
-    which: tuple[slice, slice],
+    which: tuple[IntArray, IntArray],
 ) -> FloatArray:
-    """(pairs, far ends, paths) likeness from the spectra of parents and children and the children's waves."""
+    """(pairs, tried) likeness after far ends and paths `which`; `copies` = (waves, lengths) of the children."""
     size, shift = _size(rate_hz), round(_SHIFT_S * rate_hz)
-    travelled = originals[:, None, None] * _transfers(size, rate_hz)[which]
+    travelled = originals[:, None] * _transfers(size, rate_hz)[which]
     arrived = scipy.fft.irfft(travelled, size)
-    match = scipy.fft.irfft(np.conj(travelled) * targets[:, None, None], size)
-    shape = travelled.shape[:3]
+    match = scipy.fft.irfft(np.conj(travelled) * targets[:, None], size)
     flat = (-1, size)
-    best = _best_match(arrived.reshape(flat), match.reshape(flat), copies, sizes, shift)
-    return np.asarray(best.reshape(shape), np.float64)
+    best = _best_match(arrived.reshape(flat), match.reshape(flat), *copies, shift)
+    return np.asarray(best.reshape(travelled.shape[:2]), np.float64)
 
 
 @_njit

@@ -263,9 +263,7 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
 
 
 @_njit
-def _sigmas(
-    scales: int, samples_per_cycle: float, false_events: float
-) -> FloatArray:  # pragma: no cover - compiled
+def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:  # pragma: no cover - compiled
     sigmas = np.full(scales, 5.0)
     for scale in range(scales):
         for _ in range(20):

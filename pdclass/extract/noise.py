@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numba
 import numpy as np
@@ -34,20 +35,24 @@ def noise_beside(capture: Capture, places: IntArray) -> WaveArray:
     (pulses,) float32; NaN where no sample is free of pulses.
     """
     brick = max(round(BRICK_S * capture.chain.rate_hz), 1)
-    bounds = segments_of(capture, places[:, 0])
-    rows, which = np.unique(np.column_stack([places[:, 0] // brick, bounds]), axis=0, return_inverse=True)
-    offsets = comb(brick)
+    keys = np.column_stack([places[:, 0] // brick, segments_of(capture, places[:, 0])])
+    new = np.ones(len(keys), np.bool_)
+    new[1:] = (keys[1:] != keys[:-1]).any(axis=1)
+    rows, offsets = keys[new], comb(brick)
     integer = bool(np.issubdtype(capture.counts.dtype, np.integer))
     levels = np.empty(len(rows), np.float32)
     for first in range(0, len(rows), _BATCH):
         batch = rows[first : first + _BATCH]
-        at = ((batch[:, :1] + np.arange(-1, 2)) * brick)[..., None] + offsets
-        at = at.reshape(len(batch), -1)
-        values = capture.counts[np.clip(at, 0, capture.counts.size - 1)].astype(np.float32)
-        levels[first : first + _BATCH] = _levels(values, at, batch[:, 1:], places, integer)
-    return levels[which.reshape(-1)] * np.float32(abs(capture.chain.volts_per_count or 1.0))
+        bricks = np.unique(batch[:, :1] + np.arange(-1, 2))
+        starts = bricks * brick
+        values = np.take(capture.counts, starts[:, None] + offsets, mode="clip").astype(np.float32)
+        own = np.searchsorted(bricks, batch[:, 0])
+        levels[first : first + _BATCH] = _levels(values, starts, offsets, own, batch[:, 1:], places, integer)
+    scale = np.float32(abs(capture.chain.volts_per_count or 1.0))
+    return np.asarray(levels[np.cumsum(new) - 1] * scale, np.float32)
 
 
+@lru_cache(maxsize=8)
 def comb(brick: int) -> IntArray:
     """Places in a brick that are measured: one in each of equal parts, where in it a fixed hash says.
 
@@ -60,23 +65,28 @@ def comb(brick: int) -> IntArray:
 
 @_njit
 def _levels(
-    values: WaveArray, at: IntArray, bounds: IntArray, places: IntArray, integer: bool
+    values: WaveArray,
+    starts: IntArray,
+    offsets: IntArray,
+    own: IntArray,
+    bounds: IntArray,
+    places: IntArray,
+    integer: bool,
 ) -> WaveArray:  # pragma: no cover - compiled
-    """Noise level of each row of samples, those outside the segment or inside a pulse left out [count]."""
-    levels = np.empty(len(values), np.float32)
-    quiet = np.empty(values.shape[1], np.float32)
-    for row in range(len(values)):
-        pulse = np.searchsorted(places[:, 0], at[row, 0], side="right") - 1
+    """Noise level about each brick of `own`, samples outside its segment or inside a pulse left out [count]."""
+    levels = np.empty(own.size, np.float32)
+    quiet = np.empty(3 * offsets.size, np.float32)
+    for row in range(own.size):
+        pulse = np.searchsorted(places[:, 0], starts[own[row] - 1], side="right") - 1
         count = 0
-        for k in range(values.shape[1]):
-            place = at[row, k]
-            if place < bounds[row, 0] or place >= bounds[row, 1]:
-                continue
-            while pulse + 1 < len(places) and places[pulse + 1, 0] <= place:
-                pulse += 1
-            if pulse < 0 or place >= places[pulse, 1]:
-                quiet[count] = values[row, k]
-                count += 1
+        for brick in range(own[row] - 1, own[row] + 2):
+            for k in range(offsets.size):
+                place = starts[brick] + offsets[k]
+                while pulse + 1 < len(places) and places[pulse + 1, 0] <= place:
+                    pulse += 1
+                free = pulse < 0 or place >= places[pulse, 1]
+                quiet[count] = values[brick, k]
+                count += free and bounds[row, 0] <= place < bounds[row, 1]
         levels[row] = noise_level(quiet[:count], integer)
     return levels
 
@@ -105,8 +115,9 @@ def noise_level(values: WaveArray, integer: bool) -> float:  # pragma: no cover 
     while True:
         start = centre - width * (_BINS // 2) - (0.5 if integer else 0.0)
         counts = np.zeros(_BINS, np.int64)
+        bins_a_count = 1.0 / width
         for value in values:
-            counts[min(max(int((value - start) / width), 0), _BINS - 1)] += 1
+            counts[min(max(int((value - start) * bins_a_count), 0), _BINS - 1)] += 1
         total[0] = 0
         for k in range(_BINS):
             total[k + 1] = total[k] + counts[k]

@@ -24,6 +24,8 @@ QUIET = 3.0
 SMOOTHINGS = 6
 STANDS_OUT = 8.0
 _REACH = 4.0
+_NEWTON = 3
+_ROOT_TWO_PI = 2.5066282746310002
 
 
 @_njit
@@ -93,7 +95,7 @@ def _smooth(
     first, last = anchor + math.ceil(offset - reach), anchor + math.floor(offset + reach)
     for i in range(max(first, 0), min(last, white.size - 1) + 1):
         u = (offset - (i - anchor)) / width
-        weight = math.exp(-0.5 * u * u) / (width * 2.5066282746310002) * white[i]
+        weight = math.exp(-0.5 * u * u) / (width * _ROOT_TWO_PI) * white[i]
         out[0] += weight
         out[1] -= weight * u / width
         out[2] += weight * (u * u - 1.0) / width**2
@@ -101,62 +103,69 @@ def _smooth(
 
 
 @_njit
-def _smoothed(white: WaveArray, begin: int, count: int, step: int, width: float) -> FloatArray:  # pragma: no cover
-    """The record smoothed by a Gaussian at `count` places from `begin` on, `step` samples apart."""
+def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatArray:  # pragma: no cover - compiled
+    """The record smoothed by a Gaussian at `count` places from `begin` on, tap by tap; nothing is beyond its ends."""
     reach = int(_REACH * width)
-    weights = np.empty(2 * reach + 1)
-    for k in range(-reach, reach + 1):
-        weights[k + reach] = math.exp(-0.5 * (k / width) ** 2) / (width * 2.5066282746310002)
+    near = np.zeros(count + 2 * reach)
+    for i in range(max(begin - reach, 0), min(begin + count + reach, white.size)):
+        near[i - begin + reach] = white[i]
     out = np.zeros(count)
-    for n in range(count):
-        at = begin + n * step
-        for i in range(max(at - reach, 0), min(at + reach + 1, white.size)):
-            out[n] += weights[i - at + reach] * white[i]
+    for k in range(2 * reach + 1):
+        weight = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
+        late = near[k : k + count]
+        for n in range(count):
+            out[n] += weight * late[n]
     return out
 
 
 @_njit
-def _foot(
-    white: WaveArray, begin: int, first: int, stop: int, width: float
-) -> tuple[int, float, float, float]:  # pragma: no cover - compiled
-    """Foot of the first edge at one smoothing: a sample, an offset, its standard uncertainty, how it stands out."""
-    step = max(1, int(width / 2))
-    count = max((stop - begin) // step, 3)
-    wave = _smoothed(white, begin, count, step, width)
-    low = min(max((first - begin) // step, 0), count - 1)
-    height = np.abs(wave[low:]).max()
+def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float]:  # pragma: no cover - compiled
+    """Steepest step (its first place), sign and height of the first edge to half the largest magnitude from `low` on.
+
+    The edge is what rises without a break through the first place of half the height.
+    """
+    height = 0.0
+    for n in range(low, wave.size):
+        height = max(height, abs(wave[n]))
     half = low
-    while half < count - 1 and abs(wave[half]) < 0.5 * height:
+    while half < wave.size - 1 and abs(wave[half]) < 0.5 * height:
         half += 1
     sign = 1.0 if wave[half] >= 0 else -1.0
-    base = half
+    base, top = half, half
     while base > 0 and sign * wave[base - 1] < sign * wave[base]:
         base -= 1
-    top = half
-    while top < count - 1 and sign * wave[top + 1] > sign * wave[top]:
+    while top < wave.size - 1 and sign * wave[top + 1] > sign * wave[top]:
         top += 1
     steepest, slope = max(half - 1, 0), 0.0
     for n in range(base, top):
         if sign * (wave[n + 1] - wave[n]) > slope:
             slope, steepest = sign * (wave[n + 1] - wave[n]), n
-    # offsets count from a sample near by, so that no rounding depends on where the stretch begins
-    anchor, centre = begin + steepest * step, 0.5 * step
-    at = centre
+    return steepest, sign, height
+
+
+@_njit
+def _foot(
+    white: WaveArray, anchor: int, sign: float, width: float
+) -> tuple[float, float]:  # pragma: no cover - compiled
+    """Foot of an edge that is steepest between a sample and the next, counted from it, and its uncertainty [samples].
+
+    Offsets count from a sample near by, so that no rounding depends on where the stretch begins.
+    """
+    at = 0.5
     local = np.zeros(4)
-    for _ in range(4):
-        _smooth(white, anchor, at, width, local)
+    _smooth(white, anchor, at, width, local)
+    for _ in range(_NEWTON):
         if sign * local[3] >= 0:
             break
-        at = min(max(at - local[2] / local[3], centre - step), centre + step)
-    _smooth(white, anchor, at, width, local)
-    # white noise of variance 1: variances of a Gaussian mean and of its slope, which are uncorrelated
-    level_noise = 1.0 / (2.0 * math.sqrt(math.pi) * width)
-    slope_noise = level_noise / (2.0 * width * width)
+        at = min(max(at - local[2] / local[3], -0.5), 1.5)
+        _smooth(white, anchor, at, width, local)
     if sign * local[1] <= 0:
-        return anchor, at, np.inf, height / math.sqrt(level_noise)
+        return at, np.inf
+    # white noise of variance 1: variances of a Gaussian mean and of its slope, which are uncorrelated
+    level_noise = 1.0 / (math.sqrt(2.0) * _ROOT_TWO_PI * width)
+    slope_noise = level_noise / (2.0 * width * width)
     lever = local[0] / local[1]
-    std = math.sqrt(level_noise + lever * lever * slope_noise) / abs(local[1])
-    return anchor, at - lever, std, height / math.sqrt(level_noise)
+    return at - lever, math.sqrt(level_noise + lever * lever * slope_noise) / abs(local[1])
 
 
 @_njit
@@ -177,10 +186,14 @@ def edge_foot(
     width, most = 1.0, 0.0
     sample, offset, std = first, 0.0, np.nan
     for _ in range(SMOOTHINGS):
-        anchor, at, spread, stands_out = _foot(white, begin, first, stop, width)
-        if stands_out > most:
-            most, sample, offset, std = stands_out, anchor, at, spread
-        if stands_out >= STANDS_OUT and spread <= width / 2:
-            return anchor, at, spread
+        wave = _smoothed(white, begin, stop - begin, width)
+        steepest, sign, height = _first_edge(wave, first - begin)
+        stands_out = height * math.sqrt(math.sqrt(2.0) * _ROOT_TWO_PI * width)
+        if stands_out > most or stands_out >= STANDS_OUT:
+            at, spread = _foot(white, begin + steepest, sign, width)
+            if stands_out > most:
+                most, sample, offset, std = stands_out, begin + steepest, at, spread
+            if stands_out >= STANDS_OUT and spread <= width / 2:
+                return begin + steepest, at, spread
         width *= 2.0
     return sample, offset, std if std < stop - begin else np.nan

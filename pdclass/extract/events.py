@@ -98,8 +98,10 @@ def rough_starts(
                 fresh = quick > rise * _lately(total, max(i - twin, lead - begin), i - attack, attack)
             if quick > swing * peak and _sign(white, begin + i, attack) != sign:
                 ringing = True
-            as_twin = attack < i - start <= 2 * twin and lowest < dip * peak and quick > share * peak
-            fresh = fresh or (as_twin and not ringing)
+            if not ringing and attack < i - start <= 2 * twin:
+                as_twin = lowest < dip * peak and quick > share * peak
+                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, 2 * rise * lowest, 1.3 * dip * peak)
+                fresh = fresh or as_twin or as_smaller
         if fresh and count < found.size:
             found[count] = begin + i
             count += 1

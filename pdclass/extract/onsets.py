@@ -67,7 +67,10 @@ def onset_by_information(white: WaveArray, begin: int, end: int) -> int:  # prag
 def first_sample(
     white: WaveArray, begin: int, place: int, stop: int, attack: int
 ) -> int:  # pragma: no cover - compiled
-    """The first sample near a rough place: by information up to the first sample of half the height that follows."""
+    """The first sample near a rough place: by information up to the first sample of half the height that follows.
+
+    Where that crest is not clear of the noise the criterion would follow the noise: `stop` is returned.
+    """
     first = max(place - attack, begin)
     height = np.float32(0.0)
     for i in range(first, stop):
@@ -75,9 +78,9 @@ def first_sample(
     crest = first
     while crest < stop - 1 and abs(white[crest]) < 0.5 * height:
         crest += 1
-    onset = onset_by_information(white, begin, min(max(crest, place) + 2, white.size))
     if abs(white[crest]) < CLEAR:
-        return onset
+        return stop
+    onset = onset_by_information(white, begin, min(max(crest, place) + 2, white.size))
     # what lies before the last quiet stretch was the noise
     for i in range(crest - 1, onset + 1, -1):
         if abs(white[i]) < QUIET and abs(white[i - 1]) < QUIET and abs(white[i - 2]) < QUIET:

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pdclass.extract.background import Background, scanned
-from pdclass.extract.cut import clipped_samples
+from pdclass.extract.cut import clipped_samples, rails
 from pdclass.extract.echoes import SHAPE_S
 from pdclass.extract.events import ATTACK_S, events_of_pieces, in_order
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
@@ -23,6 +23,8 @@ JOIN_S = 1.3e-6
 MARGIN_S = 4e-6
 #: A longer burst is looked at piece by piece, counted from its own start; a cut is no new beginning.
 LONGEST_CLUSTER_S = 400e-6
+#: So long the whitening filter remembers samples that were cut off.
+RECOVERY_SAMPLES = 80
 
 
 @dataclass(frozen=True)
@@ -69,7 +71,8 @@ def segment_events(
             pieces[:, :4] -= begin
             places, feet = events_of_pieces(white, pieces, rate_hz)
             found.append(Events(places + begin, feet, _shapes(white, places, shape)))
-    return _ordered(found, max(2, round(ATTACK_S * rate_hz)), clipped)
+    events = _ordered(found, max(2, round(ATTACK_S * rate_hz)), clipped)
+    return _without_recoveries(capture, events) if clipped else events
 
 
 def _clusters(flags: NDArray[np.bool_], first: int, last: int, gap: int, begun: IntArray) -> IntArray:
@@ -166,3 +169,18 @@ def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
     shapes[np.arange(shapes.shape[1]) >= lengths[:, None]] = 0.0
     feet = np.concatenate([part.feet for part in found])[order[kept]]
     return Events(np.stack([onsets[kept], ends[kept]], axis=1), feet, shapes, clipped)
+
+
+def _without_recoveries(capture: Capture, events: Events) -> Events:
+    """The events without those that begin inside another one where its clipped samples end: the filter's recovery."""
+    low, high = rails(capture) or (0, 0)
+    places = events.places.copy()
+    kept: list[int] = []
+    for row, (onset, end) in enumerate(events.places.tolist()):
+        if kept and onset == places[kept[-1], 1]:
+            before = capture.counts[max(int(places[kept[-1], 0]), onset - RECOVERY_SAMPLES) : onset]
+            if before.size and (before.min() <= low or before.max() >= high):
+                places[kept[-1], 1] = end
+                continue
+        kept.append(row)
+    return Events(places[kept], events.feet[kept], events.shapes[kept], events.clipped)

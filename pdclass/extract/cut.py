@@ -17,7 +17,7 @@ from pdclass.pulses import (
 _njit = numba.njit(cache=True, nogil=True)
 _BATCH = 256
 #: Every so many-th sample of the pre-trigger serves its median: neighbours tell nearly the same.
-_COMB = 4
+_COMB = 6
 #: A share of clipped samples worth saying.
 CLIPPED_SHARE = 1e-3
 

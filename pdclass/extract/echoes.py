@@ -43,7 +43,7 @@ TRAIN_REACH = 1.5
 SHAPE_S = 3e-6
 #: What is not even so alike after a few of the paths is not looked at after all of them.
 HARDLY_ALIKE = 0.4
-_FEW = (np.repeat([0, 2], 6), np.tile(np.arange(0, 11, 2), 2))
+_FEW = (np.repeat([0, 2], 4), np.tile([0, 3, 6, 9], 2))
 _BATCH = 16
 _SHIFT_S = 0.3e-6
 

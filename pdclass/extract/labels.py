@@ -26,6 +26,8 @@ def carried_labels(capture: Capture, onsets: IntArray, echoes: set[int]) -> tupl
     columns of the table; notes: two labels that disagree give none, what finds no pulse is counted.
     """
     given = [note for note in capture.annotations if note.label is not None]
+    if not given:
+        return {}, _foreign(capture)
     rows = np.array([row for row in range(len(onsets)) if row not in echoes], np.int64)
     nearest, apart = _nearest(onsets[rows], np.array([note.onset_sample for note in given], np.int64))
     reach = LABEL_REACH_S * capture.chain.rate_hz

@@ -24,6 +24,8 @@ QUIET = 3.0
 SMOOTHINGS = 6
 STANDS_OUT = 8.0
 _REACH = 4.0
+#: The edge is followed back so many standard deviations before the place where half its height may be reached.
+_AHEAD = 12.0
 _NEWTON = 3
 _ROOT_TWO_PI = 2.5066282746310002
 
@@ -206,14 +208,15 @@ def edge_foot(
     width, most = 1.0, 0.0
     sample, offset, std = first, 0.0, np.nan
     for _ in range(SMOOTHINGS):
-        wave = _smoothed(white, begin, stop - begin, width)
-        steepest, sign, height = _first_edge(wave, first - begin)
+        early = max(begin, first - int(_AHEAD * width))
+        wave = _smoothed(white, early, stop - early, width)
+        steepest, sign, height = _first_edge(wave, first - early)
         stands_out = height * math.sqrt(math.sqrt(2.0) * _ROOT_TWO_PI * width)
         if stands_out > most or stands_out >= STANDS_OUT:
-            at, spread = _foot(white, begin + steepest, sign, width)
+            at, spread = _foot(white, early + steepest, sign, width)
             if stands_out > most:
-                most, sample, offset, std = stands_out, begin + steepest, at, spread
+                most, sample, offset, std = stands_out, early + steepest, at, spread
             if stands_out >= STANDS_OUT and spread <= width / 2:
-                return begin + steepest, at, spread
+                return early + steepest, at, spread
         width *= 2.0
     return sample, offset, std if std < stop - begin else np.nan

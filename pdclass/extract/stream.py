@@ -133,12 +133,17 @@ def _pulse_set(
         "duration_us": lengths / rate_hz * 1e6,
         "clipped": cut.clipped(capture, waves, places),
         "window_mates": cut.window_mates(capture, onsets),
-        "echo_of": [ids[echo_of[row]] if row in echo_of else None for row in range(len(ids))],
-        "maybe_echo_of": [ids[maybe_of[row]] if row in maybe_of else None for row in range(len(ids))],
+        "echo_of": _named(echo_of, ids),
+        "maybe_echo_of": _named(maybe_of, ids),
         **labels,
     }
     simulated = any(note.family is not None for note in capture.annotations)
     return PulseSet(waves, (capture.chain,), typed_table(rows, ids, simulated=simulated)), notes
+
+
+def _named(parents: dict[int, int], ids: list[str]) -> list[str | None] | None:
+    """The name of each event's parent; None where no event has one."""
+    return [ids[parents[row]] if row in parents else None for row in range(len(ids))] if parents else None
 
 
 def _check_volts(capture: Capture, waves: WaveArray) -> None:

@@ -135,18 +135,27 @@ def _open_cluster(clusters: IntArray, flags: NDArray[np.bool_], before: IntArray
     return np.array([first, end])
 
 
+@_njit
 def _pieces(
     clusters: IntArray, block: tuple[int, int], bounds: tuple[int, int], longest: int, around: tuple[int, int]
-) -> IntArray:
+) -> IntArray:  # pragma: no cover - compiled
     """Pieces of clusters that begin in a block, as `piece_events` wants them, places in the file."""
-    rows = []
-    for first, last in clusters.tolist():
-        skipped = max(0, -(-(block[0] - first) // longest))
-        for begin in range(first + skipped * longest, min(last, block[1]), longest):
+    room = 0
+    for row in range(len(clusters)):
+        room += max(clusters[row, 1] - max(clusters[row, 0], block[0] - longest), 0) // longest + 2
+    pieces = np.empty((room, 5), np.int64)
+    count = 0
+    for row in range(len(clusters)):
+        first, last = clusters[row]
+        begin = first + max(0, -((first - block[0]) // longest)) * longest
+        while begin < min(last, block[1]):
             end = min(begin + longest, last)
-            early, late = max(bounds[0], begin - around[0]), min(bounds[1], end + around[1])
-            rows.append((early, begin, end, late, int(begin > first)))
-    return np.array(rows, np.int64).reshape(-1, 5)
+            pieces[count, 0], pieces[count, 1] = max(bounds[0], begin - around[0]), begin
+            pieces[count, 2], pieces[count, 3] = end, min(bounds[1], end + around[1])
+            pieces[count, 4] = begin > first
+            count += 1
+            begin += longest
+    return pieces[:count]
 
 
 @_njit

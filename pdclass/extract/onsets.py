@@ -26,6 +26,8 @@ STANDS_OUT = 8.0
 _REACH = 4.0
 #: The edge is followed back so many standard deviations before the place where half its height may be reached.
 _AHEAD = 12.0
+#: Smoothing that makes the edge stand out so much less than a narrower one did is wider than the pulse.
+_PAST = 0.8
 _NEWTON = 3
 _ROOT_TWO_PI = 2.5066282746310002
 
@@ -218,5 +220,7 @@ def edge_foot(
                 most, sample, offset, std = stands_out, early + steepest, at, spread
             if stands_out >= STANDS_OUT and spread <= width / 2:
                 return early + steepest, at, spread
+        if stands_out < _PAST * most:
+            break
         width *= 2.0
     return sample, offset, std if std < stop - begin else np.nan

@@ -39,10 +39,13 @@ MOST_PARENTS = 8
 #: Of what follows at an echo's delay at least this share is smaller than what it follows; in a train it is not.
 ECHO_SHARE = 0.8
 TRAIN_REACH = 1.5
+#: At a delay at which so many events follow one another, less than this share of them smaller, nothing is an echo.
+TRAIN_LEAST = 10
+TRAIN_SHARE = 0.65
 #: So much of each event's beginning tells its shape.
 SHAPE_S = 3e-6
 #: What is not even so alike after a few of the paths is not looked at after all of them.
-HARDLY_ALIKE = 0.4
+HARDLY_ALIKE = 0.35
 _FEW = (np.repeat([0, 2], 4), np.tile([0, 3, 6, 9], 2))
 _BATCH = 16
 _SHIFT_S = 0.3e-6
@@ -76,7 +79,8 @@ def find_echoes(
 
     An event is an echo when it is later by at most `longest_s`, smaller, and like its parent after more cable,
     with a delay that recurs in the capture; where few events are as strong as the parent, being surely alike
-    is enough. What is alike without that may be another pulse of the same source: it is kept, and marked.
+    is enough. What is alike without that may be another pulse of the same source: it is kept, and marked, unless
+    it follows at the interval of a train.
 
     Parameters
     ----------
@@ -99,7 +103,8 @@ def find_echoes(
     strong = np.searchsorted(np.sort(peaks), SMALLER * peaks[pairs.parent], side="left")
     alone = len(peaks) - strong < LONE_PARENTS
     proven = _recurring(pairs, rate_hz, longest_s)
-    proven[proven] = ~_of_a_train(onsets, peaks, pairs.delay[proven], rate_hz)
+    follows, smaller = _following(onsets, peaks, pairs.delay[proven], rate_hz)
+    proven[proven] = smaller >= ECHO_SHARE * follows
     sure = proven | (alone & pairs.slower & (pairs.alike >= ALIKE_SURE))
     for place in np.lexsort((-pairs.alike, pairs.child)).tolist():
         child, parent = int(pairs.child[place]), int(pairs.parent[place])
@@ -136,19 +141,40 @@ def _recurring(pairs: Pairs, rate_hz: float, longest_s: float) -> NDArray[np.boo
     return proven
 
 
-def _of_a_train(onsets: IntArray, peaks: FloatArray, delay: IntArray, rate_hz: float) -> NDArray[np.bool_]:
-    """Which delays are those at which larger or equal events follow, too: a train, and no echoes."""
+def _following(onsets: IntArray, peaks: FloatArray, delay: IntArray, rate_hz: float) -> tuple[FloatArray, FloatArray]:
+    """For each delay, how many events are followed at it by another one, and by a smaller one."""
     reach = RECURRENCE_S * rate_hz
     keys, which = np.unique(np.rint(delay / reach), return_inverse=True)
-    trains = np.zeros(len(keys), np.bool_)
-    for number, key in enumerate(keys.tolist()):
-        aim = onsets + key * reach
-        near = np.clip(np.searchsorted(onsets, aim), 1, max(len(onsets) - 1, 1))
-        near = near - (aim - onsets[near - 1] < onsets[near] - aim)
-        follows = (np.abs(onsets[near] - aim) <= TRAIN_REACH * reach) & (near != np.arange(len(onsets)))
-        smaller = follows & (peaks[near] < SMALLER * peaks)
-        trains[number] = np.sum(smaller) < ECHO_SHARE * np.sum(follows)
-    return np.asarray(trains[which.reshape(-1)], np.bool_)
+    follows, smaller = _count_following(onsets, peaks, keys * reach, TRAIN_REACH * reach)
+    return follows[which.reshape(-1)], smaller[which.reshape(-1)]
+
+
+@_njit
+def _count_following(
+    onsets: IntArray, peaks: FloatArray, aims: FloatArray, reach: float
+) -> tuple[FloatArray, FloatArray]:  # pragma: no cover - compiled
+    follows, smaller = np.zeros(aims.size), np.zeros(aims.size)
+    for key in range(aims.size):
+        near = 0
+        for first in range(onsets.size):
+            aim = onsets[first] + aims[key]
+            near = max(near, first + 1)
+            while near + 1 < onsets.size and abs(onsets[near + 1] - aim) <= abs(onsets[near] - aim):
+                near += 1
+            if near < onsets.size and abs(onsets[near] - aim) <= reach:
+                follows[key] += 1
+                smaller[key] += peaks[near] < SMALLER * peaks[first]
+    return follows, smaller
+
+
+def _in_train(onsets: IntArray, peaks: FloatArray, delay: IntArray, rate_hz: float) -> NDArray[np.bool_]:
+    """Which delays are those of a train beyond doubt: many events follow at them, about as often larger as smaller."""
+    if not len(delay):
+        return np.zeros(0, np.bool_)
+    follows, smaller = _following(onsets, peaks, delay, rate_hz)
+    span = max(float(onsets[-1] - onsets[0]), 1.0)
+    chance = len(onsets) ** 2 / span * 2 * TRAIN_REACH * RECURRENCE_S * rate_hz
+    return (follows >= max(TRAIN_LEAST, 3 * chance)) & (smaller < TRAIN_SHARE * follows)
 
 
 def _likenesses(
@@ -163,6 +189,8 @@ def _likenesses(
     children, parents = children[parents >= 0], parents[parents >= 0]
     fits = (onsets[children] - onsets[parents] <= longest_s * rate_hz) & (peaks[children] < SMALLER * peaks[parents])
     children, parents = children[fits], parents[fits]
+    alone = ~_in_train(onsets, peaks, onsets[children] - onsets[parents], rate_hz)
+    children, parents = children[alone], parents[alone]
     scores = pair_likeness(waves, lengths, parents, children, rate_hz)
     best = scores.max(axis=(1, 2))
     ratio = peaks[children] / peaks[parents]

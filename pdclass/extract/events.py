@@ -20,7 +20,7 @@ TWIN_S = 0.5e-6
 TAIL_RISE = 8.0
 #: Within a microsecond, where ringing also rises and falls, only a rise to this share of the former peak
 #: energy after a dip to a tenth of it counts: lobes of a mode with a quality below 20 fall faster.
-TWIN_SHARE = 0.85
+TWIN_SHARE = 0.7
 TWIN_DIP = 0.1
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25

@@ -59,8 +59,10 @@ def comb(brick: int) -> IntArray:
     Evenly spaced places would show a carrier at a multiple of their rate as a level.
     """
     stride = max(1, brick // SAMPLES_A_BRICK)
-    part = np.arange(brick // stride, dtype=np.int64)
-    return np.asarray(part * stride + ((part * 2654435761) >> 16) % stride, np.int64)
+    part = np.arange(brick // stride)
+    mixed = (part + 1).astype(np.uint64) * np.uint64(0x9E3779B97F4A7C15)
+    mixed = (mixed ^ (mixed >> np.uint64(29))) * np.uint64(0xBF58476D1CE4E5B9)
+    return np.asarray(part * stride + (mixed >> np.uint64(40)).astype(np.int64) % stride, np.int64)
 
 
 @_njit

@@ -18,10 +18,12 @@ DECAY_S = 300e-9
 TWIN_S = 0.5e-6
 #: A new pulse inside an older one's tail lifts the energy by this factor above what the tail held lately.
 TAIL_RISE = 8.0
-#: Within a microsecond, where ringing also rises and falls, only a rise to this share of the former peak
-#: energy after a dip to a tenth of it counts: lobes of a mode with a quality below 20 fall faster.
+#: Within a microsecond, where a pulse's own humps also rise and fall, only a rise to this share of the former peak
+#: energy after a dip to the other share counts; from a third of a microsecond on one to a smaller share, too, after a
+#: dip to a sixteenth of what it reaches (`SMALLER_RISE`): a quarter of the height.
 TWIN_SHARE = 0.7
-TWIN_DIP = 0.1
+TWIN_DIP = 0.12
+SMALLER_RISE = 16.0
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25
 ALIVE = 9.0
@@ -100,7 +102,7 @@ def rough_starts(
                 ringing = True
             if not ringing and attack < i - start <= 2 * twin:
                 as_twin = lowest < dip * peak and quick > share * peak
-                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, 2 * rise * lowest, 1.3 * dip * peak)
+                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, SMALLER_RISE * lowest, dip * peak)
                 fresh = fresh or as_twin or as_smaller
         if fresh and count < found.size:
             found[count] = begin + i

@@ -28,7 +28,10 @@ def median(values: WaveArray) -> float:  # pragma: no cover - compiled
 @numba.njit(cache=True, nogil=True)
 def median_size(values: WaveArray) -> float:  # pragma: no cover - compiled
     """The median of the sizes of values without NaN, (n,) float32, n >= 1."""
-    return _middle(values.view(np.int32) & _ALL_BUT_SIGN)
+    keys = values.view(np.int32).copy()
+    for i in range(keys.size):
+        keys[i] = keys[i] & _ALL_BUT_SIGN
+    return _middle(keys)
 
 
 @numba.njit(cache=True, nogil=True)
@@ -40,8 +43,7 @@ def _middle(keys: IntArray) -> float:  # pragma: no cover - compiled
         return _value(lower)
     upper = _HIGHEST
     for i in range(keys.size):
-        if lower < keys[i] < upper:
-            upper = keys[i]
+        upper = min(upper, keys[i] if keys[i] > lower else _HIGHEST)
     return 0.5 * (_value(lower) + _value(upper))
 
 
@@ -72,3 +74,29 @@ def _value(key: int) -> float:  # pragma: no cover - compiled
     bits = np.empty(1, np.int32)
     bits[0] = key ^ ((key >> 31) & _ALL_BUT_SIGN)
     return np.float64(bits.view(np.float32)[0])
+
+
+@numba.njit(cache=True, nogil=True)
+def sum_of_squares(values: WaveArray) -> float:  # pragma: no cover - compiled
+    """Sum of the squares of values, (n,)."""
+    lane, whole = np.zeros(LANES), values.size // LANES * LANES
+    for first in range(0, whole, LANES):
+        for j in range(LANES):
+            value = np.float64(values[first + j])
+            lane[j] += value * value
+    for j in range(values.size - whole):
+        value = np.float64(values[whole + j])
+        lane[j] += value * value
+    return lane.sum()
+
+
+@numba.njit(cache=True, nogil=True)
+def lowest(values: WaveArray) -> float:  # pragma: no cover - compiled
+    """The smallest of values without NaN, (n,) float32, and at most 0."""
+    lane, whole = np.zeros(LANES, np.float32), values.size // LANES * LANES
+    for first in range(0, whole, LANES):
+        for j in range(LANES):
+            lane[j] = min(lane[j], values[first + j])
+    for j in range(values.size - whole):
+        lane[j] = min(lane[j], values[whole + j])
+    return np.float64(lane.min())

@@ -33,14 +33,14 @@ def by_row(features: tuple[Feature, ...], measure: Callable[[Window], dict[str, 
 
 
 FAMILIES: Mapping[str, tuple[tuple[Feature, ...], Measure]] = {
-    "edges": (EDGES, by_row(EDGES, measure_edges)),
-    "spectrum": (SPECTRUM, by_row(SPECTRUM, measure_spectrum)),
-    "scales": (SCALES, by_row(SCALES, measure_scales)),
-    "ringing": (RINGING, by_row(RINGING, measure_ringing)),
-    "echoes": (ECHOES, by_row(ECHOES, measure_echoes)),
-    "spread": (SPREAD, by_row(SPREAD, measure_spread)),
-    "arrival": (ARRIVAL, by_row(ARRIVAL, measure_arrival)),
-    "copies": (COPIES, by_row(COPIES, measure_copies)),
+    "edges": (EDGES, measure_edges),
+    "spectrum": (SPECTRUM, measure_spectrum),
+    "scales": (SCALES, measure_scales),
+    "ringing": (RINGING, measure_ringing),
+    "echoes": (ECHOES, measure_echoes),
+    "spread": (SPREAD, measure_spread),
+    "arrival": (ARRIVAL, measure_arrival),
+    "copies": (COPIES, measure_copies),
 }
 
 CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD, *ARRIVAL, *COPIES)

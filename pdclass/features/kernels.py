@@ -100,3 +100,53 @@ def lowest(values: WaveArray) -> float:  # pragma: no cover - compiled
     for j in range(values.size - whole):
         lane[j] = min(lane[j], values[whole + j])
     return np.float64(lane.min())
+
+
+@numba.njit(cache=True, nogil=True)
+def weighed(values: FloatArray, weights: FloatArray) -> float:  # pragma: no cover - compiled
+    """Sum of the products of values and weights, both (n,)."""
+    lane, whole = np.zeros(LANES), values.size // LANES * LANES
+    for first in range(0, whole, LANES):
+        for j in range(LANES):
+            lane[j] += np.float64(values[first + j]) * weights[first + j]
+    for j in range(values.size - whole):
+        lane[j] += np.float64(values[whole + j]) * weights[whole + j]
+    return lane.sum()
+
+
+@numba.njit(cache=True, nogil=True)
+def sum_between(values: FloatArray, first: int, last: int) -> float:  # pragma: no cover - compiled
+    """Sum of `values[first:last]`."""
+    lane = np.zeros(LANES)
+    k = first
+    while k + LANES <= last:
+        for j in range(LANES):
+            lane[j] += np.float64(values[k + j])
+        k += LANES
+    for j in range(last - k):
+        lane[j] += np.float64(values[k + j])
+    return lane.sum()
+
+
+@numba.njit(cache=True, nogil=True)
+def place_of_largest(values: WaveArray) -> int:  # pragma: no cover - compiled
+    """Place of the first of the largest sizes of values without NaN, (n,) float32, n >= 1."""
+    keys, top, place = values.view(np.int32), np.int32(0), 0
+    for i in range(keys.size):
+        top = max(top, np.int32(keys[i] & _ALL_BUT_SIGN))
+    while keys[place] & _ALL_BUT_SIGN < top:
+        place += 1
+    return place
+
+
+@numba.njit(cache=True, nogil=True)
+def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
+    """Place of the first value of the largest size, (n,) float32 without NaN."""
+    keys = values.view(np.int32)
+    top = np.int32(0)
+    for i in range(keys.size):
+        top = max(top, keys[i] & _ALL_BUT_SIGN)
+    for i in range(keys.size):
+        if keys[i] & _ALL_BUT_SIGN == top:
+            return i
+    return 0

@@ -6,13 +6,15 @@ even source takes away the high ones and delays nothing. A near end that rings h
 
 from __future__ import annotations
 
+from functools import lru_cache
 from itertools import pairwise
 
 import numba
 import numpy as np
+from numpy.typing import NDArray
 
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import sum_between, weighed
+from pdclass.features.kernels import weighed
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
@@ -34,24 +36,34 @@ def measure_arrival(windows: Windows) -> FloatArray:
 
     Where the noise is unknown, or fewer samples were recorded than the arrival is long, nothing is measured.
     """
-    found = np.full((len(windows), len(ARRIVAL)), np.nan)
-    column = 0
-    for length_us, fade, edges in LENGTHS:
-        samples = GUARD + round(length_us * ANALYSIS_RATE_HZ / 1e6)
-        bands = found[:, column : column + len(edges) - 1]
-        _delays_into(
-            bands,
-            windows.wave,
-            windows.last,
-            windows.noise,
-            windows.noise_power,
-            windows.end,
-            windows.low_hz,
-            fade_out(samples, fade),
-            np.array(first_bins(edges, _FFT)),
-            cosine_means(first_bins(edges, _FFT), _FFT, samples),
-        )
-        column += len(edges) - 1
+    pieces = behind_common_corner(windows.wave, windows.low_hz, GUARD + _samples(LENGTHS[-1][0]))
+    floors = _floors(windows.noise_power, windows.low_hz, np.array(first_bins(EDGES_MHZ, _FFT)))
+    floors /= (windows.end - ONSET + GUARD)[:, None]
+    known = windows.noise > 0
+    found = [_delays(pieces, floors, known, windows.last, *length) for length in LENGTHS]
+    return np.concatenate(found, axis=1)
+
+
+def _samples(length_us: float) -> int:
+    return round(length_us * ANALYSIS_RATE_HZ / 1e6)
+
+
+def _delays(
+    pieces: FloatArray,
+    floors: FloatArray,
+    known: NDArray[np.bool_],
+    last: IntArray,
+    length_us: float,
+    fade: int,
+    edges: tuple[float, ...],
+) -> FloatArray:
+    """Delays by band of arrivals of one length [ns], (pulses, bands); `floors` are sums over the bands of `EDGES_MHZ`."""
+    found = np.full((len(pieces), len(edges) - 1), np.nan)
+    usable = np.flatnonzero(known & (last >= ONSET + _samples(length_us)))
+    joined = np.add.reduceat(floors, [EDGES_MHZ.index(edge) for edge in edges[:-1]], axis=1)
+    starts, samples = first_bins(edges, _FFT), GUARD + _samples(length_us)
+    weights = np.ascontiguousarray(cosine_means(starts, _FFT, samples).T)
+    _delays_into(found, usable, pieces, joined, fade_out(samples, fade), np.diff(starts).astype(np.float64), weights)
     return found
 
 
@@ -67,6 +79,7 @@ def first_bins(edges_mhz: tuple[float, ...], size: int) -> tuple[int, ...]:
     return tuple(int(np.ceil(edge * 1e6 * size / ANALYSIS_RATE_HZ)) for edge in edges_mhz)
 
 
+@lru_cache(maxsize=8)
 def cosine_means(starts: tuple[int, ...], size: int, lags: int) -> FloatArray:
     """What a correlation is weighed with to give the mean of its spectrum over each band, (bands, lags).
 
@@ -79,105 +92,114 @@ def cosine_means(starts: tuple[int, ...], size: int, lags: int) -> FloatArray:
 
 
 @_njit
-def begin_behind_common_corner(
-    wave: WaveArray, low_hz: float, piece: FloatArray
-) -> None:  # pragma: no cover - compiled
-    """Write the wave from `ONSET - GUARD` on as if the chain's first-order lower corner lay at 0.3 MHz.
+def behind_common_corner(
+    waves: WaveArray, low_hz: FloatArray, samples: int
+) -> FloatArray:  # pragma: no cover - compiled
+    """Waves from `ONSET - GUARD` on as if each chain's first-order lower corner lay at 0.3 MHz, (pulses, samples).
 
     Unchanged where the corner is unknown. (s + a)/(s + b) as a recursion whose integral is trapezoidal: within 0.2 %
     of it below 25 MHz. Nothing is amplified but what lies below a corner above 0.3 MHz, at most by their ratio.
     """
     start = ONSET - GUARD
-    for i in range(piece.size):
-        piece[i] = wave[start + i]
-    if not low_hz > 0:
-        return
-    per_sample = 2 * np.pi / ANALYSIS_RATE_HZ
-    gain, decay = per_sample * (low_hz - COMMON_LOW_HZ), np.exp(-per_sample * COMMON_LOW_HZ)
-    past = 0.0
-    for i in range(start):
-        past = wave[i] + decay * past
-    for i in range(piece.size):
-        past = piece[i] + decay * past
-        piece[i] += gain * (past - 0.5 * piece[i])
+    turn = 2 * np.pi / ANALYSIS_RATE_HZ
+    decay = np.exp(-turn * COMMON_LOW_HZ)
+    fading = decay ** np.arange(start - 1.0, -1.0, -1.0)
+    pieces = np.empty((len(waves), samples))
+    for row in range(len(waves)):
+        pieces[row] = waves[row, start : start + samples]
+        if not low_hz[row] > 0:
+            continue
+        gain, past = turn * (low_hz[row] - COMMON_LOW_HZ), weighed(waves[row, :start], fading)
+        for i in range(samples):
+            past = pieces[row, i] + decay * past
+            pieces[row, i] += gain * (past - 0.5 * pieces[row, i])
+    return pieces
 
 
 @_njit
-def noise_behind_common_corner(
-    power: WaveArray, scale: float, low_hz: float, out: FloatArray
-) -> None:  # pragma: no cover - compiled
-    """Write a noise spectrum times `scale` as it is behind the common corner, up to the bins of `out`."""
-    step_hz = ANALYSIS_RATE_HZ / (2 * (power.size - 1))
-    if not low_hz > 0:
-        for k in range(out.size):
-            out[k] = power[k] * scale
-        return
-    for k in range(out.size):
-        square = (k * step_hz) ** 2
-        out[k] = power[k] * scale * (square + low_hz**2) / (square + COMMON_LOW_HZ**2)
+def _floors(powers: WaveArray, low_hz: FloatArray, starts: IntArray) -> FloatArray:  # pragma: no cover - compiled
+    """Noise power as it is behind the common corner, summed over each band, (pulses, bands)."""
+    hz = np.arange(starts[-1]) * ANALYSIS_RATE_HZ / _FFT
+    share = 1 / (hz**2 + COMMON_LOW_HZ**2)
+    sums, moved = np.empty((len(powers), starts.size - 1)), np.empty(hz.size)
+    for row in range(len(powers)):
+        change = low_hz[row] ** 2 - COMMON_LOW_HZ**2 if low_hz[row] > 0 else 0.0
+        for k in range(hz.size):
+            moved[k] = powers[row, k] * (1 + change * share[k])
+        for band in range(starts.size - 1):
+            sums[row, band] = _added(moved[starts[band] : starts[band + 1]])
+    return sums
 
 
 @_njit
-def correlate_into(piece: FloatArray, lags: FloatArray) -> None:  # pragma: no cover - compiled
-    """Write the autocorrelation of a piece, as many lags as it has samples."""
+def _added(values: FloatArray) -> float:  # pragma: no cover - compiled
+    """Sum of a few values, in four sums side by side."""
+    a, b, c, d, whole = 0.0, 0.0, 0.0, 0.0, values.size // 4 * 4
+    for k in range(0, whole, 4):
+        a, b, c, d = a + values[k], b + values[k + 1], c + values[k + 2], d + values[k + 3]
+    for k in range(whole, values.size):
+        a += values[k]
+    return a + b + (c + d)
+
+
+@_njit
+def correlate_into(early: FloatArray, late: FloatArray, lags: FloatArray) -> None:  # pragma: no cover - compiled
+    """Write sum_n early(n) late(n + lag) for each lag, four terms at a time so that the lags fill vectors.
+
+    `late` goes on with zeros: it holds three samples more than `early` and `lags` together, `early` a multiple of four.
+    """
     lags[:] = 0.0
-    for n in range(piece.size):
-        value, later = piece[n], piece[n:]
-        for lag in range(later.size):
-            lags[lag] += value * later[lag]
+    for n in range(0, early.size, 4):
+        a, b, c, d = early[n], early[n + 1], early[n + 2], early[n + 3]
+        first, second, third, fourth = late[n:], late[n + 1 :], late[n + 2 :], late[n + 3 :]
+        for lag in range(lags.size):
+            lags[lag] += a * first[lag] + b * second[lag] + (c * third[lag] + d * fourth[lag])
 
 
 @_njit
-def _moments_into(piece: FloatArray, moments: FloatArray) -> None:  # pragma: no cover - compiled
-    """Write sum_n x(n) x(n + lag) (n + lag/2): its cosine transform is Re(X* Y), Y the transform of n x(n)."""
-    moments[:] = 0.0
-    for n in range(piece.size):
-        value, later = piece[n], piece[n:]
-        for lag in range(later.size):
-            moments[lag] += value * (n + 0.5 * lag) * later[lag]
+def band_means_into(lags: FloatArray, weights: FloatArray, means: FloatArray) -> None:  # pragma: no cover - compiled
+    """Write the mean over each band of the spectrum of a correlation; `weights` (lags, bands) as of `cosine_means`."""
+    means[:] = 0.0
+    for lag in range(lags.size):
+        for band in range(means.size):
+            means[band] += lags[lag] * weights[lag, band]
 
 
 @_njit
 def _delays_into(
     found: FloatArray,
-    waves: WaveArray,
-    last: IntArray,
-    noise: FloatArray,
-    noise_power: WaveArray,
-    end: IntArray,
-    low_hz: FloatArray,
+    usable: IntArray,
+    pieces: FloatArray,
+    floors: FloatArray,
     fade: FloatArray,
-    starts: IntArray,
+    widths: FloatArray,
     weights: FloatArray,
 ) -> None:  # pragma: no cover - compiled
     """Write delays by band against the centre of the energy [ns], pulse by pulse.
 
     The delay of a band is that of its energy, Re(X* Y)/|X|² with Y the transform of t x(t): no phase is unwrapped.
+    Re(X* Y) is the cosine transform of sum_n x(n) x(n + lag) (n + lag/2).
     """
-    bands, samples = weights.shape
-    piece, lags, moments = np.empty(samples), np.empty(samples), np.empty(samples)
-    density, strength, late = np.empty(starts[-1]), np.empty(bands), np.empty(bands)
-    energy = np.sum(fade**2)
-    for row in range(len(waves)):
-        if not noise[row] > 0 or last[row] < ONSET - GUARD + samples:
-            continue
-        begin_behind_common_corner(waves[row], low_hz[row], piece)
-        piece *= fade
-        correlate_into(piece, lags)
-        _moments_into(piece, moments)
-        scale = energy / (end[row] - ONSET + GUARD)
-        noise_behind_common_corner(noise_power[row], scale, low_hz[row], density)
-        total, centre = 0.0, 0.0
+    samples, bands = weights.shape
+    early, moment = np.zeros((samples + 3) // 4 * 4), np.zeros((samples + 3) // 4 * 4)
+    late, lags, moments = np.zeros(early.size + samples + 3), np.empty(samples), np.empty(samples)
+    strength, delayed, energy = np.empty(bands), np.empty(bands), np.sum(fade**2)
+    for row in usable:
+        for i in range(samples):
+            early[i] = pieces[row, i] * fade[i]
+            late[i], moment[i] = early[i], i * early[i]
+        correlate_into(early, late, lags)
+        correlate_into(moment, late, moments)
+        for lag in range(samples):
+            moments[lag] += 0.5 * lag * lags[lag]
+        band_means_into(lags, weights, strength)
+        band_means_into(moments, weights, delayed)
+        total, centre, hidden = 0.0, 0.0, _SHARE * strength.max()
         for band in range(bands):
-            width = starts[band + 1] - starts[band]
-            strength[band], late[band] = weighed(lags, weights[band]), weighed(moments, weights[band])
-            total += width * strength[band]
-            centre += width * late[band]
-        floor = _SHARE * strength.max()
+            total, centre = total + widths[band] * strength[band], centre + widths[band] * delayed[band]
         for band in range(bands):
-            hidden = _CLEAR * sum_between(density, starts[band], starts[band + 1]) / (starts[band + 1] - starts[band])
-            if strength[band] > max(hidden, floor):
-                found[row, band] = (late[band] / strength[band] - centre / total) * STEP_NS
+            if strength[band] > max(_CLEAR * energy * floors[row, band] / widths[band], hidden):
+                found[row, band] = (delayed[band] / strength[band] - centre / total) * STEP_NS
 
 
 def _name(length_us: float, low: float, high: float) -> str:

@@ -12,7 +12,7 @@ from itertools import pairwise
 import numba
 import numpy as np
 
-from pdclass.features.arrival import correlate_into, cosine_means, fade_out, first_bins
+from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import largest, median_size, weighed
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
@@ -30,6 +30,8 @@ _REGULAR, _PASS_HZ = 0.01, 6e6
 _APART, _APART_SHARE = 12, 0.04
 #: A copy stands so many noise levels out of the echogram and has this share of the pulse, else there is none.
 _STANDS_OUT, _SMALLEST = 4.0, 0.02
+#: Its level is that of every so many-th delay from here on: it is too smooth for more of them to tell more.
+_LEVEL_FROM, _COMB = 100, 4
 #: So much of a copy is compared with the pulse [samples], in these bands [MHz].
 _COMPARED, _COMPARED_FFT = 100, 512
 #: A band with less than this share of the pulse's strongest one is not compared.
@@ -86,12 +88,9 @@ def _deconvolve(
     """Replace each spectrum of a window by that of its echogram."""
     power = np.empty(low_pass.size, np.float32)
     for row in range(len(whole)):
-        top = np.float32(0)
         for k in range(power.size):
             power[k] = beginning[row, k].real ** 2 + beginning[row, k].imag ** 2
-        for k in range(power.size):
-            top = max(top, power[k])
-        least, share = np.float32(_REGULAR) * top, np.float32(scale[row])
+        least, share = np.float32(_REGULAR) * power[largest(power)], np.float32(scale[row])
         for k in range(power.size):
             weight = low_pass[k] / (power[k] + noise_power[row, k] * share + least)
             whole[row, k] *= np.conj(beginning[row, k]) * weight
@@ -110,7 +109,7 @@ def _of_echograms(gram: WaveArray, windows: Windows) -> FloatArray:
     found = np.full((len(windows), len(COPIES)), np.nan)
     own_samples = windows.end - ONSET + GUARD
     bins = np.array(first_bins(LEVELS_MHZ, _COMPARED_FFT))
-    weights = cosine_means(first_bins(LEVELS_MHZ, _COMPARED_FFT), _COMPARED_FFT, _COMPARED)
+    weights = np.ascontiguousarray(cosine_means(first_bins(LEVELS_MHZ, _COMPARED_FFT), _COMPARED_FFT, _COMPARED).T)
     _copies_into(found, gram, windows.wave, windows.last, windows.noise_power, own_samples, _TAPER, bins, weights)
     return found
 
@@ -129,7 +128,8 @@ def _copies_into(
 ) -> None:  # pragma: no cover - compiled
     """Write the features in the order of `COPIES`, pulse by pulse."""
     pulse, later = np.empty(_COMPARED), np.empty(_COMPARED)
-    strengths, floors, references = np.empty(len(weights)), np.empty(len(weights)), np.empty(len(weights))
+    bands = weights.shape[1]
+    strengths, floors, references = np.empty(bands), np.empty(bands), np.empty(bands)
     scratch = np.empty(_LAST - _FIRST, np.float32)
     for row in range(len(found)):
         gram = grams[row, : last[row] - ONSET]
@@ -166,7 +166,7 @@ def strongest_copies(gram: WaveArray, scratch: WaveArray) -> tuple[int, int]:  #
         return -1, -1
     size = scratch[:delays]
     size[:] = gram[_FIRST : _FIRST + delays]
-    least = max(_STANDS_OUT * (median_size(gram[100:]) / 0.6744898 + 1e-9), _SMALLEST)
+    least = max(_STANDS_OUT * (median_size(gram[_LEVEL_FROM::_COMB].copy()) / 0.6744898 + 1e-9), _SMALLEST)
     first = largest(size)
     if abs(size[first]) < least:
         return -1, -1
@@ -213,10 +213,10 @@ def _strengths_into(
     wave: FloatArray, weights: FloatArray, strengths: FloatArray
 ) -> None:  # pragma: no cover - compiled
     """Write the mean power of a wave in each band."""
-    lags = np.empty(wave.size)
-    correlate_into(wave, lags)
-    for band in range(len(weights)):
-        strengths[band] = weighed(lags, weights[band])
+    lags, padded = np.empty(wave.size), np.zeros(2 * wave.size + 3)
+    padded[: wave.size] = wave
+    correlate_into(wave, padded, lags)
+    band_means_into(lags, weights, strengths)
 
 
 @_njit

@@ -12,7 +12,7 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from pdclass.features.kernels import LANES
+from pdclass.features.kernels import LANES, place_of_largest
 from pdclass.features.transforms import spectra
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
@@ -23,6 +23,11 @@ _FFT, _FINER = 1024, 4
 _BETWEEN = 1.2
 #: A line this far above the median of the pre-trigger's periodogram is a carrier, not noise.
 _TONE_POWER = 20.0
+#: Sines are made block by block: a table within a block, turned on from one to the next.
+_BLOCK = 40
+#: By how much the neighbours of a place on the fine grid turn against it.
+_ASIDE = 2 * np.pi / (_FFT * _FINER)
+_ASIDE_COS, _ASIDE_SIN = (wave(_ASIDE * np.arange(480)).astype(np.float32) for wave in (np.cos, np.sin))
 #: Carriers are not fitted to fewer samples, and never to more.
 _SHORTEST, _LONGEST = 200, 480
 #: A direction that the earlier ones span but for this share is left out of the fit.
@@ -63,20 +68,21 @@ def fitted_tones(waves: WaveArray, start: IntArray, stop: IntArray) -> Tones:
         np.zeros(shape),
         np.zeros(shape),
     )
-    moments, rest = np.zeros(shape, np.complex128), np.zeros((rows, _LONGEST), np.float32)
+    moments, gram = np.zeros(shape, np.complex128), np.empty((rows, 2, 1 + MOST_TONES, 1 + MOST_TONES))
+    rest = np.zeros((rows, _LONGEST), np.float32)
     open_rows = np.flatnonzero(stop - start >= _SHORTEST)
     _begin(waves, start, stop, open_rows, tones, moments, rest)
     for _ in range(MOST_TONES):
         if not open_rows.size:
             break
         spectrum = spectra(rest[open_rows], _FFT).view(np.float32)
-        open_rows = open_rows[_next_line(spectrum, waves, start, stop, open_rows, tones, moments, rest)]
+        open_rows = open_rows[_next_line(spectrum, waves, start, stop, open_rows, tones, moments, gram, rest)]
     return tones
 
 
 @numba.njit(cache=True, nogil=True)
 def take_out(waves: WaveArray, tones: Tones, rows: IntArray, clean: WaveArray) -> None:  # pragma: no cover - compiled
-    """Write the given rows without their lines; (all rows, samples), samples a multiple of `LANES`."""
+    """Write the given rows without their lines; (all rows, samples), samples a multiple of 40."""
     for r in rows:
         _leave(waves[r], 0, waves.shape[1], tones, r, clean[r])
 
@@ -107,6 +113,7 @@ def _next_line(
     rows: IntArray,
     tones: Tones,
     moments: NDArray[np.complex128],
+    gram: FloatArray,
     rest: WaveArray,
 ) -> NDArray[np.bool_]:  # pragma: no cover - compiled
     """Add the strongest line of what is left, where one stands out, and fit all anew; returns which rows had one."""
@@ -122,7 +129,7 @@ def _next_line(
             tones.turn[r, tones.count[r] - 1] = turn
             half_way = np.exp(0.5j * turn * (length - 1))
             moments[r, tones.count[r]] = _transform(waves[r], start[r], stop[r], turn) * half_way
-            _fit(length, tones.turn[r, : tones.count[r]], moments[r], tones.even[r], tones.odd[r])
+            _fit(length, tones.turn[r, : tones.count[r]], moments[r], gram[r], tones.even[r], tones.odd[r])
             _leave_tapered(waves[r], start[r], stop[r], tones, r, rest[r])
     return found
 
@@ -139,23 +146,18 @@ def _strongest_line(
     first = low // _FINER
     for k in range(first - 1, top + 1):
         power[k] = spectrum[2 * k] * spectrum[2 * k] + spectrum[2 * k + 1] * spectrum[2 * k + 1]
-    k = first + np.argmax(power[first:top])
+    k = first + place_of_largest(power[first:top])
     if not _stands_out(power[first + 1 : top], _BETWEEN * power[k]):
         return 0.0
     guess = round((k + _vertex(power[k - 1], power[k], power[k + 1])) * _FINER)
-    fine = min(max(guess, low, (k - 1) * _FINER), (k + 1) * _FINER, top * _FINER - 1)
-    unit = 2 * np.pi / (_FFT * _FINER)
-    left, middle = _power_at(rest, length, unit * (fine - 1)), _power_at(rest, length, unit * fine)
-    right = _power_at(rest, length, unit * (fine + 1))
-    while right > middle and fine + 1 < top * _FINER:
-        fine, left, middle = fine + 1, middle, right
-        right = _power_at(rest, length, unit * (fine + 1))
-    while left > middle and fine > low:
-        fine, right, middle = fine - 1, middle, left
-        left = _power_at(rest, length, unit * (fine - 1))
+    fine, last = min(max(guess, low, (k - 1) * _FINER), (k + 1) * _FINER, top * _FINER - 1), top * _FINER - 1
+    left, middle, right = _three_powers(rest, length, fine * _ASIDE)
+    while (right > middle and fine < last) or (left > middle and fine > low):
+        fine += 1 if right > middle and fine < last else -1
+        left, middle, right = _three_powers(rest, length, fine * _ASIDE)
     if not _stands_out(power[first + 1 : top], middle):
         return 0.0
-    return unit * (fine + _vertex(left, middle, right))
+    return _ASIDE * (fine + _vertex(left, middle, right))
 
 
 @numba.njit(cache=True, nogil=True)
@@ -176,49 +178,72 @@ def _vertex(left: float, middle: float, right: float) -> float:  # pragma: no co
 
 
 @numba.njit(cache=True, nogil=True)
-def _power_at(rest: WaveArray, length: int, turn: float) -> float:  # pragma: no cover - compiled
-    value = _transform(rest, 0, length, turn)
-    return value.real * value.real + value.imag * value.imag
+def _three_powers(
+    rest: WaveArray, length: int, turn: float
+) -> tuple[float, float, float]:  # pragma: no cover - compiled
+    """Power at a place on the fine grid [radians a sample] between those of its neighbours.
+
+    What is left is turned back at the place's own frequency once; its neighbours are a little off that.
+    """
+    cosine, sine, lane = np.empty(LANES, np.float32), np.empty(LANES, np.float32), np.zeros((6, LANES), np.float32)
+    _spread(-turn, cosine, sine)
+    phasor, step = 1.0 + 0.0j, np.exp(-1j * turn * LANES)
+    for first in range(0, length, LANES):
+        across, along = np.float32(phasor.real), np.float32(phasor.imag)
+        for j in range(LANES):
+            value, ahead, aside = rest[first + j], _ASIDE_COS[first + j], _ASIDE_SIN[first + j]
+            real = value * (across * cosine[j] - along * sine[j])
+            imag = value * (across * sine[j] + along * cosine[j])
+            lane[0, j] += real
+            lane[1, j] += imag
+            lane[2, j] += real * ahead
+            lane[3, j] += imag * ahead
+            lane[4, j] += real * aside
+            lane[5, j] += imag * aside
+        phasor *= step
+    total = np.zeros(6)
+    for k in range(6):
+        for j in range(LANES):
+            total[k] += lane[k, j]
+    left = (total[2] - total[5]) ** 2 + (total[3] + total[4]) ** 2
+    right = (total[2] + total[5]) ** 2 + (total[3] - total[4]) ** 2
+    return left, total[0] ** 2 + total[1] ** 2, right
 
 
 @numba.njit(cache=True, nogil=True)
 def _transform(wave: WaveArray, start: int, stop: int, turn: float) -> complex:  # pragma: no cover - compiled
     """The Fourier transform of a stretch at one frequency [radians a sample], phases from its first sample."""
-    real, imag = np.zeros(LANES), np.zeros(LANES)
+    lane = np.zeros((2, LANES), np.float32)
     phasor, step = 1.0 + 0.0j, np.exp(-1j * turn * LANES)
-    whole = start + (stop - start) // LANES * LANES
-    for first in range(start, whole, LANES):
-        for j in range(LANES):
-            real[j] += wave[first + j] * phasor.real
-            imag[j] += wave[first + j] * phasor.imag
+    for first in range(start, stop, LANES):
+        along, across = np.float32(phasor.real), np.float32(phasor.imag)
+        for j in range(min(LANES, stop - first)):
+            lane[0, j] += wave[first + j] * along
+            lane[1, j] += wave[first + j] * across
         phasor *= step
-    for j in range(stop - whole):
-        real[j] += wave[whole + j] * phasor.real
-        imag[j] += wave[whole + j] * phasor.imag
-    total, lane, step = 0.0j, 1.0 + 0.0j, np.exp(-1j * turn)
+    total, phasor, step = 0.0j, 1.0 + 0.0j, np.exp(-1j * turn)
     for j in range(LANES):
-        total += lane * (real[j] + 1j * imag[j])
-        lane *= step
+        total += phasor * (lane[0, j] + 1j * lane[1, j])
+        phasor *= step
     return total
 
 
 @numba.njit(cache=True, nogil=True)
 def _fit(
-    length: int, turn: FloatArray, moments: NDArray[np.complex128], even: FloatArray, odd: FloatArray
+    length: int, turn: FloatArray, moments: NDArray[np.complex128], gram: FloatArray, even: FloatArray, odd: FloatArray
 ) -> None:  # pragma: no cover - compiled
-    """Least-squares weights of a level, cosines (even) and sines (odd) from the transform at each frequency."""
+    """Least-squares weights of a level, cosines (even) and sines (odd) from the transform at each frequency.
+
+    `gram`, (2, 1 + MOST_TONES, 1 + MOST_TONES), holds the lower half of what cosines and sines have in common among
+    themselves; the row of the last frequency is added to it.
+    """
     n = turn.size
-    levels, cosines, sines = np.empty(n + 1), np.empty((n + 1, n + 1)), np.empty((n, n))
-    cosines[0, 0], levels[0] = length, moments[0].real
-    for i in range(n):
-        levels[i + 1] = moments[i + 1].real
-        cosines[i + 1, 0] = _kernel(length, turn[i])
-        for j in range(i + 1):
-            near, far = _kernel(length, turn[i] - turn[j]), _kernel(length, turn[i] + turn[j])
-            cosines[i + 1, j + 1], sines[i, j] = 0.5 * (near + far), 0.5 * (near - far)
-    even[: n + 1] = _solved(cosines, levels)
-    odd[0] = 0.0
-    odd[1 : n + 1] = _solved(sines, -moments[1 : n + 1].imag)
+    gram[0, 0, 0], gram[0, n, 0] = length, _kernel(length, turn[n - 1])
+    for j in range(n):
+        near, far = _kernel(length, turn[n - 1] - turn[j]), _kernel(length, turn[n - 1] + turn[j])
+        gram[0, n, j + 1], gram[1, n - 1, j] = 0.5 * (near + far), 0.5 * (near - far)
+    even[: n + 1] = _solved(gram[0, : n + 1, : n + 1].copy(), moments[: n + 1].real.copy())
+    odd[1 : n + 1] = _solved(gram[1, :n, :n].copy(), -moments[1 : n + 1].imag)
 
 
 @numba.njit(cache=True, nogil=True)
@@ -256,25 +281,21 @@ def _solved(matrix: FloatArray, right: FloatArray) -> FloatArray:  # pragma: no 
 def _leave(
     wave: WaveArray, start: int, stop: int, tones: Tones, r: int, left: WaveArray
 ) -> None:  # pragma: no cover - compiled
-    """Write a stretch without the lines of a row to `left`, in whole steps of `LANES`; the level stays."""
-    count = tones.count[r]
-    cosine, sine, lane = np.empty((count, LANES)), np.empty((count, LANES)), np.empty(LANES)
-    phasor, step = np.empty(count, np.complex128), np.empty(count, np.complex128)
-    for t in range(count):
+    """Write a stretch without the lines of a row to `left`, in whole blocks; the level stays."""
+    size = (stop - start + _BLOCK - 1) // _BLOCK * _BLOCK
+    cosine, sine = np.empty(_BLOCK, np.float32), np.empty(_BLOCK, np.float32)
+    left[:size] = wave[start : start + size]
+    for t in range(tones.count[r]):
         turn = tones.turn[r, t]
-        _spread(turn, cosine[t], sine[t])
-        step[t] = np.exp(1j * turn * LANES)
-        phasor[t] = (tones.even[r, 1 + t] - 1j * tones.odd[r, 1 + t]) * np.exp(1j * turn * (start - tones.centre[r]))
-    for first in range(start, stop, LANES):
-        for j in range(LANES):
-            lane[j] = wave[first + j]
-        for t in range(count):
-            real, imag = phasor[t].real, phasor[t].imag
-            for j in range(LANES):
-                lane[j] -= real * cosine[t, j] - imag * sine[t, j]
-            phasor[t] *= step[t]
-        for j in range(LANES):
-            left[first - start + j] = lane[j]
+        _spread(turn, cosine, sine)
+        phasor, step = np.exp(1j * turn * (start - tones.centre[r])), np.exp(1j * turn * _BLOCK)
+        phasor *= tones.even[r, 1 + t] - 1j * tones.odd[r, 1 + t]
+        for first in range(0, size, _BLOCK):
+            along, across = np.float32(phasor.real), np.float32(phasor.imag)
+            block = left[first : first + _BLOCK]
+            for j in range(_BLOCK):
+                block[j] -= along * cosine[j] - across * sine[j]
+            phasor *= step
 
 
 @numba.njit(cache=True, nogil=True)
@@ -283,24 +304,24 @@ def _leave_tapered(
 ) -> None:  # pragma: no cover - compiled
     """Write a stretch without level and lines to `rest`, under the taper of J. von Hann and with zeros behind it."""
     _leave(wave, start, stop, tones, r, rest)
-    length, level = stop - start, tones.even[r, 0]
-    cosine, sine = np.empty(LANES), np.empty(LANES)
+    length, level = stop - start, np.float32(tones.even[r, 0])
+    cosine, sine = np.empty(_BLOCK, np.float32), np.empty(_BLOCK, np.float32)
     turn = 2 * np.pi / (length - 1)
     _spread(turn, cosine, sine)
-    phasor, step = 1.0 + 0.0j, np.exp(1j * turn * LANES)
-    for first in range(0, length, LANES):
-        real, imag = phasor.real, phasor.imag
-        for j in range(LANES):
-            taper = 0.5 - 0.5 * (real * cosine[j] - imag * sine[j])
-            rest[first + j] = (rest[first + j] - level) * taper
+    phasor, step, half = 1.0 + 0.0j, np.exp(1j * turn * _BLOCK), np.float32(0.5)
+    for first in range(0, length, _BLOCK):
+        along, across = half * np.float32(phasor.real), half * np.float32(phasor.imag)
+        block = rest[first : first + _BLOCK]
+        for j in range(_BLOCK):
+            block[j] = (block[j] - level) * (half - (along * cosine[j] - across * sine[j]))
         phasor *= step
     rest[length:] = 0.0
 
 
 @numba.njit(cache=True, nogil=True)
-def _spread(turn: float, cosine: FloatArray, sine: FloatArray) -> None:  # pragma: no cover - compiled
+def _spread(turn: float, cosine: WaveArray, sine: WaveArray) -> None:  # pragma: no cover - compiled
     """Cosine and sine of 0, 1, 2 ... turns."""
     step, phasor = np.exp(1j * turn), 1.0 + 0.0j
-    for j in range(LANES):
+    for j in range(cosine.size):
         cosine[j], sine[j] = phasor.real, phasor.imag
         phasor *= step

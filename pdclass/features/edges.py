@@ -156,9 +156,7 @@ def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cov
 
 
 @numba.njit(cache=True, nogil=True)
-def _next_mean(
-    wave: WaveArray, place: int, reach: int, step: int, mean: float
-) -> float:  # pragma: no cover - compiled
+def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) -> float:  # pragma: no cover - compiled
     """The mean one step on from a place where it is known."""
     if reach == 0:
         return np.float64(wave[place + step])

@@ -10,6 +10,7 @@ import numpy as np
 from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
 from pdclass.features.edges import PLACES, measured_places
+from pdclass.features.feature import Feature
 from pdclass.features.window import ONSET, STEP_NS, Windows, chain_reach_hz, prepared
 from pdclass.pulses import FloatArray, PulseSet
 
@@ -54,17 +55,30 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
     unknown = [name for name in wanted if name not in BY_NAME]
     if unknown:
         raise RefusedError(f"feature '{unknown[0]}' is not in this version's catalogue; use the version that has it")
-    families = [name for name, (features, _) in FAMILIES.items() if any(f.name in wanted for f in features)]
-    count = len(pulses.table)
-    reach_hz = np.array([chain_reach_hz(chain) for chain in pulses.chains])[pulses.table["chain"].to_numpy(np.int64)]
-    found = Measured(np.full((count, len(wanted)), np.nan), np.full(count, np.nan), reach_hz)
-    for first in range(0, count, BATCH):
-        windows, rows = _windows(pulses, slice(first, first + BATCH))
+    families = [part for part in FAMILIES.values() if any(feature.name in wanted for feature in part[0])]
+    features = [feature for part, _ in families for feature in part]
+    columns = [[feature.name for feature in features].index(name) for name in wanted]
+    chain, duration_us = pulses.table["chain"].to_numpy(np.int64), pulses.table["duration_us"].to_numpy(np.float64)
+    reach_hz = np.array([chain_reach_hz(chain) for chain in pulses.chains])[chain]
+    found = Measured(np.full((len(chain), len(wanted)), np.nan), np.full(len(chain), np.nan), reach_hz)
+    for first in range(0, len(chain), BATCH):
+        batch = slice(first, first + BATCH)
+        windows, rows = prepared(pulses.waves[batch], pulses.chains, chain[batch], duration_us[batch])
         if rows.size:
-            values = _values(windows, families)
-            found.values[first + rows] = np.stack([values[name] for name in wanted], axis=1)
+            values = np.concatenate([measure(windows) for _, measure in families], axis=1)
+            found.values[first + rows] = _allowed(values, windows, features)[:, columns]
             found.snr_db[first + rows] = windows.snr_db
     return found
+
+
+def _allowed(values: FloatArray, windows: Windows, features: Sequence[Feature]) -> FloatArray:
+    """The values, those NaN that the chain or the noise does not allow or that leave their range."""
+    low, high = np.array([feature.valid_range for feature in features]).reshape(-1, 2).T
+    needs_hz = np.array([feature.needs_hz for feature in features])
+    needs_snr_db = np.array([feature.needs_snr_db or -np.inf for feature in features])
+    snr_db = np.nan_to_num(windows.snr_db, nan=-np.inf)
+    allowed = (windows.reach_hz[:, None] >= needs_hz) & (snr_db[:, None] >= needs_snr_db)
+    return np.where(allowed & (values >= low) & (values <= high), values, np.nan)
 
 
 def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
@@ -72,7 +86,9 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
 
     Keys of the times are `PLACES` of the edges and `end`; empty where nothing is measurable.
     """
-    windows, rows = _windows(pulses, slice(place, place + 1))
+    row = pulses.table.iloc[[place]]
+    chain, duration_us = row["chain"].to_numpy(np.int64), row["duration_us"].to_numpy(np.float64)
+    windows, rows = prepared(pulses.waves[[place]], pulses.chains, chain, duration_us)
     if not rows.size:
         return {}
     kept, scale = int(windows.last[0]), float(windows.height_v[0])
@@ -82,23 +98,3 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     wave_v = windows.wave[0, :kept].astype(np.float64) * scale
     end_us = (int(windows.end[0]) - ONSET) * STEP_NS / 1e3
     return {"time_us": time_us, "wave_v": wave_v, "height_v": height * scale, **times, "end": end_us}
-
-
-def _windows(pulses: PulseSet, rows: slice) -> tuple[Windows, np.ndarray]:
-    table = pulses.table.iloc[rows]
-    chains = [pulses.chains[place] for place in table["chain"].to_numpy(np.int64)]
-    return prepared(pulses.waves[rows], chains, table["duration_us"].to_numpy(np.float64))
-
-
-def _values(windows: Windows, families: Sequence[str]) -> dict[str, FloatArray]:
-    """Values of some families, those NaN that the chain or the noise does not allow or that leave their range."""
-    found: dict[str, FloatArray] = {}
-    snr_db = windows.snr_db
-    for family in families:
-        features, measure = FAMILIES[family]
-        for feature, values in zip(features, measure(windows).T, strict=True):
-            low, high = feature.valid_range
-            carried = windows.reach_hz >= feature.needs_hz
-            clear = (feature.needs_snr_db == 0) | (snr_db >= feature.needs_snr_db)
-            found[feature.name] = np.where(carried & clear & (values >= low) & (values <= high), values, np.nan)
-    return found

@@ -8,11 +8,10 @@ from functools import cached_property
 
 import numba
 import numpy as np
-import scipy.fft
 from numpy.typing import NDArray
 
 from pdclass.features.carriers import fitted_tones, take_out
-from pdclass.features.kernels import median, median_size
+from pdclass.features.kernels import median, median_size, place_of_largest
 from pdclass.features.transforms import spectra, waves_of
 from pdclass.pulses import ONSET_SHARE, WINDOW_S, Chain, FloatArray, IntArray, WaveArray
 
@@ -41,71 +40,6 @@ _MEDIAN_SIZE = 0.6744898
 
 
 @dataclass(frozen=True)
-class Window:
-    """A pulse ready for measuring; polarity and gain are gone (the peak is +1).
-
-    Attributes
-    ----------
-    wave : (SAMPLES,) carriers reduced, in units of the peak.
-    raw : (SAMPLES,) the same with its carriers.
-    end : one past the last of the pulse's own samples, which begin at `ONSET`.
-    last : one past the last recorded sample.
-    peak : place of the largest excursion among the own samples.
-    height_v : the peak that was made 1, with its sign [V].
-    noise : noise level beside the pulse, in units of the peak; NaN where the pre-trigger has no quiet stretch.
-    noise_power : (bins,) noise spectrum scaled to the own samples; NaN likewise.
-    reach_hz : highest frequency that the chain carries [Hz].
-    low_hz : lower corner of the chain [Hz]; NaN = unknown.
-    snr_db : peak over noise [dB].
-    """
-
-    wave: FloatArray
-    raw: FloatArray
-    end: int
-    last: int
-    peak: int
-    height_v: float
-    noise: float
-    noise_power: FloatArray
-    reach_hz: float
-    low_hz: float = float("nan")
-
-    @property
-    def snr_db(self) -> float:
-        """Peak over noise after the carriers are reduced [dB]; NaN where the noise is unknown."""
-        return float(-20 * np.log10(self.noise)) if self.noise > 0 else float("nan")
-
-    @property
-    def own(self) -> FloatArray:
-        """The own samples with a short lead, faded out at the end so that the cut adds nothing."""
-        piece = self.wave[ONSET - GUARD : self.end].copy()
-        fade = min(GUARD, piece.size // 4)
-        piece[piece.size - fade :] *= 0.5 + 0.5 * np.cos(np.pi * (np.arange(fade) + 0.5) / max(fade, 1))
-        return piece
-
-    @property
-    def edge(self) -> FloatArray:
-        """The own samples with twice the lead: where an edge may be looked for, and nowhere else."""
-        return self.wave[ONSET - 2 * GUARD : self.end]
-
-    @property
-    def noise_density(self) -> FloatArray:
-        """Noise spectrum for one sample, (bins,) on the grid of `power` from 0 Hz on; NaN where it is unknown."""
-        return self.noise_power / (self.end - ONSET + GUARD)
-
-    def power(self) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Frequencies [Hz], power of the own samples and of the noise, within the analysis band.
-
-        The noise is that beside the pulse, scaled to the own samples; zeros where it is unknown.
-        """
-        spectrum = np.abs(scipy.fft.rfft(self.own, SPECTRUM_FFT)) ** 2
-        noise = np.where(np.isfinite(self.noise_power), self.noise_power, 0.0)
-        frequency_hz = scipy.fft.rfftfreq(SPECTRUM_FFT, 1 / ANALYSIS_RATE_HZ)
-        inside = (frequency_hz >= ANALYSIS_BAND_HZ[0]) & (frequency_hz <= ANALYSIS_BAND_HZ[1])
-        return frequency_hz[inside], spectrum[inside], noise[inside]
-
-
-@dataclass(frozen=True)
 class Windows:
     """Pulses ready for measuring, one row a pulse; polarity and gain are gone (each peak is +1).
 
@@ -117,7 +51,7 @@ class Windows:
     last : (pulses,) one past the last recorded sample.
     peak : (pulses,) place of the largest excursion among the own samples.
     height_v : (pulses,) the peak that was made 1, with its sign [V].
-    noise : (pulses,) noise level beside the pulse, in units of the peak; NaN where the pre-trigger has no quiet stretch.
+    noise : (pulses,) noise level beside the pulse, in units of the peak; NaN without a quiet stretch before it.
     noise_power : (pulses, bins) noise spectrum scaled to the own samples, on the grid of `own_power`; NaN likewise.
     reach_hz : (pulses,) highest frequency that the chain carries [Hz].
     low_hz : (pulses,) lower corner of the chain [Hz]; NaN = unknown.
@@ -163,11 +97,6 @@ class Windows:
         """Power of the own samples, (pulses, SPECTRUM_FFT // 2 + 1); `BAND` are the bins of the analysis band."""
         return np.asarray(self.own_spectrum.real**2 + self.own_spectrum.imag**2)
 
-    def row(self, place: int) -> Window:
-        """One pulse alone."""
-        values = (getattr(self, field.name)[place] for field in fields(self))
-        return Window(*(np.asarray(v, np.float64) if np.ndim(v) else v.item() for v in values))
-
     def take(self, places: NDArray[np.intp] | NDArray[np.bool_]) -> Windows:
         """Some of the pulses."""
         return Windows(*(getattr(self, field.name)[places] for field in fields(self)))
@@ -179,13 +108,19 @@ def chain_reach_hz(chain: Chain) -> float:
     return float(min(corner, 0.4 * chain.rate_hz))
 
 
-def prepared(waves_v: WaveArray, chains: Sequence[Chain], duration_us: FloatArray) -> tuple[Windows, IntArray]:
+def _low_hz(chain: Chain) -> float:
+    return float(chain.band_hz[0]) if chain.band_hz else float("nan")
+
+
+def prepared(
+    waves_v: WaveArray, chains: Sequence[Chain], chain: IntArray, duration_us: FloatArray
+) -> tuple[Windows, IntArray]:
     """Make stored windows ready for measuring, and say which: those with nothing to measure are left out.
 
     Parameters
     ----------
     waves_v : (pulses, samples) 20 us windows with the onset a quarter in [V]; NaN = not recorded.
-    chains : their chains.
+    chains : the chains that `chain`, (pulses,), counts into.
     duration_us : (pulses,) length of the own samples [us]; NaN or not positive = to the end of the window.
     """
     samples = waves_v.shape[1]
@@ -201,8 +136,8 @@ def prepared(waves_v: WaveArray, chains: Sequence[Chain], duration_us: FloatArra
     noise = noise_v / np.where(measurable, np.abs(height_v), np.nan)
     share = np.where(np.isfinite(noise), (end[rows] - ONSET + GUARD) / np.maximum(stop - start, 1), np.nan)
     noise_power = _smoothed_power(spectra(before, SPECTRUM_FFT).view(np.float32), share)
-    reach_hz = np.array([chain_reach_hz(chain) for chain in chains])[rows]
-    low_hz = np.array([chain.band_hz[0] if chain.band_hz else np.nan for chain in chains])[rows]
+    reach_hz = np.array([chain_reach_hz(chains[place]) for place in chain[rows]])
+    low_hz = np.array([_low_hz(chains[place]) for place in chain[rows]])
     windows = Windows(wave, raw, end[rows], last[rows], peak, height_v, noise, noise_power, reach_hz, low_hz)
     return (windows, rows) if measurable.all() else (windows.take(measurable), rows[measurable])
 
@@ -340,7 +275,7 @@ def _scaled(
     peak, height, before = np.zeros(rows, np.int64), np.zeros(rows), np.zeros((rows, ONSET), np.float32)
     for r in range(rows):
         earliest, base = ONSET - GUARD // 2, np.float32(level[r])
-        peak[r] = earliest + _largest(wave[r, earliest : end[r]], base)
+        peak[r] = earliest + place_of_largest(wave[r, earliest : end[r]] - base)
         height[r] = wave[r, peak[r]] - base
         if height[r] == 0:
             continue
@@ -355,19 +290,6 @@ def _scaled(
         for i in range(start[r], stop[r]):
             before[r, i - start[r]] = wave[r, i] - np.float32(mean)
     return peak, height, before
-
-
-@numba.njit(cache=True, nogil=True)
-def _largest(wave: WaveArray, level: float) -> int:  # pragma: no cover - compiled
-    """Place of the first sample farthest from a level."""
-    size = np.abs(wave - level).view(np.int32)
-    top = np.int32(0)
-    for i in range(size.size):
-        top = max(top, size[i])
-    place = 0
-    while size[place] < top:
-        place += 1
-    return place
 
 
 @numba.njit(cache=True, nogil=True)

@@ -37,6 +37,8 @@ _SPANNED = 1e-12
 class Tones(NamedTuple):
     """Lines of several waves, row by row.
 
+    Kernels take the arrays one by one: a tuple costs more to pass into one than the work of many rows.
+
     Attributes
     ----------
     count : (rows,) lines found, 0 to `MOST_TONES`.
@@ -71,19 +73,34 @@ def fitted_tones(waves: WaveArray, start: IntArray, stop: IntArray) -> Tones:
     moments, gram = np.zeros(shape, np.complex128), np.empty((rows, 2, 1 + MOST_TONES, 1 + MOST_TONES))
     rest = np.zeros((rows, _LONGEST), np.float32)
     open_rows = np.flatnonzero(stop - start >= _SHORTEST)
-    _begin(waves, start, stop, open_rows, tones, moments, rest)
+    _begin(waves, start, stop, open_rows, moments, rest, *tones)
     for _ in range(MOST_TONES):
         if not open_rows.size:
             break
         spectrum = spectra(rest[open_rows], _FFT).view(np.float32)
-        open_rows = open_rows[_next_line(spectrum, waves, start, stop, open_rows, tones, moments, gram, rest)]
+        open_rows = open_rows[_next_line(spectrum, waves, start, stop, open_rows, moments, gram, rest, *tones)]
     return tones
 
 
+def without_tones(waves: WaveArray, tones: Tones) -> WaveArray:
+    """The waves less their lines, (rows, samples), samples a multiple of 40; their levels stay."""
+    clean = np.empty_like(waves)
+    _take_out(waves, clean, *tones)
+    return clean
+
+
 @numba.njit(cache=True, nogil=True)
-def take_out(waves: WaveArray, tones: Tones, rows: IntArray, clean: WaveArray) -> None:  # pragma: no cover - compiled
-    """Write the given rows without their lines; (all rows, samples), samples a multiple of 40."""
-    for r in rows:
+def _take_out(
+    waves: WaveArray,
+    clean: WaveArray,
+    count: IntArray,
+    centre: FloatArray,
+    turn: FloatArray,
+    even: FloatArray,
+    odd: FloatArray,
+) -> None:  # pragma: no cover - compiled
+    tones = Tones(count, centre, turn, even, odd)
+    for r in range(len(waves)):
         _leave(waves[r], 0, waves.shape[1], tones, r, clean[r])
 
 
@@ -93,11 +110,16 @@ def _begin(
     start: IntArray,
     stop: IntArray,
     rows: IntArray,
-    tones: Tones,
     moments: NDArray[np.complex128],
     rest: WaveArray,
+    count: IntArray,
+    centre: FloatArray,
+    turn: FloatArray,
+    even: FloatArray,
+    odd: FloatArray,
 ) -> None:  # pragma: no cover - compiled
     """Take out the level alone."""
+    tones = Tones(count, centre, turn, even, odd)
     for r in rows:
         moments[r, 0] = _transform(waves[r], start[r], stop[r], 0.0)
         tones.even[r, 0] = moments[r, 0].real / (stop[r] - start[r])
@@ -111,12 +133,17 @@ def _next_line(
     start: IntArray,
     stop: IntArray,
     rows: IntArray,
-    tones: Tones,
     moments: NDArray[np.complex128],
     gram: FloatArray,
     rest: WaveArray,
+    count: IntArray,
+    centre: FloatArray,
+    turns: FloatArray,
+    even: FloatArray,
+    odd: FloatArray,
 ) -> NDArray[np.bool_]:  # pragma: no cover - compiled
     """Add the strongest line of what is left, where one stands out, and fit all anew; returns which rows had one."""
+    tones = Tones(count, centre, turns, even, odd)
     found = np.zeros(rows.size, np.bool_)
     power = np.empty(_FFT // 4 + 1, np.float32)
     for place in range(rows.size):

@@ -10,7 +10,7 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from pdclass.features.carriers import fitted_tones, take_out
+from pdclass.features.carriers import fitted_tones, without_tones
 from pdclass.features.kernels import median, median_size, place_of_largest
 from pdclass.features.transforms import spectra, waves_of
 from pdclass.pulses import ONSET_SHARE, WINDOW_S, Chain, FloatArray, IntArray, WaveArray
@@ -129,7 +129,9 @@ def prepared(
     length = np.where(duration_us > 0, np.rint(duration_us * ANALYSIS_RATE_HZ / 1e6), SAMPLES)
     end = np.minimum(np.maximum(ONSET + length, ONSET + 8), last).astype(np.int64)
     rows = np.flatnonzero((known >= samples // _LEAST_KNOWN) & (end > ONSET + 4) & (first <= ONSET))
-    raw = _to_analysis_band(filled[rows], slope[rows])
+    if rows.size < len(filled):
+        filled, slope = filled[rows], slope[rows]
+    raw = _to_analysis_band(filled, slope)
     wave, start, stop, (level, noise_v) = _background(raw, first[rows])
     peak, height_v, before = _scaled(wave, raw, start, stop, end[rows], level)
     measurable = height_v != 0
@@ -197,9 +199,19 @@ def _to_analysis_band(filled: WaveArray, rise: FloatArray) -> WaveArray:
     spectrum = spectra(filled, samples)[:, : SAMPLES // 2 + 1]
     frequency_hz = np.arange(spectrum.shape[1]) / WINDOW_S
     gain = np.exp(-0.5 * np.log(2) * (frequency_hz / ANALYSIS_BAND_HZ[1]) ** 2) * (SAMPLES / samples)
-    raw = waves_of(spectrum * gain.astype(np.float32), SAMPLES)
-    raw += rise.astype(np.float32)[:, None] * (np.arange(SAMPLES, dtype=np.float32) / np.float32(SAMPLES))
+    spectrum *= gain.astype(np.float32)
+    raw = waves_of(spectrum, SAMPLES)
+    _put_back(raw, rise)
     return raw
+
+
+@numba.njit(cache=True, nogil=True)
+def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover - compiled
+    """Add to each wave a line from 0 that rises by so much over the window."""
+    for r in range(len(waves)):
+        step = np.float32(rise[r] / SAMPLES)
+        for i in range(SAMPLES):
+            waves[r, i] += step * np.float32(i)
 
 
 def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
@@ -209,15 +221,13 @@ def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, I
     longest stretch without one. The stretch is empty where that is too short to know anything from.
     """
     start, stop = np.minimum(first + GUARD, ONSET - GUARD), np.full(len(raw), ONSET - GUARD)
-    wave = np.empty_like(raw)
-    take_out(raw, fitted_tones(raw, start, stop), np.arange(len(raw)), wave)
+    wave = without_tones(raw, fitted_tones(raw, start, stop))
     level, begin, length = _quiet(wave, start, stop)
     busy = np.flatnonzero(length < stop - start)
     start, stop = start + begin, start + begin + length
     if busy.size:
         again = raw[busy]
-        left = np.empty_like(again)
-        take_out(again, fitted_tones(again, start[busy], stop[busy]), np.arange(busy.size), left)
+        left = without_tones(again, fitted_tones(again, start[busy], stop[busy]))
         wave[busy] = left
         beside = np.where(length > 0, start, first)[busy]
         level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy])[0]

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from pdclass.features.carriers import MOST_TONES, fitted_tones, take_out
+from pdclass.features.carriers import MOST_TONES, fitted_tones, without_tones
 
 PLACE = np.arange(2000)
 
@@ -15,11 +15,8 @@ def carried(*tones, noise=0.01, rows=1):
 
 
 def found(waves, start=20, stop=480):
-    rows = np.arange(len(waves))
-    tones = fitted_tones(waves, np.full(rows.size, start), np.full(rows.size, stop))
-    clean = np.empty_like(waves)
-    take_out(waves, tones, rows, clean)
-    return tones, clean
+    tones = fitted_tones(waves, np.full(len(waves), start), np.full(len(waves), stop))
+    return tones, without_tones(waves, tones)
 
 
 def test_lines_are_found_in_order_of_height_and_taken_out_of_the_whole_window():

@@ -11,6 +11,7 @@ LEVELS = 7
 #: Every pulse is padded to one length, so that the coarsest scale has room.
 _PADDED = 2048
 
+
 def measure_scales(window: Window) -> dict[str, float]:
     """The features of this family, by name; level 1 is left out, it lies above the analysis band."""
     own = np.zeros(_PADDED)

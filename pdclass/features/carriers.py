@@ -41,13 +41,13 @@ class Tones(NamedTuple):
 
     Attributes
     ----------
-    count : (rows,) lines found, 0 to `MOST_TONES`.
+    lines : (rows,) how many were found, 0 to `MOST_TONES`.
     centre : (rows,) the place that phases count from [samples].
     turn : (rows, MOST_TONES) frequencies [radians a sample].
     even, odd : (rows, 1 + MOST_TONES) weights of cosines and sines; the first even one is the level.
     """
 
-    count: IntArray
+    lines: IntArray
     centre: FloatArray
     turn: FloatArray
     even: FloatArray
@@ -65,7 +65,7 @@ def fitted_tones(waves: WaveArray, start: IntArray, stop: IntArray) -> Tones:
     rows, shape = len(waves), (len(waves), 1 + MOST_TONES)
     tones = Tones(
         np.zeros(rows, np.int64),
-        0.5 * (start + stop - 1),
+        np.asarray(0.5 * (start + stop - 1), np.float64),
         np.zeros((rows, MOST_TONES)),
         np.zeros(shape),
         np.zeros(shape),
@@ -93,13 +93,13 @@ def without_tones(waves: WaveArray, tones: Tones) -> WaveArray:
 def _take_out(
     waves: WaveArray,
     clean: WaveArray,
-    count: IntArray,
+    lines: IntArray,
     centre: FloatArray,
     turn: FloatArray,
     even: FloatArray,
     odd: FloatArray,
 ) -> None:  # pragma: no cover - compiled
-    tones = Tones(count, centre, turn, even, odd)
+    tones = Tones(lines, centre, turn, even, odd)
     for r in range(len(waves)):
         _leave(waves[r], 0, waves.shape[1], tones, r, clean[r])
 
@@ -112,14 +112,14 @@ def _begin(
     rows: IntArray,
     moments: NDArray[np.complex128],
     rest: WaveArray,
-    count: IntArray,
+    lines: IntArray,
     centre: FloatArray,
     turn: FloatArray,
     even: FloatArray,
     odd: FloatArray,
 ) -> None:  # pragma: no cover - compiled
     """Take out the level alone."""
-    tones = Tones(count, centre, turn, even, odd)
+    tones = Tones(lines, centre, turn, even, odd)
     for r in rows:
         moments[r, 0] = _transform(waves[r], start[r], stop[r], 0.0)
         tones.even[r, 0] = moments[r, 0].real / (stop[r] - start[r])
@@ -136,14 +136,14 @@ def _next_line(
     moments: NDArray[np.complex128],
     gram: FloatArray,
     rest: WaveArray,
-    count: IntArray,
+    lines: IntArray,
     centre: FloatArray,
     turns: FloatArray,
     even: FloatArray,
     odd: FloatArray,
 ) -> NDArray[np.bool_]:  # pragma: no cover - compiled
     """Add the strongest line of what is left, where one stands out, and fit all anew; returns which rows had one."""
-    tones = Tones(count, centre, turns, even, odd)
+    tones = Tones(lines, centre, turns, even, odd)
     found = np.zeros(rows.size, np.bool_)
     power = np.empty(_FFT // 4 + 1, np.float32)
     for place in range(rows.size):
@@ -152,11 +152,11 @@ def _next_line(
         turn = _strongest_line(spectrum[place], rest[r], length, power)
         if turn > 0:
             found[place] = True
-            tones.count[r] += 1
-            tones.turn[r, tones.count[r] - 1] = turn
+            tones.lines[r] += 1
+            tones.turn[r, tones.lines[r] - 1] = turn
             half_way = np.exp(0.5j * turn * (length - 1))
-            moments[r, tones.count[r]] = _transform(waves[r], start[r], stop[r], turn) * half_way
-            _fit(length, tones.turn[r, : tones.count[r]], moments[r], gram[r], tones.even[r], tones.odd[r])
+            moments[r, tones.lines[r]] = _transform(waves[r], start[r], stop[r], turn) * half_way
+            _fit(length, tones.turn[r, : tones.lines[r]], moments[r], gram[r], tones.even[r], tones.odd[r])
             _leave_tapered(waves[r], start[r], stop[r], tones, r, rest[r])
     return found
 
@@ -193,7 +193,7 @@ def _stands_out(power: WaveArray, line: float) -> bool:  # pragma: no cover - co
     limit, below = np.float32(line / _TONE_POWER), np.int32(0)
     for i in range(power.size):
         below += np.int32(power[i] <= limit)
-    return 2 * below > power.size
+    return bool(2 * below > power.size)
 
 
 @numba.njit(cache=True, nogil=True)
@@ -312,7 +312,7 @@ def _leave(
     size = (stop - start + _BLOCK - 1) // _BLOCK * _BLOCK
     cosine, sine = np.empty(_BLOCK, np.float32), np.empty(_BLOCK, np.float32)
     left[:size] = wave[start : start + size]
-    for t in range(tones.count[r]):
+    for t in range(tones.lines[r]):
         turn = tones.turn[r, t]
         _spread(turn, cosine, sine)
         phasor, step = np.exp(1j * turn * (start - tones.centre[r])), np.exp(1j * turn * _BLOCK)

@@ -91,7 +91,7 @@ def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compil
     for j in range(wave.size - whole):
         value = wave[whole + j] if abs(wave[whole + j]) > low else np.float32(0.0)
         lane[j] += value * value
-    return lane.sum()
+    return float(lane.sum())
 
 
 @numba.njit(cache=True, nogil=True)
@@ -118,7 +118,7 @@ def outer_crossings(
         if value > highest:
             top, highest = i, value
     highest = mean_at(wave, top, reach)
-    place, height = np.float64(top), highest
+    place, height = float(top), highest
     if 0 < top < wave.size - 1:
         left, right = mean_at(wave, top - 1, reach), mean_at(wave, top + 1, reach)
         bend = left - 2 * highest + right

@@ -7,6 +7,8 @@ from dataclasses import asdict, dataclass
 
 from pdclass.digest import json_digest
 
+#: Edition of the way windows are made ready, which every feature is measured on: raised as a feature's own.
+WINDOW_EDITION = 2
 _WORDS = frozenset({"meaning", "sentence", "more", "less", "reference"})
 
 
@@ -47,10 +49,12 @@ class Feature:
     def digest(self) -> str:
         """Sha256 of what defines the number: a bundle names it, so that no feature changes under its name.
 
-        Words may be mended without a new name; another definition gets one, another way of measuring an edition.
+        Words may be mended without a new name; another definition gets one, another way of measuring an edition
+        (of the feature, or of the windows if it changes those).
         """
         declared = {name: value for name, value in asdict(self).items() if name not in _WORDS}
         declared["valid_range"] = [_number(bound) for bound in self.valid_range]
+        declared["window_edition"] = WINDOW_EDITION
         return json_digest(declared)
 
 

@@ -8,8 +8,11 @@ from __future__ import annotations
 
 import numba
 import numpy as np
+from numpy.typing import NDArray
 
-from pdclass.pulses import FloatArray, IntArray, WaveArray
+from pdclass.pulses import FloatArray, WaveArray
+
+KeyArray = NDArray[np.int32]
 
 LANES = 16
 _LOWEST, _HIGHEST = np.int32(-(2**31)), np.int32(2**31 - 1)
@@ -35,7 +38,7 @@ def median_size(values: WaveArray) -> float:  # pragma: no cover - compiled
 
 
 @numba.njit(cache=True, nogil=True)
-def _middle(keys: IntArray) -> float:  # pragma: no cover - compiled
+def _middle(keys: KeyArray) -> float:  # pragma: no cover - compiled
     """The median of floats given as integers that sort like them."""
     rank = (keys.size - 1) // 2
     lower = _ranked(keys, rank)
@@ -48,7 +51,7 @@ def _middle(keys: IntArray) -> float:  # pragma: no cover - compiled
 
 
 @numba.njit(cache=True, nogil=True)
-def _ranked(keys: IntArray, rank: int) -> int:  # pragma: no cover - compiled
+def _ranked(keys: KeyArray, rank: int) -> np.int32:  # pragma: no cover - compiled
     """The key with so many smaller ones, by halving the range: each count fills a vector, nothing is moved."""
     low, high = np.int64(_LOWEST), np.int64(_HIGHEST)
     while low < high:
@@ -61,7 +64,7 @@ def _ranked(keys: IntArray, rank: int) -> int:  # pragma: no cover - compiled
 
 
 @numba.njit(cache=True, nogil=True)
-def _count_up_to(keys: IntArray, limit: int) -> int:  # pragma: no cover - compiled
+def _count_up_to(keys: KeyArray, limit: np.int32) -> np.int32:  # pragma: no cover - compiled
     count = np.int32(0)
     for i in range(keys.size):
         count += np.int32(keys[i] <= limit)
@@ -69,7 +72,7 @@ def _count_up_to(keys: IntArray, limit: int) -> int:  # pragma: no cover - compi
 
 
 @numba.njit(cache=True, nogil=True)
-def _value(key: int) -> float:  # pragma: no cover - compiled
+def _value(key: np.int32) -> float:  # pragma: no cover - compiled
     """The float behind a key that sorts like it."""
     bits = np.empty(1, np.int32)
     bits[0] = key ^ ((key >> 31) & _ALL_BUT_SIGN)
@@ -87,7 +90,7 @@ def sum_of_squares(values: WaveArray) -> float:  # pragma: no cover - compiled
     for j in range(values.size - whole):
         value = np.float64(values[whole + j])
         lane[j] += value * value
-    return lane.sum()
+    return float(lane.sum())
 
 
 @numba.njit(cache=True, nogil=True)
@@ -103,7 +106,7 @@ def lowest(values: WaveArray) -> float:  # pragma: no cover - compiled
 
 
 @numba.njit(cache=True, nogil=True)
-def weighed(values: FloatArray, weights: FloatArray) -> float:  # pragma: no cover - compiled
+def weighed(values: FloatArray | WaveArray, weights: FloatArray) -> float:  # pragma: no cover - compiled
     """Sum of the products of values and weights, both (n,)."""
     lane, whole = np.zeros(LANES), values.size // LANES * LANES
     for first in range(0, whole, LANES):
@@ -111,11 +114,11 @@ def weighed(values: FloatArray, weights: FloatArray) -> float:  # pragma: no cov
             lane[j] += np.float64(values[first + j]) * weights[first + j]
     for j in range(values.size - whole):
         lane[j] += np.float64(values[whole + j]) * weights[whole + j]
-    return lane.sum()
+    return float(lane.sum())
 
 
 @numba.njit(cache=True, nogil=True)
-def sum_between(values: FloatArray, first: int, last: int) -> float:  # pragma: no cover - compiled
+def sum_between(values: FloatArray | WaveArray, first: int, last: int) -> float:  # pragma: no cover - compiled
     """Sum of `values[first:last]`."""
     lane = np.zeros(LANES)
     k = first
@@ -125,7 +128,7 @@ def sum_between(values: FloatArray, first: int, last: int) -> float:  # pragma: 
         k += LANES
     for j in range(last - k):
         lane[j] += np.float64(values[k + j])
-    return lane.sum()
+    return float(lane.sum())
 
 
 @numba.njit(cache=True, nogil=True)

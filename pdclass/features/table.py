@@ -11,7 +11,7 @@ from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
 from pdclass.features.edges import PLACES, measured_places
 from pdclass.features.feature import Feature
-from pdclass.features.window import ONSET, STEP_NS, Windows, chain_reach_hz, prepared
+from pdclass.features.window import ONSET, STEP_NS, Windows, chain_band_hz, prepared
 from pdclass.pulses import FloatArray, PulseSet
 
 #: So many windows stay in the fast cache of a processor; no result depends on it.
@@ -59,11 +59,11 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
     features = [feature for part, _ in families for feature in part]
     columns = [[feature.name for feature in features].index(name) for name in wanted]
     chain, duration_us = pulses.table["chain"].to_numpy(np.int64), pulses.table["duration_us"].to_numpy(np.float64)
-    reach_hz = np.array([chain_reach_hz(chain) for chain in pulses.chains])[chain]
+    low_hz, reach_hz = chain_band_hz(pulses.chains)[:, chain]
     found = Measured(np.full((len(chain), len(wanted)), np.nan), np.full(len(chain), np.nan), reach_hz)
     for first in range(0, len(chain), BATCH):
         batch = slice(first, first + BATCH)
-        windows, rows = prepared(pulses.waves[batch], pulses.chains, chain[batch], duration_us[batch])
+        windows, rows = prepared(pulses.waves[batch], duration_us[batch], reach_hz[batch], low_hz[batch])
         if rows.size:
             values = np.concatenate([measure(windows) for _, measure in families], axis=1)
             found.values[first + rows] = _allowed(values, windows, features)[:, columns]
@@ -88,7 +88,8 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     """
     row = pulses.table.iloc[[place]]
     chain, duration_us = row["chain"].to_numpy(np.int64), row["duration_us"].to_numpy(np.float64)
-    windows, rows = prepared(pulses.waves[[place]], pulses.chains, chain, duration_us)
+    low_hz, reach_hz = chain_band_hz(pulses.chains)[:, chain]
+    windows, rows = prepared(pulses.waves[[place]], duration_us, reach_hz, low_hz)
     if not rows.size:
         return {}
     kept, scale = int(windows.last[0]), float(windows.height_v[0])

@@ -95,33 +95,32 @@ class Windows:
     @cached_property
     def own_power(self) -> WaveArray:
         """Power of the own samples, (pulses, SPECTRUM_FFT // 2 + 1); `BAND` are the bins of the analysis band."""
-        return np.asarray(self.own_spectrum.real**2 + self.own_spectrum.imag**2)
+        return _power(self.own_spectrum.view(np.float32))
 
     def take(self, places: NDArray[np.intp] | NDArray[np.bool_]) -> Windows:
         """Some of the pulses."""
         return Windows(*(getattr(self, field.name)[places] for field in fields(self)))
 
 
-def chain_reach_hz(chain: Chain) -> float:
-    """Highest frequency that a chain carries: its upper corner, and at most 0.4 of the rate (anti-alias) [Hz]."""
-    corner = chain.band_hz[1] if chain.band_hz else np.inf
-    return float(min(corner, 0.4 * chain.rate_hz))
+def chain_band_hz(chains: Sequence[Chain]) -> FloatArray:
+    """Lowest and highest frequency that chains carry [Hz], (2, chains); NaN = an unknown lower corner.
 
-
-def _low_hz(chain: Chain) -> float:
-    return float(chain.band_hz[0]) if chain.band_hz else float("nan")
+    The highest is the upper corner, and at most 0.4 of the rate (anti-alias).
+    """
+    bands = [chain.band_hz or (np.nan, np.inf) for chain in chains]
+    return np.array([(low, min(high, 0.4 * chain.rate_hz)) for (low, high), chain in zip(bands, chains, strict=True)]).T
 
 
 def prepared(
-    waves_v: WaveArray, chains: Sequence[Chain], chain: IntArray, duration_us: FloatArray
+    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray
 ) -> tuple[Windows, IntArray]:
     """Make stored windows ready for measuring, and say which: those with nothing to measure are left out.
 
     Parameters
     ----------
     waves_v : (pulses, samples) 20 us windows with the onset a quarter in [V]; NaN = not recorded.
-    chains : the chains that `chain`, (pulses,), counts into.
     duration_us : (pulses,) length of the own samples [us]; NaN or not positive = to the end of the window.
+    reach_hz, low_hz : (pulses,) what their chains carry, as of `chain_band_hz`.
     """
     samples = waves_v.shape[1]
     filled, known, first, last, slope = _filled(np.ascontiguousarray(waves_v, np.float32))
@@ -138,9 +137,8 @@ def prepared(
     noise = noise_v / np.where(measurable, np.abs(height_v), np.nan)
     share = np.where(np.isfinite(noise), (end[rows] - ONSET + GUARD) / np.maximum(stop - start, 1), np.nan)
     noise_power = _smoothed_power(spectra(before, SPECTRUM_FFT).view(np.float32), share)
-    reach_hz = np.array([chain_reach_hz(chains[place]) for place in chain[rows]])
-    low_hz = np.array([_low_hz(chains[place]) for place in chain[rows]])
-    windows = Windows(wave, raw, end[rows], last[rows], peak, height_v, noise, noise_power, reach_hz, low_hz)
+    places = end[rows], last[rows], peak
+    windows = Windows(wave, raw, *places, height_v, noise, noise_power, reach_hz[rows], low_hz[rows])
     return (windows, rows) if measurable.all() else (windows.take(measurable), rows[measurable])
 
 
@@ -257,7 +255,7 @@ def _quiet(
             loud += np.int32(abs(deviation[i]) > limit)
         length[r] = before.size
         if loud:
-            begin[r], length[r] = _widest_gap(deviation, limit)
+            begin[r], length[r] = _widest_gap(deviation, float(limit))
         if length[r] < _SHORTEST_QUIET:
             begin[r], length[r] = 0, 0
     return level, begin, length
@@ -323,6 +321,17 @@ def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pra
         for k in range(bins):
             smooth[r, k] = (total[k] + power[k + 2 * half]) * scale
     return smooth
+
+
+@numba.njit(cache=True, nogil=True)
+def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
+    """Power of spectra given as pairs of floats."""
+    power = np.empty((len(spectrum), spectrum.shape[1] // 2), np.float32)
+    for r in range(len(spectrum)):
+        for k in range(power.shape[1]):
+            real, imag = spectrum[r, 2 * k], spectrum[r, 2 * k + 1]
+            power[r, k] = real * real + imag * imag
+    return power
 
 
 @numba.njit(cache=True, nogil=True)

@@ -15,6 +15,13 @@ def test_another_edition_is_another_digest():
     assert dataclasses.replace(WIDTH, edition=WIDTH.edition + 1).digest != WIDTH.digest
 
 
+def test_another_way_of_preparing_windows_is_another_digest_of_every_feature(monkeypatch):
+    """What all features are measured on has an edition of its own."""
+    before = {name: feature.digest for name, feature in BY_NAME.items()}
+    monkeypatch.setattr("pdclass.features.feature.WINDOW_EDITION", 99)
+    assert all(feature.digest != before[name] for name, feature in BY_NAME.items())
+
+
 @pytest.mark.parametrize(
     ("feature", "snr_db", "reach_hz", "words"),
     [

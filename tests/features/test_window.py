@@ -6,7 +6,7 @@ from closed_form import double_exponential
 from one_pulse import single
 from plain_features.window import prepared as plainly
 
-from pdclass.features.window import ONSET, SAMPLES, Windows, prepared
+from pdclass.features.window import ONSET, SAMPLES, Windows, chain_band_hz, prepared
 from pdclass.pulses import PulseSet
 
 FIELDS = ("wave", "raw", "noise_power", "noise", "height_v", "end", "last", "peak")
@@ -37,8 +37,8 @@ def some(rate_hz, count=20):
 
 
 def windows_of(pulses):
-    chain = np.zeros(len(pulses.table), np.int64)
-    return prepared(pulses.waves, pulses.chains, chain, pulses.table["duration_us"].to_numpy(np.float64))
+    low_hz, reach_hz = chain_band_hz(pulses.chains * len(pulses.table))
+    return prepared(pulses.waves, pulses.table["duration_us"].to_numpy(np.float64), reach_hz, low_hz)
 
 
 @pytest.mark.parametrize("rate_hz", [40e6, 62.5e6, 100e6, 250e6])

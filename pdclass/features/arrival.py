@@ -57,7 +57,7 @@ def _delays(
     fade: int,
     edges: tuple[float, ...],
 ) -> FloatArray:
-    """Delays by band of arrivals of one length [ns], (pulses, bands); `floors` are sums over the bands of `EDGES_MHZ`."""
+    """Delays by band of arrivals of one length [ns], (pulses, bands); `floors` sum over each band of `EDGES_MHZ`."""
     found = np.full((len(pieces), len(edges) - 1), np.nan)
     usable = np.flatnonzero(known & (last >= ONSET + _samples(length_us)))
     joined = np.add.reduceat(floors, [EDGES_MHZ.index(edge) for edge in edges[:-1]], axis=1)
@@ -219,6 +219,7 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
         "group delay by the transform of t x(t) (A. V. Oppenheim, R. W. Schafer, 1989, from memory)",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
+        edition=2,
     )
 
 

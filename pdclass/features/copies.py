@@ -15,6 +15,7 @@ import numpy as np
 from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import largest, median_size, weighed
+from pdclass.features.lines import cut_lines, weigh
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, SAMPLES, SPECTRUM_FFT, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
@@ -54,12 +55,14 @@ def echogram(windows: Windows) -> WaveArray:
     """Each window deconvolved by its pulse's beginning, (pulses, delays) by delay [samples]; 1 at delay 0.
 
     Wiener deconvolution with the noise beside the pulse, smoothed by a Gaussian of 6 MHz: a copy shows as a peak
-    with its sign, whatever the shape of the pulse. Delays after the window's end are to be left alone.
+    with its sign, whatever the shape of the pulse. Carriers that were not taken out would hide every copy: they are
+    cut down first. Delays after the window's end are to be left alone.
     """
     whole, beginning = _pieces(windows.wave, windows.last, _WHOLE_FADE, _BEGINNING_FADE)
-    whole_spectrum = spectra(whole, SPECTRUM_FFT)
+    whole_spectrum, pulse_spectrum = spectra(whole, SPECTRUM_FFT), spectra(beginning, SPECTRUM_FFT)
+    cut_lines(whole_spectrum, pulse_spectrum)
     scale = (windows.last - ONSET) / (windows.end - ONSET + GUARD)
-    _deconvolve(whole_spectrum, spectra(beginning, SPECTRUM_FFT), windows.noise_power, scale, _LOW_PASS)
+    _deconvolve(whole_spectrum, pulse_spectrum, windows.noise_power, scale, _LOW_PASS)
     return _scaled(waves_of(whole_spectrum, SPECTRUM_FFT))
 
 
@@ -91,9 +94,11 @@ def _deconvolve(
         for k in range(power.size):
             power[k] = beginning[row, k].real ** 2 + beginning[row, k].imag ** 2
         least, share = np.float32(_REGULAR) * power[largest(power)], np.float32(scale[row])
+        window, pulse, noise = whole[row], beginning[row], noise_power[row]
         for k in range(power.size):
-            weight = low_pass[k] / (power[k] + noise_power[row, k] * share + least)
-            whole[row, k] *= np.conj(beginning[row, k]) * weight
+            power[k] = low_pass[k] / (power[k] + noise[k] * share + least)
+            window[k] *= np.conj(pulse[k])
+        weigh(window, power)
 
 
 @_njit
@@ -190,7 +195,7 @@ def _later_into(kept: WaveArray, taper: FloatArray, later: FloatArray) -> None: 
 @_njit
 def _likeness(later: FloatArray, pulse: FloatArray) -> float:  # pragma: no cover - compiled
     energies = weighed(later, later) * weighed(pulse, pulse)
-    return weighed(later, pulse) / np.sqrt(energies + 1e-12)
+    return float(weighed(later, pulse) / np.sqrt(energies + 1e-12))
 
 
 @_njit
@@ -284,6 +289,7 @@ def _feature(
         tolerance,
         "Wiener deconvolution (N. Wiener, 1949, from memory)",
         needs_snr_db=12.0,
+        edition=2,
     )
 
 

@@ -7,6 +7,7 @@ import numpy as np
 
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import largest, median_size, sum_of_squares
+from pdclass.features.lines import cut_lines
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
 from pdclass.features.window import GUARD, ONSET, SAMPLES, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
@@ -17,6 +18,8 @@ _LONGEST = 300
 #: A copy counts from here on, and above so many noise levels of all delays: what carriers leave behind is no copy.
 _SMALLEST_RATIO = 0.03
 _STANDS_OUT = 7.0
+#: The noise level is that of every so many-th delay: neighbours tell nearly the same.
+_COMB = 4
 #: Only delays at which the whole beginning lies within the window count: none of them wraps round in so few samples.
 _FFT = 1536
 #: A copy begins after so much of the beginning's energy.
@@ -27,11 +30,13 @@ def measure_echoes(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features): NaN where no later copy stands out of the noise.
 
     The first three microseconds of the pulse are slid over what follows its peak; the best fit in least squares
-    gives delay and ratio (negative = turned over).
+    gives delay and ratio (negative = turned over). Carriers that were not taken out are cut down first.
     """
     found = np.full((len(windows), len(ECHOES)), np.nan)
     beginning, following, size = _pieces(windows.wave, windows.end, windows.last)
-    product = _multiplied(spectra(beginning, _FFT), spectra(following, _FFT))
+    pulse, whole = spectra(beginning, _FFT), spectra(following, _FFT)
+    cut_lines(whole, pulse)
+    product = _matched(pulse, whole)
     _echoes_into(found, waves_of(product, _FFT), beginning, size, windows.last, windows.noise)
     return found
 
@@ -53,11 +58,12 @@ def _pieces(
 
 
 @_njit
-def _multiplied(beginning: SpectrumArray, following: SpectrumArray) -> SpectrumArray:  # pragma: no cover - compiled
-    """The spectrum of the match, in the place of the second one."""
+def _matched(beginning: SpectrumArray, following: SpectrumArray) -> SpectrumArray:  # pragma: no cover - compiled
+    """The spectrum of the match, in the place of what follows."""
     for row in range(len(following)):
-        for k in range(following.shape[1]):
-            following[row, k] *= np.conj(beginning[row, k])
+        pulse, whole = beginning[row], following[row]
+        for k in range(whole.size):
+            whole[k] *= np.conj(pulse[k])
     return following
 
 
@@ -73,7 +79,7 @@ def _echoes_into(
             continue
         match = matches[row, first:usable]
         place = largest(match)
-        ratio, level = match[place] / energy, median_size(match) / 0.6744898 / energy
+        ratio, level = match[place] / energy, median_size(match[::_COMB].copy()) / 0.6744898 / energy
         if abs(ratio) >= max(_SMALLEST_RATIO, _STANDS_OUT * level):
             found[row, 0], found[row, 1] = (first + place) * STEP_NS / 1e3, ratio
 
@@ -101,6 +107,7 @@ ECHOES = (
         0.03,
         "own definition",
         needs_snr_db=12.0,
+        edition=2,
     ),
     Feature(
         "echo_ratio",
@@ -113,5 +120,6 @@ ECHOES = (
         0.02,
         "own definition",
         needs_snr_db=12.0,
+        edition=2,
     ),
 )

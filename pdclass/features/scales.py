@@ -82,6 +82,7 @@ SCALES = (
         0.07,
         _REFERENCE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "scale_centre",
@@ -94,5 +95,6 @@ SCALES = (
         0.25,
         _REFERENCE,
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

@@ -58,9 +58,9 @@ def rolloff(mhz: FloatArray, power: FloatArray, share: float) -> float:  # pragm
     below = 0.0
     for k in range(power.size):
         if below + power[k] >= wanted:
-            return mhz[k] - (1 - (wanted - below) / power[k]) * (mhz[1] - mhz[0])
+            return float(mhz[k] - (1 - (wanted - below) / power[k]) * (mhz[1] - mhz[0]))
         below += power[k]
-    return mhz[-1]
+    return float(mhz[-1])
 
 
 @_njit

@@ -11,10 +11,12 @@ from pdclass.features.copies import COPIES, measure_copies
 from pdclass.features.echoes import ECHOES, measure_echoes
 from pdclass.features.edges import EDGES, measure_edges
 from pdclass.features.feature import Feature
+from pdclass.features.modes import MODES, measure_modes
 from pdclass.features.ringing import RINGING, measure_ringing
 from pdclass.features.scales import SCALES, measure_scales
 from pdclass.features.spectrum import SPECTRUM, measure_spectrum
 from pdclass.features.spread import SPREAD, measure_spread
+from pdclass.features.tilt import TILT, measure_tilt
 from pdclass.features.window import Window, Windows
 from pdclass.pulses import FloatArray
 
@@ -41,9 +43,22 @@ FAMILIES: Mapping[str, tuple[tuple[Feature, ...], Measure]] = {
     "spread": (SPREAD, by_row(SPREAD, measure_spread)),
     "arrival": (ARRIVAL, by_row(ARRIVAL, measure_arrival)),
     "copies": (COPIES, by_row(COPIES, measure_copies)),
+    "tilt": (TILT, measure_tilt),
+    "modes": (MODES, measure_modes),
 }
 
-CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD, *ARRIVAL, *COPIES)
+CATALOGUE: tuple[Feature, ...] = (
+    *EDGES,
+    *SPECTRUM,
+    *SCALES,
+    *RINGING,
+    *ECHOES,
+    *SPREAD,
+    *ARRIVAL,
+    *COPIES,
+    *TILT,
+    *MODES,
+)
 
 BY_NAME: Mapping[str, Feature] = {feature.name: feature for feature in CATALOGUE}
 

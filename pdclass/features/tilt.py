@@ -31,9 +31,11 @@ _BINS = 65
 _STEP_MHZ = ANALYSIS_RATE_HZ / _GRID / 1e6
 #: A band stands so many times over the noise and a bin of a fit so many times, and has this share of the strongest.
 _CLEAR_BAND, _CLEAR_BIN, _SHARE = 2.0, 6.0, 1e-4
-#: Tilts are fitted from here, delays from the second, up to here and to this share of the chain's reach, over so many
-#: bins at the least; further down the end of the first arrival bends them.
-_LEVEL_FROM_MHZ, _DELAY_FROM_MHZ, _FIT_TO_MHZ, _FIT_REACH, _FIT_BINS = 0.7, 2.5, 18.0, 0.8, 10
+#: Tilts are fitted from here, delays from the second, for further down the end of the first arrival bends them; up to
+#: here whatever the chain, for with another range they are other numbers; over so many bins at the least.
+_LEVEL_FROM_MHZ, _DELAY_FROM_MHZ, _FIT_TO_MHZ, _FIT_BINS = 0.7, 2.5, 10.0, 8
+#: A chain that does not go so far would bend them.
+_FIT_REACH_HZ = 12.5e6
 #: Delays are fitted to bins that stand so many times over the noise, if these go up at least so far [MHz].
 _CLEAR_DELAY, _DELAY_REACH_MHZ = 30.0, 6.0
 #: What a fit may miss, as a weighted rms, else level and delay do not run like that: a pulse that rings has a hill
@@ -62,7 +64,7 @@ def measure_tilt(windows: Windows) -> FloatArray:
         windows.end,
         windows.noise,
         windows.noise_power,
-        np.stack([windows.low_hz, windows.reach_hz], axis=1),
+        windows.low_hz,
         np.stack([np.cos(angle), np.sin(angle)]),
         starts,
     )
@@ -157,10 +159,10 @@ def _levels_into(
 
 @_njit
 def _fits_into(
-    found: FloatArray, power: FloatArray, noise: FloatArray, lag: FloatArray, low_hz: float, reach_hz: float
+    found: FloatArray, power: FloatArray, noise: FloatArray, lag: FloatArray, low_hz: float
 ) -> None:  # pragma: no cover - compiled
     """Write both tilts [dB] and the dispersion [ns] over the bins that stand out; what the corners do is undone."""
-    to_mhz, most = min(_FIT_TO_MHZ, _FIT_REACH * reach_hz / 1e6), power.max()
+    most = power.max()
     kept = np.empty((5, power.size))
     mhz, level, delay, weight, trust = kept
     used, top = 0, 0.0
@@ -168,7 +170,7 @@ def _fits_into(
     for k in range(1, power.size):
         f = k * _STEP_MHZ
         signal = power[k] - noise[k]
-        if f < _LEVEL_FROM_MHZ or f > to_mhz or power[k] <= _CLEAR_BIN * noise[k] or power[k] <= _SHARE * most:
+        if f < _LEVEL_FROM_MHZ or f > _FIT_TO_MHZ or power[k] <= _CLEAR_BIN * noise[k] or power[k] <= _SHARE * most:
             continue
         hidden = noise[k] / signal
         mhz[used] = f
@@ -216,7 +218,7 @@ def _tilts_into(
     end: IntArray,
     noise: FloatArray,
     noise_power: Samples,
-    corners_hz: FloatArray,
+    corner_hz: FloatArray,
     turns: FloatArray,
     starts: IntArray,
 ) -> None:  # pragma: no cover - compiled
@@ -226,7 +228,7 @@ def _tilts_into(
     for row in range(len(waves)):
         if not noise[row] > 0 or last[row] < ONSET + _LENGTH:
             continue
-        low_hz = corners_hz[row, 0]
+        low_hz = corner_hz[row]
         _begin(waves[row], low_hz, piece)
         energy = _fade_out(piece, min(end[row] - ONSET, _LENGTH))
         _power_and_lag(piece, turns, power, lag)
@@ -236,7 +238,7 @@ def _tilts_into(
             if low_hz > 0:
                 floor[k] *= (square + low_hz**2) / (square + COMMON_LOW_HZ**2)
         _levels_into(found[row, :bands], power, floor, starts)
-        _fits_into(found[row, bands:], power, floor, lag, low_hz, corners_hz[row, 1])
+        _fits_into(found[row, bands:], power, floor, lag, low_hz)
 
 
 def _level(low: float, high: float) -> Feature:
@@ -267,7 +269,7 @@ TILT = (
         (-500.0, 500.0),
         3.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
-        needs_hz=6e6,
+        needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
     Feature(
@@ -280,7 +282,7 @@ TILT = (
         (-200.0, 200.0),
         0.6,
         "own definition",
-        needs_hz=6e6,
+        needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
     Feature(
@@ -293,7 +295,7 @@ TILT = (
         (-300.0, 300.0),
         8.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
-        needs_hz=6e6,
+        needs_hz=_FIT_REACH_HZ,
         needs_snr_db=12.0,
     ),
 )

@@ -9,7 +9,6 @@ from __future__ import annotations
 import numpy as np
 from plain_features.arrival import measure_arrival
 from plain_features.copies import measure_copies
-from plain_features.echoes import measure_echoes
 from plain_features.edges import measure_edges
 from plain_features.ringing import measure_ringing
 from plain_features.scales import measure_scales
@@ -25,7 +24,6 @@ MEASURES = (
     measure_spectrum,
     measure_scales,
     measure_ringing,
-    measure_echoes,
     measure_spread,
     measure_arrival,
     measure_copies,
@@ -52,6 +50,7 @@ def plain_values(window: Window) -> FloatArray:
     for place, feature in enumerate(CATALOGUE):
         low, high = feature.valid_range
         clear = feature.needs_snr_db == 0 or window.snr_db >= feature.needs_snr_db
-        if window.reach_hz >= feature.needs_hz and clear and low <= found[feature.name] <= high:
-            values[place] = found[feature.name]
+        value = found.get(feature.name, np.nan)
+        if window.reach_hz >= feature.needs_hz and clear and low <= value <= high:
+            values[place] = value
     return values

@@ -75,15 +75,18 @@ def strongest_copies(gram: FloatArray) -> tuple[Copy | None, Copy | None]:
 
 def measure_copies(window: Window) -> dict[str, float]:
     """The features of this family, by name: NaN where no copy stands out, or the noise is unknown."""
-    measured = ("delay_us", "ratio", "likeness", "width_ns", "flank", *(_level_name(*band) for band in _BANDS))
-    found = {f"copy_{number}_{name}": np.nan for number in (1, 2) for name in measured} | {"copy_delay_ratio": np.nan}
+    shape = ("likeness", "width_ns", "flank", *(_level_name(*band) for band in _BANDS))
+    places = [f"copy_{number}_{name}" for number in (1, 2) for name in ("delay_us", "ratio")]
+    found = dict.fromkeys([*places, *(f"copy_1_{name}" for name in shape), "copy_delay_ratio"], np.nan)
     if not window.noise > 0 or window.last - ONSET < _BEGINNING + _WINDOW_FADE:
         return found
     gram = echogram(window)
     first, second = strongest_copies(gram)
     for number, copy in enumerate((first, second), start=1):
         if copy is not None:
-            found |= {f"copy_{number}_{name}": value for name, value in _measured(window, gram, copy).items()}
+            found |= {f"copy_{number}_delay_us": copy.delay * STEP_NS / 1e3, f"copy_{number}_ratio": copy.ratio}
+    if first is not None:
+        found |= {f"copy_1_{name}": value for name, value in _shape_of(window, gram, first).items()}
     if first is not None and second is not None:
         early, late = sorted((first.delay, second.delay))
         found["copy_delay_ratio"] = late / early
@@ -98,7 +101,7 @@ def _stands_out(copy: Copy) -> bool:
     return copy.clear >= _STANDS_OUT and abs(copy.ratio) >= _SMALLEST
 
 
-def _measured(window: Window, gram: FloatArray, copy: Copy) -> dict[str, float]:
+def _shape_of(window: Window, gram: FloatArray, copy: Copy) -> dict[str, float]:
     peak = np.sign(copy.ratio) * gram[max(copy.delay - _FLANK, 0) : copy.delay + _FLANK + 1]
     place = min(copy.delay, _FLANK)
     left, right = (_reach(side, abs(copy.ratio) / 2) for side in (peak[place::-1], peak[place:]))
@@ -109,8 +112,6 @@ def _measured(window: Window, gram: FloatArray, copy: Copy) -> dict[str, float]:
     later, pulse = later * _taper(), window.wave[ONSET - GUARD : ONSET - GUARD + _COMPARED] * _taper()
     alike = float(np.sum(later * pulse) / np.sqrt(np.sum(later**2) * np.sum(pulse**2) + 1e-12))
     found = {
-        "delay_us": copy.delay * STEP_NS / 1e3,
-        "ratio": copy.ratio,
         "likeness": alike,
         "width_ns": (left + right + 1) * STEP_NS,
         "flank": float(peak.min() / abs(copy.ratio)),

@@ -84,16 +84,14 @@ def measure_edges(window: Window) -> dict[str, float]:
     at = measured_places(window)
     rise = (at["rise_90"] - at["rise_10"]) * STEP_NS
     fall = (at["fall_10"] - at["fall_90"]) * STEP_NS
-    width_50, width_25, width_10 = (
-        (at[last] - at[first]) * STEP_NS
-        for first, last in (("rise_50", "fall_50"), ("rise_25", "fall_25"), ("foot_10", "fall_10"))
+    width_50, width_10 = (
+        (at[last] - at[first]) * STEP_NS for first, last in (("rise_50", "fall_50"), ("foot_10", "fall_10"))
     )
     return {
         "rise_ns": rise,
         "rise_raw_ns": (at["raw_90"] - at["raw_10"]) * STEP_NS,
         "fall_ns": fall,
         "width_50_ns": width_50,
-        "width_25_ns": width_25,
         "width_10_ns": width_10,
         "width_ratio": width_10 / width_50,
         "asymmetry": fall / rise if rise > 0 else np.nan,

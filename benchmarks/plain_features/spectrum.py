@@ -8,10 +8,6 @@ from plain_features.window import Window
 from pdclass.pulses import FloatArray
 
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
-#: Bins below this share of the largest say nothing about a slope.
-_SLOPE_FLOOR = 1e-4
-#: A bin stands clear of the noise with so many times its power.
-_CLEAR = 10.0
 
 
 def centroid_and_spread_hz(frequency_hz: FloatArray, power: FloatArray) -> tuple[float, float]:
@@ -38,41 +34,19 @@ def rolloff_hz(frequency_hz: FloatArray, power: FloatArray, share: float) -> flo
     return float(frequency_hz[k] - (1 - part) * (frequency_hz[1] - frequency_hz[0]))
 
 
-def slope_db(frequency_hz: FloatArray, power: FloatArray, *, root: bool, top_hz: float) -> float:
-    """Slope of the level from 1 MHz to `top_hz`: against sqrt(f) [dB/sqrt(MHz)] or against f [dB/MHz].
-
-    Skin-effect loss grows as sqrt(f), the loss of dielectric and semiconducting screens rather as f: each
-    kilometre of cable tilts the spectrum of what passes.
-    """
-    if not power.size:
-        return float("nan")
-    used = (frequency_hz >= 1e6) & (frequency_hz <= top_hz) & (power > _SLOPE_FLOOR * power.max())
-    if np.count_nonzero(used) < 16:
-        return float("nan")
-    mhz = frequency_hz[used] / 1e6
-    axis = np.sqrt(mhz) if root else mhz
-    level = 10 * np.log10(power[used])
-    axis = axis - axis.mean()
-    return float(np.sum(axis * (level - level.mean())) / np.sum(axis**2))
-
-
 def measure_spectrum(window: Window) -> dict[str, float]:
     """The features of this family, by name.
 
-    Sums run over power less noise with its sign, so that what is left of the noise cancels; slopes
-    use the bins that stand clear of it.
+    Sums run over power less noise with its sign, so that what is left of the noise cancels.
     """
     frequency_hz, power, noise = window.power()
-    signal, clear = power - noise, power > _CLEAR * noise
+    signal = power - noise
     centre, spread = centroid_and_spread_hz(frequency_hz, signal)
-    top_hz = min(15e6, 0.9 * window.reach_hz)
     found = {
         "centroid_mhz": centre / 1e6,
         "spectral_spread_mhz": spread / 1e6,
         "rolloff_85_mhz": rolloff_hz(frequency_hz, signal, 0.85) / 1e6,
         "rolloff_95_mhz": rolloff_hz(frequency_hz, signal, 0.95) / 1e6,
-        "slope_root_db": slope_db(frequency_hz[clear], signal[clear], root=True, top_hz=top_hz),
-        "slope_linear_db": slope_db(frequency_hz[clear], signal[clear], root=False, top_hz=top_hz),
     }
     total = signal.sum()
     for low, high in BANDS_MHZ:

@@ -6,13 +6,14 @@ from collections.abc import Callable, Mapping
 
 from pdclass.features.arrival import ARRIVAL, measure_arrival
 from pdclass.features.copies import COPIES, measure_copies
-from pdclass.features.echoes import ECHOES, measure_echoes
 from pdclass.features.edges import EDGES, measure_edges
 from pdclass.features.feature import Feature
+from pdclass.features.modes import MODES, measure_modes
 from pdclass.features.ringing import RINGING, measure_ringing
 from pdclass.features.scales import SCALES, measure_scales
 from pdclass.features.spectrum import SPECTRUM, measure_spectrum
 from pdclass.features.spread import SPREAD, measure_spread
+from pdclass.features.tilt import TILT, measure_tilt
 from pdclass.features.window import Windows
 from pdclass.pulses import FloatArray
 
@@ -24,13 +25,24 @@ FAMILIES: Mapping[str, tuple[tuple[Feature, ...], Measure]] = {
     "spectrum": (SPECTRUM, measure_spectrum),
     "scales": (SCALES, measure_scales),
     "ringing": (RINGING, measure_ringing),
-    "echoes": (ECHOES, measure_echoes),
     "spread": (SPREAD, measure_spread),
     "arrival": (ARRIVAL, measure_arrival),
     "copies": (COPIES, measure_copies),
+    "tilt": (TILT, measure_tilt),
+    "modes": (MODES, measure_modes),
 }
 
-CATALOGUE: tuple[Feature, ...] = (*EDGES, *SPECTRUM, *SCALES, *RINGING, *ECHOES, *SPREAD, *ARRIVAL, *COPIES)
+CATALOGUE: tuple[Feature, ...] = (
+    *EDGES,
+    *SPECTRUM,
+    *SCALES,
+    *RINGING,
+    *SPREAD,
+    *ARRIVAL,
+    *COPIES,
+    *TILT,
+    *MODES,
+)
 
 BY_NAME: Mapping[str, Feature] = {feature.name: feature for feature in CATALOGUE}
 

@@ -150,14 +150,17 @@ def _copies_into(
             if delay < 0:
                 continue
             values = found[row, place * _EACH : (place + 1) * _EACH]
+            values[0], values[1] = delay * STEP_NS / 1e3, gram[delay]
+            if place > 0:
+                break
             start = ONSET - GUARD + delay
             _later_into(waves[row, start : min(start + _COMPARED, last[row])], taper, later)
             _strengths_into(later, weights, strengths)
-            values[0], values[1], values[2] = delay * STEP_NS / 1e3, gram[delay], _likeness(later, pulse)
+            values[2] = _likeness(later, pulse)
             values[3], values[4] = _width_and_flank(gram, delay)
             _levels_into(strengths, references, floors, values[5:])
         if first >= 0 and second >= 0:
-            found[row, 2 * _EACH] = max(first, second) / min(first, second)
+            found[row, _EACH + 2] = max(first, second) / min(first, second)
 
 
 @_njit
@@ -263,7 +266,7 @@ _LOW_PASS = np.exp(-0.5 * (np.arange(SPECTRUM_FFT // 2 + 1) * ANALYSIS_RATE_HZ /
     np.float32
 )
 _BANDS = tuple(pairwise(LEVELS_MHZ))
-#: Features of each copy.
+#: Features of the first copy; of the second there are delay and ratio alone.
 _EACH = 5 + len(_BANDS)
 
 
@@ -293,33 +296,35 @@ def _feature(
     )
 
 
-def _of_copy(number: int, which: str) -> tuple[Feature, ...]:
+def _place_of(number: int, which: str) -> tuple[Feature, ...]:
     name = f"copy_{number}_{{}}".format
     return (
         _feature(name("delay_us"), "µs", f"delay of the {which} copy", ("later", "earlier"), (0.0, 15.0), 0.03),
         _feature(name("ratio"), "", f"height of the {which} copy", ("larger", "smaller"), (-20.0, 20.0), 0.03),
-        _feature(
-            name("likeness"), "", f"likeness of the {which} copy to the pulse", ("more", "less"), (-1.0, 1.0), 0.15
-        ),
-        _feature(name("width_ns"), "ns", f"width of the {which} copy", ("wider", "narrower"), (0.0, 700.0), 20.0),
-        _feature(name("flank"), "", f"lowest flank beside the {which} copy", ("higher", "deeper"), (-50.0, 1.0), 0.2),
-        *(
-            _feature(
-                name(_level_name(low, high)),
-                "dB",
-                f"level of the {which} copy over the pulse at {low:g}-{high:g} MHz",
-                ("higher", "lower"),
-                (-80.0, 80.0),
-                2.5,
-            )
-            for low, high in _BANDS
-        ),
     )
 
 
+_SHAPE = (
+    _feature("copy_1_likeness", "", "likeness of the strongest copy to the pulse", ("more", "less"), (-1.0, 1.0), 0.15),
+    _feature("copy_1_width_ns", "ns", "width of the strongest copy", ("wider", "narrower"), (0.0, 700.0), 20.0),
+    _feature("copy_1_flank", "", "lowest flank beside the strongest copy", ("higher", "deeper"), (-50.0, 1.0), 0.2),
+    *(
+        _feature(
+            f"copy_1_{_level_name(low, high)}",
+            "dB",
+            f"level of the strongest copy over the pulse at {low:g}-{high:g} MHz",
+            ("higher", "lower"),
+            (-80.0, 80.0),
+            2.5,
+        )
+        for low, high in _BANDS
+    ),
+)
+
 COPIES = (
-    *_of_copy(1, "strongest"),
-    *_of_copy(2, "second"),
+    *_place_of(1, "strongest"),
+    *_SHAPE,
+    *_place_of(2, "second"),
     _feature(
         "copy_delay_ratio",
         "",

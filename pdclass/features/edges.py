@@ -49,12 +49,12 @@ def measure_edges(windows: Windows) -> FloatArray:
     at = dict(zip(PLACES, measured_places(windows).T, strict=False))
     rise, raw = at["rise_90"] - at["rise_10"], at["raw_90"] - at["raw_10"]
     fall = at["fall_10"] - at["fall_90"]
-    width_50, width_25 = (at[f"fall_{percent}"] - at[f"rise_{percent}"] for percent in (50, 25))
+    width_50 = at["fall_50"] - at["rise_50"]
     width_10 = at["fall_10"] - at["foot_10"]
     ratio = width_10 / np.where(width_50 > 0, width_50, np.nan)
     lopsided = fall / np.where(rise > 0, rise, np.nan)
     tail = _tails(windows.wave, windows.end, windows.peak, np.where(windows.noise > 0, windows.noise, 0.0))
-    times = [each * STEP_NS for each in (rise, raw, fall, width_50, width_25, width_10)]
+    times = [each * STEP_NS for each in (rise, raw, fall, width_50, width_10)]
     return np.stack([*times, ratio, lopsided, tail * STEP_NS], axis=1)
 
 
@@ -200,7 +200,6 @@ EDGES = (
     ),
     _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
     _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
-    _edge("width_25_ns", "width at a quarter of the peak", "wider", "narrower", "width at a quarter {value}", 12.0),
     _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
     Feature(
         "width_ratio",

@@ -13,25 +13,18 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 _njit = numba.njit(cache=True, nogil=True)
 
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
-#: Slopes begin at this frequency and end at this one, or where the chain's reach ends: a share of it.
-_SLOPE_HZ, _REACH_SHARE = (1e6, 15e6), 0.9
-#: Bins below this share of the largest say nothing about a slope, and fewer bins than these neither.
-_SLOPE_FLOOR, _FEWEST_BINS = 1e-4, 16
-#: A bin stands clear of the noise with so many times its power.
-_CLEAR = 10.0
 _STARTS = np.searchsorted(BAND_HZ, [low * 1e6 for low, _ in BANDS_MHZ] + [BANDS_MHZ[-1][1] * 1e6])
 
 
 def measure_spectrum(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features).
 
-    Sums run over power less noise with its sign, so that what is left of the noise cancels; slopes
-    use the bins that stand clear of it. Noise that is unknown counts as none.
+    Sums run over power less noise with its sign, so that what is left of the noise cancels. Noise that is unknown
+    counts as none.
     """
     found = np.full((len(windows), len(SPECTRUM)), np.nan)
-    top_hz = np.minimum(_SLOPE_HZ[1], _REACH_SHARE * windows.reach_hz)
     band = BAND.start, BAND.stop
-    _spectra_into(found, windows.own_power, windows.noise_power, band, BAND_HZ / 1e6, _STARTS, top_hz / 1e6)
+    _spectra_into(found, windows.own_power, windows.noise_power, band, BAND_HZ / 1e6, _STARTS)
     return found
 
 
@@ -64,40 +57,6 @@ def rolloff(mhz: FloatArray, power: FloatArray, share: float) -> float:  # pragm
 
 
 @_njit
-def slopes_db(
-    mhz: FloatArray, power: FloatArray, noise: WaveArray, top_mhz: float
-) -> tuple[float, float]:  # pragma: no cover - compiled
-    """Slope of the level from 1 MHz to `top_mhz`, against sqrt(f) [dB/sqrt(MHz)] and against f [dB/MHz].
-
-    `power` is without the noise, and bins that do not stand clear of it are not used. Skin-effect loss grows as
-    sqrt(f), the loss of dielectric and semiconducting screens rather as f: each kilometre of cable tilts the
-    spectrum of what passes.
-    """
-    largest = 0.0
-    for k in range(power.size):
-        largest = max(largest, power[k] if power[k] > (_CLEAR - 1) * noise[k] else 0.0)
-    count, level, roots, root_level, linears, squares, linear_level = 0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0
-    for k in range(power.size):
-        inside = _SLOPE_HZ[0] / 1e6 <= mhz[k] <= top_mhz
-        if inside and power[k] > (_CLEAR - 1) * noise[k] and power[k] > _SLOPE_FLOOR * largest:
-            here, root = np.log(power[k]), np.sqrt(mhz[k])
-            count += 1
-            level += here
-            roots += root
-            root_level += root * here
-            linears += mhz[k]
-            squares += mhz[k] * mhz[k]
-            linear_level += mhz[k] * here
-    if count < _FEWEST_BINS:
-        return np.nan, np.nan
-    decibels = 10 / np.log(10.0)
-    return (
-        decibels * (root_level - roots * level / count) / (linears - roots * roots / count),
-        decibels * (linear_level - linears * level / count) / (squares - linears * linears / count),
-    )
-
-
-@_njit
 def _spectra_into(
     found: FloatArray,
     powers: WaveArray,
@@ -105,7 +64,6 @@ def _spectra_into(
     band: tuple[int, int],
     mhz: FloatArray,
     starts: IntArray,
-    top_mhz: FloatArray,
 ) -> None:  # pragma: no cover - compiled
     """Write the features in the order of `SPECTRUM`, pulse by pulse."""
     signal, noise = np.empty(mhz.size), np.empty(mhz.size, np.float32)
@@ -116,11 +74,10 @@ def _spectra_into(
             signal[k] = np.float64(powers[row, band[0] + k]) - noise[k]
         found[row, 0], found[row, 1] = centroid_and_spread(mhz, signal)
         found[row, 2], found[row, 3] = rolloff(mhz, signal, 0.85), rolloff(mhz, signal, 0.95)
-        found[row, 4], found[row, 5] = slopes_db(mhz, signal, noise, top_mhz[row])
         total = sum_between(signal, 0, signal.size)
         for place in range(starts.size - 1):
             share = sum_between(signal, starts[place], starts[place + 1]) / total if total > 0 else np.nan
-            found[row, 6 + place] = min(max(share, 0.0), 1.0)
+            found[row, 4 + place] = min(max(share, 0.0), 1.0)
 
 
 def _band_name(low: float, high: float) -> str:
@@ -154,32 +111,6 @@ SPECTRUM = (
     ),
     _frequency("rolloff_85_mhz", "85 % of the power lies below", "85 % of the power below {value}", 0.1),
     _frequency("rolloff_95_mhz", "95 % of the power lies below", "95 % of the power below {value}", 0.2),
-    Feature(
-        "slope_root_db",
-        "dB/√MHz",
-        "tilt of the level against the root of the frequency, the mark of skin effect",
-        "tilt of the spectrum {value}",
-        "rises more",
-        "falls more steeply",
-        (-500.0, 500.0),
-        0.5,
-        "own definition",
-        needs_hz=6e6,
-        needs_snr_db=24.0,
-    ),
-    Feature(
-        "slope_linear_db",
-        "dB/MHz",
-        "tilt of the level against the frequency, the mark of screens and dielectric",
-        "straight tilt of the spectrum {value}",
-        "rises more",
-        "falls more steeply",
-        (-200.0, 200.0),
-        0.2,
-        "own definition",
-        needs_hz=6e6,
-        needs_snr_db=24.0,
-    ),
     *(
         Feature(
             _band_name(low, high),

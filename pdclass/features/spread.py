@@ -13,12 +13,10 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 #: So far below the pulse nothing tells of the path any more.
 _LOWEST_DB = -60.0
 #: Stretches after the peak [us] whose level is measured: late, weak structure tells of the path.
-LATE_US = ((0.3, 0.6), (0.6, 1.2), (1.2, 3.0), (3.0, 6.0))
+LATE_US = ((0.3, 0.6), (0.6, 1.2))
 _LATE = tuple(tuple(round(edge * ANALYSIS_RATE_HZ / 1e6) for edge in stretch) for stretch in LATE_US)
 #: Samples after the peak that still count as its beginning where late levels are held against it.
 _CORE = 30
-#: Stretch after the peak that `late_energy` is the share of [samples].
-_AFTER = (20, 120)
 #: Samples after the onset that the crest factor is held against.
 _BEGINNING = 200
 
@@ -95,23 +93,15 @@ def equivalent_width(
 def _shape(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
-    """Late energy, energy before the peak, time that stands out [ns] and crest factor, (pulses, 4)."""
-    found, first = np.full((len(waves), 4), np.nan), ONSET - GUARD
+    """Share of the energy before the peak, and crest factor, (pulses, 2)."""
+    found, first = np.full((len(waves), 2), np.nan), ONSET - GUARD
     for r in range(len(waves)):
         wave, floor = waves[r], noise[r] * noise[r]
         total = _energy(wave, first, end[r], floor)
         if total != 0:
-            late = _energy(wave, peak[r] + _AFTER[0], min(peak[r] + _AFTER[1], end[r]), floor)
-            found[r, 0], found[r, 1] = late / total, _energy(wave, first, peak[r], floor) / total
-        limit = np.float32(max(0.1, 4 * noise[r]))
-        early, later = ONSET, end[r] - 1
-        while early < end[r] and abs(wave[early]) <= limit:
-            early += 1
-        while later > early and abs(wave[later]) <= limit:
-            later -= 1
-        found[r, 2] = (later - early + 1) * STEP_NS if early < end[r] else 0.0
+            found[r, 0] = _energy(wave, first, peak[r], floor) / total
         beginning = _energy(wave, ONSET, min(ONSET + _BEGINNING, end[r]), floor) / _BEGINNING
-        found[r, 3] = 1 / np.sqrt(max(beginning, 1e-4))
+        found[r, 1] = 1 / np.sqrt(max(beginning, 1e-4))
     return found
 
 
@@ -186,18 +176,6 @@ SPREAD = (
         needs_snr_db=6.0,
     ),
     Feature(
-        "late_energy",
-        "",
-        "share of the energy between 0.2 and 1.2 µs after the peak",
-        "late energy {value}",
-        "a larger share",
-        "a smaller share",
-        (0.0, 1.0),
-        0.03,
-        "own definition",
-        needs_snr_db=9.0,
-    ),
-    Feature(
         "energy_before_peak",
         "",
         "share of the energy before the peak",
@@ -206,18 +184,6 @@ SPREAD = (
         "a smaller share",
         (0.0, 1.0),
         0.17,
-        "own definition",
-        needs_snr_db=9.0,
-    ),
-    Feature(
-        "standing_out_ns",
-        "ns",
-        "from the first to the last sample above a tenth of the peak (or four noise levels)",
-        "stands out for {value}",
-        "longer",
-        "shorter",
-        (0.0, 15000.0),
-        80,
         "own definition",
         needs_snr_db=9.0,
     ),

@@ -32,7 +32,6 @@ def test_two_copies_are_found_with_delay_height_and_sign():
     assert values["copy_2_ratio"] == pytest.approx(-0.2, abs=0.03)
     assert values["copy_delay_ratio"] == pytest.approx(8 / 3, abs=0.03)
     assert values["copy_1_likeness"] > 0.98
-    assert values["copy_2_likeness"] < -0.95
 
 
 def test_a_copy_of_equal_shape_has_one_level_in_every_band():

@@ -50,6 +50,7 @@ ECHOES = (
         0.03,
         "own definition",
         needs_snr_db=12.0,
+        absent="no later copy stands out",
     ),
     Feature(
         "echo_ratio",
@@ -62,5 +63,6 @@ ECHOES = (
         0.02,
         "own definition",
         needs_snr_db=12.0,
+        absent="no later copy stands out",
     ),
 )

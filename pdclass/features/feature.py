@@ -6,7 +6,7 @@ from dataclasses import asdict, dataclass
 
 from pdclass.digest import json_digest
 
-_WORDS = frozenset({"meaning", "sentence", "more", "less", "reference"})
+_WORDS = frozenset({"meaning", "sentence", "more", "less", "reference", "absent"})
 
 
 @dataclass(frozen=True)
@@ -25,6 +25,7 @@ class Feature:
     reference : where the definition comes from.
     needs_hz : the chain must carry signals up to here, else the feature is unmeasurable [Hz].
     needs_snr_db : below this ratio of peak to noise the feature is unmeasurable [dB].
+    absent : what a missing value means where neither chain nor noise forbids it.
     """
 
     name: str
@@ -38,6 +39,7 @@ class Feature:
     reference: str
     needs_hz: float = 0.0
     needs_snr_db: float = 0.0
+    absent: str = "not measurable here"
 
     @property
     def digest(self) -> str:

@@ -188,6 +188,7 @@ SPREAD = (
             2.5,
             "own definition",
             needs_snr_db=9.0,
+            absent="nothing stands out of the noise there",
         )
         for first, last in LATE_US
     ),

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from pdclass.errors import InputError
 from pdclass.features import CATALOGUE
@@ -17,7 +18,7 @@ from pdclass.model.decision import BoolArray, Decisions, broken_limits, decide, 
 from pdclass.model.manifest import Validity
 from pdclass.model.reasons import calibrated_reasons
 from pdclass.pulses import UNDECIDED, FloatArray, IntArray, PulseSet
-from pdclass.verdict.sentences import REASONS, Wording, reason_sentences, reference_ranks
+from pdclass.verdict.sentences import REASONS, UNKNOWN, Seen, Wording, reason_sentences, reference_ranks
 
 #: Columns that a verdict takes over from the pulse table.
 PULSE_COLUMNS = (
@@ -62,7 +63,12 @@ class Verdicts:
 
 
 def score(
-    pulses: PulseSet, values: FloatArray, bundle: Bundle, *, catalogue: Sequence[Feature] = CATALOGUE
+    pulses: PulseSet,
+    values: FloatArray,
+    bundle: Bundle,
+    *,
+    catalogue: Sequence[Feature] = CATALOGUE,
+    seen: Sequence[Seen] | None = None,
 ) -> Verdicts:
     """Give every pulse that is no echo its verdict with reasons.
 
@@ -72,6 +78,7 @@ def score(
     values : (pulses, features) in the bundle's order of features; NaN = unmeasurable.
     bundle : the model.
     catalogue : where the words of the bundle's features stand.
+    seen : how well each pulse was seen, for the words of what is missing or blurred; unknown by default.
 
     Raises
     ------
@@ -92,7 +99,7 @@ def score(
     columns = {
         **_names(decisions, order, against, reasons.log_odds, bundle.classes),
         **_doubt(decisions, limits_broken(scored, bundle.validity), bundle.classes),
-        **_sentences(own, reasons.shares, pairs, wording_of(bundle, catalogue)),
+        **_sentences(own, reasons.shares, pairs, wording_of(bundle, catalogue), _of_alone(seen, alone)),
         "bundle_digest": [bundle.digest] * len(scored.table),
     }
     table = scored.table[list(PULSE_COLUMNS)].assign(
@@ -210,12 +217,20 @@ def _doubt(decisions: Decisions, outside: list[str | None], classes: Sequence[st
     }
 
 
+def _of_alone(seen: Sequence[Seen] | None, alone: NDArray[np.intp]) -> list[Seen]:
+    return [UNKNOWN if seen is None else seen[place] for place in alone.tolist()]
+
+
 def _sentences(
-    values: FloatArray, shares: FloatArray, pairs: Sequence[tuple[int, int]], wording: Wording
+    values: FloatArray,
+    shares: FloatArray,
+    pairs: Sequence[tuple[int, int]],
+    wording: Wording,
+    seen: Sequence[Seen],
 ) -> dict[str, list[str | None]]:
     columns: dict[str, list[str | None]] = {f"reason_{place + 1}": [] for place in range(REASONS)}
     for row, pair in enumerate(pairs):
-        sentences = reason_sentences(values[row], shares[row], pair, wording)
+        sentences = reason_sentences(values[row], shares[row], pair, wording, seen=seen[row])
         for place, column in enumerate(columns.values()):
             column.append(sentences[place] if place < len(sentences) else None)
     return columns

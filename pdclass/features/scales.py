@@ -11,7 +11,10 @@ from pdclass.wavelets import scale_energies
 LEVELS = 7
 #: Every pulse is padded to one length, so that the coarsest scale has room.
 _PADDED = 2048
-_REFERENCE = "wavelet energy entropy after C. E. Shannon; symlet of eight vanishing moments (I. Daubechies, 1992)"
+_REFERENCE = (
+    "energy by wavelet level: symlet of eight vanishing moments (I. Daubechies, Ten Lectures on Wavelets, 1992); "
+    "entropy after C. E. Shannon, Bell Syst. Tech. J. 27, 1948 (both from memory)"
+)
 
 
 def measure_scales(window: Window) -> dict[str, float]:

@@ -8,6 +8,15 @@ from pdclass.features.feature import Feature
 from pdclass.features.window import Window
 from pdclass.pulses import FloatArray
 
+#: Where the definitions come from.
+_MOMENTS = (
+    "moments and quantiles of the power spectrum; roll-off after G. Tzanetakis, P. Cook, IEEE Trans. Speech Audio "
+    "Process. 10(5), 293-302, 2002 (from memory)"
+)
+_SKIN_EFFECT = (
+    "loss in dB grows as √f: S. A. Schelkunoff, Bell Syst. Tech. J. 13, 532-579, 1934; slope by least squares"
+)
+_DIELECTRIC = "own definition; slope by least squares"
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
 #: Bins below this share of the largest say nothing about a slope.
 _SLOPE_FLOOR = 1e-4
@@ -97,7 +106,7 @@ def _frequency(name: str, meaning: str, sentence: str, tolerance: float) -> Feat
         "lower",
         (0.0, 25.0),
         tolerance,
-        "own definition",
+        _MOMENTS,
         needs_snr_db=6.0,
     )
 
@@ -123,7 +132,7 @@ SPECTRUM = (
         "falls more steeply",
         (-500.0, 500.0),
         0.5,
-        "own definition",
+        _SKIN_EFFECT,
         needs_hz=6e6,
         needs_snr_db=24.0,
     ),
@@ -136,7 +145,7 @@ SPECTRUM = (
         "falls more steeply",
         (-200.0, 200.0),
         0.2,
-        "own definition",
+        _DIELECTRIC,
         needs_hz=6e6,
         needs_snr_db=24.0,
     ),

@@ -173,7 +173,7 @@ SPREAD = (
         "less spiky",
         (0.5, 100.0),
         0.2,
-        "own definition",
+        "peak over rms, usual definition",
         needs_snr_db=6.0,
     ),
     *(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import asdict, dataclass
 
 from pdclass.digest import json_digest
@@ -54,3 +55,26 @@ class Feature:
 
 def _number(bound: float) -> float | str:
     return bound if abs(bound) != float("inf") else str(bound)
+
+
+def why_missing(feature: Feature, snr_db: float, reach_hz: float) -> str | None:
+    """Why a feature is unmeasurable on a pulse, in plain words; None where neither noise nor chain is the reason.
+
+    Parameters
+    ----------
+    snr_db : peak over noise of the pulse [dB]; NaN = unknown.
+    reach_hz : highest frequency that its chain carries [Hz].
+    """
+    if reach_hz < feature.needs_hz:
+        return f"the chain ends at {reach_hz / 1e6:.3g} MHz, needs {feature.needs_hz / 1e6:.3g} MHz"
+    if feature.needs_snr_db and math.isnan(snr_db):
+        return "the noise beside the pulse is unknown"
+    if snr_db < feature.needs_snr_db:
+        return f"not measurable at {_below(snr_db, feature.needs_snr_db)} dB, needs {feature.needs_snr_db:g} dB"
+    return None
+
+
+def _below(value: float, limit: float) -> str:
+    """A number below a limit, rounded so that it still reads as below it."""
+    whole = f"{value:.0f}"
+    return whole if float(whole) < limit else f"{math.floor(value * 10) / 10:.1f}"

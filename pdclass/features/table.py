@@ -10,7 +10,6 @@ import numpy as np
 from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
 from pdclass.features.edges import measured_places
-from pdclass.features.feature import Feature
 from pdclass.features.window import ONSET, STEP_NS, Window, Windows, prepared, stacked
 from pdclass.pulses import FloatArray, PulseSet
 
@@ -71,15 +70,6 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
     snr_db = np.array([np.nan if window is None else window.snr_db for window in windows])
     reach_hz = np.array([np.nan if window is None else window.reach_hz for window in windows])
     return Measured(feature_table(pulses, names), snr_db, reach_hz)
-
-
-def why_missing(feature: Feature, snr_db: float, reach_hz: float) -> str | None:
-    """Why a feature could not be measured, where the noise or the chain is the cause; else None."""
-    if reach_hz < feature.needs_hz:
-        return f"not measurable, the chain ends at {reach_hz / 1e6:.3g} MHz"
-    if snr_db < feature.needs_snr_db:
-        return f"not measurable at {snr_db:.0f} dB (needs {feature.needs_snr_db:g} dB)"
-    return None
 
 
 def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:

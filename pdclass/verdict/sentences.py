@@ -118,19 +118,16 @@ class Wording:
 
 
 class Seen(NamedTuple):
-    """How well a pulse was seen, which decides what of it can be measured; NaN = unknown.
+    """How well a pulse was seen, which decides what of it can be measured.
 
     Attributes
     ----------
-    snr_db : measured peak over noise, carriers reduced [dB].
+    snr_db : measured peak over noise, carriers reduced [dB]; NaN = unknown.
     reach_hz : highest frequency that the chain carries [Hz].
     """
 
-    snr_db: float = math.nan
-    reach_hz: float = math.nan
-
-
-UNKNOWN = Seen()
+    snr_db: float
+    reach_hz: float
 
 
 def strongest_reasons(shares: FloatArray, likeliest: int, against: int) -> tuple[IntArray, FloatArray]:
@@ -156,7 +153,7 @@ def reason_sentences(
     pair: tuple[int, int],
     wording: Wording,
     *,
-    seen: Seen = UNKNOWN,
+    seen: Seen | None = None,
     count: int = REASONS,
 ) -> list[str]:
     """The strongest reasons of one pulse as sentences; reasons against the label begin with "against:".
@@ -166,7 +163,7 @@ def reason_sentences(
     values : (features,) of the pulse; NaN = unmeasurable.
     shares : (classes, features) calibrated shares of the pulse [natural log].
     pair : the likeliest class, and the one that it is held against.
-    seen : how well the pulse was seen.
+    seen : how well the pulse was seen; None = nothing is said of it.
     count : how many at most, >= 0.
     """
     order, difference = strongest_reasons(shares, *pair)
@@ -177,7 +174,7 @@ def reason_sentences(
 
 
 def reason_sentence(
-    place: int, value: float, share: float, pair: tuple[int, int], wording: Wording, seen: Seen = UNKNOWN
+    place: int, value: float, share: float, pair: tuple[int, int], wording: Wording, seen: Seen | None = None
 ) -> str:
     """One reason: value, where it lies among the reference pulses of both labels, share of the log-odds.
 
@@ -188,19 +185,26 @@ def reason_sentence(
     place : of the feature in the bundle's order.
     value : in the feature's unit; NaN = unmeasurable.
     share : of the log-odds of the first of the pair over the second [natural log].
-    seen : how well the pulse was seen.
+    seen : how well the pulse was seen; None = nothing is said of it.
     """
     feature = wording.features[place]
     if math.isnan(value):
-        cause = why_missing(feature, seen.snr_db, seen.reach_hz) or feature.absent
-        found = f"{feature.meaning}: {cause}; {_absence(place, pair, wording)}"
+        found = f"{feature.meaning}: {_cause(feature, seen)}; {_absence(place, pair, wording)}"
     else:
         stated = feature.sentence.format(value=quantity(value, feature.unit))
-        blur = how_blurred(feature.name, seen.snr_db)
+        blur = how_blurred(feature.name, seen.snr_db) if seen else None
         found = f"{stated}{f' ({blur})' if blur else ''}: {_standing(place, value, pair, wording)}"
     towards = wording.classes[pair[0] if share > 0 else pair[1]]
     sentence = f"{found}; +{_share(abs(share))} towards {towards} ({_factor(abs(share))} times the odds)"
     return sentence if share > 0 else f"against: {sentence}"
+
+
+def _cause(feature: Feature, seen: Seen | None) -> str:
+    """Why a value is missing: the noise, the chain, or what its absence means."""
+    cause = why_missing(feature, *seen) if seen else None
+    if cause is None:
+        return feature.absent
+    return cause if cause.startswith("not measurable") else f"not measurable, {cause}"
 
 
 def _standing(place: int, value: float, pair: tuple[int, int], wording: Wording) -> str:

@@ -105,14 +105,15 @@ def test_what_the_noise_hides_says_how_much_it_needs():
     reference = pd.DataFrame({"rise_ns": [1.0, 2.0], "label": list(CLASSES)})
     wording = Wording(CLASSES, (feature,), reference_ranks(reference, CLASSES, ("rise_ns",)))
     sentence = reason_sentence(0, math.nan, 0.5, (0, 1), wording, Seen(6.2, 40e6))
-    assert sentence.startswith("10-90 % rise time: not measurable at 6 dB (needs 9 dB); missing in 0 % of switchgear")
+    assert sentence.startswith("10-90 % rise time: not measurable at 6 dB, needs 9 dB; missing in 0 % of switchgear")
 
 
 def test_what_the_chain_does_not_carry_says_where_the_chain_ends():
     """A band beyond the chain is not measurable because of the chain, however clear the pulse."""
     wide = max(CATALOGUE, key=lambda feature: feature.needs_hz)
     sentence = reason_sentence(0, math.nan, 0.5, (0, 1), _alone(wide.name), Seen(40.0, 14e6))
-    assert sentence.startswith(f"{wide.meaning}: not measurable, the chain ends at 14 MHz; missing in")
+    ends = f"{wide.meaning}: not measurable, the chain ends at 14 MHz, needs {wide.needs_hz / 1e6:g} MHz; missing in"
+    assert sentence.startswith(ends)
 
 
 def test_a_copy_that_is_not_there_is_no_failure_to_measure():

@@ -25,7 +25,8 @@ def how_blurred(name: str, snr_db: float) -> str | None:
     if not snr_db < min(clear_db, HIGHEST_DB):
         return None
     beyond = f"clear from {clear_db:.0f} dB" if math.isfinite(clear_db) else f"not clear up to {HIGHEST_DB:.0f} dB"
-    return f"noise blurs it at {snr_db:.0f} dB; {beyond}"
+    # rounded down, so that it still reads as below the limit
+    return f"noise blurs it at {math.floor(snr_db)} dB; {beyond}"
 
 
 #: Measured peak over noise [dB]; infinite = not clear at any ratio up to the highest.

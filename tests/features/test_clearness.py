@@ -2,7 +2,7 @@
 
 import math
 
-from pdclass.features import CATALOGUE
+from pdclass.features import CATALOGUE, clearness
 from pdclass.features.clearness import CLEAR_SNR_DB, HIGHEST_DB, how_blurred
 
 
@@ -14,6 +14,12 @@ def test_every_feature_has_a_measured_figure():
 def test_figures_lie_on_the_grid_or_nowhere():
     """A feature is clear from some ratio up to the highest of the grid, or not at all."""
     assert all(5.0 < value <= HIGHEST_DB or value == math.inf for value in CLEAR_SNR_DB.values())
+
+
+def test_a_ratio_just_below_the_limit_reads_as_below_it(monkeypatch):
+    """13.9 dB is told as 13 dB where 14 dB is the limit."""
+    monkeypatch.setattr(clearness, "CLEAR_SNR_DB", {"rise_ns": 14.0})
+    assert how_blurred("rise_ns", 13.9) == "noise blurs it at 13 dB; clear from 14 dB"
 
 
 def test_an_unknown_ratio_and_an_unknown_feature_say_nothing():

@@ -32,6 +32,7 @@ model: $(VENV)/dev.stamp
 
 pictures: $(VENV)/dev.stamp
 	$(BIN)/python -m pdclass.jobs.pictures synthetic/pictures
+	$(BIN)/python -m pdclass.jobs.feature_pages docs
 
 $(VENV)/run.stamp: pyproject.toml constraints.txt
 	test -x $(BIN)/python || $(PYTHON) -m venv $(VENV)

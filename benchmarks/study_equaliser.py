@@ -16,13 +16,12 @@ from dataclasses import replace
 
 import numpy as np
 import pandas as pd
+from equalise import equalised
+from plain_features.window import prepared
 
 from pdclass.extract import ExtractSettings
-from pdclass.features import CATALOGUE
+from pdclass.features import CATALOGUE, feature_table
 from pdclass.features.catalogue import FAMILIES
-from pdclass.features.equalise import equalised
-from pdclass.features.table import BATCH
-from pdclass.features.window import Window, prepared, stacked
 from pdclass.jobs.simulate import labelled_pulses, scenario_path
 from pdclass.model.doubt import probabilities
 from pdclass.model.forest import margins
@@ -72,36 +71,22 @@ def measured(sets: list[PulseSet]) -> tuple[pd.DataFrame, dict[str, FloatArray]]
     """Pulses and their features, one array for each of `WAYS`."""
     values: dict[str, list[FloatArray]] = {way: [] for way in WAYS}
     for pulses in sets:
-        chain = pulses.chains[0]
-        durations = pulses.table["duration_us"].to_numpy(float)
-        windows = [prepared(wave, chain, duration) for wave, duration in zip(pulses.waves, durations, strict=True)]
         for way, band_hz in WAYS.items():
-            again = windows
-            if band_hz is not None:
-                again = [None if one is None else _kept_reach(equalised(one, chain, band_hz), one) for one in windows]
-            values[way].append(_values(again))
+            again = pulses if band_hz is None else brought(pulses, band_hz)
+            values[way].append(feature_table(again, NAMES))
     return pd.concat([pulses.table for pulses in sets]), {way: np.concatenate(each) for way, each in values.items()}
 
 
-def _kept_reach(window: Window | None, before: Window) -> Window | None:
-    """What the chain does not carry stays unmeasurable, however it is equalised."""
-    return None if window is None else replace(window, reach_hz=before.reach_hz)
-
-
-def _values(windows: list[Window | None]) -> FloatArray:
-    values = np.full((len(windows), len(NAMES)), np.nan)
-    usable = [row for row, window in enumerate(windows) if window is not None]
-    for first in range(0, len(usable), BATCH):
-        rows = usable[first : first + BATCH]
-        batch = stacked([window for row in rows if (window := windows[row]) is not None])
-        kinds = [FAMILIES[family] for family in FAMILIES if family not in LEFT_OUT]
-        values[rows] = np.concatenate([measure(batch) for _, measure in kinds], axis=1)
-        for column, feature in enumerate(f for features, _ in kinds for f in features):
-            low, high = feature.valid_range
-            hidden = (batch.reach_hz < feature.needs_hz) | (batch.snr_db < feature.needs_snr_db)
-            found = values[rows, column]
-            values[rows, column] = np.where(hidden | ~((found >= low) & (found <= high)), np.nan, found)
-    return values
+def brought(pulses: PulseSet, band_hz: tuple[float, float]) -> PulseSet:
+    """Pulses of one chain as the band would show them; what the chain does not carry stays unmeasurable."""
+    chain = pulses.chains[0]
+    waves = pulses.waves.copy()
+    for row, duration_us in enumerate(pulses.table["duration_us"].to_numpy(float)):
+        window = prepared(waves[row], chain, duration_us)
+        if window is not None:
+            waves[row] = equalised(window, chain, band_hz)
+    seen = replace(chain, band_hz=(band_hz[0], chain.band_hz[1]), response=None)
+    return PulseSet(waves, (seen,), pulses.table)
 
 
 def pairs(one: pd.DataFrame, other: pd.DataFrame) -> tuple[np.ndarray, np.ndarray]:

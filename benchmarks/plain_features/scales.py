@@ -19,7 +19,7 @@ def measure_scales(window: Window) -> dict[str, float]:
     energies = scale_energies(own, LEVELS)[1:]
     total = energies.sum()
     if total <= 0:
-        return {"scale_entropy": np.nan, "scale_centre": np.nan}
+        return {"scale_evenness": np.nan, "scale_mean_level": np.nan}
     share = energies / total
     entropy = -np.sum(share * np.log(np.maximum(share, 1e-12))) / np.log(share.size)
-    return {"scale_entropy": float(entropy), "scale_centre": float(np.sum(share * np.arange(2, LEVELS + 1)))}
+    return {"scale_evenness": float(entropy), "scale_mean_level": float(np.sum(share * np.arange(2, LEVELS + 1)))}

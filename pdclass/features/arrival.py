@@ -219,6 +219,7 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
         "group delay by the transform of t x(t) (A. V. Oppenheim, R. W. Schafer, 1989, from memory)",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
+        absent="nothing stands out of the noise in this band",
         edition=2,
     )
 

@@ -292,6 +292,7 @@ def _feature(
         tolerance,
         "Wiener deconvolution (N. Wiener, 1949, from memory)",
         needs_snr_db=12.0,
+        absent="no later copy stands out",
         edition=2,
     )
 

@@ -16,6 +16,8 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
 _LONGEST_NS = 15000.0
+#: What a missing edge means.
+_OPEN = "the pulse does not come down to the level before its end"
 #: Crossings are looked for among the own samples and this long a lead [samples].
 _LEAD = 2 * GUARD
 #: Levels of the crossings, from the peak outwards.
@@ -186,7 +188,9 @@ def _tails(
 
 
 def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 9.0) -> Feature:
-    return Feature(name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db)
+    return Feature(
+        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=_OPEN
+    )
 
 
 EDGES = (

@@ -14,7 +14,10 @@ from pdclass.pulses import FloatArray, WaveArray
 
 LEVELS = 7
 MOMENTS = 8
-_REFERENCE = "wavelet energy entropy after C. E. Shannon; eight vanishing moments (I. Daubechies, 1992)"
+_REFERENCE = (
+    "energy by wavelet level, the mean over all shifts: eight vanishing moments (I. Daubechies, Ten Lectures on "
+    "Wavelets, 1992); entropy after C. E. Shannon, Bell Syst. Tech. J. 27, 1948 (both from memory)"
+)
 
 
 def scale_gains(levels: int, bins: int) -> FloatArray:
@@ -72,7 +75,7 @@ _GAINS[:, [0, -1]] /= 2
 
 SCALES = (
     Feature(
-        "scale_entropy",
+        "scale_evenness",
         "",
         "how evenly the energy is spread over the wavelet scales, 0 (one scale) to 1 (all alike)",
         "evenness over scales {value}",
@@ -82,10 +85,9 @@ SCALES = (
         0.07,
         _REFERENCE,
         needs_snr_db=6.0,
-        edition=2,
     ),
     Feature(
-        "scale_centre",
+        "scale_mean_level",
         "",
         "energy-weighted mean wavelet level; one level more = half the frequency",
         "centre of the wavelet scales {value}",
@@ -95,6 +97,5 @@ SCALES = (
         0.25,
         _REFERENCE,
         needs_snr_db=6.0,
-        edition=2,
     ),
 )

@@ -12,6 +12,11 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
 
+#: Where the definitions come from.
+_MOMENTS = (
+    "moments and quantiles of the power spectrum; roll-off after G. Tzanetakis, P. Cook, IEEE Trans. Speech Audio "
+    "Process. 10(5), 293-302, 2002 (from memory)"
+)
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
 _STARTS = np.searchsorted(BAND_HZ, [low * 1e6 for low, _ in BANDS_MHZ] + [BANDS_MHZ[-1][1] * 1e6])
 
@@ -94,7 +99,7 @@ def _frequency(name: str, meaning: str, sentence: str, tolerance: float) -> Feat
         "lower",
         (0.0, 25.0),
         tolerance,
-        "own definition",
+        _MOMENTS,
         needs_snr_db=6.0,
     )
 

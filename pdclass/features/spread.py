@@ -196,7 +196,7 @@ SPREAD = (
         "less spiky",
         (0.5, 100.0),
         0.2,
-        "own definition",
+        "peak over rms, usual definition",
         needs_snr_db=6.0,
     ),
     *(
@@ -211,6 +211,7 @@ SPREAD = (
             2.5,
             "own definition",
             needs_snr_db=9.0,
+            absent="nothing stands out of the noise there",
         )
         for first, last in LATE_US
     ),

@@ -32,5 +32,5 @@ def test_a_tone_lies_on_its_scale():
     """A ringing at 4.5 MHz lies at level 4, which holds 3.1 to 6.3 MHz; at half the frequency one level higher."""
     t = np.arange(1200) / 100e6
     found = [features_of(single(np.exp(-t / 2e-6) * np.sin(2 * np.pi * f * t), noise_v=1e-4)) for f in (4.5e6, 2.25e6)]
-    assert found[0]["scale_centre"] == pytest.approx(4.0, abs=0.3)
-    assert found[1]["scale_centre"] - found[0]["scale_centre"] == pytest.approx(1.0, abs=0.15)
+    assert found[0]["scale_mean_level"] == pytest.approx(4.0, abs=0.3)
+    assert found[1]["scale_mean_level"] - found[0]["scale_mean_level"] == pytest.approx(1.0, abs=0.15)

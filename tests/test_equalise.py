@@ -2,10 +2,10 @@
 
 import numpy as np
 import pytest
+from equalise import MOST_GAIN_DB, chain_shape, clear_share, corners, equalised, equaliser
 from one_pulse import single
 from scipy.signal import bilinear, lfilter
 
-from pdclass.features.equalise import MOST_GAIN_DB, chain_shape, clear_share, corners, equalised, equaliser
 from pdclass.features.table import _window
 from pdclass.pulses import Chain
 

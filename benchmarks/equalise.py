@@ -11,7 +11,7 @@ import numpy as np
 import scipy.fft
 from numpy.typing import NDArray
 
-from pdclass.features.window import ANALYSIS_RATE_HZ, ONSET, STEP_NS, Window, prepared
+from plain_features.window import ANALYSIS_RATE_HZ, Window
 from pdclass.pulses import Chain, FloatArray
 
 ComplexArray = NDArray[np.complex128]
@@ -81,10 +81,10 @@ def equaliser(
     return np.asarray(gain * np.minimum(1.0, most / np.maximum(np.abs(gain), 1e-300)))
 
 
-def equalised(window: Window, chain: Chain, reference_hz: tuple[float, float] = REFERENCE_HZ) -> Window | None:
-    """A window as the reference band would show it; None where nothing is left to measure.
+def equalised(window: Window, chain: Chain, reference_hz: tuple[float, float] = REFERENCE_HZ) -> NDArray[np.float32]:
+    """The wave of a window as the reference band would show it [V], (samples,).
 
-    How far the noise reaches is judged on the pulse's own samples; where it is unknown the window is returned as it is.
+    How far the noise reaches is judged on the pulse's own samples; where it is unknown the wave is returned as it is.
 
     Parameters
     ----------
@@ -92,14 +92,13 @@ def equalised(window: Window, chain: Chain, reference_hz: tuple[float, float] = 
     chain : that it was recorded with.
     reference_hz : corners to bring it to [Hz].
     """
-    if not window.noise > 0:
-        return window
-    bins = window.noise_power.size
-    share = clear_share(np.abs(scipy.fft.rfft(window.own, 2 * (bins - 1))) ** 2, window.noise_power)
-    size = 2 * scipy.fft.next_fast_len(window.wave.size)
-    frequency_hz = scipy.fft.rfftfreq(size, 1 / ANALYSIS_RATE_HZ)
-    fine = np.interp(frequency_hz, np.linspace(0, ANALYSIS_RATE_HZ / 2, bins), share)
-    gain = equaliser(chain, frequency_hz, fine, reference_hz)
-    wave = scipy.fft.irfft(scipy.fft.rfft(window.wave, size) * gain, size)[: window.wave.size] * window.height_v
-    reference = Chain(rate_hz=ANALYSIS_RATE_HZ, band_hz=reference_hz)
-    return prepared(wave.astype(np.float32), reference, (window.end - ONSET) * STEP_NS / 1e3)
+    wave = window.wave * window.height_v
+    if window.noise > 0:
+        bins = window.noise_power.size
+        share = clear_share(np.abs(scipy.fft.rfft(window.own, 2 * (bins - 1))) ** 2, window.noise_power)
+        size = 2 * scipy.fft.next_fast_len(wave.size)
+        frequency_hz = scipy.fft.rfftfreq(size, 1 / ANALYSIS_RATE_HZ)
+        fine = np.interp(frequency_hz, np.linspace(0, ANALYSIS_RATE_HZ / 2, bins), share)
+        gain = equaliser(chain, frequency_hz, fine, reference_hz)
+        wave = scipy.fft.irfft(scipy.fft.rfft(wave, size) * gain, size)[: wave.size]
+    return wave.astype(np.float32)

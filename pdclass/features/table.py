@@ -81,29 +81,6 @@ def _allowed(values: FloatArray, windows: Windows, features: Sequence[Feature]) 
     return np.where(allowed & (values >= low) & (values <= high), values, np.nan)
 
 
-class Measured(NamedTuple):
-    """Features of some pulses, and what decides whether one can be measured.
-
-    Attributes
-    ----------
-    values : (pulses, features) in each feature's unit; NaN = unmeasurable.
-    snr_db : (pulses,) peak over noise, carriers reduced [dB]; NaN = unknown.
-    reach_hz : (pulses,) highest frequency that the chain carries [Hz].
-    """
-
-    values: FloatArray
-    snr_db: FloatArray
-    reach_hz: FloatArray
-
-
-def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
-    """Features of every pulse as `feature_table` gives them, with its noise and the reach of its chain."""
-    windows = [_window(pulses, row) for row in range(len(pulses.table))]
-    snr_db = np.array([np.nan if window is None else window.snr_db for window in windows])
-    reach_hz = np.array([np.nan if window is None else window.reach_hz for window in windows])
-    return Measured(feature_table(pulses, names), snr_db, reach_hz)
-
-
 def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     """What a drawing of one pulse needs: `time_us` and `wave_v` (onset at 0, analysis band) and edge times [us].
 

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from one_pulse import features_of, single
 
-from pdclass.features.spectrum import centroid_and_spread, rolloff, slopes_db
+from pdclass.features.spectrum import centroid_and_spread, rolloff
 
 MHZ = np.arange(3, 513) * 100 / 2048
 
@@ -28,22 +28,6 @@ def test_nothing_is_said_without_power():
     negative = np.full(MHZ.size, -1.0)
     assert np.isnan(centroid_and_spread(MHZ, negative)).all()
     assert np.isnan(rolloff(MHZ, negative, 0.95))
-
-
-@pytest.mark.parametrize(("root", "linear"), [(-3.0, 0.0), (0.0, -1.5)])
-def test_slopes_are_those_that_were_drawn(root, linear):
-    """A level that falls by 3 dB a root of a MHz, or by 1.5 dB a MHz, has that slope on its own axis."""
-    power = 10 ** ((root * np.sqrt(MHZ) + linear * MHZ) / 10)
-    found = slopes_db(MHZ, power, np.zeros(MHZ.size, np.float32), 15.0)
-    assert found[0 if root else 1] == pytest.approx(root or linear, rel=1e-9)
-
-
-def test_slopes_leave_out_what_the_noise_hides():
-    """Bins under noise change no slope; where fewer than sixteen are left there is none."""
-    power, noise = 10 ** (-0.3 * np.sqrt(MHZ)), np.zeros(MHZ.size, np.float32)
-    power[100:140], noise[100:140] = 50.0, 10.0
-    assert slopes_db(MHZ, power, noise, 15.0)[0] == pytest.approx(-3.0, rel=1e-6)
-    assert np.isnan(slopes_db(MHZ, power, np.full(MHZ.size, 10, np.float32), 15.0)).all()
 
 
 def test_noise_cancels_from_the_band_shares():

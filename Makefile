@@ -25,13 +25,14 @@ format: $(VENV)/dev.stamp
 	$(BIN)/ruff check --fix .
 
 bench: $(VENV)/dev.stamp
-	for bench in benchmarks/*.py; do $(BIN)/python $$bench || exit 1; done
+	$(BIN)/python benchmarks/results.py
 
 model: $(VENV)/dev.stamp
 	$(BIN)/python -m pdclass.jobs.base_model models/base
 
 pictures: $(VENV)/dev.stamp
 	$(BIN)/python -m pdclass.jobs.pictures synthetic/pictures
+	$(BIN)/python -m pdclass.jobs.feature_pages docs
 
 $(VENV)/run.stamp: pyproject.toml constraints.txt
 	test -x $(BIN)/python || $(PYTHON) -m venv $(VENV)

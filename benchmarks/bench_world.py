@@ -1,13 +1,10 @@
 """The synthetic world against a plain way of the same: labelled pulses a second, and a cycle of two million samples.
 
 The plain way convolves each source current with the response of its network at 250 MS/s and resamples the result.
-Run with `make bench`. Figures are ratios; absolute rates depend on the machine and what else it does.
+Run with `make bench`, or alone.
 """
 
-import os
-
-for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "NUMBA_NUM_THREADS"):
-    os.environ[name] = "1"
+import measuring  # first: one thread
 
 import time
 
@@ -27,10 +24,10 @@ BASE = read_scenario(scenario_path("base"))
 
 def drawn_world():
     """Seconds and labelled pulses of whole circuits: network, chain, noise and pulses."""
-    planted, begun = 0, time.perf_counter()
+    planted, begun = 0, time.process_time()
     for number in range(1, CIRCUITS + 1):
         planted += len(capture_of(BASE, circuit_of(BASE, number, seed=8), number, seed=8).annotations)
-    return time.perf_counter() - begun, planted
+    return time.process_time() - begun, planted
 
 
 def planting(circuit, count):
@@ -39,13 +36,13 @@ def planting(circuit, count):
     ones = np.ones(count)
     onset = np.linspace(0.05, 0.9, count) * timeline.samples
     signal = np.zeros(timeline.samples, np.float32)
-    begun = time.perf_counter()
+    begun = time.process_time()
     plant(signal, circuit, timeline, [(circuit.sources[0], Plan(onset, 30 * ones, ones, ones))])
-    ours = time.perf_counter() - begun
-    begun = time.perf_counter()
+    ours = time.process_time() - begun
+    begun = time.process_time()
     for _ in range(count):
         plain(circuit.sources[0], timeline.rate_hz)
-    return ours, time.perf_counter() - begun
+    return ours, time.process_time() - begun
 
 
 def plain(source, rate_hz):
@@ -63,9 +60,9 @@ def cycle():
     world = BASE.model_copy(update={"capture": ranges, "chain": chain})
     spent = []
     for number in range(1, 9):
-        begun = time.perf_counter()
+        begun = time.process_time()
         capture = capture_of(world, circuit_of(world, number, seed=8), number, seed=8, pulses=200)
-        spent.append(time.perf_counter() - begun)
+        spent.append(time.process_time() - begun)
         if capture.counts.size != 2_000_000:
             raise SystemExit("the cycle has not two million samples")
     return float(np.median(spent))
@@ -74,12 +71,17 @@ def cycle():
 def main():
     drawn_world()
     seconds, pulses = drawn_world()
-    print(
-        f"whole circuits: {pulses / seconds:.0f} labelled pulses a second a core ({seconds / CIRCUITS * 1e3:.0f} ms each)"
-    )
     ours, peer = planting(circuit_of(BASE, 3, seed=8), 200)
-    print(f"planting: {200 / ours:.0f} pulses a second, {peer / ours:.1f} times the plain way")
-    print(f"a cycle of 2,000,000 samples with 200 pulses: {cycle():.2f} s (the cycle itself: 0.02 s)")
+    measuring.table(
+        ("what", "figure", "unit"),
+        [
+            ("whole circuits: network, chain, noise and pulses", pulses / seconds, "labelled pulses/s"),
+            ("one of them", 1e3 * seconds / CIRCUITS, "ms"),
+            ("planting", peer / ours, "× the plain way"),
+            ("a cycle of 2,000,000 samples with 200 pulses, which itself lasts 20 ms", 1e3 * cycle(), "ms"),
+        ],
+    )
+    measuring.weak("The first, second and last figure have no peer: they are absolute, and as good as the machine.")
 
 
 if __name__ == "__main__":

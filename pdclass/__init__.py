@@ -1,3 +1,3 @@
 """From raw high-frequency captures to reasoned, calibrated, replayable verdicts on discharge pulses."""
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any, cast
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -42,6 +42,7 @@ TABLE_COLUMNS: Mapping[str, str] = {
     "chain": "int16",
     "onset_sample": "int64",
     "onset_s": "float64",
+    "onset_std_ns": "float32",
     "time_utc": "datetime64[ns, UTC]",
     "phase_deg": "float32",
     "noise_v": "float32",
@@ -212,10 +213,19 @@ def phase_deg(capture: Capture, sample: IntArray) -> WaveArray:
 
 def typed_table(rows: Mapping[str, Any] | pd.DataFrame, pulse_ids: Any, *, simulated: bool = False) -> pd.DataFrame:
     """A table with every column of the contract in order and type; absent columns are null (clipped: False)."""
-    given = pd.DataFrame(rows)
-    given.index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
+    index = pd.Index(pulse_ids, name="pulse_id", dtype="str")
     wanted = {**TABLE_COLUMNS, **(SIMULATED_COLUMNS if simulated else {})}
-    return pd.DataFrame({name: _typed(given, name, kind) for name, kind in wanted.items()}, index=given.index)
+    texts = [name for name, kind in wanted.items() if kind == "str"]
+    # one frame of all texts: pandas looks into every object column that it is given alone
+    block = np.empty((len(index), len(texts)), object)
+    for place, name in enumerate(texts):
+        block[:, place] = _text(rows.get(name))
+    written = pd.DataFrame(block, index=index, columns=texts, dtype="object")
+    columns = {
+        name: written[name] if kind == "str" else _numbers(rows.get(name), kind, len(index))
+        for name, kind in wanted.items()
+    }
+    return pd.DataFrame(columns, index=index)
 
 
 def with_texts(table: pd.DataFrame, **columns: Any) -> pd.DataFrame:
@@ -227,12 +237,20 @@ def with_texts(table: pd.DataFrame, **columns: Any) -> pd.DataFrame:
     return table.assign(**held)
 
 
-def _typed(given: pd.DataFrame, name: str, kind: str) -> pd.Series[Any]:
-    if name not in given:
-        absent: Any = {"bool": False, "int16": 0, "int64": 0}.get(kind)
-        column = pd.Series(absent, index=given.index, dtype="object")
-    else:
-        column = given[name]
-    if kind == "str":
-        return column.astype("object").where(column.notna(), None)
-    return column.astype(cast(Any, kind))
+def _text(given: Any) -> Any:
+    """One text or None for every row, or a text or None a row."""
+    if given is None or isinstance(given, str):
+        return given
+    column = np.array(given, object)
+    column[pd.isna(column)] = None
+    return column
+
+
+def _numbers(given: Any, kind: str, count: int) -> Any:
+    """A column of numbers or times; a single value stands for every row, None for no value."""
+    if kind.startswith("datetime"):
+        times = np.full(count, "NaT", "M8[ns]") if given is None else given
+        return pd.DatetimeIndex(times, tz="UTC").as_unit("ns")
+    column = np.empty(count, kind)
+    column[:] = {"bool": False, "int16": 0, "int64": 0}.get(kind, np.nan) if given is None else given
+    return column

@@ -16,7 +16,7 @@ from pdclass.pulses import LABELS, Chain, PulseSet, typed_table
 from pdclass.verdict.batch import Shard, begin_folder, capture_record, run_record, write_shard
 from pdclass.verdict.score import not_checked, score
 
-FEATURES = ("rise_ns", "width_50_ns", "centroid_mhz", "swings", "late_energy", "echo_delay_us")
+FEATURES = ("rise_ns", "width_50_ns", "centroid_mhz", "swings", "energy_before_peak", "copy_1_delay_us")
 CHAIN = Chain(100e6, 1e-4, 14, band_hz=(0.1e6, 25e6), mains_hz=50.0)
 DIGESTS = {"quay": "a1" * 32, "crane": "b2" * 32, "depot": "c3" * 32}
 

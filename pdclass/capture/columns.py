@@ -22,6 +22,7 @@ CHOICES: Mapping[str, tuple[str, ...]] = {"label": LABELS, "basis": BASES, "cond
 BOUNDS: Mapping[str, tuple[float, float]] = {
     "phase_deg": (0.0, 360.0),
     "noise_v": (0.0, np.inf),
+    "onset_std_ns": (0.0, np.inf),
     "duration_us": (0.0, np.inf),
     "distance_m": (0.0, np.inf),
     "onset_sample": (0, np.inf),

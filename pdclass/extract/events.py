@@ -1,4 +1,4 @@
-"""From runs above threshold to events: where one begins, where it ends, where the next one begins inside it."""
+"""From samples above threshold to events: where one begins, where it ends, where the next one begins inside it."""
 
 from __future__ import annotations
 
@@ -6,8 +6,8 @@ import math
 
 import numba
 import numpy as np
-from numpy.typing import NDArray
 
+from pdclass.extract.onsets import edge_foot, first_sample
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
@@ -15,30 +15,46 @@ _njit = numba.njit(cache=True, nogil=True)
 #: Smoothing of the whitened energy: short enough to part pulses 0.2 us apart, long enough to bridge noise.
 ATTACK_S = 60e-9
 DECAY_S = 300e-9
+TWIN_S = 0.5e-6
 #: A new pulse inside an older one's tail lifts the energy by this factor above what the tail held lately.
 TAIL_RISE = 8.0
-#: Within half a microsecond, where ringing also rises and falls, only a rise to this share of the former peak
-#: energy after a dip to a tenth of it counts: lobes of a mode with a quality below 20 fall faster.
-TWIN_SHARE = 0.85
-TWIN_DIP = 0.1
+#: Within a microsecond, where a pulse's own humps also rise and fall, only a rise to this share of the former peak
+#: energy after a dip to the other share counts; from a third of a microsecond on one to a smaller share, too, after a
+#: dip to a sixteenth of what it reaches (`SMALLER_RISE`): a quarter of the height.
+TWIN_SHARE = 0.7
+TWIN_DIP = 0.12
+SMALLER_RISE = 16.0
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25
-TWIN_S = 0.5e-6
-#: Before a crest of so many noise levels three samples in a row below the other number are noise, no onset.
-CLEAR = 10.0
-QUIET = 3.0
 ALIVE = 9.0
 FADED = 2.0
+_LIMITS = np.array([ALIVE, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP, SWING])
 
 
-def mean_energy(white: WaveArray, width: int) -> FloatArray:
-    """Mean square over the `width` samples up to and with each one, in units of the noise power."""
-    total = np.concatenate([np.zeros(width), np.cumsum(np.asarray(white, np.float64) ** 2)])
-    return np.asarray(np.maximum(total[width:] - total[:-width], 0.0) / width)
+def spans(rate_hz: float) -> tuple[int, int, int]:
+    """Attack, decay and twin span [samples] at a sampling rate."""
+    attack, decay, twin = (max(2, round(span * rate_hz)) for span in (ATTACK_S, DECAY_S, TWIN_S))
+    return attack, decay, twin
 
 
 @_njit
-def largest_sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover - compiled
+def _total_energy(white: WaveArray, begin: int, end: int) -> FloatArray:  # pragma: no cover - compiled
+    """Sums of squares of `white` from `begin` up to each sample; one more entry than samples."""
+    total = np.empty(end - begin + 1)
+    total[0] = 0.0
+    for i in range(begin, end):
+        total[i - begin + 1] = total[i - begin] + float(white[i]) * float(white[i])
+    return total
+
+
+@_njit
+def _mean(total: FloatArray, place: int, width: int) -> float:  # pragma: no cover - compiled
+    """Mean square of the `width` samples up to and with a place, nothing being before the first."""
+    return float((total[place + 1] - total[max(place + 1 - width, 0)]) / width)
+
+
+@_njit
+def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover - compiled
     """Sign of the largest of the `width` samples up to and with `last`."""
     best = white[last]
     for i in range(max(0, last - width + 1), last):
@@ -48,146 +64,192 @@ def largest_sign(white: WaveArray, last: int, width: int) -> float:  # pragma: n
 
 
 @_njit
-def candidate_starts(
-    white: WaveArray, quick: FloatArray, slow: FloatArray, attack: int, twin: int, limits: FloatArray
+def _lately(total: FloatArray, begin: int, end: int, width: int) -> float:  # pragma: no cover - compiled
+    """Largest mean square of `width` samples that ended from `begin` up to `end`."""
+    most = 0.0
+    for i in range(max(begin, 0), max(end, 0)):
+        most = max(most, _mean(total, i, width))
+    return most
+
+
+@_njit
+def rough_starts(
+    white: WaveArray, begin: int, lead: int, end: int, attack: int, decay: int, limits: FloatArray
 ) -> IntArray:  # pragma: no cover - compiled
-    """Places where the quick energy of a whitened stretch starts to rise for a new pulse.
+    """Places from `lead` to `end` where the quick energy of a whitened stretch starts to rise for a new pulse.
 
     A twin has the sign of the pulse before it, and nothing of the other sign stands between them: what swings to
-    the other side is taken for ringing.
-    `limits` = (alive, faded, tail rise, twin share, twin dip, swing).
+    the other side is taken for ringing. `limits` = (alive, faded, tail rise, twin share, twin dip, swing, twin span).
     """
-    alive, faded, rise, share, dip, swing = limits
-    found = np.empty(quick.size // max(attack, 1) + 1, np.int64)
-    count = 0
-    active = False
-    peak = 0.0
-    lowest = 0.0
-    sign = 1.0
-    ringing = False
-    start = 0
-    for i in range(quick.size):
+    alive, faded, rise, share, dip, swing = limits[0], limits[1], limits[2], limits[3], limits[4], limits[5]
+    twin = int(limits[6])
+    total = _total_energy(white, begin, end)
+    found = np.empty((end - lead) // attack + 2, np.int64)
+    count, start, active, ringing = 0, 0, False, False
+    peak, lowest, sign = 0.0, 0.0, 1.0
+    for i in range(lead - begin, end - begin):
+        quick = _mean(total, i, attack)
+        fresh = False
         if not active:
-            if quick[i] > alive:
-                active, start, peak, lowest = True, i, quick[i], quick[i]
-                sign, ringing = largest_sign(white, i, attack), False
-                found[count] = i
-                count += 1
-            continue
-        if slow[i] < faded and quick[i] < alive and i > start + attack:
+            fresh = quick > alive
+        elif quick < alive and i > start + attack and _mean(total, i, decay) < faded:
             active = False
             continue
-        recent = 0.0
-        for j in range(max(0, i - twin), max(0, i - attack)):
-            recent = max(recent, quick[j])
-        beyond = i - start > twin
-        from_tail = beyond and quick[i] > alive and quick[i] > rise * recent
-        as_twin = attack < i - start <= 2 * twin and lowest < dip * peak and quick[i] > share * peak
-        if quick[i] > swing * peak and largest_sign(white, i, attack) != sign:
-            ringing = True
-        as_twin = as_twin and not ringing
-        if (from_tail or as_twin) and count < found.size:
-            found[count] = i
-            count += 1
-            start, peak, lowest = i, quick[i], quick[i]
-            sign, ringing = largest_sign(white, i, attack), False
-        elif quick[i] > peak:
-            peak, lowest = quick[i], quick[i]
-            sign = largest_sign(white, i, attack)
         else:
-            lowest = min(lowest, quick[i])
+            if quick > alive and i - start > twin:
+                fresh = quick > rise * _lately(total, max(i - twin, lead - begin), i - attack, attack)
+            if quick > swing * peak and _sign(white, begin + i, attack) != sign:
+                ringing = True
+            if not ringing and attack < i - start <= 2 * twin:
+                as_twin = lowest < dip * peak and quick > share * peak
+                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, SMALLER_RISE * lowest, dip * peak)
+                fresh = fresh or as_twin or as_smaller
+        if fresh and count < found.size:
+            found[count] = begin + i
+            count += 1
+            active, start, ringing = True, i, False
+        if fresh or quick > peak:
+            peak, lowest, sign = quick, quick, _sign(white, begin + i, attack)
+        else:
+            lowest = min(lowest, quick)
     return found[:count]
 
 
-def onset_by_information(white: WaveArray) -> int:
-    """The first sample of the pulse in a stretch that begins with noise and ends at the pulse's first crest.
-
-    The stretch is split where two Gaussian variances explain it best (smallest Akaike criterion).
-
-    References
-    ----------
-    N. Maeda, Zisin 38, 365-379, 1985 (from memory): AIC(k) = k ln var(x[:k]) + (n-k-1) ln var(x[k:]).
-    """
-    count = white.size
-    if count < 8:
-        return 0
-    x = np.asarray(white, np.float64)
-    first, second = np.cumsum(x), np.cumsum(x * x)
-    k = np.arange(3, count - 1)
-    tiny = 1e-12 * max(second[-1], 1e-300)
-    before = second[k - 1] / k - (first[k - 1] / k) ** 2
-    rest = count - k
-    after = (second[-1] - second[k - 1]) / rest - ((first[-1] - first[k - 1]) / rest) ** 2
-    score = k * np.log(np.maximum(before, tiny)) + (rest - 1) * np.log(np.maximum(after, tiny))
-    return int(k[np.argmin(score)])
+@_njit
+def strongest_box(white: WaveArray, begin: int, end: int) -> tuple[int, int]:  # pragma: no cover - compiled
+    """First sample and width of the box of 1, 2, 4, ... samples whose sum stands out most from its noise."""
+    best, place, width = -1.0, begin, 1
+    size = 1
+    while size <= end - begin:
+        total = 0.0
+        for i in range(begin, end):
+            total += white[i]
+            if i - begin >= size:
+                total -= white[i - size]
+            if i - begin >= size - 1 and abs(total) / math.sqrt(size) > best:
+                best, place, width = abs(total) / math.sqrt(size), i - size + 1, size
+        size *= 2
+    return place, width
 
 
-def event_starts(white: WaveArray, rate_hz: float, inside: tuple[int, int], *, continued: bool = False) -> list[int]:
-    """Onsets of the events of one cluster, as places in a whitened stretch (noise of variance 1).
-
-    Parameters
-    ----------
-    white : (samples,) the cluster with some microseconds before it and after.
-    rate_hz : sampling rate [Hz].
-    inside : first and one past the last place that the cluster flagged; onsets lie near it.
-    continued : the cluster began before: what is already there at its first place is no new event.
-    """
-    attack, decay, twin = (max(2, round(span * rate_hz)) for span in (ATTACK_S, DECAY_S, TWIN_S))
-    quick, slow = mean_energy(white, attack), mean_energy(white, decay)
-    limits = np.array([ALIVE, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP, SWING])
-    lead = max(0, inside[0] - decay)
-    rough = [
-        int(place) + lead for place in candidate_starts(white[lead:], quick[lead:], slow[lead:], attack, twin, limits)
-    ]
-    rough = [place for place in rough if place <= inside[1] + attack]
-    if continued:
-        rough = [place for place in rough if place > inside[0] + attack]
-    elif not rough:
-        rough = [_slow_start(slow, inside)]
-    starts: list[int] = []
-    for place, following in zip(rough, [*rough[1:], white.size], strict=False):
-        begin = max(starts[-1] + attack if starts else 0, place - twin)
-        start = _refined(white, begin, place, min(place + twin, max(following - attack, place + 2 * attack)), attack)
-        if not starts or start > starts[-1]:
-            starts.append(start)
-    return starts
+@_njit
+def _valley(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover - compiled
+    """The middle of the three samples of least energy between two events."""
+    least, place = np.inf, begin
+    for i in range(begin + 1, end):
+        energy = float(white[i - 1]) ** 2 + float(white[i]) ** 2 + float(white[i + 1]) ** 2
+        if energy < least:
+            least, place = energy, i
+    return place
 
 
-def _slow_start(slow: FloatArray, inside: tuple[int, int]) -> int:
-    """The place of greatest slow energy among the flagged samples, for a pulse that no short box saw."""
-    return inside[0] + int(np.argmax(slow[inside[0] : max(inside[1], inside[0] + 1)]))
-
-
-def _refined(white: WaveArray, begin: int, place: int, stop: int, attack: int) -> int:
-    """The onset near a rough place: by information up to the first sample of half the height that follows."""
-    first = max(place - attack, begin)
-    height = np.abs(white[first:stop])
-    crest = first + int(np.argmax(height >= 0.5 * height.max()))
-    onset = begin + onset_by_information(white[begin : max(crest, place) + 2])
-    return onset if abs(white[crest]) < CLEAR else _after_quiet(white, onset, crest)
-
-
-def _after_quiet(white: WaveArray, onset: int, crest: int) -> int:
-    """The onset moved past the last quiet stretch before a clear crest: what lies before that was the noise."""
-    quiet = np.abs(white[onset:crest]) < QUIET
-    runs = np.flatnonzero(quiet[2:] & quiet[1:-1] & quiet[:-2])
-    return onset + int(runs[-1]) + 3 if len(runs) else onset
-
-
-def event_end(white: WaveArray, start: int, limit: int, rate_hz: float) -> int:
+@_njit
+def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # pragma: no cover - compiled
     """One past the last sample that belongs to an event: where its energy has sunk into the noise.
 
     Parameters
     ----------
     white : whitened stretch, noise of variance 1.
     start, limit : onset, and the latest possible end (the next onset or the end of the stretch).
+    decay : samples over which the energy is averaged.
     """
-    decay = max(2, round(DECAY_S * rate_hz))
-    tail = mean_energy(white[start:limit], decay) * decay / np.minimum(np.arange(1, limit - start + 1), decay)
-    crest = int(np.argmax(tail[: max(1, 4 * decay)]))
-    quiet = np.flatnonzero(tail[crest:] < FADED)
-    end = start + crest + int(quiet[0]) - decay // 2 if len(quiet) else limit
-    return int(min(max(end, start + max(2, decay // 3)), limit))
+    total, most, quiet = 0.0, -1.0, -1
+    for k in range(limit - start):
+        total += float(white[start + k]) ** 2
+        if k >= decay:
+            total -= float(white[start + k - decay]) ** 2
+        tail = total / min(k + 1, decay)
+        if k < 4 * decay and tail > most:
+            most, quiet = tail, -1
+        if quiet < 0 and tail < FADED:
+            quiet = k
+        if quiet >= 0 and k >= 4 * decay:
+            break
+    end = start + quiet - decay // 2 if quiet >= 0 else limit
+    return min(max(end, start + max(2, decay // 3)), limit)
+
+
+@_njit
+def piece_events(
+    white: WaveArray, pieces: IntArray, attack: int, decay: int, limits: FloatArray
+) -> tuple[IntArray, FloatArray]:  # pragma: no cover - compiled
+    """Events of pieces of clusters, in the order found.
+
+    Parameters
+    ----------
+    white : whitened stretch, noise of variance 1.
+    pieces : rows of (earliest sample, first flagged, one past the last flagged, end of the stretch, whether the
+        cluster began before: then what is already there at the first place is no new event).
+    attack, decay, limits : as for `rough_starts`.
+
+    Returns
+    -------
+    rows of (onset, end), and of (refined instant after the onset, its standard uncertainty) [samples].
+    """
+    twin = int(limits[6])
+    places = np.empty((256, 2), np.int64)
+    feet = np.empty((256, 2))
+    count = 0
+    for row in range(len(pieces)):
+        begin, first, last, stop, continued = pieces[row]
+        rough = rough_starts(
+            white, begin, max(begin, first - decay), min(last + attack + 1, stop), attack, decay, limits
+        )
+        if continued:
+            rough = rough[rough > first + attack]
+        ahead, longest = twin, twin
+        if not continued and not rough.size:
+            box, width = strongest_box(white, max(begin, first - 2 * twin), min(last + 2 * twin, stop))
+            rough = np.array([box])
+            ahead, longest = max(twin, width), max(twin, width)
+        if count + rough.size > len(places):
+            places = np.concatenate((places, np.empty((len(places) + rough.size, 2), np.int64)))
+            feet = np.concatenate((feet, np.empty((len(feet) + rough.size, 2))))
+        kept = count
+        for n in range(rough.size):
+            place = rough[n]
+            following = rough[n + 1] if n + 1 < rough.size else stop
+            low = max(places[count - 1, 0] + attack if count > kept else begin, place - ahead)
+            high = min(place + longest, max(following - attack, place + 2 * attack), stop)
+            if count > kept:
+                low = _valley(white, low, place)
+            sample, offset, std = edge_foot(white, low, max(place - attack, low), high)
+            start = sample + math.floor(offset)
+            if count == kept:
+                start = min(first_sample(white, low, place, high, attack), start)
+            start = min(max(start, low), high - 1)
+            if count > kept and start <= places[count - 1, 0]:
+                continue
+            places[count, 0], feet[count, 0], feet[count, 1] = start, sample - start + offset, std
+            count += 1
+        for n in range(kept, count):
+            limit = places[n + 1, 0] if n + 1 < count else stop
+            places[n, 1] = event_end(white, places[n, 0], limit, decay)
+    return places[:count], feet[:count]
+
+
+def events_of_pieces(white: WaveArray, pieces: IntArray, rate_hz: float) -> tuple[IntArray, FloatArray]:
+    """Events of pieces of clusters as in `piece_events`, with the spans of a sampling rate."""
+    attack, decay, twin = spans(rate_hz)
+    return piece_events(white, pieces, attack, decay, np.append(_LIMITS, twin))
+
+
+@_njit
+def in_order(onsets: IntArray, ends: IntArray, apart: int) -> IntArray:  # pragma: no cover - compiled
+    """Which of the events, sorted by onset, stay; their ends are cut at the next onset.
+
+    One that a neighbouring piece found again, less than `apart` samples after the first, is dropped.
+    """
+    kept = np.empty(onsets.size, np.int64)
+    count = 0
+    for n in range(onsets.size):
+        if count and onsets[n] < ends[kept[count - 1]]:
+            if onsets[n] - onsets[kept[count - 1]] < apart:
+                continue
+            ends[kept[count - 1]] = onsets[n]
+        kept[count] = n
+        count += 1
+    return kept[:count]
 
 
 def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:
@@ -201,26 +263,24 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
     ----------
     J. Pickands, Trans. Am. Math. Soc. 145, 51-73, 1969 (from memory; index 1, constant 1).
     """
-    widths = 2.0 ** np.arange(scales)
+    return np.asarray(_sigmas(scales, samples_per_cycle, false_events), np.float64)
+
+
+@_njit
+def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:  # pragma: no cover - compiled
     sigmas = np.full(scales, 5.0)
-    for _ in range(20):
-        places = samples_per_cycle * np.minimum(1.0, sigmas**2 / widths)
-        chances = np.minimum(false_events / scales / places, 1.0)
-        sigmas = np.array([_normal_quantile(chance / 2) for chance in chances])
+    for scale in range(scales):
+        for _ in range(20):
+            places = samples_per_cycle * min(1.0, sigmas[scale] ** 2 / 2.0**scale)
+            sigmas[scale] = _normal_quantile(min(false_events / scales / places, 1.0) / 2)
     return sigmas
 
 
-def _normal_quantile(tail: float) -> float:
+@_njit
+def _normal_quantile(tail: float) -> float:  # pragma: no cover - compiled
     """The z beyond which the standard normal law leaves the share `tail`, by bisection on erfc."""
     low, high = 0.0, 40.0
-    for _ in range(200):
+    for _ in range(60):
         middle = (low + high) / 2
         low, high = (middle, high) if math.erfc(middle / math.sqrt(2)) / 2 > tail else (low, middle)
     return high
-
-
-def mad_noise(values: NDArray[np.float64]) -> float:
-    """Noise level: median absolute deviation / 0.6745 (NaN when there is nothing to measure)."""
-    if not values.size:
-        return float("nan")
-    return float(np.median(np.abs(values - np.median(values))) / 0.6744898)

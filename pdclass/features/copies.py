@@ -7,21 +7,23 @@ copy that went through the same near end once, as the pulse did, is more like it
 
 from __future__ import annotations
 
-from functools import lru_cache
 from itertools import pairwise
-from typing import NamedTuple
 
+import numba
 import numpy as np
-import scipy.fft
 
-from pdclass.features.arrival import band_means, faded, first_bins
+from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
-from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
-from pdclass.pulses import FloatArray
+from pdclass.features.kernels import largest, median_size, weighed
+from pdclass.features.lines import cut_lines, weigh
+from pdclass.features.transforms import SpectrumArray, spectra, waves_of
+from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, SAMPLES, SPECTRUM_FFT, STEP_NS, Windows
+from pdclass.pulses import FloatArray, IntArray, WaveArray
+
+_njit = numba.njit(cache=True, nogil=True)
 
 #: The pulse's beginning [samples], half of it fading out; copies are looked for from and up to these delays.
 _BEGINNING, _FIRST, _LAST = 80, 40, 1350
-_FFT = 4096
 _WINDOW_FADE = 200
 #: Deconvolution: bins this far below the strongest count little; a Gaussian low-pass of this width follows [Hz].
 _REGULAR, _PASS_HZ = 0.01, 6e6
@@ -29,6 +31,8 @@ _REGULAR, _PASS_HZ = 0.01, 6e6
 _APART, _APART_SHARE = 12, 0.04
 #: A copy stands so many noise levels out of the echogram and has this share of the pulse, else there is none.
 _STANDS_OUT, _SMALLEST = 4.0, 0.02
+#: Its level is that of every so many-th delay from here on: it is too smooth for more of them to tell more.
+_LEVEL_FROM, _COMB = 100, 4
 #: So much of a copy is compared with the pulse [samples], in these bands [MHz].
 _COMPARED, _COMPARED_FFT = 100, 512
 #: A band with less than this share of the pulse's strongest one is not compared.
@@ -37,111 +41,217 @@ LEVELS_MHZ = (1.0, 2.5, 5.0, 9.0, 14.0)
 _FLANK = 30
 
 
-class Copy(NamedTuple):
-    """One peak of the echogram: delay [samples], height over the pulse's, height over the echogram's own level."""
+def measure_copies(windows: Windows) -> FloatArray:
+    """The features of this family, (pulses, features): NaN where no copy stands out, or the noise is unknown."""
+    found = np.full((len(windows), len(COPIES)), np.nan)
+    rows = np.flatnonzero((windows.noise > 0) & (windows.last - ONSET >= _BEGINNING + _WINDOW_FADE))
+    if rows.size:
+        used = windows.take(rows) if rows.size < len(windows) else windows
+        found[rows] = _of_echograms(echogram(used), used)
+    return found
 
-    delay: int
-    ratio: float
-    clear: float
 
-
-def echogram(window: Window) -> FloatArray:
-    """The window deconvolved by its pulse's beginning, by delay [samples]; 1 at delay 0.
+def echogram(windows: Windows) -> WaveArray:
+    """Each window deconvolved by its pulse's beginning, (pulses, delays) by delay [samples]; 1 at delay 0.
 
     Wiener deconvolution with the noise beside the pulse, smoothed by a Gaussian of 6 MHz: a copy shows as a peak
-    with its sign, whatever the shape of the pulse.
+    with its sign, whatever the shape of the pulse. Carriers that were not taken out would hide every copy: they are
+    cut down first. Delays after the window's end are to be left alone.
     """
-    whole = scipy.fft.rfft(faded(window.wave[ONSET - GUARD : window.last], _WINDOW_FADE), _FFT)
-    beginning = scipy.fft.rfft(faded(window.wave[ONSET - GUARD : ONSET + _BEGINNING], _BEGINNING // 2), _FFT)
-    power = np.abs(beginning) ** 2
-    noise = np.repeat(window.noise_density, 2)[: power.size] * (window.last - ONSET)
-    ratio = whole * np.conj(beginning) / (power + noise + _REGULAR * power.max()) * _low_pass()
-    found = scipy.fft.irfft(ratio, _FFT)[: window.last - ONSET]
-    return np.asarray(found / (np.abs(found[:5]).max() + 1e-9))
+    whole, beginning = _pieces(windows.wave, windows.last, _WHOLE_FADE, _BEGINNING_FADE)
+    whole_spectrum, pulse_spectrum = spectra(whole, SPECTRUM_FFT), spectra(beginning, SPECTRUM_FFT)
+    cut_lines(whole_spectrum, pulse_spectrum)
+    scale = (windows.last - ONSET) / (windows.end - ONSET + GUARD)
+    _deconvolve(whole_spectrum, pulse_spectrum, windows.noise_power, scale, _LOW_PASS)
+    return _scaled(waves_of(whole_spectrum, SPECTRUM_FFT))
 
 
-def strongest_copies(gram: FloatArray) -> tuple[Copy | None, Copy | None]:
-    """The strongest peak of an echogram and the strongest one apart from it; None where nothing stands out."""
-    size = np.abs(gram[_FIRST : min(_LAST, gram.size)])
-    if size.size < 2 * _APART:
-        return None, None
-    level = float(np.median(np.abs(gram[100:]))) / 0.6744898 + 1e-9
-    first = _copy_at(gram, int(np.argmax(size)) + _FIRST, level)
-    apart = max(_APART, round(_APART_SHARE * first.delay))
-    near = first.delay - _FIRST
-    size[max(near - apart, 0) : near + apart + 1] = 0
-    second = _copy_at(gram, int(np.argmax(size)) + _FIRST, level)
-    return (first if _stands_out(first) else None), (second if _stands_out(second) else None)
+@_njit
+def _pieces(
+    waves: WaveArray, last: IntArray, window_fade: FloatArray, fade: FloatArray
+) -> tuple[WaveArray, WaveArray]:  # pragma: no cover - compiled
+    """What follows each onset, fading out at the end of the record, and the beginning of it."""
+    start = ONSET - GUARD
+    whole = np.zeros((len(waves), SAMPLES - start), np.float32)
+    beginning = np.empty((len(waves), fade.size), np.float32)
+    for row in range(len(waves)):
+        size = last[row] - start
+        whole[row, :size] = waves[row, start : last[row]]
+        for i in range(window_fade.size):
+            whole[row, size - window_fade.size + i] *= window_fade[i]
+        for i in range(fade.size):
+            beginning[row, i] = waves[row, start + i] * fade[i]
+    return whole, beginning
 
 
-def measure_copies(window: Window) -> dict[str, float]:
-    """The features of this family, by name: NaN where no copy stands out, or the noise is unknown."""
-    found = {feature.name: np.nan for feature in COPIES}
-    if not window.noise > 0 or window.last - ONSET < _BEGINNING + _WINDOW_FADE:
-        return found
-    gram = echogram(window)
-    first, second = strongest_copies(gram)
-    for number, copy in enumerate((first, second), start=1):
-        if copy is not None:
-            found |= {f"copy_{number}_{name}": value for name, value in _measured(window, gram, copy).items()}
-    if first is not None and second is not None:
-        early, late = sorted((first.delay, second.delay))
-        found["copy_delay_ratio"] = late / early
-    return {feature.name: float(found[feature.name]) for feature in COPIES}
+@_njit
+def _deconvolve(
+    whole: SpectrumArray, beginning: SpectrumArray, noise_power: WaveArray, scale: FloatArray, low_pass: WaveArray
+) -> None:  # pragma: no cover - compiled
+    """Replace each spectrum of a window by that of its echogram."""
+    power = np.empty(low_pass.size, np.float32)
+    for row in range(len(whole)):
+        for k in range(power.size):
+            power[k] = beginning[row, k].real ** 2 + beginning[row, k].imag ** 2
+        least, share = np.float32(_REGULAR) * power[largest(power)], np.float32(scale[row])
+        window, pulse, noise = whole[row], beginning[row], noise_power[row]
+        for k in range(power.size):
+            power[k] = low_pass[k] / (power[k] + noise[k] * share + least)
+            window[k] *= np.conj(pulse[k])
+        weigh(window, power)
 
 
-def _copy_at(gram: FloatArray, delay: int, level: float) -> Copy:
-    return Copy(delay, float(gram[delay]), float(abs(gram[delay])) / level)
+@_njit
+def _scaled(gram: WaveArray) -> WaveArray:  # pragma: no cover - compiled
+    for row in range(len(gram)):
+        unit = np.float32(1) / (abs(gram[row, largest(gram[row, :5])]) + np.float32(1e-9))
+        for i in range(gram.shape[1]):
+            gram[row, i] *= unit
+    return gram
 
 
-def _stands_out(copy: Copy) -> bool:
-    return copy.clear >= _STANDS_OUT and abs(copy.ratio) >= _SMALLEST
+def _of_echograms(gram: WaveArray, windows: Windows) -> FloatArray:
+    found = np.full((len(windows), len(COPIES)), np.nan)
+    own_samples = windows.end - ONSET + GUARD
+    bins = np.array(first_bins(LEVELS_MHZ, _COMPARED_FFT))
+    weights = np.ascontiguousarray(cosine_means(first_bins(LEVELS_MHZ, _COMPARED_FFT), _COMPARED_FFT, _COMPARED).T)
+    _copies_into(found, gram, windows.wave, windows.last, windows.noise_power, own_samples, _TAPER, bins, weights)
+    return found
 
 
-def _measured(window: Window, gram: FloatArray, copy: Copy) -> dict[str, float]:
-    peak = np.sign(copy.ratio) * gram[max(copy.delay - _FLANK, 0) : copy.delay + _FLANK + 1]
-    place = min(copy.delay, _FLANK)
-    left, right = (_reach(side, abs(copy.ratio) / 2) for side in (peak[place::-1], peak[place:]))
-    start = ONSET - GUARD + copy.delay
-    later = np.zeros(_COMPARED)
-    kept = window.wave[start : min(start + _COMPARED, window.last)]
-    later[: kept.size] = kept - kept[:6].mean()
-    later, pulse = later * _taper(), window.wave[ONSET - GUARD : ONSET - GUARD + _COMPARED] * _taper()
-    alike = float(np.sum(later * pulse) / np.sqrt(np.sum(later**2) * np.sum(pulse**2) + 1e-12))
-    found = {
-        "delay_us": copy.delay * STEP_NS / 1e3,
-        "ratio": copy.ratio,
-        "likeness": alike,
-        "width_ns": (left + right + 1) * STEP_NS,
-        "flank": float(peak.min() / abs(copy.ratio)),
-    }
-    return found | _levels(later, pulse, window.noise_density)
+@_njit
+def _copies_into(
+    found: FloatArray,
+    grams: WaveArray,
+    waves: WaveArray,
+    last: IntArray,
+    noise_power: WaveArray,
+    own_samples: IntArray,
+    taper: FloatArray,
+    bins: IntArray,
+    weights: FloatArray,
+) -> None:  # pragma: no cover - compiled
+    """Write the features in the order of `COPIES`, pulse by pulse."""
+    pulse, later = np.empty(_COMPARED), np.empty(_COMPARED)
+    bands = weights.shape[1]
+    strengths, floors, references = np.empty(bands), np.empty(bands), np.empty(bands)
+    scratch = np.empty(_LAST - _FIRST, np.float32)
+    for row in range(len(found)):
+        gram = grams[row, : last[row] - ONSET]
+        first, second = strongest_copies(gram, scratch)
+        if first < 0 and second < 0:
+            continue
+        for i in range(_COMPARED):
+            pulse[i] = waves[row, ONSET - GUARD + i] * taper[i]
+        _strengths_into(pulse, weights, references)
+        _floors_into(noise_power[row], np.sum(taper**2) / own_samples[row], bins, floors)
+        for place in range(2):
+            delay = first if place == 0 else second
+            if delay < 0:
+                continue
+            values = found[row, place * _EACH : (place + 1) * _EACH]
+            values[0], values[1] = delay * STEP_NS / 1e3, gram[delay]
+            if place > 0:
+                break
+            start = ONSET - GUARD + delay
+            _later_into(waves[row, start : min(start + _COMPARED, last[row])], taper, later)
+            _strengths_into(later, weights, strengths)
+            values[2] = _likeness(later, pulse)
+            values[3], values[4] = _width_and_flank(gram, delay)
+            _levels_into(strengths, references, floors, values[5:])
+        if first >= 0 and second >= 0:
+            found[row, _EACH + 2] = max(first, second) / min(first, second)
 
 
-def _reach(side: FloatArray, height: float) -> int:
-    """How many samples a peak stays above a height."""
-    below = np.flatnonzero(side[1:] <= height)
-    return int(below[0]) if below.size else side.size - 1
+@_njit
+def strongest_copies(gram: WaveArray, scratch: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
+    """Delays [samples] of the strongest peak of an echogram and of the strongest one apart from it; -1 = none.
+
+    `scratch` holds as many samples as there are delays to be looked at.
+    """
+    delays = min(_LAST, gram.size) - _FIRST
+    if delays < 2 * _APART:
+        return -1, -1
+    size = scratch[:delays]
+    size[:] = gram[_FIRST : _FIRST + delays]
+    least = max(_STANDS_OUT * (median_size(gram[_LEVEL_FROM::_COMB].copy()) / 0.6744898 + 1e-9), _SMALLEST)
+    first = largest(size)
+    if abs(size[first]) < least:
+        return -1, -1
+    apart = max(_APART, round(_APART_SHARE * (first + _FIRST)))
+    size[max(first - apart, 0) : first + apart + 1] = 0
+    second = largest(size)
+    return first + _FIRST, second + _FIRST if abs(size[second]) >= least else -1
 
 
-def _levels(later: FloatArray, pulse: FloatArray, density: FloatArray) -> dict[str, float]:
-    """Power of the copy over that of the pulse by band, noise subtracted, not below a third of the noise [dB]."""
-    starts = first_bins(LEVELS_MHZ, _COMPARED_FFT)
-    power, own = (np.abs(scipy.fft.rfft(wave, _COMPARED_FFT)) ** 2 for wave in (later, pulse))
-    noise = density[:: (density.size - 1) * 2 // _COMPARED_FFT] * float(np.sum(_taper() ** 2))
-    strengths, references, floors = (band_means(each, starts) for each in (power, own, noise))
-    left = np.maximum(strengths - floors, 0.3 * floors + 1e-9)
-    level = 10 * np.log10(left / (references + 1e-30))
-    level[references <= np.maximum(4 * floors, _LEVEL_SHARE * references.max())] = np.nan
-    return {_level_name(low, high): float(each) for (low, high), each in zip(_BANDS, level, strict=True)}
+@_njit
+def _later_into(kept: WaveArray, taper: FloatArray, later: FloatArray) -> None:  # pragma: no cover - compiled
+    """Write what lies at a copy's place, from the level at its beginning, tapered and padded."""
+    level = 0.0
+    for i in range(min(6, kept.size)):
+        level += kept[i] / min(6, kept.size)
+    later[:] = 0.0
+    for i in range(kept.size):
+        later[i] = (kept[i] - level) * taper[i]
 
 
-@lru_cache(maxsize=1)
-def _low_pass() -> FloatArray:
-    return np.asarray(np.exp(-0.5 * (scipy.fft.rfftfreq(_FFT, 1 / ANALYSIS_RATE_HZ) / _PASS_HZ) ** 2))
+@_njit
+def _likeness(later: FloatArray, pulse: FloatArray) -> float:  # pragma: no cover - compiled
+    energies = weighed(later, later) * weighed(pulse, pulse)
+    return float(weighed(later, pulse) / np.sqrt(energies + 1e-12))
 
 
-@lru_cache(maxsize=1)
+@_njit
+def _width_and_flank(gram: WaveArray, delay: int) -> tuple[float, float]:  # pragma: no cover - compiled
+    """Width of a peak at half its height [ns], and the lowest place beside it over its height."""
+    sign, height = np.sign(gram[delay]), abs(gram[delay])
+    low, high = max(delay - _FLANK, 0), min(delay + _FLANK, gram.size - 1)
+    left, right, flank = delay, delay, height
+    while left > low and sign * gram[left - 1] > height / 2:
+        left -= 1
+    while right < high and sign * gram[right + 1] > height / 2:
+        right += 1
+    for i in range(low, high + 1):
+        flank = min(flank, sign * gram[i])
+    return (right - left + 1) * STEP_NS, flank / height
+
+
+@_njit
+def _strengths_into(
+    wave: FloatArray, weights: FloatArray, strengths: FloatArray
+) -> None:  # pragma: no cover - compiled
+    """Write the mean power of a wave in each band."""
+    lags, padded = np.empty(wave.size), np.zeros(2 * wave.size + 3)
+    padded[: wave.size] = wave
+    correlate_into(wave, padded, lags)
+    band_means_into(lags, weights, strengths)
+
+
+@_njit
+def _floors_into(
+    power: WaveArray, scale: float, bins: IntArray, floors: FloatArray
+) -> None:  # pragma: no cover - compiled
+    """Write the mean noise of each band, from every bin of `power` that a shorter transform would have, too."""
+    step = 2 * (power.size - 1) // _COMPARED_FFT
+    for band in range(floors.size):
+        floors[band] = 0.0
+        for k in range(bins[band], bins[band + 1]):
+            floors[band] += power[k * step] * scale
+        floors[band] /= bins[band + 1] - bins[band]
+
+
+@_njit
+def _levels_into(
+    strengths: FloatArray, references: FloatArray, floors: FloatArray, levels: FloatArray
+) -> None:  # pragma: no cover - compiled
+    """Write power of the copy over that of the pulse by band, noise subtracted, not below a third of the noise [dB]."""
+    hidden = _LEVEL_SHARE * references.max()
+    for band in range(floors.size):
+        if references[band] > max(4 * floors[band], hidden):
+            left = max(strengths[band] - floors[band], 0.3 * floors[band] + 1e-9)
+            levels[band] = 10 * np.log10(left / (references[band] + 1e-30))
+
+
 def _taper() -> FloatArray:
     taper = np.ones(_COMPARED)
     taper[:15] = np.sin(np.arange(15) / 15 * np.pi / 2) ** 2
@@ -149,7 +259,15 @@ def _taper() -> FloatArray:
     return taper
 
 
+_TAPER = _taper()
+_WHOLE_FADE = fade_out(_WINDOW_FADE, _WINDOW_FADE)
+_BEGINNING_FADE = fade_out(GUARD + _BEGINNING, _BEGINNING // 2)
+_LOW_PASS = np.exp(-0.5 * (np.arange(SPECTRUM_FFT // 2 + 1) * ANALYSIS_RATE_HZ / SPECTRUM_FFT / _PASS_HZ) ** 2).astype(
+    np.float32
+)
 _BANDS = tuple(pairwise(LEVELS_MHZ))
+#: Features of the first copy; of the second there are delay and ratio alone.
+_EACH = 5 + len(_BANDS)
 
 
 def _level_name(low: float, high: float) -> str:
@@ -174,36 +292,40 @@ def _feature(
         tolerance,
         "Wiener deconvolution (N. Wiener, 1949, from memory)",
         needs_snr_db=12.0,
+        absent="no later copy stands out",
+        edition=2,
     )
 
 
-def _of_copy(number: int, which: str) -> tuple[Feature, ...]:
+def _place_of(number: int, which: str) -> tuple[Feature, ...]:
     name = f"copy_{number}_{{}}".format
     return (
         _feature(name("delay_us"), "µs", f"delay of the {which} copy", ("later", "earlier"), (0.0, 15.0), 0.03),
         _feature(name("ratio"), "", f"height of the {which} copy", ("larger", "smaller"), (-20.0, 20.0), 0.03),
-        _feature(
-            name("likeness"), "", f"likeness of the {which} copy to the pulse", ("more", "less"), (-1.0, 1.0), 0.15
-        ),
-        _feature(name("width_ns"), "ns", f"width of the {which} copy", ("wider", "narrower"), (0.0, 700.0), 20.0),
-        _feature(name("flank"), "", f"lowest flank beside the {which} copy", ("higher", "deeper"), (-50.0, 1.0), 0.2),
-        *(
-            _feature(
-                name(_level_name(low, high)),
-                "dB",
-                f"level of the {which} copy over the pulse at {low:g}-{high:g} MHz",
-                ("higher", "lower"),
-                (-80.0, 80.0),
-                2.5,
-            )
-            for low, high in _BANDS
-        ),
     )
 
 
+_SHAPE = (
+    _feature("copy_1_likeness", "", "likeness of the strongest copy to the pulse", ("more", "less"), (-1.0, 1.0), 0.15),
+    _feature("copy_1_width_ns", "ns", "width of the strongest copy", ("wider", "narrower"), (0.0, 700.0), 20.0),
+    _feature("copy_1_flank", "", "lowest flank beside the strongest copy", ("higher", "deeper"), (-50.0, 1.0), 0.2),
+    *(
+        _feature(
+            f"copy_1_{_level_name(low, high)}",
+            "dB",
+            f"level of the strongest copy over the pulse at {low:g}-{high:g} MHz",
+            ("higher", "lower"),
+            (-80.0, 80.0),
+            2.5,
+        )
+        for low, high in _BANDS
+    ),
+)
+
 COPIES = (
-    *_of_copy(1, "strongest"),
-    *_of_copy(2, "second"),
+    *_place_of(1, "strongest"),
+    *_SHAPE,
+    *_place_of(2, "second"),
     _feature(
         "copy_delay_ratio",
         "",

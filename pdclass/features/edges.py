@@ -6,128 +6,191 @@ high state in a unipolar pulse.
 
 from __future__ import annotations
 
+import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.window import GUARD, ONSET, STEP_NS, Window
-from pdclass.pulses import FloatArray
+from pdclass.features.kernels import LANES, sum_of_squares
+from pdclass.features.window import GUARD, ONSET, STEP_NS, Windows
+from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
 _LONGEST_NS = 15000.0
+#: What a missing edge means.
+_OPEN = "the pulse does not come down to the level before its end"
+#: Crossings are looked for among the own samples and this long a lead [samples].
+_LEAD = 2 * GUARD
+#: Levels of the crossings, from the peak outwards.
+_SHARES = (0.9, 0.5, 0.25, 0.1)
+PLACES = (
+    "peak",
+    *(f"rise_{percent}" for percent in (90, 50, 25, 10)),
+    *(f"fall_{percent}" for percent in (90, 50, 25, 10)),
+    "foot_10",
+    "raw_90",
+    "raw_10",
+)
+_COLUMN = {name: column for column, name in enumerate(PLACES)}
+_FOOT, _RAW_90, _RAW_10, _HEIGHT = _COLUMN["foot_10"], _COLUMN["raw_90"], _COLUMN["raw_10"], len(PLACES)
 
 
-def crossing(wave: FloatArray, peak: int, level: float, *, forward: bool) -> float:
-    """Where the wave passes a level, going from its peak outwards, interpolated [samples]; NaN if nowhere.
-
-    Parameters
-    ----------
-    wave : (samples,) with the peak at `peak`.
-    peak : place of the peak.
-    level : in the wave's unit, below the peak.
-    forward : towards later samples, else towards earlier ones.
-    """
-    side = wave[peak:] if forward else wave[peak::-1]
-    below = np.flatnonzero(side < level)
-    if not below.size:
-        return float("nan")
-    k = int(below[0])
-    if k == 0:
-        return float("nan")
-    step = k - 1 + (side[k - 1] - level) / (side[k - 1] - side[k])
-    return float(peak + step if forward else peak - step)
-
-
-def crest(wave: FloatArray, peak: int) -> tuple[float, float]:
-    """Place [samples] and height of a peak by the parabola through its three highest samples."""
-    if not 0 < peak < wave.size - 1:
-        return float(peak), float(wave[peak])
-    left, middle, right = wave[peak - 1 : peak + 2]
-    bend = left - 2 * middle + right
-    shift = 0.5 * (left - right) / bend if bend < 0 else 0.0
-    return peak + shift, float(middle - 0.25 * (left - right) * shift)
-
-
-def edge_places(wave: FloatArray, peak: int) -> dict[str, float]:
-    """Crossings at 10, 25, 50 and 90 % before and after the peak, and the peak itself [samples].
-
-    Keys are `rise_10` ... `fall_10` and `peak`; NaN where the wave does not come down to the level.
-    """
-    place, height = crest(wave, peak)
-    found = {"peak": place, "height": height}
-    for percent in (10, 25, 50, 90):
-        found[f"rise_{percent}"] = crossing(wave, peak, height * percent / 100, forward=False)
-        found[f"fall_{percent}"] = crossing(wave, peak, height * percent / 100, forward=True)
-    return found
-
-
-def measured_places(window: Window) -> dict[str, float]:
-    """Places of the crossings that the features are measured between, from the window's first sample [samples].
+def measured_places(windows: Windows) -> FloatArray:
+    """Places of the crossings that the features are measured between [samples], (pulses, PLACES and the height).
 
     Crossings are looked for among the pulse's own samples, on a running mean over a sixth of the pulse's width (a
     twenty-fourth for the rise): a slow edge in noise crosses a level many times, and the mean, not the first of
-    them, is meant. Keys as of `edge_places`, and `raw_10`, `raw_90` on the wave with its carriers,
-    `foot_10` on the mean of the widths.
+    them, is meant. `raw_10` and `raw_90` are those of the wave with its carriers, `foot_10` is on the mean over a
+    sixth. NaN where the wave does not come down to the level.
     """
-    wave, first = window.edge, ONSET - 2 * GUARD
-    width = float(np.sum(wave[np.abs(wave) > max(0.1, 3 * window.noise)] ** 2)) if window.noise > 0 else 0.0
-    wide, fine = smoothed(wave, width / 6), smoothed(wave, width / 24)
-    raw = smoothed(window.raw[first : window.end], width / 24)
-    peak = window.peak - first
-    at, rising = edge_places(wide, _near(wide, peak)), edge_places(fine, _near(fine, peak))
-    at |= {"foot_10": at["rise_10"], "rise_10": rising["rise_10"], "rise_90": rising["rise_90"]}
-    carried = edge_places(raw, _near(raw, peak)) if raw[peak] > 0 else {"rise_10": np.nan, "rise_90": np.nan}
-    at |= {"raw_10": carried["rise_10"], "raw_90": carried["rise_90"]}
-    return {name: place if name == "height" else place + first for name, place in at.items()}
+    noise = np.where(windows.noise > 0, windows.noise, np.nan)
+    return _places(windows.wave, windows.raw, windows.end, windows.peak, noise)
 
 
-def measure_edges(window: Window) -> dict[str, float]:
-    """The features of this family, by name."""
-    at = measured_places(window)
-    rise = (at["rise_90"] - at["rise_10"]) * STEP_NS
-    fall = (at["fall_10"] - at["fall_90"]) * STEP_NS
-    width_50, width_25, width_10 = (
-        (at[last] - at[first]) * STEP_NS
-        for first, last in (("rise_50", "fall_50"), ("rise_25", "fall_25"), ("foot_10", "fall_10"))
-    )
-    return {
-        "rise_ns": rise,
-        "rise_raw_ns": (at["raw_90"] - at["raw_10"]) * STEP_NS,
-        "fall_ns": fall,
-        "width_50_ns": width_50,
-        "width_25_ns": width_25,
-        "width_10_ns": width_10,
-        "width_ratio": width_10 / width_50,
-        "asymmetry": fall / rise if rise > 0 else np.nan,
-        "tail_ns": _tail_ns(window),
-    }
+def measure_edges(windows: Windows) -> FloatArray:
+    """The features of this family, (pulses, EDGES)."""
+    at = dict(zip(PLACES, measured_places(windows).T, strict=False))
+    rise, raw = at["rise_90"] - at["rise_10"], at["raw_90"] - at["raw_10"]
+    fall = at["fall_10"] - at["fall_90"]
+    width_50 = at["fall_50"] - at["rise_50"]
+    width_10 = at["fall_10"] - at["foot_10"]
+    ratio = width_10 / np.where(width_50 > 0, width_50, np.nan)
+    lopsided = fall / np.where(rise > 0, rise, np.nan)
+    tail = _tails(windows.wave, windows.end, windows.peak, np.where(windows.noise > 0, windows.noise, 0.0))
+    times = [each * STEP_NS for each in (rise, raw, fall, width_50, width_10)]
+    return np.stack([*times, ratio, lopsided, tail * STEP_NS], axis=1)
 
 
-def smoothed(wave: FloatArray, samples: float) -> FloatArray:
-    """Running mean over an odd number of samples, the nearest to the one asked for; ends are held."""
-    reach = int(samples) // 2
-    if reach < 1:
-        return wave
-    padded = np.concatenate([np.full(reach, wave[0]), wave, np.full(reach, wave[-1])])
-    total = np.concatenate([[0.0], np.cumsum(padded)])
-    return np.asarray((total[2 * reach + 1 :] - total[: -2 * reach - 1]) / (2 * reach + 1))
+@numba.njit(cache=True, nogil=True)
+def _places(
+    waves: WaveArray, raws: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
+    at = np.full((len(waves), _HEIGHT + 1), np.nan)
+    first, found = ONSET - _LEAD, np.empty(_HEIGHT + 1)
+    for r in range(len(waves)):
+        wave, raw = waves[r, first : end[r]], raws[r, first : end[r]]
+        width = _width(wave, max(0.1, 3 * noise[r])) if noise[r] > 0 else 0.0
+        wide, fine, centre = int(width / 6) // 2, int(width / 24) // 2, peak[r] - first
+        at[r, 0], at[r, _HEIGHT] = outer_crossings(wave, centre, wide, at[r, 1:5], at[r, 5:9])
+        at[r, _FOOT] = at[r, 4]
+        outer_crossings(wave, centre, fine, found[1:5], found[5:9])
+        at[r, 1], at[r, 4] = found[1], found[4]
+        if mean_at(raw, centre, fine) > 0:
+            outer_crossings(raw, centre, fine, found[1:5], found[5:9])
+            at[r, _RAW_90], at[r, _RAW_10] = found[1], found[4]
+        at[r, :_HEIGHT] += first
+    return at
 
 
-def _near(wave: FloatArray, peak: int) -> int:
-    """The largest sample within the reach that smoothing moves a peak."""
-    first = max(peak - 2 * GUARD, 0)
-    return first + int(np.argmax(wave[first : peak + 2 * GUARD + 1]))
+@numba.njit(cache=True, nogil=True)
+def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compiled
+    """Energy of what stands above a limit, over that of the peak [samples]."""
+    lane, low = np.zeros(LANES), np.float32(limit)
+    whole = wave.size // LANES * LANES
+    for first in range(0, whole, LANES):
+        for j in range(LANES):
+            value = wave[first + j] if abs(wave[first + j]) > low else np.float32(0.0)
+            lane[j] += value * value
+    for j in range(wave.size - whole):
+        value = wave[whole + j] if abs(wave[whole + j]) > low else np.float32(0.0)
+        lane[j] += value * value
+    return float(lane.sum())
 
 
-def _tail_ns(window: Window) -> float:
+@numba.njit(cache=True, nogil=True)
+def outer_crossings(
+    wave: WaveArray, peak: int, reach: int, rise: FloatArray, fall: FloatArray
+) -> tuple[float, float]:  # pragma: no cover - compiled
+    """Where a running mean falls to 90, 50, 25 and 10 % of its peak, before (`rise`) and after it (`fall`).
+
+    Parameters
+    ----------
+    wave : (samples,) whose peak lies near `peak`.
+    reach : the mean is over so many samples to each side; ends are held.
+    rise, fall : (4,) receive the places, interpolated [samples]; NaN where the mean does not come down to the level.
+
+    Returns
+    -------
+    Place [samples] and height of the peak of the mean, by the parabola through its three highest samples.
+    """
+    first, stop = max(peak - 2 * GUARD, 0), min(peak + 2 * GUARD + 1, wave.size)
+    value = mean_at(wave, first, reach)
+    top, highest = first, value
+    for i in range(first + 1, stop):
+        value = _next_mean(wave, i - 1, reach, 1, value)
+        if value > highest:
+            top, highest = i, value
+    highest = mean_at(wave, top, reach)
+    place, height = float(top), highest
+    if 0 < top < wave.size - 1:
+        left, right = mean_at(wave, top - 1, reach), mean_at(wave, top + 1, reach)
+        bend = left - 2 * highest + right
+        shift = 0.5 * (left - right) / bend if bend < 0 else 0.0
+        place, height = top + shift, highest - 0.25 * (left - right) * shift
+    _crossings(wave, top, reach, -1, height, rise)
+    _crossings(wave, top, reach, 1, height, fall)
+    return place, height
+
+
+@numba.njit(cache=True, nogil=True)
+def _crossings(
+    wave: WaveArray, top: int, reach: int, step: int, height: float, places: FloatArray
+) -> None:  # pragma: no cover - compiled
+    """Where the mean first falls below each share of a height, going from its top in steps of 1 or -1."""
+    places[:] = np.nan
+    former, i, level = mean_at(wave, top, reach), top, 0
+    while level < len(_SHARES) and former < _SHARES[level] * height:
+        level += 1
+    while level < len(_SHARES) and 0 <= i + step < wave.size:
+        value = _next_mean(wave, i, reach, step, former)
+        while level < len(_SHARES) and value < _SHARES[level] * height:
+            places[level] = i + step * (former - _SHARES[level] * height) / (former - value)
+            level += 1
+        former, i = value, i + step
+
+
+@numba.njit(cache=True, nogil=True)
+def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cover - compiled
+    """Mean of the samples about a place; ends are held."""
+    total = 0.0
+    for i in range(place - reach, place + reach + 1):
+        total += wave[min(max(i, 0), wave.size - 1)]
+    return total / (2 * reach + 1)
+
+
+@numba.njit(cache=True, nogil=True)
+def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) -> float:  # pragma: no cover - compiled
+    """The mean one step on from a place where it is known."""
+    if reach == 0:
+        return np.float64(wave[place + step])
+    enters = min(max(place + step * (reach + 1), 0), wave.size - 1)
+    leaves = min(max(place - step * reach, 0), wave.size - 1)
+    return mean + (np.float64(wave[enters]) - np.float64(wave[leaves])) / (2 * reach + 1)
+
+
+@numba.njit(cache=True, nogil=True)
+def _tails(
+    waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
     """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out."""
-    noise = window.noise if window.noise > 0 else 0.0
-    energy = np.cumsum(window.wave[ONSET - GUARD : window.end] ** 2 - noise**2)
-    passed = int(np.argmax(energy >= 0.9 * energy[-1]))
-    return float(max(passed + ONSET - GUARD - window.peak, 0)) * STEP_NS
+    tails, first = np.empty(len(waves)), ONSET - GUARD
+    for r in range(len(waves)):
+        floor = noise[r] * noise[r]
+        limit = 0.9 * (sum_of_squares(waves[r, first : end[r]]) - floor * (end[r] - first))
+        passed, i = 0.0, first
+        while i < end[r]:
+            value = np.float64(waves[r, i])
+            passed += value * value - floor
+            if passed >= limit:
+                break
+            i += 1
+        tails[r] = max((i if i < end[r] else first) - peak[r], 0)
+    return tails
 
 
 def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 9.0) -> Feature:
-    return Feature(name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db)
+    return Feature(
+        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=_OPEN
+    )
 
 
 EDGES = (
@@ -141,7 +204,6 @@ EDGES = (
     ),
     _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
     _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
-    _edge("width_25_ns", "width at a quarter of the peak", "wider", "narrower", "width at a quarter {value}", 12.0),
     _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
     Feature(
         "width_ratio",

@@ -2,31 +2,44 @@
 
 from __future__ import annotations
 
+import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.window import ANALYSIS_RATE_HZ, ONSET, Window
+from pdclass.features.kernels import lowest
+from pdclass.features.window import ANALYSIS_RATE_HZ, ONSET, Windows
+from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 #: Swings smaller than this share of the peak, or than three noise levels, are not counted.
 _SMALLEST_SWING = 0.08
 
 
-def measure_ringing(window: Window) -> dict[str, float]:
-    """The features of this family, by name."""
-    own = window.wave[ONSET : window.end]
-    threshold = max(_SMALLEST_SWING, 3 * window.noise if window.noise > 0 else 0.0)
-    signs = np.sign(own[np.abs(own) > threshold])
-    swings = int(np.count_nonzero(np.diff(signs)))
-    strong = np.flatnonzero(np.abs(own) > threshold)
-    span_us = max(float(strong[-1] - strong[0]), 1.0) / ANALYSIS_RATE_HZ * 1e6 if strong.size else np.nan
-    after = window.wave[window.peak : window.end]
-    before = window.wave[ONSET : window.peak]
-    return {
-        "swings": float(swings),
-        "swings_per_us": swings / span_us if swings else 0.0,
-        "overshoot": float(max(0.0, -after.min())),
-        "undershoot_before": float(max(0.0, -before.min())) if before.size else 0.0,
-    }
+def measure_ringing(windows: Windows) -> FloatArray:
+    """The features of this family, (pulses, RINGING)."""
+    limit = np.maximum(_SMALLEST_SWING, np.where(windows.noise > 0, 3 * windows.noise, 0.0))
+    return _swings(windows.wave, windows.end, windows.peak, limit)
+
+
+@numba.njit(cache=True, nogil=True)
+def _swings(
+    waves: WaveArray, end: IntArray, peak: IntArray, limit: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
+    """Changes of sign, their rate over what stands out [1/us], and the lowest samples after and before the peak."""
+    found = np.zeros((len(waves), 4))
+    for r in range(len(waves)):
+        low, sign, swings, first, last = np.float32(limit[r]), 0, 0, -1, -1
+        for i in range(ONSET, end[r]):
+            value = waves[r, i]
+            if abs(value) > low:
+                here = 1 if value > 0 else -1
+                swings += here == -sign
+                sign, last = here, i
+                first = i if first < 0 else first
+        found[r, 0] = swings
+        found[r, 1] = swings / max(last - first, 1) * (ANALYSIS_RATE_HZ / 1e6)
+        found[r, 2] = 0.0 - lowest(waves[r, peak[r] : end[r]])
+        found[r, 3] = 0.0 - lowest(waves[r, ONSET : peak[r]])
+    return found
 
 
 RINGING = (

@@ -2,34 +2,80 @@
 
 from __future__ import annotations
 
+from math import comb
+
+import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.window import Window
-from pdclass.wavelets import scale_energies
+from pdclass.features.kernels import weighed
+from pdclass.features.window import SPECTRUM_FFT, Windows
+from pdclass.pulses import FloatArray, WaveArray
 
 LEVELS = 7
-#: Every pulse is padded to one length, so that the coarsest scale has room.
-_PADDED = 2048
-_REFERENCE = "wavelet energy entropy after C. E. Shannon; symlet of eight vanishing moments (I. Daubechies, 1992)"
+MOMENTS = 8
+_REFERENCE = (
+    "energy by wavelet level, the mean over all shifts: eight vanishing moments (I. Daubechies, Ten Lectures on "
+    "Wavelets, 1992); entropy after C. E. Shannon, Bell Syst. Tech. J. 27, 1948 (both from memory)"
+)
 
 
-def measure_scales(window: Window) -> dict[str, float]:
-    """The features of this family, by name; level 1 is left out, it lies above the analysis band."""
-    own = np.zeros(_PADDED)
-    own[: window.own.size] = window.own
-    energies = scale_energies(own, LEVELS)[1:]
-    total = energies.sum()
-    if total <= 0:
-        return {"scale_entropy": np.nan, "scale_centre": np.nan}
-    share = energies / total
-    entropy = -np.sum(share * np.log(np.maximum(share, 1e-12))) / np.log(share.size)
-    return {"scale_entropy": float(entropy), "scale_centre": float(np.sum(share * np.arange(2, LEVELS + 1)))}
+def scale_gains(levels: int, bins: int) -> FloatArray:
+    """Share of the power at each frequency from 0 to half the rate that is energy of each scale, (levels, bins).
+
+    Level j is the first row but j - 1 and holds about rate/2^(j+1) to rate/2^j; with the coarsest approximation the
+    shares add up to one. It is what the decimated transform gives on the average over its 2^j places in time, so
+    that no shift of the wave changes it; power needs no phase, so that every wavelet of as many moments has it:
+    |L|² = 2 cos^2N(w/2) sum_k C(N - 1 + k, k) sin^2k(w/2), N = 8 (I. Daubechies, 1992, from memory).
+    """
+    angle = np.pi * np.arange(bins) / (bins - 1)
+    passed, gains = np.ones(bins), np.empty((levels, bins))
+    for level in range(levels):
+        low = _half_band(angle * 2**level)
+        gains[level], passed = passed * (1 - low), passed * low
+    return gains
+
+
+def measure_scales(windows: Windows) -> FloatArray:
+    """The features of this family, (pulses, features); level 1 is left out, it lies above the analysis band."""
+    found = np.full((len(windows), len(SCALES)), np.nan)
+    _scales_into(found, windows.own_power, _GAINS)
+    return found
+
+
+def _half_band(angle: FloatArray) -> FloatArray:
+    """Half of the power gain of the low-pass of one step."""
+    sine = np.sin(angle / 2) ** 2
+    return np.asarray((1 - sine) ** MOMENTS * sum(comb(MOMENTS - 1 + k, k) * sine**k for k in range(MOMENTS)))
+
+
+@numba.njit(cache=True, nogil=True)
+def _scales_into(found: FloatArray, power: WaveArray, gains: FloatArray) -> None:  # pragma: no cover - compiled
+    """Write evenness and centre of the energies, pulse by pulse."""
+    scales = len(gains)
+    energies = np.empty(scales)
+    for row in range(len(power)):
+        for scale in range(scales):
+            energies[scale] = weighed(power[row], gains[scale])
+        total = energies.sum()
+        if not total > 0:
+            continue
+        entropy, centre = 0.0, 0.0
+        for scale in range(scales):
+            share = energies[scale] / total
+            entropy -= share * np.log(max(share, 1e-12))
+            centre += share * (scale + 2)
+        found[row, 0], found[row, 1] = entropy / np.log(scales), centre
+
+
+#: Negative frequencies count as well as positive ones; 0 and half the rate stand alone.
+_GAINS = scale_gains(LEVELS, SPECTRUM_FFT // 2 + 1)[1:]
+_GAINS[:, [0, -1]] /= 2
 
 
 SCALES = (
     Feature(
-        "scale_entropy",
+        "scale_evenness",
         "",
         "how evenly the energy is spread over the wavelet scales, 0 (one scale) to 1 (all alike)",
         "evenness over scales {value}",
@@ -41,7 +87,7 @@ SCALES = (
         needs_snr_db=6.0,
     ),
     Feature(
-        "scale_centre",
+        "scale_mean_level",
         "",
         "energy-weighted mean wavelet level; one level more = half the frequency",
         "centre of the wavelet scales {value}",

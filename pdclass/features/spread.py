@@ -2,89 +2,136 @@
 
 from __future__ import annotations
 
+import numba
 import numpy as np
-import scipy.fft
 
 from pdclass.features.feature import Feature
-from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
-from pdclass.pulses import FloatArray
+from pdclass.features.kernels import LANES, sum_of_squares
+from pdclass.features.window import ANALYSIS_RATE_HZ, BAND, BAND_HZ, GUARD, ONSET, STEP_NS, Windows
+from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 #: So far below the pulse nothing tells of the path any more.
 _LOWEST_DB = -60.0
 #: Stretches after the peak [us] whose level is measured: late, weak structure tells of the path.
-LATE_US = ((0.3, 0.6), (0.6, 1.2), (1.2, 3.0), (3.0, 6.0))
+LATE_US = ((0.3, 0.6), (0.6, 1.2))
+_LATE = tuple(tuple(round(edge * ANALYSIS_RATE_HZ / 1e6) for edge in stretch) for stretch in LATE_US)
+#: Samples after the peak that still count as its beginning where late levels are held against it.
+_CORE = 30
+#: Samples after the onset that the crest factor is held against.
+_BEGINNING = 200
 
 _CONTIN = "A. Contin et al., IEEE Trans. Dielectr. Electr. Insul. 9(3), 335-348, 2002 (from memory)"
 
 
-def equivalent_spread(wave: FloatArray, rate_hz: float, noise: float = 0.0) -> tuple[float, float]:
-    """Equivalent time length T [s] and bandwidth W [Hz] of a wave; T W >= 1/(4 pi) without noise.
+def measure_spread(windows: Windows) -> FloatArray:
+    """The features of this family, (pulses, SPREAD), all on the pulse's own samples."""
+    noise = np.where(windows.noise > 0, windows.noise, 0.0)
+    size = windows.end - ONSET + GUARD
+    length_ns = equivalent_length(windows.own, size, noise) * STEP_NS
+    width_mhz = equivalent_width(windows.own_power[:, BAND], windows.noise_power[:, BAND], BAND_HZ / 1e6)
+    shape = _shape(windows.wave, windows.end, windows.peak, noise)
+    late = _late_levels(windows.wave, windows.end, windows.peak, np.where(windows.noise > 0, noise, np.nan))
+    onset_to_peak = np.maximum(windows.peak - ONSET, 0)
+    return np.column_stack([length_ns, width_mhz, onset_to_peak * STEP_NS, shape, late])
 
-    T² = second moment of the energy in time about its centre, W² = second moment of the spectral energy in
-    frequency about zero, two-sided; the mean energy of white noise of the given level is taken out of both. NaN
-    where nothing is left.
+
+@numba.njit(cache=True, nogil=True)
+def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> FloatArray:  # pragma: no cover - compiled
+    """Equivalent time length of waves [samples]: root of the second moment of the energy about its centre.
+
+    The mean energy of white noise of the given level is taken out. NaN where nothing is left.
+
+    Parameters
+    ----------
+    waves : (waves, samples) of which the first `size` count, and zeros behind them for a multiple of `LANES`.
+    size : (waves,) samples that count.
+    noise : (waves,) level of the noise, >= 0.
 
     References
     ----------
     A. Contin, A. Cavallini, G. C. Montanari, G. Pasini, F. Puletti, IEEE TDEI 9(3), 335-348, 2002 (from memory).
     """
-    energy = wave**2 - noise**2
-    total = energy.sum()
-    if total <= 0:
-        return float("nan"), float("nan")
-    time_s = np.arange(wave.size) / rate_hz
-    centre = np.sum(time_s * energy) / total
-    length = np.sum((time_s - centre) ** 2 * energy) / total
-    size = scipy.fft.next_fast_len(2 * wave.size)
-    power = np.abs(scipy.fft.fft(wave, size)) ** 2 - wave.size * noise**2
-    width = np.sum(scipy.fft.fftfreq(size, 1 / rate_hz) ** 2 * power) / power.sum()
-    return float(np.sqrt(length)) if length > 0 else float("nan"), float(np.sqrt(width)) if width > 0 else float("nan")
+    found = np.full(len(waves), np.nan)
+    for r in range(len(waves)):
+        lanes, n, floor = np.zeros((3, LANES)), np.float64(size[r]), noise[r] * noise[r]
+        for first in range(0, size[r], LANES):
+            for j in range(LANES):
+                value, time = np.float64(waves[r, first + j]), np.float64(first + j)
+                energy = value * value
+                lanes[0, j] += energy
+                lanes[1, j] += energy * time
+                lanes[2, j] += energy * time * time
+        total = lanes[0].sum() - floor * n
+        if total > 0:
+            centre = (lanes[1].sum() - floor * n * (n - 1) / 2) / total
+            second = (lanes[2].sum() - floor * (n - 1) * n * (2 * n - 1) / 6) / total - centre * centre
+            found[r] = np.sqrt(second) if second > 0 else np.nan
+    return found
 
 
-def measure_spread(window: Window) -> dict[str, float]:
-    """The features of this family, by name, all on the pulse's own samples."""
-    noise = window.noise if window.noise > 0 else 0.0
-    length_s, _ = equivalent_spread(window.own, ANALYSIS_RATE_HZ, noise)
-    energy = window.wave[ONSET - GUARD : window.end] ** 2 - noise**2
-    peak = window.peak - (ONSET - GUARD)
-    total = energy.sum()
-    strong = np.flatnonzero(np.abs(window.wave[ONSET : window.end]) > max(0.1, 4 * noise))
-    beginning = energy[GUARD : GUARD + 200]
-    found = {
-        "equivalent_length_ns": length_s * 1e9,
-        "equivalent_width_mhz": _width_mhz(window),
-        "onset_to_peak_ns": max(window.peak - ONSET, 0) * STEP_NS,
-        "late_energy": float(energy[peak + 20 : peak + 120].sum() / total),
-        "energy_before_peak": float(energy[:peak].sum() / total),
-        "standing_out_ns": float(strong[-1] - strong[0] + 1) * STEP_NS if strong.size else 0.0,
-        "crest_factor": float(1 / np.sqrt(max(beginning.sum() / 200, 1e-4))),
-    }
-    return found | {_late_name(first, last): _late_level_db(window, first, last) for first, last in LATE_US}
+@numba.njit(cache=True, nogil=True)
+def equivalent_width(
+    power: WaveArray, noise: WaveArray, frequency: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
+    """Equivalent bandwidth, in the unit of `frequency`: root of the second moment of power less noise about zero.
+
+    NaN where nothing is left; noise that is NaN counts as none. (pulses, bins) twice, (bins,).
+    """
+    found = np.full(len(power), np.nan)
+    for r in range(len(power)):
+        total, moment = 0.0, 0.0
+        for k in range(frequency.size):
+            signal = np.float64(power[r, k] - (noise[r, k] if noise[r, k] > 0 else np.float32(0.0)))
+            total += signal
+            moment += signal * frequency[k] * frequency[k]
+        if total > 0 and moment > 0:
+            found[r] = np.sqrt(moment / total)
+    return found
 
 
-def _width_mhz(window: Window) -> float:
-    """Root of the second moment of the power less noise, within the analysis band [MHz]."""
-    frequency_hz, power, noise = window.power()
-    signal = power - noise
-    total, moment = signal.sum(), np.sum(frequency_hz**2 * signal)
-    return float(np.sqrt(moment / total)) / 1e6 if total > 0 and moment > 0 else float("nan")
+@numba.njit(cache=True, nogil=True)
+def _shape(
+    waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
+    """Share of the energy before the peak, and crest factor, (pulses, 2)."""
+    found, first = np.full((len(waves), 2), np.nan), ONSET - GUARD
+    for r in range(len(waves)):
+        wave, floor = waves[r], noise[r] * noise[r]
+        total = _energy(wave, first, end[r], floor)
+        if total != 0:
+            found[r, 0] = _energy(wave, first, peak[r], floor) / total
+        beginning = _energy(wave, ONSET, min(ONSET + _BEGINNING, end[r]), floor) / _BEGINNING
+        found[r, 1] = 1 / np.sqrt(max(beginning, 1e-4))
+    return found
 
 
-def _late_level_db(window: Window, first_us: float, last_us: float) -> float:
-    """Power in a stretch after the peak over that of the pulse up to 0.3 us after it, noise subtracted [dB].
+@numba.njit(cache=True, nogil=True)
+def _late_levels(
+    waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
+) -> FloatArray:  # pragma: no cover - compiled
+    """Power in stretches after the peak over that of the pulse up to 0.3 us after it, noise subtracted [dB].
 
-    NaN where the stretch leaves the pulse's own samples, where it does not stand out of the noise, or where the
+    NaN where a stretch leaves the pulse's own samples, where it does not stand out of the noise, or where the
     noise is unknown.
     """
-    first, last = (window.peak + round(edge * ANALYSIS_RATE_HZ / 1e6) for edge in (first_us, last_us))
-    core = window.wave[ONSET - GUARD : window.peak + 30]
-    if first >= window.end or not window.noise > 0:
-        return float("nan")
-    stretch = window.wave[first : min(last, window.end)]
-    power = float(np.mean(stretch**2)) - window.noise**2
-    if power <= 3 * window.noise**2 * np.sqrt(2 / stretch.size):
-        return float("nan")
-    return float(max(10 * np.log10(power / np.mean(core**2)), _LOWEST_DB))
+    found = np.full((len(waves), len(_LATE)), np.nan)
+    for r in range(len(waves)):
+        floor = noise[r] * noise[r]
+        early = waves[r, ONSET - GUARD : peak[r] + _CORE]
+        core = sum_of_squares(early) / early.size
+        for k in range(len(_LATE)):
+            first, stop = peak[r] + _LATE[k][0], min(peak[r] + _LATE[k][1], end[r])
+            if first < end[r] and noise[r] > 0:
+                power = _energy(waves[r], first, stop, floor) / (stop - first)
+                if power > 3 * floor * np.sqrt(2 / (stop - first)):
+                    found[r, k] = max(10 * np.log10(power / core), _LOWEST_DB)
+    return found
+
+
+@numba.njit(cache=True, nogil=True)
+def _energy(wave: WaveArray, first: int, stop: int, floor: float) -> float:  # pragma: no cover - compiled
+    """Energy of a stretch less that of the noise."""
+    return sum_of_squares(wave[first:stop]) - floor * (stop - first) if stop > first else 0.0
 
 
 def _late_name(first_us: float, last_us: float) -> str:
@@ -129,18 +176,6 @@ SPREAD = (
         needs_snr_db=6.0,
     ),
     Feature(
-        "late_energy",
-        "",
-        "share of the energy between 0.2 and 1.2 µs after the peak",
-        "late energy {value}",
-        "a larger share",
-        "a smaller share",
-        (0.0, 1.0),
-        0.03,
-        "own definition",
-        needs_snr_db=9.0,
-    ),
-    Feature(
         "energy_before_peak",
         "",
         "share of the energy before the peak",
@@ -153,18 +188,6 @@ SPREAD = (
         needs_snr_db=9.0,
     ),
     Feature(
-        "standing_out_ns",
-        "ns",
-        "from the first to the last sample above a tenth of the peak (or four noise levels)",
-        "stands out for {value}",
-        "longer",
-        "shorter",
-        (0.0, 15000.0),
-        80,
-        "own definition",
-        needs_snr_db=9.0,
-    ),
-    Feature(
         "crest_factor",
         "",
         "peak over the rms of the first two microseconds",
@@ -173,7 +196,7 @@ SPREAD = (
         "less spiky",
         (0.5, 100.0),
         0.2,
-        "own definition",
+        "peak over rms, usual definition",
         needs_snr_db=6.0,
     ),
     *(
@@ -188,6 +211,7 @@ SPREAD = (
             2.5,
             "own definition",
             needs_snr_db=9.0,
+            absent="nothing stands out of the noise there",
         )
         for first, last in LATE_US
     ),

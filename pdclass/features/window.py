@@ -1,13 +1,18 @@
-"""One pulse made ready for measuring: analysis band and rate, carriers reduced, own samples marked."""
+"""Pulses made ready for measuring: analysis band and rate, carriers reduced, own samples marked; batch by batch."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from functools import cached_property
 
+import numba
 import numpy as np
-import scipy.fft
+from numpy.typing import NDArray
 
+from pdclass.features.carriers import fitted_tones, without_tones
+from pdclass.features.kernels import median, median_size, place_of_largest
+from pdclass.features.transforms import spectra, waves_of
 from pdclass.pulses import ONSET_SHARE, WINDOW_S, Chain, FloatArray, IntArray, WaveArray
 
 ANALYSIS_BAND_HZ = (0.1e6, 25e6)
@@ -17,105 +22,49 @@ ONSET = round(ONSET_SHARE * SAMPLES)
 STEP_NS = 1e9 / ANALYSIS_RATE_HZ
 #: What lies just before the onset may already belong to the pulse.
 GUARD = 20
-MOST_TONES = 4
-_TONE_FFT = 4096
-#: A line this far above the median of the pre-trigger's periodogram is a carrier, not noise.
-_TONE_POWER = 20.0
+#: Spectra of the own samples and of the noise have this many samples; the band's bins and their frequencies.
+SPECTRUM_FFT = 2048
+_BINS_HZ = np.arange(SPECTRUM_FFT // 2 + 1) * ANALYSIS_RATE_HZ / SPECTRUM_FFT
+BAND = slice(*np.searchsorted(_BINS_HZ, (ANALYSIS_BAND_HZ[0], np.nextafter(ANALYSIS_BAND_HZ[1], np.inf))).tolist())
+BAND_HZ = _BINS_HZ[BAND]
+#: The smallest share of a window that must be recorded.
+_LEAST_KNOWN = 4
 #: An excursion of so many noise levels before the onset is another event.
 _BUSY_LEVELS = 9.0
 _BUSY_MARGIN = 30
-#: The noise is not known from fewer samples than these; carriers are fitted to no fewer either.
+#: The noise is not known from fewer samples than these.
 _SHORTEST_QUIET = 100
-_SHORTEST_FOR_CARRIERS = 200
-_SPECTRUM_FFT = 2048
 _SPECTRUM_SMOOTHING = 33
-
-
-@dataclass(frozen=True)
-class Window:
-    """A pulse ready for measuring; polarity and gain are gone (the peak is +1).
-
-    Attributes
-    ----------
-    wave : (SAMPLES,) carriers reduced, in units of the peak.
-    raw : (SAMPLES,) the same with its carriers.
-    end : one past the last of the pulse's own samples, which begin at `ONSET`.
-    last : one past the last recorded sample.
-    peak : place of the largest excursion among the own samples.
-    height_v : the peak that was made 1, with its sign [V].
-    noise : noise level beside the pulse, in units of the peak; NaN where the pre-trigger has no quiet stretch.
-    noise_power : (bins,) noise spectrum scaled to the own samples; NaN likewise.
-    reach_hz : highest frequency that the chain carries [Hz].
-    low_hz : lower corner of the chain [Hz]; NaN = unknown.
-    snr_db : peak over noise [dB].
-    """
-
-    wave: FloatArray
-    raw: FloatArray
-    end: int
-    last: int
-    peak: int
-    height_v: float
-    noise: float
-    noise_power: FloatArray
-    reach_hz: float
-    low_hz: float = float("nan")
-
-    @property
-    def snr_db(self) -> float:
-        """Peak over noise after the carriers are reduced [dB]; NaN where the noise is unknown."""
-        return float(-20 * np.log10(self.noise)) if self.noise > 0 else float("nan")
-
-    @property
-    def own(self) -> FloatArray:
-        """The own samples with a short lead, faded out at the end so that the cut adds nothing."""
-        piece = self.wave[ONSET - GUARD : self.end].copy()
-        fade = min(GUARD, piece.size // 4)
-        piece[piece.size - fade :] *= 0.5 + 0.5 * np.cos(np.pi * (np.arange(fade) + 0.5) / max(fade, 1))
-        return piece
-
-    @property
-    def edge(self) -> FloatArray:
-        """The own samples with twice the lead: where an edge may be looked for, and nowhere else."""
-        return self.wave[ONSET - 2 * GUARD : self.end]
-
-    @property
-    def noise_density(self) -> FloatArray:
-        """Noise spectrum for one sample, (bins,) on the grid of `power` from 0 Hz on; NaN where it is unknown."""
-        return self.noise_power / (self.end - ONSET + GUARD)
-
-    def power(self) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Frequencies [Hz], power of the own samples and of the noise, within the analysis band.
-
-        The noise is that beside the pulse, scaled to the own samples; zeros where it is unknown.
-        """
-        spectrum = np.abs(scipy.fft.rfft(self.own, _SPECTRUM_FFT)) ** 2
-        noise = np.where(np.isfinite(self.noise_power), self.noise_power, 0.0)
-        frequency_hz = scipy.fft.rfftfreq(_SPECTRUM_FFT, 1 / ANALYSIS_RATE_HZ)
-        inside = (frequency_hz >= ANALYSIS_BAND_HZ[0]) & (frequency_hz <= ANALYSIS_BAND_HZ[1])
-        return frequency_hz[inside], spectrum[inside], noise[inside]
+#: The median of the size of normal noise.
+_MEDIAN_SIZE = 0.6744898
 
 
 @dataclass(frozen=True)
 class Windows:
-    """A batch of pulses ready for measuring: the fields of `Window`, one row a pulse.
+    """Pulses ready for measuring, one row a pulse; polarity and gain are gone (each peak is +1).
 
     Attributes
     ----------
-    wave, raw : (pulses, SAMPLES) carriers reduced, and with them, in units of the peak.
-    end, last, peak : (pulses,) int64 places as of `Window`.
-    height_v, noise, reach_hz, low_hz : (pulses,) as of `Window`.
-    noise_power : (pulses, bins) noise spectrum scaled to the own samples.
+    wave : (pulses, SAMPLES) carriers reduced, in units of the peak.
+    raw : (pulses, SAMPLES) the same with its carriers.
+    end : (pulses,) one past the last of the pulse's own samples, which begin at `ONSET`.
+    last : (pulses,) one past the last recorded sample.
+    peak : (pulses,) place of the largest excursion among the own samples.
+    height_v : (pulses,) the peak that was made 1, with its sign [V].
+    noise : (pulses,) noise level beside the pulse, in units of the peak; NaN without a quiet stretch before it.
+    noise_power : (pulses, bins) noise spectrum scaled to the own samples, on the grid of `own_power`; NaN likewise.
+    reach_hz : (pulses,) highest frequency that the chain carries [Hz].
+    low_hz : (pulses,) lower corner of the chain [Hz]; NaN = unknown.
     """
 
-    wave: FloatArray
-    raw: FloatArray
+    wave: WaveArray
+    raw: WaveArray
     end: IntArray
     last: IntArray
     peak: IntArray
     height_v: FloatArray
     noise: FloatArray
-    noise_power: FloatArray
+    noise_power: WaveArray
     reach_hz: FloatArray
     low_hz: FloatArray
 
@@ -128,161 +77,270 @@ class Windows:
         known = np.where(self.noise > 0, self.noise, np.nan)
         return np.asarray(-20 * np.log10(known))
 
-    def row(self, place: int) -> Window:
-        """One pulse alone."""
-        fields = ("wave", "raw", "end", "last", "peak", "height_v", "noise", "noise_power", "reach_hz", "low_hz")
-        return Window(*(getattr(self, name)[place] for name in fields))
+    @property
+    def noise_density(self) -> WaveArray:
+        """Noise spectrum for one sample, (pulses, bins); NaN where it is unknown."""
+        return np.asarray(self.noise_power / (self.end - ONSET + GUARD)[:, None].astype(np.float32))
+
+    @cached_property
+    def own(self) -> WaveArray:
+        """The own samples with a short lead, (pulses, SPECTRUM_FFT), faded out so that the cut adds nothing."""
+        return _own(self.wave, self.end)
+
+    @cached_property
+    def own_spectrum(self) -> NDArray[np.complex64]:
+        """Spectrum of the own samples, (pulses, SPECTRUM_FFT // 2 + 1)."""
+        return spectra(self.own, SPECTRUM_FFT)
+
+    @cached_property
+    def own_power(self) -> WaveArray:
+        """Power of the own samples, (pulses, SPECTRUM_FFT // 2 + 1); `BAND` are the bins of the analysis band."""
+        return _power(self.own_spectrum.view(np.float32))
+
+    def take(self, places: NDArray[np.intp] | NDArray[np.bool_]) -> Windows:
+        """Some of the pulses."""
+        return Windows(*(getattr(self, field.name)[places] for field in fields(self)))
 
 
-def stacked(windows: Sequence[Window]) -> Windows:
-    """Single windows as one batch."""
-    fields = ("wave", "raw", "end", "last", "peak", "height_v", "noise", "noise_power", "reach_hz", "low_hz")
-    return Windows(*(np.array([getattr(window, name) for window in windows]) for name in fields))
+def chain_band_hz(chains: Sequence[Chain]) -> FloatArray:
+    """Lowest and highest frequency that chains carry [Hz], (2, chains); NaN = an unknown lower corner.
+
+    The highest is the upper corner, and at most 0.4 of the rate (anti-alias).
+    """
+    bands = [chain.band_hz or (np.nan, np.inf) for chain in chains]
+    return np.array([(low, min(high, 0.4 * chain.rate_hz)) for (low, high), chain in zip(bands, chains, strict=True)]).T
 
 
-def chain_reach_hz(chain: Chain) -> float:
-    """Highest frequency that a chain carries: its upper corner, and at most 0.4 of the rate (anti-alias) [Hz]."""
-    corner = chain.band_hz[1] if chain.band_hz else np.inf
-    return float(min(corner, 0.4 * chain.rate_hz))
-
-
-def prepared(wave_v: WaveArray, chain: Chain, duration_us: float) -> Window | None:
-    """Make a stored window ready for measuring; None where there is nothing to measure.
+def prepared(
+    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray
+) -> tuple[Windows, IntArray]:
+    """Make stored windows ready for measuring, and say which: those with nothing to measure are left out.
 
     Parameters
     ----------
-    wave_v : (samples,) one 20 us window with its onset a quarter in [V]; NaN = not recorded.
-    chain : its chain.
-    duration_us : length of the pulse's own samples [us]; NaN or not positive = to the end of the window.
+    waves_v : (pulses, samples) 20 us windows with the onset a quarter in [V]; NaN = not recorded.
+    duration_us : (pulses,) length of the own samples [us]; NaN or not positive = to the end of the window.
+    reach_hz, low_hz : (pulses,) what their chains carry, as of `chain_band_hz`.
     """
-    known = np.flatnonzero(np.isfinite(wave_v))
-    if known.size < wave_v.size // 4:
-        return None
-    first, last = (round(edge / wave_v.size * SAMPLES) for edge in (known[0], known[-1] + 1))
-    raw = to_analysis_band(np.asarray(wave_v, np.float64))
-    carried, quiet = _background(raw, first)
-    clean = raw - carried
-    beside = clean[quiet] if quiet.stop > quiet.start else clean[first:ONSET]
-    level = float(np.median(beside)) if beside.size else 0.0
-    clean, raw = clean - level, raw - level
-    length = duration_us * ANALYSIS_RATE_HZ / 1e6 if duration_us > 0 else SAMPLES
-    end = int(min(max(ONSET + round(length), ONSET + 8), last, SAMPLES))
-    if end <= ONSET + 4 or first > ONSET:
-        return None
-    peak = ONSET - GUARD // 2 + int(np.argmax(np.abs(clean[ONSET - GUARD // 2 : end])))
-    height = float(clean[peak])
-    if height == 0:
-        return None
-    clean, raw, before = clean / height, raw / height, clean[quiet] / height
-    known_noise = quiet.stop - quiet.start >= _SHORTEST_QUIET
-    noise = float(np.median(np.abs(before)) / 0.6744898) if known_noise else np.nan
-    noise_power = _noise_power(before, end - ONSET + GUARD, known=known_noise)
-    low_hz = chain.band_hz[0] if chain.band_hz else float("nan")
-    return Window(clean, raw, end, last, peak, height, noise, noise_power, chain_reach_hz(chain), low_hz)
+    samples = waves_v.shape[1]
+    filled, known, first, last, slope = _filled(np.ascontiguousarray(waves_v, np.float32))
+    first, last = (np.rint(edge / samples * SAMPLES).astype(np.int64) for edge in (first, last))
+    length = np.where(duration_us > 0, np.rint(duration_us * ANALYSIS_RATE_HZ / 1e6), SAMPLES)
+    end = np.minimum(np.maximum(ONSET + length, ONSET + 8), last).astype(np.int64)
+    rows = np.flatnonzero((known >= samples // _LEAST_KNOWN) & (end > ONSET + 4) & (first <= ONSET))
+    if rows.size < len(filled):
+        filled, slope = filled[rows], slope[rows]
+    raw = _to_analysis_band(filled, slope)
+    wave, start, stop, (level, noise_v) = _background(raw, first[rows])
+    peak, height_v, before = _scaled(wave, raw, start, stop, end[rows], level)
+    measurable = height_v != 0
+    noise = noise_v / np.where(measurable, np.abs(height_v), np.nan)
+    share = np.where(np.isfinite(noise), (end[rows] - ONSET + GUARD) / np.maximum(stop - start, 1), np.nan)
+    noise_power = _smoothed_power(spectra(before, SPECTRUM_FFT).view(np.float32), share)
+    places = end[rows], last[rows], peak
+    windows = Windows(wave, raw, *places, height_v, noise, noise_power, reach_hz[rows], low_hz[rows])
+    return (windows, rows) if measurable.all() else (windows.take(measurable), rows[measurable])
 
 
-def to_analysis_band(wave_v: FloatArray) -> FloatArray:
-    """A 20 us window at the analysis rate, low-passed smoothly (Gaussian, -3 dB at the band's upper edge).
+@numba.njit(cache=True, nogil=True)
+def _filled(
+    waves: WaveArray,
+) -> tuple[WaveArray, IntArray, IntArray, IntArray, FloatArray]:  # pragma: no cover - compiled
+    """Waves on the line through their ends, so that the ends do not ring: they, what is known of them, the line's rise.
 
-    Samples that were not recorded become the median of those that were. The change of rate is by Fourier
-    series; a straight line through the ends is taken out first and put back, so that the ends do not ring.
+    Samples that were not recorded become the median of those that were. Returns (waves, samples), and per wave the
+    number of recorded samples, the first, one past the last, and by how much the line rises over the window.
     """
-    filled = np.where(np.isfinite(wave_v), wave_v, np.nanmedian(wave_v))
-    edge = max(4, filled.size // 200)
-    begin, finish = filled[:edge].mean(), filled[-edge:].mean()
-    ramp = np.linspace(begin, finish, filled.size, endpoint=False)
-    spectrum = scipy.fft.rfft(filled - ramp)
-    frequency_hz = np.arange(spectrum.size) / WINDOW_S
-    spectrum *= np.exp(-0.5 * np.log(2) * (frequency_hz / ANALYSIS_BAND_HZ[1]) ** 2)
-    bins = SAMPLES // 2 + 1
-    resized = np.zeros(bins, np.complex128)
-    shared = min(bins, spectrum.size)
-    resized[:shared] = spectrum[:shared]
-    wave = scipy.fft.irfft(resized, SAMPLES) * (SAMPLES / filled.size)
-    return np.asarray(wave + np.linspace(begin, finish, SAMPLES, endpoint=False), np.float64)
+    rows, samples = waves.shape
+    filled, rise = np.zeros((rows, samples), np.float32), np.zeros(rows)
+    known, first, last = np.zeros(rows, np.int64), np.zeros(rows, np.int64), np.zeros(rows, np.int64)
+    edge = max(4, samples // 200)
+    for r in range(rows):
+        recorded = np.int32(0)
+        for i in range(samples):
+            recorded += np.int32(abs(waves[r, i]) < np.inf)
+        known[r] = recorded
+        if recorded == 0:
+            continue
+        first[r], last[r] = 0, samples
+        wave = waves[r]
+        if recorded < samples:
+            wave = waves[r].copy()
+            first[r], last[r] = _fill(wave)
+        begin, finish = np.float64(wave[:edge].mean()), np.float64(wave[samples - edge :].mean())
+        rise[r] = finish - begin
+        for i in range(samples):
+            filled[r, i] = wave[i] - (begin + rise[r] * (i / samples))
+    return filled, known, first, last, rise
 
 
-def _background(raw: FloatArray, first: int) -> tuple[FloatArray, slice]:
-    """The carriers through the window, and the quiet stretch before the onset that tells of the noise.
+@numba.njit(cache=True, nogil=True)
+def _fill(wave: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
+    """Put the median where nothing was recorded; the first recorded sample, and one past the last."""
+    recorded = np.abs(wave) < np.inf
+    middle = np.float32(median(wave[recorded]))
+    first, last = wave.size, 0
+    for i in range(wave.size):
+        if recorded[i]:
+            first, last = min(first, i), i + 1
+        else:
+            wave[i] = middle
+    return first, last
+
+
+def _to_analysis_band(filled: WaveArray, rise: FloatArray) -> WaveArray:
+    """Waves at the analysis rate, low-passed smoothly (Gaussian, -3 dB at the band's upper edge), their line put back.
+
+    The change of rate is by Fourier series; the level of the waves is lost.
+    """
+    samples = filled.shape[1]
+    spectrum = spectra(filled, samples)[:, : SAMPLES // 2 + 1]
+    frequency_hz = np.arange(spectrum.shape[1]) / WINDOW_S
+    gain = np.exp(-0.5 * np.log(2) * (frequency_hz / ANALYSIS_BAND_HZ[1]) ** 2) * (SAMPLES / samples)
+    spectrum *= gain.astype(np.float32)
+    raw = waves_of(spectrum, SAMPLES)
+    _put_back(raw, rise)
+    return raw
+
+
+@numba.njit(cache=True, nogil=True)
+def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover - compiled
+    """Add to each wave a line from 0 that rises by so much over the window."""
+    for r in range(len(waves)):
+        step = np.float32(rise[r] / SAMPLES)
+        for i in range(SAMPLES):
+            waves[r, i] += step * np.float32(i)
+
+
+def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
+    """The waves without carriers, the quiet stretch before each onset (start, stop), its level and noise (2, pulses).
 
     Carriers are fitted to the whole pre-trigger; where another event then stands out of what is left, to its
     longest stretch without one. The stretch is empty where that is too short to know anything from.
     """
-    before = slice(min(first + GUARD, ONSET - GUARD), ONSET - GUARD)
-    carried = carriers(raw[before], before.start)
-    quiet = _longest_quiet((raw - carried)[before])
-    stretch = slice(before.start + quiet.start, before.start + quiet.stop)
-    if stretch == before:
-        return carried, before
-    if stretch.stop - stretch.start < _SHORTEST_QUIET:
-        return np.zeros(SAMPLES), slice(ONSET, ONSET)
-    return carriers(raw[stretch], stretch.start), stretch
+    start, stop = np.minimum(first + GUARD, ONSET - GUARD), np.full(len(raw), ONSET - GUARD)
+    wave = without_tones(raw, fitted_tones(raw, start, stop))
+    level, begin, length = _quiet(wave, start, stop)
+    busy = np.flatnonzero(length < stop - start)
+    start, stop = start + begin, start + begin + length
+    if busy.size:
+        again = raw[busy]
+        left = without_tones(again, fitted_tones(again, start[busy], stop[busy]))
+        wave[busy] = left
+        beside = np.where(length > 0, start, first)[busy]
+        level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy])[0]
+    level[1, length < _SHORTEST_QUIET] = np.nan
+    return wave, start, stop, level
 
 
-def _longest_quiet(before: FloatArray) -> slice:
-    """The longest stretch of a pre-trigger without an event; a margin beside each excursion is left out, too."""
-    if before.size < _SHORTEST_QUIET:
-        return slice(0, 0)
-    deviation = np.abs(before - np.median(before))
-    loud = np.flatnonzero(deviation > _BUSY_LEVELS * np.median(deviation) / 0.6744898)
-    if not loud.size:
-        return slice(0, before.size)
-    edges = np.concatenate([[-_BUSY_MARGIN], loud, [before.size + _BUSY_MARGIN]])
-    gap = int(np.argmax(np.diff(edges)))
-    start, stop = int(edges[gap]) + _BUSY_MARGIN, int(edges[gap + 1]) - _BUSY_MARGIN
-    return slice(start, max(stop, start))
+@numba.njit(cache=True, nogil=True)
+def _quiet(
+    waves: WaveArray, start: IntArray, stop: IntArray
+) -> tuple[FloatArray, IntArray, IntArray]:  # pragma: no cover - compiled
+    """Level and noise of stretches, (2, rows), and their longest parts without an event (beginning, length).
 
-
-def carriers(before: FloatArray, start: int) -> FloatArray:
-    """The carriers of the pre-trigger, continued through the window; zeros where no line stands out.
-
-    Lines are taken one by one from the periodogram and fitted together by least squares.
-
-    Parameters
-    ----------
-    before : (n,) pre-trigger.
-    start : place of its first sample in the window.
+    A margin beside each excursion is left out, too; a part is empty where it is shorter than 100 samples.
     """
-    if before.size < _SHORTEST_FOR_CARRIERS:
-        return np.zeros(SAMPLES)
-    place = np.arange(start, start + before.size, dtype=np.int64) - ONSET
-    everywhere = np.arange(SAMPLES, dtype=np.int64) - ONSET
-    tones: list[float] = []
-    rest, fitted = before - before.mean(), np.zeros(SAMPLES)
-    for _ in range(MOST_TONES):
-        tone = _strongest_line(rest)
-        if tone is None:
-            break
-        tones.append(tone)
-        basis = _tone_basis(tones, place)
-        weights = np.linalg.lstsq(basis, before, rcond=1e-6)[0]
-        rest = before - basis @ weights
-        fitted = _tone_basis(tones, everywhere)[:, 1:] @ weights[1:]
-    return fitted
+    rows = len(waves)
+    level, begin, length = np.zeros((2, rows)), np.zeros(rows, np.int64), np.zeros(rows, np.int64)
+    for r in range(rows):
+        before = waves[r, start[r] : stop[r]]
+        if not before.size:
+            continue
+        level[0, r] = median(before)
+        deviation = before - np.float32(level[0, r])
+        level[1, r] = median_size(deviation) / _MEDIAN_SIZE
+        limit, loud = np.float32(_BUSY_LEVELS * level[1, r]), np.int32(0)
+        for i in range(before.size):
+            loud += np.int32(abs(deviation[i]) > limit)
+        length[r] = before.size
+        if loud:
+            begin[r], length[r] = _widest_gap(deviation, float(limit))
+        if length[r] < _SHORTEST_QUIET:
+            begin[r], length[r] = 0, 0
+    return level, begin, length
 
 
-def _tone_basis(tones: list[float], place: IntArray) -> FloatArray:
-    angle = 2 * np.pi * np.outer(place, tones)
-    return np.concatenate([np.ones((place.size, 1)), np.cos(angle), np.sin(angle)], axis=1)
+@numba.njit(cache=True, nogil=True)
+def _widest_gap(deviation: WaveArray, limit: float) -> tuple[int, int]:  # pragma: no cover - compiled
+    """Beginning and length of the widest gap between excursions, less the margin beside each."""
+    begin, length, former = 0, 0, -_BUSY_MARGIN
+    for i in range(deviation.size + 1):
+        here = i if i < deviation.size else i + _BUSY_MARGIN
+        if (i == deviation.size or abs(deviation[i]) > limit) and here - former - 2 * _BUSY_MARGIN > length:
+            begin, length = former + _BUSY_MARGIN, here - former - 2 * _BUSY_MARGIN
+        if i < deviation.size and abs(deviation[i]) > limit:
+            former = i
+    return begin, length
 
 
-def _strongest_line(rest: FloatArray) -> float | None:
-    """Frequency [cycles a sample] of a line that stands out of the noise, else None."""
-    power = np.abs(scipy.fft.rfft((rest - rest.mean()) * np.hanning(rest.size), _TONE_FFT)) ** 2
-    top = round(ANALYSIS_BAND_HZ[1] / ANALYSIS_RATE_HZ * _TONE_FFT)
-    low = max(2, round(_TONE_FFT / rest.size))
-    k = low + int(np.argmax(power[low:top]))
-    if power[k] < _TONE_POWER * np.median(power[low:top]):
-        return None
-    left, middle, right = np.log(power[k - 1 : k + 2] + 1e-300)
-    bend = left - 2 * middle + right
-    return float((k + (0.5 * (left - right) / bend if bend else 0.0)) / _TONE_FFT)
+@numba.njit(cache=True, nogil=True)
+def _scaled(
+    wave: WaveArray, raw: WaveArray, start: IntArray, stop: IntArray, end: IntArray, level: FloatArray
+) -> tuple[IntArray, FloatArray, WaveArray]:  # pragma: no cover - compiled
+    """Bring waves to level 0 and peak 1 in place: the peak, its height [V], and the quiet samples about their mean."""
+    rows = len(wave)
+    peak, height, before = np.zeros(rows, np.int64), np.zeros(rows), np.zeros((rows, ONSET), np.float32)
+    for r in range(rows):
+        earliest, base = ONSET - GUARD // 2, np.float32(level[r])
+        peak[r] = earliest + place_of_largest(wave[r, earliest : end[r]] - base)
+        height[r] = wave[r, peak[r]] - base
+        if height[r] == 0:
+            continue
+        scale = np.float32(1 / height[r])
+        for i in range(SAMPLES):
+            wave[r, i] = (wave[r, i] - base) * scale
+            raw[r, i] = (raw[r, i] - base) * scale
+        mean = np.float64(0.0)
+        for i in range(start[r], stop[r]):
+            mean += wave[r, i]
+        mean /= max(stop[r] - start[r], 1)
+        for i in range(start[r], stop[r]):
+            before[r, i - start[r]] = wave[r, i] - np.float32(mean)
+    return peak, height, before
 
 
-def _noise_power(before: FloatArray, own_samples: int, *, known: bool) -> FloatArray:
-    if not known:
-        return np.full(_SPECTRUM_FFT // 2 + 1, np.nan)
-    power = np.abs(scipy.fft.rfft(before - before.mean(), _SPECTRUM_FFT)) ** 2 * own_samples / before.size
-    pad = _SPECTRUM_SMOOTHING // 2
-    mirrored = np.concatenate([power[pad:0:-1], power, power[-2 : -pad - 2 : -1]])
-    return np.convolve(mirrored, np.full(_SPECTRUM_SMOOTHING, 1 / _SPECTRUM_SMOOTHING), "valid")
+@numba.njit(cache=True, nogil=True)
+def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pragma: no cover - compiled
+    """Power of spectra given as pairs of floats, times a share each, as a running mean over 33 bins, mirrored."""
+    rows, bins = len(spectrum), spectrum.shape[1] // 2
+    half = _SPECTRUM_SMOOTHING // 2
+    smooth = np.empty((rows, bins), np.float32)
+    power, total = np.empty(bins + 2 * half, np.float32), np.empty(bins + 2 * half, np.float32)
+    for r in range(rows):
+        for k in range(bins):
+            real, imag = spectrum[r, 2 * k], spectrum[r, 2 * k + 1]
+            power[half + k] = real * real + imag * imag
+        for k in range(half):
+            power[half - 1 - k], power[half + bins + k] = power[half + 1 + k], power[half + bins - 2 - k]
+        total[:] = power
+        for reach in (1, 2, 4, 8, 16):
+            for k in range(total.size - reach):
+                total[k] += total[k + reach]
+        scale = np.float32(share[r] / _SPECTRUM_SMOOTHING)
+        for k in range(bins):
+            smooth[r, k] = (total[k] + power[k + 2 * half]) * scale
+    return smooth
+
+
+@numba.njit(cache=True, nogil=True)
+def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
+    """Power of spectra given as pairs of floats."""
+    power = np.empty((len(spectrum), spectrum.shape[1] // 2), np.float32)
+    for r in range(len(spectrum)):
+        for k in range(power.shape[1]):
+            real, imag = spectrum[r, 2 * k], spectrum[r, 2 * k + 1]
+            power[r, k] = real * real + imag * imag
+    return power
+
+
+@numba.njit(cache=True, nogil=True)
+def _own(wave: WaveArray, end: IntArray) -> WaveArray:  # pragma: no cover - compiled
+    own = np.zeros((len(wave), SPECTRUM_FFT), np.float32)
+    for r in range(len(wave)):
+        size = end[r] - ONSET + GUARD
+        fade = min(GUARD, size // 4)
+        own[r, :size] = wave[r, ONSET - GUARD : end[r]]
+        for k in range(fade):
+            own[r, size - fade + k] *= np.float32(0.5 + 0.5 * np.cos(np.pi * (k + 0.5) / fade))
+    return own

@@ -7,12 +7,13 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+import scipy.fft
 from numpy.typing import NDArray
 
 from pdclass.capture import Map, double_notes, pulses_of, read_map, read_rows, write_pulses
 from pdclass.errors import InputError
-from pdclass.extract.events import ATTACK_S, TWIN_S, event_starts, mad_noise, mean_energy
-from pdclass.extract.whiten import noise_spectrum, whitening_filter
+from pdclass.extract.events import events_of_pieces, spans
+from pdclass.extract.whiten import whitening_filter
 from pdclass.jobs.extract import check_table_place
 from pdclass.jobs.inventory import inventory_lines
 from pdclass.jobs.simulate import joined
@@ -102,7 +103,9 @@ def _whitening(waves: WaveArray) -> FloatArray:
     order = min(ORDER, piece // 4)
     if not whole.any() or order < 2:
         return np.array([1.0])
-    return whitening_filter(noise_spectrum(flat, starts[whole], piece), order).astype(np.float64)
+    pieces = flat[starts[whole][:, None] + np.arange(piece)]
+    powers = np.abs(scipy.fft.rfft((pieces - pieces.mean(axis=1, keepdims=True)) * np.hanning(piece))) ** 2
+    return whitening_filter(np.median(powers, axis=0), order).astype(np.float64)
 
 
 def _found_onset(row: WaveArray, taps: FloatArray, rate_hz: float) -> int:
@@ -116,13 +119,14 @@ def _found_onset(row: WaveArray, taps: FloatArray, rate_hz: float) -> int:
     white = np.convolve(wave, taps)[: len(wave)]
     # the filter has no past before the first sample
     white[: len(taps) - 1] = 0.0
-    noise = mad_noise(white[len(taps) - 1 :]) or float(np.abs(white).max()) or 1.0
+    noise = float(np.median(np.abs(white[len(taps) - 1 :]))) / 0.6744898 or float(np.abs(white).max()) or 1.0
     held = (white / noise).astype(np.float32)
-    attack, reach = max(2, round(ATTACK_S * rate_hz)), round(TWIN_S * rate_hz)
-    energy = mean_energy(held, attack)
+    attack, _, reach = spans(rate_hz)
+    energy = np.convolve(held.astype(np.float64) ** 2, np.ones(attack))[: held.size]
     place = int(np.argmax(energy >= 0.5 * energy.max()))
-    starts = event_starts(held, rate_hz, (max(0, place - reach), min(len(held), place + reach)))
-    return first + min(starts, key=lambda start: abs(start - place))
+    piece = [0, max(0, place - reach), min(held.size, place + reach), held.size, 0]
+    starts = events_of_pieces(held, np.array([piece], np.int64), rate_hz)[0][:, 0]
+    return first + int(min(starts, key=lambda start: abs(start - place)))
 
 
 def _one_rate(files: Sequence[Path], made: Sequence[tuple[PulseSet, list[str]] | str]) -> None:

@@ -15,7 +15,7 @@ from pdclass.capture import HDF5_ENDINGS, NPZ_ENDINGS, FillIns, check_name, open
 from pdclass.digest import file_digest
 from pdclass.errors import InputError, PdclassError
 from pdclass.extract import ExtractSettings, extract
-from pdclass.features import feature_digests, feature_table
+from pdclass.features import feature_digests, measured
 from pdclass.jobs.talk import SILENT, Talk, each
 from pdclass.model.bundle import Bundle, read_bundle
 from pdclass.pulses import Capture, PulseSet
@@ -23,6 +23,7 @@ from pdclass.report.summary import morning_lines
 from pdclass.settings import shipped
 from pdclass.verdict import batch
 from pdclass.verdict.score import not_checked, score
+from pdclass.verdict.sentences import Seen
 
 _TABLE = ".parquet"
 #: Captures that a folder is searched for beside SigMF; a CSV could be anything, and is named.
@@ -268,7 +269,9 @@ def _table_shard(path: Path, digest: str, fill: FillIns, model: Bundle) -> batch
 
 
 def _shard(name: str, digest: str, pulses: PulseSet, model: Bundle, record: dict[str, Any]) -> batch.Shard:
-    verdicts = score(pulses, feature_table(pulses, model.features), model)
+    found = measured(pulses, model.features)
+    seen = list(map(Seen, found.snr_db.tolist(), found.reach_hz.tolist()))
+    verdicts = score(pulses, found.values, model, seen=seen)
     return batch.Shard(name, digest, pulses, verdicts, record)
 
 

@@ -17,7 +17,7 @@ from pdclass.model.decision import BoolArray, Decisions, broken_limits, decide, 
 from pdclass.model.manifest import Validity
 from pdclass.model.reasons import calibrated_reasons
 from pdclass.pulses import UNDECIDED, FloatArray, IntArray, PulseSet
-from pdclass.verdict.sentences import REASONS, Wording, reason_sentences, reference_ranks
+from pdclass.verdict.sentences import REASONS, Seen, Wording, reason_sentences, reference_ranks
 
 #: Columns that a verdict takes over from the pulse table.
 PULSE_COLUMNS = (
@@ -62,7 +62,12 @@ class Verdicts:
 
 
 def score(
-    pulses: PulseSet, values: FloatArray, bundle: Bundle, *, catalogue: Sequence[Feature] = CATALOGUE
+    pulses: PulseSet,
+    values: FloatArray,
+    bundle: Bundle,
+    *,
+    catalogue: Sequence[Feature] = CATALOGUE,
+    seen: Sequence[Seen] | None = None,
 ) -> Verdicts:
     """Give every pulse that is no echo its verdict with reasons.
 
@@ -72,6 +77,7 @@ def score(
     values : (pulses, features) in the bundle's order of features; NaN = unmeasurable.
     bundle : the model.
     catalogue : where the words of the bundle's features stand.
+    seen : how well each pulse was seen, for the words of what is missing or blurred; nothing is said by default.
 
     Raises
     ------
@@ -88,11 +94,12 @@ def score(
     # stable: among equals the earlier class comes first, as in the decision
     order = np.argsort(-decisions.probabilities, axis=1, kind="stable")
     against = held_against(order, decisions.sets)
+    seen_alone = [seen[place] if seen else None for place in alone.tolist()]
     pairs = list(zip(order[:, 0].tolist(), against.tolist(), strict=True))
     columns = {
         **_names(decisions, order, against, reasons.log_odds, bundle.classes),
         **_doubt(decisions, limits_broken(scored, bundle.validity), bundle.classes),
-        **_sentences(own, reasons.shares, pairs, wording_of(bundle, catalogue)),
+        **_sentences(own, reasons.shares, pairs, wording_of(bundle, catalogue), seen_alone),
         "bundle_digest": [bundle.digest] * len(scored.table),
     }
     table = scored.table[list(PULSE_COLUMNS)].assign(
@@ -211,11 +218,15 @@ def _doubt(decisions: Decisions, outside: list[str | None], classes: Sequence[st
 
 
 def _sentences(
-    values: FloatArray, shares: FloatArray, pairs: Sequence[tuple[int, int]], wording: Wording
+    values: FloatArray,
+    shares: FloatArray,
+    pairs: Sequence[tuple[int, int]],
+    wording: Wording,
+    seen: Sequence[Seen | None],
 ) -> dict[str, list[str | None]]:
     columns: dict[str, list[str | None]] = {f"reason_{place + 1}": [] for place in range(REASONS)}
     for row, pair in enumerate(pairs):
-        sentences = reason_sentences(values[row], shares[row], pair, wording)
+        sentences = reason_sentences(values[row], shares[row], pair, wording, seen=seen[row])
         for place, column in enumerate(columns.values()):
             column.append(sentences[place] if place < len(sentences) else None)
     return columns

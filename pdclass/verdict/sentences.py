@@ -7,11 +7,13 @@ import math
 import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 import pandas as pd
 
+from pdclass.features import why_missing
+from pdclass.features.clearness import how_blurred
 from pdclass.features.feature import Feature
 from pdclass.pulses import LABELS, FloatArray, IntArray
 
@@ -115,6 +117,19 @@ class Wording:
     ranks: ReferenceRanks
 
 
+class Seen(NamedTuple):
+    """How well a pulse was seen, which decides what of it can be measured.
+
+    Attributes
+    ----------
+    snr_db : measured peak over noise, carriers reduced [dB]; NaN = unknown.
+    reach_hz : highest frequency that the chain carries [Hz].
+    """
+
+    snr_db: float
+    reach_hz: float
+
+
 def strongest_reasons(shares: FloatArray, likeliest: int, against: int) -> tuple[IntArray, FloatArray]:
     """Features in order of their share of the log-odds, largest size first, zero shares left out.
 
@@ -133,7 +148,13 @@ def strongest_reasons(shares: FloatArray, likeliest: int, against: int) -> tuple
 
 
 def reason_sentences(
-    values: FloatArray, shares: FloatArray, pair: tuple[int, int], wording: Wording, *, count: int = REASONS
+    values: FloatArray,
+    shares: FloatArray,
+    pair: tuple[int, int],
+    wording: Wording,
+    *,
+    seen: Seen | None = None,
+    count: int = REASONS,
 ) -> list[str]:
     """The strongest reasons of one pulse as sentences; reasons against the label begin with "against:".
 
@@ -142,33 +163,48 @@ def reason_sentences(
     values : (features,) of the pulse; NaN = unmeasurable.
     shares : (classes, features) calibrated shares of the pulse [natural log].
     pair : the likeliest class, and the one that it is held against.
+    seen : how well the pulse was seen; None = nothing is said of it.
     count : how many at most, >= 0.
     """
     order, difference = strongest_reasons(shares, *pair)
     return [
-        reason_sentence(place, float(values[place]), float(difference[place]), pair, wording)
+        reason_sentence(place, float(values[place]), float(difference[place]), pair, wording, seen)
         for place in order[:count].tolist()
     ]
 
 
-def reason_sentence(place: int, value: float, share: float, pair: tuple[int, int], wording: Wording) -> str:
+def reason_sentence(
+    place: int, value: float, share: float, pair: tuple[int, int], wording: Wording, seen: Seen | None = None
+) -> str:
     """One reason: value, where it lies among the reference pulses of both labels, share of the log-odds.
+
+    A missing value says why it is missing, a value that noise blurs says so.
 
     Parameters
     ----------
     place : of the feature in the bundle's order.
     value : in the feature's unit; NaN = unmeasurable.
     share : of the log-odds of the first of the pair over the second [natural log].
+    seen : how well the pulse was seen; None = nothing is said of it.
     """
     feature = wording.features[place]
     if math.isnan(value):
-        found = f"{feature.meaning}: not measurable here ({_absence(place, pair, wording)})"
+        found = f"{feature.meaning}: {_cause(feature, seen)}; {_absence(place, pair, wording)}"
     else:
         stated = feature.sentence.format(value=quantity(value, feature.unit))
-        found = f"{stated}: {_standing(place, value, pair, wording)}"
+        blur = how_blurred(feature.name, seen.snr_db) if seen else None
+        found = f"{stated}{f' ({blur})' if blur else ''}: {_standing(place, value, pair, wording)}"
     towards = wording.classes[pair[0] if share > 0 else pair[1]]
     sentence = f"{found}; +{_share(abs(share))} towards {towards} ({_factor(abs(share))} times the odds)"
     return sentence if share > 0 else f"against: {sentence}"
+
+
+def _cause(feature: Feature, seen: Seen | None) -> str:
+    """Why a value is missing: the noise, the chain, or what its absence means."""
+    cause = why_missing(feature, *seen) if seen else None
+    if cause is None:
+        return feature.absent
+    return cause if cause.startswith("not measurable") else f"not measurable, {cause}"
 
 
 def _standing(place: int, value: float, pair: tuple[int, int], wording: Wording) -> str:
@@ -192,7 +228,7 @@ def _absence(place: int, pair: tuple[int, int], wording: Wording) -> str:
     likeliest, against = pair
     first, second = (_percent(wording.ranks.missing[label, place]) for label in (against, likeliest))
     return (
-        f"nor in {first} of {wording.classes[against]} reference pulses "
+        f"missing in {first} of {wording.classes[against]} reference pulses "
         f"and {second} of {wording.classes[likeliest]} ones"
     )
 

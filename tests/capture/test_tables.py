@@ -143,6 +143,18 @@ def test_any_row_comes_back_equal(tmp_path, make_pulses, label, site, phase, ons
     )
 
 
+def test_a_table_without_the_onset_uncertainty_reads_it_as_unknown(own, tmp_path, make_pulses):
+    """A table written before there was such a column is read, its uncertainty null; a negative one is refused."""
+    table = pq.read_table(own)
+    pq.write_table(table.drop_columns("onset_std_ns"), tmp_path / "old.parquet")
+    found, _ = read_pulses(tmp_path / "old.parquet")
+    assert found.table["onset_std_ns"].isna().all()
+    place = table.column_names.index("onset_std_ns")
+    column = pa.array(np.full(table.num_rows, -1.0, np.float32))
+    pq.write_table(table.set_column(place, "onset_std_ns", column), tmp_path / "wrong.parquet")
+    assert "onset_std_ns" in refusal(tmp_path / "wrong.parquet")
+
+
 def test_a_bare_foreign_table_is_read_and_what_is_derived_is_said(foreign, make_pulses):
     """Circuit, session, wave and rate are enough; the rest is derived or null, one line each."""
     path = foreign()

@@ -105,4 +105,4 @@ def test_debug_shows_the_traceback(tmp_path):
 
 def test_version(tmp_path):
     """--version prints the version."""
-    assert pdclass("--version", cwd=tmp_path).stdout.strip() == "0.1.0"
+    assert pdclass("--version", cwd=tmp_path).stdout.strip() == "0.2.0"

@@ -6,7 +6,7 @@ from one_pulse import features_of, single
 from scipy.signal import bilinear, lfilter
 
 from pdclass.features import BY_NAME
-from pdclass.features.arrival import EDGES_MHZ, with_common_corner
+from pdclass.features.arrival import EDGES_MHZ, behind_common_corner
 from pdclass.pulses import PulseSet
 
 
@@ -69,8 +69,10 @@ def test_the_lower_corner_of_a_chain_is_made_common():
 
 def test_an_unknown_corner_leaves_the_wave_alone():
     """Without a lower corner nothing is done."""
-    wave = gaussian(20e-9)
-    assert with_common_corner(wave, float("nan")) is wave
+    waves = np.random.default_rng(0).normal(size=(2, 2000)).astype(np.float32)
+    pieces = behind_common_corner(waves, np.array([np.nan, 1e6]), 80)
+    assert np.array_equal(pieces[0], waves[0, 480:560])
+    assert not np.allclose(pieces[1], waves[1, 480:560])
 
 
 def test_bands_join_without_gaps():

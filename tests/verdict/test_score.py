@@ -14,6 +14,7 @@ from pdclass.model.decision import outside
 from pdclass.model.manifest import Validity
 from pdclass.pulses import LABELS, UNDECIDED, Chain
 from pdclass.verdict.score import held_against, limits_broken, not_checked, score
+from pdclass.verdict.sentences import Seen
 
 COLUMNS = [
     *("capture", "capture_digest", "circuit", "site", "sensor", "session", "onset_s", "phase_deg", "snr_db"),
@@ -130,6 +131,19 @@ def test_a_possible_echo_keeps_what_its_parent_leaves_open(pulses, values, verdi
     assert found.loc[later, "label_set"] == ["cable", "interference"]
     assert found.loc[later, "label"] == UNDECIDED
     assert found.drop(index=later).equals(verdicts.table.drop(index=later))
+
+
+def test_what_is_known_of_noise_and_chain_changes_words_alone(pulses, values, bundle, verdicts):
+    """How well pulses were seen stands in their reasons, echoes counted over, and in nothing else."""
+    echo = pulses.table.assign(echo_of=[pulses.table.index[1], *[None] * (len(pulses.table) - 1)])
+    seen = [Seen(3.0, 1e6), *[Seen(5.0, 1e6)] * (len(values) - 1)]
+    gone = np.full_like(values, np.nan)
+    told = score(dataclasses.replace(pulses, table=echo), gone, bundle, seen=seen)
+    assert told.table["reason_1"].str.contains(r"not measurable(?: at 5 dB|, the chain ends at 1 MHz)").any()
+    assert not told.table["reason_1"].str.contains("3 dB").any()
+    blurred = score(pulses, values, bundle, seen=[Seen(10.0, 40e6)] * len(values))
+    assert np.array_equal(blurred.shares, verdicts.shares)
+    assert blurred.table["label"].equals(verdicts.table["label"])
 
 
 def test_words_and_decision_agree_on_what_is_outside(bundle):

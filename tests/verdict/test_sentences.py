@@ -1,16 +1,19 @@
 """Reasons and doubt in words."""
 
+import dataclasses
 import math
 
 import numpy as np
 import pandas as pd
 import pytest
 
+from pdclass.features import BY_NAME, CATALOGUE, clearness
 from pdclass.features.feature import Feature
 from pdclass.verdict.sentences import (
     CABLE_NOTE,
     LATER_ECHO_NOTE,
     MAYBE_ECHO_NOTE,
+    Seen,
     Wording,
     doubt_in_words,
     doubt_kind,
@@ -85,9 +88,51 @@ def test_an_unmeasurable_feature_says_so(wording):
     """NaN is no value: the sentence says that it could not be measured, and how often that happens."""
     sentence = reason_sentence(0, math.nan, 0.5, (0, 1), wording)
     assert sentence == (
-        "10-90 % rise time: not measurable here (nor in 0 % of switchgear reference pulses and 25 % of cable ones); "
+        "10-90 % rise time: not measurable here; missing in 0 % of switchgear reference pulses and 25 % of cable ones; "
         "+0.5 towards cable (1.6 times the odds)"
     )
+
+
+def _alone(name):
+    """What the sentences draw on when a bundle has one feature of the catalogue."""
+    reference = pd.DataFrame({name: [1.0, 2.0], "label": list(CLASSES)})
+    return Wording(CLASSES, (BY_NAME[name],), reference_ranks(reference, CLASSES, (name,)))
+
+
+def test_what_the_noise_hides_says_how_much_it_needs():
+    """A feature that asks for more than the pulse has names both ratios."""
+    feature = dataclasses.replace(RISE, needs_snr_db=9.0)
+    reference = pd.DataFrame({"rise_ns": [1.0, 2.0], "label": list(CLASSES)})
+    wording = Wording(CLASSES, (feature,), reference_ranks(reference, CLASSES, ("rise_ns",)))
+    sentence = reason_sentence(0, math.nan, 0.5, (0, 1), wording, Seen(6.2, 40e6))
+    assert sentence.startswith("10-90 % rise time: not measurable at 6 dB, needs 9 dB; missing in 0 % of switchgear")
+
+
+def test_what_the_chain_does_not_carry_says_where_the_chain_ends():
+    """A band beyond the chain is not measurable because of the chain, however clear the pulse."""
+    wide = max(CATALOGUE, key=lambda feature: feature.needs_hz)
+    sentence = reason_sentence(0, math.nan, 0.5, (0, 1), _alone(wide.name), Seen(40.0, 14e6))
+    ends = f"{wide.meaning}: not measurable, the chain ends at 14 MHz, needs {wide.needs_hz / 1e6:g} MHz; missing in"
+    assert sentence.startswith(ends)
+
+
+def test_a_copy_that_is_not_there_is_no_failure_to_measure():
+    """Where neither noise nor chain forbids it, a missing value says what its absence means."""
+    copies = [feature for feature in CATALOGUE if feature.name.startswith(("copy_", "echo_"))]
+    for feature in copies:
+        sentence = reason_sentence(0, math.nan, 0.5, (0, 1), _alone(feature.name), Seen(40.0, 40e6))
+        assert f"{feature.meaning}: no later copy stands out; missing in" in sentence
+
+
+def test_a_value_that_noise_blurs_says_so(monkeypatch, wording):
+    """Below the ratio from which a feature is clear the sentence says so beside the value, above it does not."""
+    monkeypatch.setattr(clearness, "CLEAR_SNR_DB", {"rise_ns": 14.0, "swings": math.inf})
+    blurred = reason_sentence(0, 450.0, 1.4, (0, 1), wording, Seen(10.4, 40e6))
+    assert blurred.startswith("rise 450 ns (noise blurs it at 10 dB; clear from 14 dB): slower than all switchgear")
+    assert "blurs" not in reason_sentence(0, 450.0, 1.4, (0, 1), wording, Seen(14.0, 40e6))
+    assert "not clear up to 40 dB" in reason_sentence(1, 2.0, 0.2, (0, 1), wording, Seen(30.0, 40e6))
+    assert "blurs" not in reason_sentence(1, 2.0, 0.2, (0, 1), wording, Seen(45.0, 40e6))
+    assert "blurs" not in reason_sentence(0, 450.0, 1.4, (0, 1), wording)
 
 
 def test_ties_lie_in_the_middle(wording):

@@ -10,10 +10,12 @@ import numpy as np
 from plain_features.arrival import measure_arrival
 from plain_features.copies import measure_copies
 from plain_features.edges import measure_edges
+from plain_features.modes import measure_modes
 from plain_features.ringing import measure_ringing
 from plain_features.scales import measure_scales
 from plain_features.spectrum import measure_spectrum
 from plain_features.spread import measure_spread
+from plain_features.tilt import measure_tilt
 from plain_features.window import Window, prepared
 
 from pdclass.features import CATALOGUE
@@ -27,6 +29,8 @@ MEASURES = (
     measure_spread,
     measure_arrival,
     measure_copies,
+    measure_tilt,
+    measure_modes,
 )
 
 

@@ -29,11 +29,12 @@ _REFERENCE = "matrix pencil (Y. Hua, T. K. Sarkar, IEEE Trans. ASSP 38(5), 814-8
 
 
 class Mode(NamedTuple):
-    """One damped oscillation: frequency [Hz], quality Q = pi f tau, energy over that of the samples."""
+    """One damped oscillation: frequency [Hz], quality Q = pi f tau, energy over that of the samples, its own wave."""
 
     frequency_hz: float
     quality: float
     share: float
+    wave: FloatArray
 
 
 def poles(wave: FloatArray, order: int = ORDER, pencil: int = _PENCIL) -> ComplexArray:
@@ -78,8 +79,8 @@ def oscillations(wave: FloatArray, rate_hz: float) -> list[Mode]:
         if pole.imag <= 0 or pole.real == 0:
             continue
         quality = min(turn / (2 * decay), _MOST_Q) if decay > 0 else _MOST_Q
-        own = 4 * float(np.sum((weight * power).real ** 2))
-        modes.append(Mode(turn / (2 * np.pi) * rate_hz, quality, min(own / energy, 1.0)))
+        own = 2 * (weight * power).real
+        modes.append(Mode(turn / (2 * np.pi) * rate_hz, quality, min(float(np.sum(own**2)) / energy, 1.0), own))
     return sorted(modes, key=lambda mode: -mode.share)
 
 

@@ -7,6 +7,7 @@ frequency weighing as much as it stands out of it.
 
 from __future__ import annotations
 
+from functools import lru_cache
 from itertools import pairwise
 from typing import Any
 
@@ -54,8 +55,6 @@ _njit = numba.njit(cache=True, nogil=True)
 def measure_tilt(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features): NaN where nothing stands out of the noise, or it is unknown."""
     found = np.full((len(windows), len(TILT)), np.nan)
-    samples = GUARD + _LENGTH
-    angle = 2 * np.pi / _GRID * np.outer(np.arange(samples), np.arange(_BINS))
     starts = np.array([int(np.ceil(edge / _STEP_MHZ)) for edge in EDGES_MHZ])
     _tilts_into(
         found,
@@ -65,10 +64,17 @@ def measure_tilt(windows: Windows) -> FloatArray:
         windows.noise,
         windows.noise_power,
         windows.low_hz,
-        np.stack([np.cos(angle), np.sin(angle)]),
+        _turns(),
         starts,
     )
     return found
+
+
+@lru_cache(maxsize=1)
+def _turns() -> FloatArray:
+    """Cosine and sine of every bin at every sample, (2, samples, bins)."""
+    angle = 2 * np.pi / _GRID * np.outer(np.arange(GUARD + _LENGTH), np.arange(_BINS))
+    return np.stack([np.cos(angle), np.sin(angle)])
 
 
 @_njit
@@ -121,18 +127,33 @@ def _fade_out(piece: FloatArray, own: int) -> float:  # pragma: no cover - compi
 
 
 @_njit
+def _turned_into(sums: FloatArray, piece: FloatArray, turns: FloatArray, first: int, last: int) -> None:
+    # pragma: no cover - compiled
+    """Write the sums of samples times each turn, (2, bins), from the first bin to the last.
+
+    Four samples at a time, each bin's terms added one after the other in their order. Samples: a multiple of four.
+    """
+    sums[:, first:last] = 0.0
+    for part in range(2):
+        total = sums[part, first:last]
+        for n in range(0, piece.size, 4):
+            x, y, z, w = piece[n], piece[n + 1], piece[n + 2], piece[n + 3]
+            a, b = turns[part, n, first:last], turns[part, n + 1, first:last]
+            c, d = turns[part, n + 2, first:last], turns[part, n + 3, first:last]
+            for k in range(total.size):
+                total[k] = (((total[k] + x * a[k]) + y * b[k]) + z * c[k]) + w * d[k]
+
+
+@_njit
 def _power_and_lag(
-    piece: FloatArray, turns: FloatArray, power: FloatArray, lag: FloatArray
+    piece: FloatArray, turns: FloatArray, sums: FloatArray, power: FloatArray, lag: FloatArray
 ) -> None:  # pragma: no cover - compiled
-    """Write |X|² and Re(X* Y) [samples] at every bin, X and Y the transforms of x(n) and n x(n)."""
-    sums = np.zeros((4, power.size))
+    """Write |X|² at every bin, and Re(X* Y) [samples] where delays are fitted; X, Y transforms of x(n) and n x(n)."""
+    _turned_into(sums[:2], piece, turns, 0, power.size)
     for n in range(piece.size):
-        value, moment = piece[n], n * piece[n]
-        for k in range(power.size):
-            sums[0, k] += value * turns[0, n, k]
-            sums[1, k] += value * turns[1, n, k]
-            sums[2, k] += moment * turns[0, n, k]
-            sums[3, k] += moment * turns[1, n, k]
+        piece[n] *= n
+    first, last = int(_DELAY_FROM_MHZ / _STEP_MHZ), int(_FIT_TO_MHZ / _STEP_MHZ) + 1
+    _turned_into(sums[2:], piece, turns, first, last)
     for k in range(power.size):
         power[k] = sums[0, k] ** 2 + sums[1, k] ** 2
         lag[k] = sums[0, k] * sums[2, k] + sums[1, k] * sums[3, k]
@@ -224,14 +245,16 @@ def _tilts_into(
 ) -> None:  # pragma: no cover - compiled
     bins, every = turns.shape[2], (noise_power.shape[1] - 1) * 2 // _GRID
     piece, power, lag, floor = np.empty(turns.shape[1]), np.empty(bins), np.empty(bins), np.empty(bins)
-    bands = starts.size - 1
+    bands, sums = starts.size - 1, np.zeros((4, bins))
     for row in range(len(waves)):
         if not noise[row] > 0 or last[row] < ONSET + _LENGTH:
             continue
         low_hz = corner_hz[row]
         _begin(waves[row], low_hz, piece)
-        energy = _fade_out(piece, min(end[row] - ONSET, _LENGTH))
-        _power_and_lag(piece, turns, power, lag)
+        own = min(end[row] - ONSET, _LENGTH)
+        energy = _fade_out(piece, own)
+        # what follows is zero
+        _power_and_lag(piece[: (GUARD + own + 3) // 4 * 4], turns, sums, power, lag)
         for k in range(bins):
             square, floor[k] = (k * _STEP_MHZ * 1e6) ** 2, noise_power[row, k * every]
             floor[k] *= energy / (end[row] - ONSET + GUARD)

@@ -263,20 +263,15 @@ def _copies(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None
     example = examples[0]
     _echogram(gram_panel, example)
     _likeness(likeness, example)
-    for number, colour in ((1, COLOURS[example.label]), (2, COLOURS["local"])):
-        for name, low, high in bands(example.values, f"copy_{number}_level_{_NUMBERS}_db"):
-            value = example.values[name]
-            if np.isfinite(value):
-                levels.plot([low, high], [value, value], color=colour, lw=2.4, ls=("-", "--")[number - 1])
-        levels.plot([], [], color=colour, lw=2.4, ls=("-", "--")[number - 1], label=f"copy {number}")
+    for name, low, high in bands(example.values, f"copy_1_level_{_NUMBERS}_db"):
+        levels.plot([low, high], [example.values[name]] * 2, color=COLOURS[example.label], lw=2.4)
     levels.axhline(0, color="#999999", lw=0.6)
     levels.set_xscale("log")
     levels.set_xticks([1, 2.5, 5, 9, 14], ["1", "2.5", "5", "9", "14"])
     levels.minorticks_off()
     levels.set_xlabel("band [MHz]")
-    levels.set_ylabel("copy over pulse [dB]")
+    levels.set_ylabel("copy 1 over pulse [dB]")
     levels.margins(y=0.35)
-    levels.legend(frameon=False, fontsize=SMALL)
 
 
 def _echogram(axes: Panel, example: FeatureExample) -> None:
@@ -362,14 +357,24 @@ def _along_root(axes: Panel, example: FeatureExample, arrival: FirstArrival) -> 
 
 def _along_inverse_root(axes: Panel, example: FeatureExample, arrival: FirstArrival) -> None:
     """Delay against the inverse root of the frequency: a straight line is what skin effect makes."""
-    used = (arrival.mhz >= 2.5) & (arrival.mhz <= 10)
+    # hollows hardly weigh in the fit; their delays are far off and would hide the others
+    clear = arrival.level_db > arrival.level_db.max() - 20
+    used = (arrival.mhz >= 2.5) & (arrival.mhz <= 10) & clear
     mhz, delay = arrival.mhz[used], arrival.delay_ns[used]
     later = example.values.get("first_dispersion_ns", np.nan)
-    words = f"first_dispersion_ns = {later:.0f} ns" if np.isfinite(later) else "no such law fits"
+    words = f"{later:.0f} ns from 10 to 1 MHz" if np.isfinite(later) else "no such law fits"
     place = 1 / np.sqrt(mhz)
     line = later * (1 / np.sqrt(np.append(mhz, 1.0)) - np.sqrt(0.1)) / (1 - np.sqrt(0.1))
     shift = np.median(delay - line[:-1]) if np.isfinite(later) else delay[-1]
-    axes.plot(place, delay - shift, color=COLOURS[example.label], lw=1.5, label=f"{example.label}: {words}")
+    axes.plot(
+        place,
+        delay - shift,
+        color=COLOURS[example.label],
+        marker=".",
+        ms=3,
+        ls="none",
+        label=f"{example.label}: {words}",
+    )
     axes.plot(1 / np.sqrt(np.append(mhz, 1.0)), line, color=EDGE, lw=1.0, ls="--")
 
 

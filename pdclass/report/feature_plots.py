@@ -220,7 +220,8 @@ def _late(axes: Panel, example: FeatureExample) -> None:
         value = example.values[name]
         if np.isfinite(value):
             axes.plot([peak + first, peak + last], [value, value], color=COLOURS[example.label], lw=2.6)
-            axes.text(peak + first, value + 1.0 + 8.5 * (number % 2), f"{name}\n{value:.1f} dB", fontsize=7)
+            above = {"va": "bottom", "y": value + 1.0} if number % 2 else {"va": "top", "y": value - 1.5}
+            axes.text(x=peak + first, s=f"{name}\n{value:.1f} dB", fontsize=7, **above)
     axes.set_xlim(-0.3, 6.7)
     axes.set_ylim(floor - 12, 16)
     axes.set_ylabel("[dB]")
@@ -385,7 +386,7 @@ def _modes(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
         axes.axvspan(time_us[0], time_us[-1], color="#faf9f4", lw=0)
         if np.isfinite(example.values.get("mode_mhz", np.nan)):
             axes.plot(time_us, ringing, color=EDGE, lw=1.2, ls="--", label="its strongest damped oscillation")
-            axes.legend(frameon=False, fontsize=SMALL, loc="lower right")
+            axes.legend(frameon=False, fontsize=SMALL, loc="center right", bbox_to_anchor=(1.0, 0.75))
         words = [said(example, name) for name in ("mode_mhz", "mode_q", "mode_share")]
         axes.text(0.98, 0.97, "\n".join(words), transform=axes.transAxes, ha="right", va="top", fontsize=SMALL)
         axes.set_xlabel("time from onset [µs]; shaded: what is fitted")

@@ -20,6 +20,7 @@ from pdclass.errors import InputError
 from pdclass.extract import bank, whiten
 from pdclass.extract.events import threshold_sigmas
 from pdclass.extract.fir import TAPS
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.settings import Settings
 
@@ -138,6 +139,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
         filters.append(taps / np.float32(noise[0]))
         limits.append((noise / noise[0] * raised).astype(np.float32))
         gains.append((1 / raised[:, 0]).astype(np.float32))
+        let_go(counts, epochs[inside][0, 0], epochs[inside][-1, 1])
     cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
     sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
     held = (np.concatenate(limits) * sigmas).astype(np.float32)

@@ -15,6 +15,7 @@ from pdclass.extract.cut import clipped_samples, rails
 from pdclass.extract.echoes import SHAPE_S
 from pdclass.extract.events import ATTACK_S, all_limits, in_order, piece_events, spans
 from pdclass.extract.fir import TAPS
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
 
 _njit = numba.njit(cache=True, nogil=True)
@@ -27,7 +28,7 @@ MARGIN_S = 4e-6
 #: A longer burst is looked at piece by piece, counted from its own start; a cut is no new beginning.
 LONGEST_CLUSTER_S = 400e-6
 #: Pieces searched at once.
-_PIECES = 1024
+_PIECES = 256
 #: So many samples around a piece may be looked at when an edge is smoothed.
 _REACH = 160
 #: So long the whitening filter remembers samples that were cut off.
@@ -76,6 +77,7 @@ def segment_events(
             _events_of(capture, background, bounds, pieces[row : row + _PIECES], shape)
             for row in range(0, len(pieces), _PIECES)
         ]
+        let_go(capture.counts, first, last)
     events = _ordered(found, max(2, round(ATTACK_S * rate_hz)), clipped)
     return _without_recoveries(capture, events) if clipped else events
 
@@ -131,11 +133,11 @@ def _events_of(
     attack, decay, twin = spans(rate_hz)
     sizes = (attack, decay, 2 * twin + 6 * decay, shape)
     limits, grid = all_limits(rate_hz), held.grid(bounds)
-    return Events(
-        *_searched(
-            capture.counts, held.dither, held.level, held.filters, held.gains, grid, bounds, pieces, sizes, limits
-        )
+    found = _searched(
+        capture.counts, held.dither, held.level, held.filters, held.gains, grid, bounds, pieces, sizes, limits
     )
+    let_go(capture.counts, pieces[0, 0], pieces[-1, 3])
+    return Events(*found)
 
 
 @_njit

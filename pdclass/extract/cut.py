@@ -18,6 +18,7 @@ from pdclass.pulses import (
 )
 
 _njit = numba.njit(cache=True, nogil=True)
+_STRETCH = 1024
 #: Windows cut at once: the pages of a mapped record that they touch are let go then.
 _BATCH = 128
 #: Every so many-th sample of the pre-trigger serves its median: neighbours tell nearly the same.
@@ -148,10 +149,26 @@ def any_beyond(waves: WaveArray, limit: float) -> bool:  # pragma: no cover - co
 
 def clipped_samples(capture: Capture, first: int, last: int) -> int:
     """How many samples of a stretch stand at the end of the digitiser's range."""
-    ends, piece = rails(capture), capture.counts[first:last]
-    if ends is None or not piece.size or (piece.min() > ends[0] and piece.max() < ends[1]):
+    ends, piece = rails(capture), np.asarray(capture.counts[first:last])
+    # a digitiser of more bits than its samples can hold has no end within them
+    if ends is None or ends[1] > np.iinfo(piece.dtype).max:
         return 0
-    return int(np.count_nonzero((piece <= ends[0]) | (piece >= ends[1])))
+    return int(_outside(piece, piece.dtype.type(ends[0]), piece.dtype.type(ends[1])))
+
+
+@_njit
+def _outside(counts: NDArray[Any], low: Any, high: Any) -> int:  # pragma: no cover - compiled
+    """How many counts are at most `low` or at least `high`; stretch by stretch, nearly all of which hold none."""
+    total = 0
+    for begin in range(0, counts.size, _STRETCH):
+        own = counts[begin : begin + _STRETCH]
+        some = False
+        for i in range(own.size):
+            some |= (own[i] <= low) | (own[i] >= high)
+        if some:
+            for i in range(own.size):
+                total += (own[i] <= low) | (own[i] >= high)
+    return total
 
 
 def clipping_note(capture: Capture, count: int) -> list[str]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numba
 import numpy as np
@@ -278,6 +279,11 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
     ----------
     J. Pickands, Trans. Am. Math. Soc. 145, 51-73, 1969 (from memory; index 1, constant 1).
     """
+    return _known_sigmas(scales, samples_per_cycle, false_events).copy()
+
+
+@lru_cache(maxsize=64)
+def _known_sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:
     return np.asarray(_sigmas(scales, samples_per_cycle, false_events), np.float64)
 
 

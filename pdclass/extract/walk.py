@@ -198,11 +198,19 @@ def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
     order = np.argsort(places[:, 0], kind="stable")
     onsets, ends = places[order, 0], places[order, 1]
     kept = in_order(onsets, ends, apart)
-    shapes = np.concatenate([part.shapes for part in found])[order[kept]]
-    lengths = (ends - onsets)[kept]
-    shapes[np.arange(shapes.shape[1]) >= lengths[:, None]] = 0.0
+    shapes = _chosen(np.concatenate([part.shapes for part in found]), order[kept], (ends - onsets)[kept])
     feet = np.concatenate([part.feet for part in found])[order[kept]]
     return Events(np.stack([onsets[kept], ends[kept]], axis=1), feet, shapes, clipped)
+
+
+@_njit
+def _chosen(shapes: WaveArray, rows: IntArray, lengths: IntArray) -> WaveArray:  # pragma: no cover - compiled
+    """Rows of shapes, zero after their lengths."""
+    chosen = np.zeros((rows.size, shapes.shape[1]), np.float32)
+    for n in range(rows.size):
+        length = min(lengths[n], shapes.shape[1])
+        chosen[n, :length] = shapes[rows[n], :length]
+    return chosen
 
 
 def _without_recoveries(capture: Capture, events: Events) -> Events:

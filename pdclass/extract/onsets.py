@@ -166,7 +166,9 @@ def _foot(
     for _ in range(_NEWTON):
         if sign * local[3] >= 0:
             break
-        at = min(max(at - local[2] / local[3], -0.5), 1.5)
+        former, at = at, min(max(at - local[2] / local[3], -0.5), 1.5)
+        if at == former:
+            break
         _smooth(white, anchor, at, width, local)
     if sign * local[1] <= 0:
         return at, np.inf

@@ -116,12 +116,18 @@ def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatAr
     near = np.zeros(count + 2 * reach)
     for i in range(max(begin - reach, 0), min(begin + count + reach, white.size)):
         near[i - begin + reach] = white[i]
-    out = np.zeros(count)
-    for k in range(2 * reach + 1):
-        weight = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
-        late = near[k : k + count]
+    weights = np.empty(2 * reach + 1)
+    for k in range(reach + 1):
+        weights[k] = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
+        weights[2 * reach - k] = weights[k]
+    out = weights[0] * near[:count]
+    for k in range(1, 2 * reach + 1, 4):
+        # four taps a pass, added in their order: `reach` is a multiple of two
+        a, b, c, d = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]
+        first, second = near[k : k + count], near[k + 1 : k + 1 + count]
+        third, fourth = near[k + 2 : k + 2 + count], near[k + 3 : k + 3 + count]
         for n in range(count):
-            out[n] += weight * late[n]
+            out[n] = (((out[n] + a * first[n]) + b * second[n]) + c * third[n]) + d * fourth[n]
     return out
 
 

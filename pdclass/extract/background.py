@@ -20,6 +20,7 @@ from pdclass.errors import InputError
 from pdclass.extract import bank, whiten
 from pdclass.extract.events import threshold_sigmas
 from pdclass.extract.fir import TAPS
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.settings import Settings
 
@@ -138,6 +139,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
         filters.append(taps / np.float32(noise[0]))
         limits.append((noise / noise[0] * raised).astype(np.float32))
         gains.append((1 / raised[:, 0]).astype(np.float32))
+        let_go(counts, epochs[inside][0, 0], epochs[inside][-1, 1])
     cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
     sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
     held = (np.concatenate(limits) * sigmas).astype(np.float32)
@@ -145,10 +147,8 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
     return Background(level, dither, epoch, firsts, starts, np.stack(filters), held, np.concatenate(gains))
 
 
-def scanned(
-    counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int
-) -> tuple[WaveArray, NDArray[np.bool_]]:
-    """A stretch of a segment whitened to noise of variance 1, and which of its samples leave the background.
+def whitened(counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int) -> WaveArray:
+    """A stretch of a segment in local noise levels, (last - first,) float32.
 
     Parameters
     ----------
@@ -156,30 +156,36 @@ def scanned(
     background : of this record.
     bounds : first and one past the last sample of the segment.
     first, last : the stretch wanted, within the segment; where it is cut changes no bit of the result.
-
-    Returns
-    -------
-    (last - first,) float32 whitened samples in local noise levels; (last - first,) centres of box sums above threshold.
     """
-    white, flags = np.empty(last - first, np.float32), np.zeros(last - first, np.bool_)
-    held = background
-    grid = held.grid(bounds)
-    bank.scan_into(
-        counts, held.dither, held.level, held.filters, held.limits, held.gains, grid, bounds, first, white, flags
+    held, white = background, np.empty(last - first, np.float32)
+    raw = np.empty(bank.SUB_BLOCK + TAPS, np.float32)
+    bank.whiten_into(
+        counts, held.dither, held.level, held.filters, held.gains, held.grid(bounds), bounds, first, raw, white
     )
-    return white, flags
+    return white
 
 
-def flagged_runs(counts: NDArray[Any], background: Background, bounds: tuple[int, int]) -> IntArray:
-    """Runs (first, one past last) of the samples of one segment that leave the background, as `scanned` flags them."""
-    held, grid, block = background, background.grid(bounds), bounds[0]
+def flagged_runs(
+    counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int
+) -> IntArray:
+    """Runs (first, one past last) of the samples of a stretch that leave the background.
+
+    Parameters
+    ----------
+    counts : the record.
+    background : of this record.
+    bounds : first and one past the last sample of the segment.
+    first, last : the stretch wanted: whole sub-blocks of `bank.SUB_BLOCK` samples from the segment's start on, or up
+        to its end. A run that goes on in the next stretch begins there anew.
+    """
+    held, grid, block = background, background.grid(bounds), first
     found, room = [], np.empty((_RUN_ROOM, 2), np.int64)
-    while block < bounds[1]:
+    while block < last:
         count, block = bank.runs_into(
-            counts, held.dither, held.level, held.filters, held.limits, grid, bounds, block, room
+            counts, held.dither, held.level, held.filters, held.limits, grid, bounds, block, last, room
         )
         found.append(room[:count].copy())
-    return bank.joined_runs(np.concatenate([np.zeros((0, 2), np.int64), *found]), 1)
+    return found[0] if len(found) == 1 else np.concatenate([np.zeros((0, 2), np.int64), *found])
 
 
 def detection_limit_counts(background: Background, rate_hz: float) -> float:

@@ -137,38 +137,34 @@ def flag_boxes(
 
 
 @_njit
-def scan_into(
+def whiten_into(
     counts: NDArray[Any],
     dither: WaveArray,
     level: float,
     filters: WaveArray,
-    limits: WaveArray,
     gains: WaveArray,
     grid: tuple[int, int, int, int],
     bounds: tuple[int, int],
     first: int,
+    raw: WaveArray,
     white: WaveArray,
-    flags: NDArray[np.bool_],
 ) -> None:  # pragma: no cover - compiled
-    """Whiten and flag `white.size` samples from `first` on, sub-block by sub-block of the segment's own grid.
+    """Whiten `white.size` samples from `first` on to noise of variance 1, sub-block by sub-block of the segment's grid.
 
-    `grid` = (samples an epoch, epochs a stretch, the segment's first epoch, its epochs).
+    `grid` = (samples an epoch, epochs a stretch, the segment's first epoch, its epochs); `raw` is room for a sub-block
+    and the filter's length.
     """
-    reach, order = (1 << (limits.shape[1] - 1)) >> 1, filters.shape[1] - 1
-    raw, boxes, spare = _buffers(reach, order)
-    last = first + white.size
+    order, last = filters.shape[1] - 1, first + white.size
     block = bounds[0] + (first - bounds[0]) // SUB_BLOCK * SUB_BLOCK
     while block < last:
         begin, end = max(block, first), min(block + SUB_BLOCK, last)
-        low, high = max(begin - reach, bounds[0]), min(end + reach, bounds[1])
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
-        taps, own = filters[epoch // grid[1]], boxes[: high - low]
-        load_before(counts, dither, level, taps, bounds, low - order, raw[: own.size + order])
-        filter_into(raw, taps, own)
+        taps, own, signal = filters[epoch // grid[1]], white[begin - first : end - first], raw[: end - begin + order]
+        load_before(counts, dither, level, taps, bounds, begin - order, signal)
+        filter_into(signal, taps, own)
         gain = gains[epoch]
-        for i in range(end - begin):
-            white[begin - first + i] = gain * own[begin - low + i]
-        flag_boxes(own, spare[: own.size], limits[epoch], begin - low, flags[begin - first : end - first])
+        for i in range(own.size):
+            own[i] = gain * own[i]
         block += SUB_BLOCK
 
 
@@ -182,14 +178,15 @@ def runs_into(
     grid: tuple[int, int, int, int],
     bounds: tuple[int, int],
     block: int,
+    last: int,
     runs: IntArray,
 ) -> tuple[int, int]:  # pragma: no cover - compiled
-    """Write the runs of flagged samples from the sub-block at `block` on; how many, and where it stopped for room."""
+    """Write the runs of flagged samples of the sub-blocks from `block` up to `last`; how many, and where room ended."""
     reach, order = (1 << (limits.shape[1] - 1)) >> 1, filters.shape[1] - 1
     raw, boxes, spare = _buffers(reach, order)
     flags = np.zeros(SUB_BLOCK, np.bool_)
     count = 0
-    while block < bounds[1] and count + SUB_BLOCK // 2 < len(runs):
+    while block < last and count + SUB_BLOCK // 2 < len(runs):
         end = min(block + SUB_BLOCK, bounds[1])
         low, high = max(block - reach, bounds[0]), min(end + reach, bounds[1])
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
@@ -378,24 +375,12 @@ def whitened(
     first, last : the stretch wanted, within the segment.
     """
     taps = padded(taps)
-    unbent = np.full((1, 1), np.inf, np.float32)
-    out, flags = np.empty(last - first, np.float32), np.zeros(last - first, np.bool_)
-    grid = (1 << 62, 1, 0, 1)
-    table = dither_table(counts)
-    scan_into(counts, table, offset, taps[None], unbent, np.ones(1, np.float32), grid, bounds, first, out, flags)
+    out, raw = np.empty(last - first, np.float32), np.empty(SUB_BLOCK + taps.size, np.float32)
+    grid, table = (1 << 62, 1, 0, 1), dither_table(counts)
+    whiten_into(counts, table, offset, taps[None], np.ones(1, np.float32), grid, bounds, first, raw, out)
     return out
 
 
 def padded(taps: WaveArray) -> WaveArray:
     """A filter of at most 64 taps with zeros behind it."""
     return np.concatenate([taps, np.zeros(TAPS - taps.size)]).astype(np.float32)
-
-
-def joined_runs(runs: IntArray, gap: int) -> IntArray:
-    """Runs with neighbours closer than `gap` samples joined."""
-    if not len(runs):
-        return runs
-    apart = np.flatnonzero(runs[1:, 0] - runs[:-1, 1] >= gap) + 1
-    firsts = runs[np.concatenate([[0], apart]), 0]
-    lasts = runs[np.concatenate([apart - 1, [len(runs) - 1]]), 1]
-    return np.stack([firsts, lasts], axis=1)

@@ -47,7 +47,8 @@ SHAPE_S = 3e-6
 #: What is not even so alike after a few of the paths is not looked at after all of them.
 HARDLY_ALIKE = 0.35
 _FEW = (np.repeat([0, 2], 4), np.tile([0, 3, 6, 9], 2))
-_BATCH = 16
+#: Small enough that the spectra of a batch stay in the cache.
+_BATCH = 8
 _SHIFT_S = 0.3e-6
 
 

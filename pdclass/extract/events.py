@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numba
 import numpy as np
@@ -64,12 +65,25 @@ def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover
 
 
 @_njit
-def _lately(total: FloatArray, begin: int, end: int, width: int) -> float:  # pragma: no cover - compiled
-    """Largest mean square of `width` samples that ended from `begin` up to `end`."""
-    most = 0.0
-    for i in range(max(begin, 0), max(end, 0)):
-        most = max(most, _mean(total, i, width))
-    return most
+def _rises(quick: FloatArray, begin: int, end: int, now: float, rise: float) -> bool:  # pragma: no cover - compiled
+    """Whether `now` is more than `rise` times each of the quick energies from `begin` up to `end`; the latest first."""
+    for i in range(end - 1, begin - 1, -1):  # noqa: SIM110 - compiled loops have no generators
+        if now <= rise * quick[i]:
+            return False
+    return True
+
+
+@_njit
+def _quick_energy(total: FloatArray, width: int) -> FloatArray:  # pragma: no cover - compiled
+    """`_mean` at every place."""
+    quick = np.empty(total.size - 1)
+    for i in range(min(width, quick.size)):
+        quick[i] = _mean(total, i, width)
+    late, early = total[width + 1 :], total[1:]
+    own = quick[width:]
+    for i in range(own.size):
+        own[i] = (late[i] - early[i]) / width
+    return quick
 
 
 @_njit
@@ -84,11 +98,12 @@ def rough_starts(
     alive, faded, rise, share, dip, swing = limits[0], limits[1], limits[2], limits[3], limits[4], limits[5]
     twin = int(limits[6])
     total = _total_energy(white, begin, end)
+    energy = _quick_energy(total, attack)
     found = np.empty((end - lead) // attack + 2, np.int64)
     count, start, active, ringing = 0, 0, False, False
     peak, lowest, sign = 0.0, 0.0, 1.0
     for i in range(lead - begin, end - begin):
-        quick = _mean(total, i, attack)
+        quick = energy[i]
         fresh = False
         if not active:
             fresh = quick > alive
@@ -97,7 +112,7 @@ def rough_starts(
             continue
         else:
             if quick > alive and i - start > twin:
-                fresh = quick > rise * _lately(total, max(i - twin, lead - begin), i - attack, attack)
+                fresh = _rises(energy, max(i - twin, lead - begin), i - attack, quick, rise)
             if quick > swing * peak and _sign(white, begin + i, attack) != sign:
                 ringing = True
             if not ringing and attack < i - start <= 2 * twin:
@@ -171,67 +186,68 @@ def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # p
 
 @_njit
 def piece_events(
-    white: WaveArray, pieces: IntArray, attack: int, decay: int, limits: FloatArray
-) -> tuple[IntArray, FloatArray]:  # pragma: no cover - compiled
-    """Events of pieces of clusters, in the order found.
+    white: WaveArray, piece: IntArray, attack: int, decay: int, limits: FloatArray
+) -> tuple[IntArray, FloatArray, bool]:  # pragma: no cover - compiled
+    """Events of a piece of a cluster, in the order found, and whether a later end of the stretch would change nothing.
 
     Parameters
     ----------
     white : whitened stretch, noise of variance 1.
-    pieces : rows of (earliest sample, first flagged, one past the last flagged, end of the stretch, whether the
-        cluster began before: then what is already there at the first place is no new event).
+    piece : earliest sample, first flagged, one past the last flagged, end of the stretch, whether the cluster began
+        before: then what is already there at the first place is no new event.
     attack, decay, limits : as for `rough_starts`.
 
     Returns
     -------
-    rows of (onset, end), and of (refined instant after the onset, its standard uncertainty) [samples].
+    rows of (onset, end), and of (refined instant after the onset, its standard uncertainty) [samples]; settled.
     """
     twin = int(limits[6])
-    places = np.empty((256, 2), np.int64)
-    feet = np.empty((256, 2))
+    begin, first, last, stop, continued = piece
+    rough = rough_starts(white, begin, max(begin, first - decay), min(last + attack + 1, stop), attack, decay, limits)
+    if continued:
+        rough = rough[rough > first + attack]
+    ahead, settled = twin, stop > last + 2 * twin
+    if not continued and not rough.size:
+        box, width = strongest_box(white, max(begin, first - 2 * twin), min(last + 2 * twin, stop))
+        rough = np.array([box])
+        ahead = max(twin, width)
+    places, feet = np.empty((rough.size, 2), np.int64), np.empty((rough.size, 2))
     count = 0
-    for row in range(len(pieces)):
-        begin, first, last, stop, continued = pieces[row]
-        rough = rough_starts(
-            white, begin, max(begin, first - decay), min(last + attack + 1, stop), attack, decay, limits
-        )
-        if continued:
-            rough = rough[rough > first + attack]
-        ahead, longest = twin, twin
-        if not continued and not rough.size:
-            box, width = strongest_box(white, max(begin, first - 2 * twin), min(last + 2 * twin, stop))
-            rough = np.array([box])
-            ahead, longest = max(twin, width), max(twin, width)
-        if count + rough.size > len(places):
-            places = np.concatenate((places, np.empty((len(places) + rough.size, 2), np.int64)))
-            feet = np.concatenate((feet, np.empty((len(feet) + rough.size, 2))))
-        kept = count
-        for n in range(rough.size):
-            place = rough[n]
-            following = rough[n + 1] if n + 1 < rough.size else stop
-            low = max(places[count - 1, 0] + attack if count > kept else begin, place - ahead)
-            high = min(place + longest, max(following - attack, place + 2 * attack), stop)
-            if count > kept:
-                low = _valley(white, low, place)
-            sample, offset, std = edge_foot(white, low, max(place - attack, low), high)
-            start = sample + math.floor(offset)
-            if count == kept:
-                start = min(first_sample(white, low, place, high, attack), start)
-            start = min(max(start, low), high - 1)
-            if count > kept and start <= places[count - 1, 0]:
-                continue
-            places[count, 0], feet[count, 0], feet[count, 1] = start, sample - start + offset, std
-            count += 1
-        for n in range(kept, count):
-            limit = places[n + 1, 0] if n + 1 < count else stop
-            places[n, 1] = event_end(white, places[n, 0], limit, decay)
-    return places[:count], feet[:count]
+    for n in range(rough.size):
+        place = rough[n]
+        following = rough[n + 1] if n + 1 < rough.size else stop
+        low = max(places[count - 1, 0] + attack if count else begin, place - ahead)
+        high = min(place + ahead, max(following - attack, place + 2 * attack), stop)
+        settled &= n + 1 < rough.size or (place + ahead <= stop - attack and place + 2 * attack <= stop)
+        if count:
+            low = _valley(white, low, place)
+        sample, offset, std = edge_foot(white, low, max(place - attack, low), high)
+        start = sample + math.floor(offset)
+        if count == 0:
+            start = min(first_sample(white, low, place, high, attack), start)
+        start = min(max(start, low), high - 1)
+        if count and start <= places[count - 1, 0]:
+            continue
+        places[count, 0], feet[count, 0], feet[count, 1] = start, sample - start + offset, std
+        count += 1
+    for n in range(count):
+        limit = places[n + 1, 0] if n + 1 < count else stop
+        places[n, 1] = event_end(white, places[n, 0], limit, decay)
+    if count:
+        settled &= places[count - 1, 1] < stop and places[count - 1, 0] + 4 * decay < stop
+    return places[:count], feet[:count], settled
 
 
-def events_of_pieces(white: WaveArray, pieces: IntArray, rate_hz: float) -> tuple[IntArray, FloatArray]:
-    """Events of pieces of clusters as in `piece_events`, with the spans of a sampling rate."""
-    attack, decay, twin = spans(rate_hz)
-    return piece_events(white, pieces, attack, decay, np.append(_LIMITS, twin))
+def found_in(white: WaveArray, piece: IntArray, rate_hz: float) -> tuple[IntArray, FloatArray]:
+    """Events of a piece of a cluster as in `piece_events`, with the spans of a sampling rate."""
+    attack, decay, _ = spans(rate_hz)
+    places, feet, _ = piece_events(white, piece, attack, decay, all_limits(rate_hz))
+    return places, feet
+
+
+def all_limits(rate_hz: float) -> FloatArray:
+    """The `limits` of `rough_starts` at a sampling rate."""
+    return np.append(_LIMITS, spans(rate_hz)[2])
 
 
 @_njit
@@ -263,6 +279,11 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
     ----------
     J. Pickands, Trans. Am. Math. Soc. 145, 51-73, 1969 (from memory; index 1, constant 1).
     """
+    return _known_sigmas(scales, samples_per_cycle, false_events).copy()
+
+
+@lru_cache(maxsize=64)
+def _known_sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:
     return np.asarray(_sigmas(scales, samples_per_cycle, false_events), np.float64)
 
 

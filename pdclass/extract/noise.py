@@ -9,6 +9,7 @@ import numba
 import numpy as np
 
 from pdclass.extract.cut import segments_of
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
@@ -48,6 +49,7 @@ def noise_beside(capture: Capture, places: IntArray) -> WaveArray:
         values = np.take(capture.counts, starts[:, None] + offsets, mode="clip").astype(np.float32)
         own = np.searchsorted(bricks, batch[:, 0])
         levels[first : first + _BATCH] = _levels(values, starts, offsets, own, batch[:, 1:], places, integer)
+        let_go(capture.counts, starts[0], starts[-1] + brick)
     scale = np.float32(abs(capture.chain.volts_per_count or 1.0))
     return np.asarray(levels[np.cumsum(new) - 1] * scale, np.float32)
 

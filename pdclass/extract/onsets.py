@@ -25,7 +25,7 @@ SMOOTHINGS = 6
 STANDS_OUT = 8.0
 _REACH = 4.0
 #: The edge is followed back so many standard deviations before the place where half its height may be reached.
-_AHEAD = 12.0
+_AHEAD, _NEAR = 12.0, 3.0
 #: Smoothing that makes the edge stand out so much less than a narrower one did is wider than the pulse.
 _PAST = 0.8
 _NEWTON = 3
@@ -116,18 +116,26 @@ def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatAr
     near = np.zeros(count + 2 * reach)
     for i in range(max(begin - reach, 0), min(begin + count + reach, white.size)):
         near[i - begin + reach] = white[i]
-    out = np.zeros(count)
-    for k in range(2 * reach + 1):
-        weight = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
-        late = near[k : k + count]
+    weights = np.empty(2 * reach + 1)
+    for k in range(reach + 1):
+        weights[k] = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
+        weights[2 * reach - k] = weights[k]
+    out = weights[0] * near[:count]
+    for k in range(1, 2 * reach + 1, 4):
+        # four taps a pass, added in their order: `reach` is a multiple of two
+        a, b, c, d = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]
+        first, second = near[k : k + count], near[k + 1 : k + 1 + count]
+        third, fourth = near[k + 2 : k + 2 + count], near[k + 3 : k + 3 + count]
         for n in range(count):
-            out[n] += weight * late[n]
+            out[n] = (((out[n] + a * first[n]) + b * second[n]) + c * third[n]) + d * fourth[n]
     return out
 
 
 @_njit
-def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float]:  # pragma: no cover - compiled
+def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float, int]:  # pragma: no cover - compiled
     """Steepest step (its first place), sign and height of the first edge to half the largest magnitude from `low` on.
+
+    The last of the four is where the edge begins.
 
     The edge is what rises without a break through the first place of half the height.
     """
@@ -147,7 +155,7 @@ def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float]:  # prag
     for n in range(base, top):
         if sign * (wave[n + 1] - wave[n]) > slope:
             slope, steepest = sign * (wave[n + 1] - wave[n]), n
-    return steepest, sign, height
+    return steepest, sign, height, base
 
 
 @_njit
@@ -164,7 +172,9 @@ def _foot(
     for _ in range(_NEWTON):
         if sign * local[3] >= 0:
             break
-        at = min(max(at - local[2] / local[3], -0.5), 1.5)
+        former, at = at, min(max(at - local[2] / local[3], -0.5), 1.5)
+        if at == former:
+            break
         _smooth(white, anchor, at, width, local)
     if sign * local[1] <= 0:
         return at, np.inf
@@ -209,18 +219,29 @@ def edge_foot(
     """
     width, most = 1.0, 0.0
     sample, offset, std = first, 0.0, np.nan
+    # an edge that does not stand out is refined in the end only, if no other smoothing serves better
+    pending, best_sign, best_width = False, 1.0, 1.0
     for _ in range(SMOOTHINGS):
         early = max(begin, first - int(_AHEAD * width))
-        wave = _smoothed(white, early, stop - early, width)
-        steepest, sign, height = _first_edge(wave, first - early)
+        # most edges begin close by: what lies further back is smoothed only for those that do not
+        near = max(early, first - int(_NEAR * width))
+        steepest, sign, height, base = _first_edge(_smoothed(white, near, stop - near, width), first - near)
+        if base == 0 and near > early:
+            near = early
+            steepest, sign, height, base = _first_edge(_smoothed(white, near, stop - near, width), first - near)
         stands_out = height * math.sqrt(math.sqrt(2.0) * _ROOT_TWO_PI * width)
-        if stands_out > most or stands_out >= STANDS_OUT:
-            at, spread = _foot(white, early + steepest, sign, width)
+        if stands_out >= STANDS_OUT:
+            at, spread = _foot(white, near + steepest, sign, width)
             if stands_out > most:
-                most, sample, offset, std = stands_out, early + steepest, at, spread
-            if stands_out >= STANDS_OUT and spread <= width / 2:
-                return early + steepest, at, spread
+                sample, offset, std, pending = near + steepest, at, spread, False
+            if spread <= width / 2:
+                return near + steepest, at, spread
+        elif stands_out > most:
+            sample, best_sign, best_width, pending = near + steepest, sign, width, True
+        most = max(most, stands_out)
         if stands_out < _PAST * most:
             break
         width *= 2.0
+    if pending:
+        offset, std = _foot(white, sample, best_sign, best_width)
     return sample, offset, std if std < stop - begin else np.nan

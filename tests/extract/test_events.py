@@ -5,7 +5,7 @@ import pytest
 from closed_form import as_capture, damped_sine, double_exponential
 
 from pdclass.extract import extract
-from pdclass.extract.events import event_end, events_of_pieces, in_order, strongest_box, threshold_sigmas
+from pdclass.extract.events import event_end, found_in, in_order, strongest_box, threshold_sigmas
 
 FIRST, APART, COUNT = 5000, 25_000, 6
 
@@ -67,8 +67,8 @@ def test_a_piece_that_continues_has_no_event_at_its_first_place():
     white = rng.normal(0, 1, 6000).astype(np.float32)
     white[1000:5000] += (8 * np.sin(0.9 * np.arange(4000))).astype(np.float32)
     pieces = np.array([[600, 1000, 3000, 6000, 0], [2600, 3000, 5000, 6000, 1]])
-    begun, _ = events_of_pieces(white, pieces[:1], 100e6)
-    cut, _ = events_of_pieces(white, pieces[1:], 100e6)
+    begun, _ = found_in(white, pieces[0], 100e6)
+    cut, _ = found_in(white, pieces[1], 100e6)
     assert abs(begun[0, 0] - 1000) <= 5
     assert not len(cut)
 

@@ -220,8 +220,8 @@ def _late(axes: Panel, example: FeatureExample) -> None:
         value = example.values[name]
         if np.isfinite(value):
             axes.plot([peak + first, peak + last], [value, value], color=COLOURS[example.label], lw=2.6)
-            above = {"va": "bottom", "y": value + 1.0} if number % 2 else {"va": "top", "y": value - 1.5}
-            axes.text(x=peak + first, s=f"{name}\n{value:.1f} dB", fontsize=7, **above)
+            side, shift = ("bottom", 1.0) if number % 2 else ("top", -1.5)
+            axes.text(peak + first, value + shift, f"{name}\n{value:.1f} dB", va=side, fontsize=7)
     axes.set_xlim(-0.3, 6.7)
     axes.set_ylim(floor - 12, 16)
     axes.set_ylabel("[dB]")

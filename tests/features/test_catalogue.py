@@ -49,7 +49,7 @@ def test_names_and_words_are_complete_and_unlike():
     families = {"edges", "spectrum", "scales", "ringing", "spread", "arrival", "copies", "tilt", "modes"}
     assert families == set(FAMILIES)
     assert sorted(NAMES) == sorted(f.name for features, _ in FAMILIES.values() for f in features)
-    endings = {"ns": "_ns", "MHz": "_mhz", "µs": "_us"}
+    endings = {"ns": "_ns", "MHz": "_mhz", "µs": "_us", "dB": "_db", "dB/MHz": "_db", "dB/√MHz": "_db"}
     for feature in CATALOGUE:
         assert feature.name.endswith(endings.get(feature.unit, ""))
         assert "{value}" in feature.sentence

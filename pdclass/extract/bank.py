@@ -361,26 +361,6 @@ def dither_table(counts: NDArray[Any]) -> WaveArray:
     return ((place >> np.uint64(40)).astype(np.float64) / (1 << 24) - 0.5).astype(np.float32)
 
 
-def whitened(
-    counts: NDArray[Any], taps: WaveArray, offset: float, bounds: tuple[int, int], first: int, last: int
-) -> WaveArray:
-    """Whitened samples `first` to `last` of a segment; what came before it is predicted backwards.
-
-    Parameters
-    ----------
-    counts : the record.
-    taps : whitening filter.
-    offset : level of the record, taken out first [count].
-    bounds : first and one past the last sample of the segment.
-    first, last : the stretch wanted, within the segment.
-    """
-    taps = padded(taps)
-    out, raw = np.empty(last - first, np.float32), np.empty(SUB_BLOCK + taps.size, np.float32)
-    grid, table = (1 << 62, 1, 0, 1), dither_table(counts)
-    whiten_into(counts, table, offset, taps[None], np.ones(1, np.float32), grid, bounds, first, raw, out)
-    return out
-
-
 def padded(taps: WaveArray) -> WaveArray:
     """A filter of at most 64 taps with zeros behind it."""
     return np.concatenate([taps, np.zeros(TAPS - taps.size)]).astype(np.float32)

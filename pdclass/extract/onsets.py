@@ -120,7 +120,7 @@ def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatAr
     for k in range(reach + 1):
         weights[k] = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
         weights[2 * reach - k] = weights[k]
-    out = weights[0] * near[:count]
+    out: FloatArray = weights[0] * near[:count]
     for k in range(1, 2 * reach + 1, 4):
         # four taps a pass, added in their order: `reach` is a multiple of two
         a, b, c, d = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]

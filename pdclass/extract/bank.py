@@ -8,14 +8,13 @@ from __future__ import annotations
 
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.extract.fir import TAPS, filter_into
 from pdclass.pulses import IntArray, WaveArray
 
-_njit = numba.njit(cache=True, nogil=True)
 #: Samples worked on at once.
 SUB_BLOCK = 4096
 #: The pattern that spreads whole numbers over the width of a count repeats after so many samples of a segment.
@@ -27,7 +26,7 @@ _CHUNK = 128
 _SPOILT_BEFORE, _SPOILT_AFTER = 16, 32
 
 
-@_njit
+@compiled
 def continued_back(head: WaveArray, taps: WaveArray, count: int) -> WaveArray:  # pragma: no cover - compiled
     """The samples that the background would have had before a beginning, predicted backwards from it.
 
@@ -44,7 +43,7 @@ def continued_back(head: WaveArray, taps: WaveArray, count: int) -> WaveArray:  
     return joined[:count]
 
 
-@_njit
+@compiled
 def load_signal(
     counts: NDArray[Any], dither: WaveArray, level: float, first: int, begin: int, out: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -55,7 +54,7 @@ def load_signal(
         out[i] = (np.float32(own[i]) - shift) + pattern[i]
 
 
-@_njit
+@compiled
 def load_before(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -74,7 +73,7 @@ def load_before(
         out[:missing] = continued_back(head, taps, missing)
 
 
-@_njit
+@compiled
 def _above(wave: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     fired = np.int32(0)
     for i in range(wave.size):
@@ -82,7 +81,7 @@ def _above(wave: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     return fired
 
 
-@_njit
+@compiled
 def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     """Boxes of twice `half` samples from those of half of it, and whether any leaves the limit."""
     fired = np.int32(0)
@@ -94,7 +93,7 @@ def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> Any:  
     return fired
 
 
-@_njit
+@compiled
 def _mark(wave: WaveArray, limit: float, flags: NDArray[np.bool_]) -> None:  # pragma: no cover - compiled
     for begin in range(0, wave.size, _CHUNK):
         own, chosen = wave[begin : begin + _CHUNK], flags[begin : begin + _CHUNK]
@@ -103,7 +102,7 @@ def _mark(wave: WaveArray, limit: float, flags: NDArray[np.bool_]) -> None:  # p
                 chosen[i] |= abs(own[i]) > limit
 
 
-@_njit
+@compiled
 def flag_boxes(
     white: WaveArray, spare: WaveArray, limits: WaveArray, before: int, flags: NDArray[np.bool_]
 ) -> bool:  # pragma: no cover - compiled
@@ -136,7 +135,7 @@ def flag_boxes(
     return flagged
 
 
-@_njit
+@compiled
 def whiten_into(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -168,7 +167,7 @@ def whiten_into(
         block += SUB_BLOCK
 
 
-@_njit
+@compiled
 def runs_into(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -200,13 +199,13 @@ def runs_into(
     return count, block
 
 
-@_njit
+@compiled
 def _buffers(reach: int, order: int) -> tuple[WaveArray, WaveArray, WaveArray]:  # pragma: no cover - compiled
     size = SUB_BLOCK + 2 * reach
     return np.empty(size + order, np.float32), np.empty(size, np.float32), np.empty(size, np.float32)
 
 
-@_njit
+@compiled
 def _add_runs(flags: NDArray[np.bool_], first: int, runs: IntArray, count: int) -> int:  # pragma: no cover - compiled
     """Append the runs of set flags; one that goes on where the last run ended makes that longer."""
     words = flags.view(np.uint64)
@@ -223,7 +222,7 @@ def _add_runs(flags: NDArray[np.bool_], first: int, runs: IntArray, count: int) 
     return count
 
 
-@_njit
+@compiled
 def _cut_out(white: WaveArray, gate: float, most: float) -> bool:  # pragma: no cover - compiled
     """NaN for what stands out and what it spoils around it, unless that is more than a share; whether it did so."""
     size = white.size
@@ -246,7 +245,7 @@ def _cut_out(white: WaveArray, gate: float, most: float) -> bool:  # pragma: no 
     return True
 
 
-@_njit
+@compiled
 def count_above(
     white: WaveArray, gate: tuple[float, float], marks: WaveArray, above: IntArray, looked: IntArray
 ) -> None:  # pragma: no cover - compiled
@@ -270,7 +269,7 @@ def count_above(
         looked[scale] = _numbers(boxes[:usable]) if gated else usable
 
 
-@_njit
+@compiled
 def _count(wave: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     for i in range(wave.size):
@@ -278,7 +277,7 @@ def _count(wave: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     return beyond
 
 
-@_njit
+@compiled
 def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     ahead = wave[half : half + out.size]
@@ -289,7 +288,7 @@ def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> A
     return beyond
 
 
-@_njit
+@compiled
 def _numbers(wave: WaveArray) -> Any:  # pragma: no cover - compiled
     seen = np.int32(0)
     for i in range(wave.size):
@@ -297,7 +296,7 @@ def _numbers(wave: WaveArray) -> Any:  # pragma: no cover - compiled
     return seen
 
 
-@_njit
+@compiled
 def count_runs(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -316,7 +315,7 @@ def count_runs(
     return above, looked
 
 
-@_njit
+@compiled
 def white_run(
     counts: NDArray[Any], dither: WaveArray, level: float, taps: WaveArray, run: IntArray
 ) -> WaveArray:  # pragma: no cover - compiled
@@ -332,7 +331,7 @@ def white_run(
     return white
 
 
-@_njit
+@compiled
 def gathered(
     counts: NDArray[Any], starts: IntArray, level: float, taper: WaveArray
 ) -> WaveArray:  # pragma: no cover - compiled

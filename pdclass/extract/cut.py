@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.extract.pages import let_go
 from pdclass.pulses import (
     Capture,
@@ -17,7 +17,6 @@ from pdclass.pulses import (
     window_samples,
 )
 
-_njit = numba.njit(cache=True, nogil=True)
 _STRETCH = 1024
 #: Windows cut at once: the pages of a mapped record that they touch are let go then.
 _BATCH = 128
@@ -47,7 +46,7 @@ def windows(capture: Capture, onsets: IntArray) -> WaveArray:
     return waves
 
 
-@_njit
+@compiled
 def _cut(
     counts: NDArray[Any], starts: IntArray, bounds: IntArray, scale: Any, waves: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -61,7 +60,7 @@ def _cut(
             wave[begin + i] = np.float32(own[i]) * scale
 
 
-@_njit
+@compiled
 def middle(values: WaveArray) -> float:  # pragma: no cover - compiled
     """Median of values, which are reordered (selection by partition; the upper one of two); 0 without values."""
     low, high, wanted = 0, values.size - 1, values.size // 2
@@ -86,7 +85,7 @@ def middle(values: WaveArray) -> float:  # pragma: no cover - compiled
     return float(values[wanted]) if values.size else 0.0
 
 
-@_njit
+@compiled
 def signed_peaks(waves: WaveArray, lengths: IntArray, lead: int) -> WaveArray:  # pragma: no cover - compiled
     """Largest excursion of each pulse's own samples from the median of its pre-trigger [V], with its sign.
 
@@ -137,7 +136,7 @@ def clipped(capture: Capture, waves: WaveArray, places: IntArray) -> NDArray[np.
     return hit
 
 
-@_njit
+@compiled
 def any_beyond(waves: WaveArray, limit: float) -> bool:  # pragma: no cover - compiled
     """Whether any sample is larger than a limit, sign ignored."""
     some = False
@@ -156,7 +155,7 @@ def clipped_samples(capture: Capture, first: int, last: int) -> int:
     return int(_outside(piece, piece.dtype.type(ends[0]), piece.dtype.type(ends[1])))
 
 
-@_njit
+@compiled
 def _outside(counts: NDArray[Any], low: Any, high: Any) -> int:  # pragma: no cover - compiled
     """How many counts are at most `low` or at least `high`; stretch by stretch, nearly all of which hold none."""
     total = 0
@@ -180,7 +179,7 @@ def clipping_note(capture: Capture, count: int) -> list[str]:
     return [f"{capture.name}: {share:.1%} of the samples stand at the end of the digitiser's range; {said}"]
 
 
-@_njit
+@compiled
 def _touch(
     waves: WaveArray, lengths: IntArray, lead: int, low: float, high: float
 ) -> NDArray[np.bool_]:  # pragma: no cover - compiled

@@ -5,13 +5,11 @@ from __future__ import annotations
 import math
 from functools import lru_cache
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.extract.onsets import edge_foot, first_sample
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Smoothing of the whitened energy: short enough to part pulses 0.2 us apart, long enough to bridge noise.
 ATTACK_S = 60e-9
@@ -38,7 +36,7 @@ def spans(rate_hz: float) -> tuple[int, int, int]:
     return attack, decay, twin
 
 
-@_njit
+@compiled
 def _total_energy(white: WaveArray, begin: int, end: int) -> FloatArray:  # pragma: no cover - compiled
     """Sums of squares of `white` from `begin` up to each sample; one more entry than samples."""
     total = np.empty(end - begin + 1)
@@ -48,13 +46,13 @@ def _total_energy(white: WaveArray, begin: int, end: int) -> FloatArray:  # prag
     return total
 
 
-@_njit
+@compiled
 def _mean(total: FloatArray, place: int, width: int) -> float:  # pragma: no cover - compiled
     """Mean square of the `width` samples up to and with a place, nothing being before the first."""
     return float((total[place + 1] - total[max(place + 1 - width, 0)]) / width)
 
 
-@_njit
+@compiled
 def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover - compiled
     """Sign of the largest of the `width` samples up to and with `last`."""
     best = white[last]
@@ -64,7 +62,7 @@ def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover
     return 1.0 if best >= 0 else -1.0
 
 
-@_njit
+@compiled
 def _rises(quick: FloatArray, begin: int, end: int, now: float, rise: float) -> bool:  # pragma: no cover - compiled
     """Whether `now` is more than `rise` times each of the quick energies from `begin` up to `end`; the latest first."""
     for i in range(end - 1, begin - 1, -1):  # noqa: SIM110 - compiled loops have no generators
@@ -73,7 +71,7 @@ def _rises(quick: FloatArray, begin: int, end: int, now: float, rise: float) -> 
     return True
 
 
-@_njit
+@compiled
 def _quick_energy(total: FloatArray, width: int) -> FloatArray:  # pragma: no cover - compiled
     """`_mean` at every place."""
     quick = np.empty(total.size - 1)
@@ -86,7 +84,7 @@ def _quick_energy(total: FloatArray, width: int) -> FloatArray:  # pragma: no co
     return quick
 
 
-@_njit
+@compiled
 def rough_starts(
     white: WaveArray, begin: int, lead: int, end: int, attack: int, decay: int, limits: FloatArray
 ) -> IntArray:  # pragma: no cover - compiled
@@ -130,7 +128,7 @@ def rough_starts(
     return found[:count]
 
 
-@_njit
+@compiled
 def strongest_box(white: WaveArray, begin: int, end: int) -> tuple[int, int]:  # pragma: no cover - compiled
     """First sample and width of the box of 1, 2, 4, ... samples whose sum stands out most from its noise."""
     best, place, width = -1.0, begin, 1
@@ -147,7 +145,7 @@ def strongest_box(white: WaveArray, begin: int, end: int) -> tuple[int, int]:  #
     return place, width
 
 
-@_njit
+@compiled
 def _valley(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover - compiled
     """The middle of the three samples of least energy between two events."""
     least, place = np.inf, begin
@@ -158,7 +156,7 @@ def _valley(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover 
     return place
 
 
-@_njit
+@compiled
 def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # pragma: no cover - compiled
     """One past the last sample that belongs to an event: where its energy has sunk into the noise.
 
@@ -184,7 +182,7 @@ def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # p
     return min(max(end, start + max(2, decay // 3)), limit)
 
 
-@_njit
+@compiled
 def piece_events(
     white: WaveArray, piece: IntArray, attack: int, decay: int, limits: FloatArray
 ) -> tuple[IntArray, FloatArray, bool]:  # pragma: no cover - compiled
@@ -250,7 +248,7 @@ def all_limits(rate_hz: float) -> FloatArray:
     return np.append(_LIMITS, spans(rate_hz)[2])
 
 
-@_njit
+@compiled
 def in_order(onsets: IntArray, ends: IntArray, apart: int) -> IntArray:  # pragma: no cover - compiled
     """Which of the events, sorted by onset, stay; their ends are cut at the next onset.
 
@@ -287,7 +285,7 @@ def _known_sigmas(scales: int, samples_per_cycle: float, false_events: float) ->
     return np.asarray(_sigmas(scales, samples_per_cycle, false_events), np.float64)
 
 
-@_njit
+@compiled
 def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:  # pragma: no cover - compiled
     sigmas = np.full(scales, 5.0)
     for scale in range(scales):
@@ -297,7 +295,7 @@ def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> Float
     return sigmas
 
 
-@_njit
+@compiled
 def _normal_quantile(tail: float) -> float:  # pragma: no cover - compiled
     """The z beyond which the standard normal law leaves the share `tail`, by bisection on erfc."""
     low, high = 0.0, 40.0

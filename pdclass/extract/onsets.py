@@ -9,12 +9,10 @@ from __future__ import annotations
 
 import math
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.pulses import FloatArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Before a crest of so many noise levels three samples in a row below the other number are noise, no onset.
 CLEAR = 10.0
@@ -32,7 +30,7 @@ _NEWTON = 3
 _ROOT_TWO_PI = 2.5066282746310002
 
 
-@_njit
+@compiled
 def onset_by_information(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover - compiled
     """The first sample of the pulse in a stretch that begins with noise and ends at the pulse's first crest.
 
@@ -67,7 +65,7 @@ def onset_by_information(white: WaveArray, begin: int, end: int) -> int:  # prag
     return place
 
 
-@_njit
+@compiled
 def first_sample(
     white: WaveArray, begin: int, place: int, stop: int, attack: int
 ) -> int:  # pragma: no cover - compiled
@@ -92,7 +90,7 @@ def first_sample(
     return onset
 
 
-@_njit
+@compiled
 def _smooth(
     white: WaveArray, anchor: int, offset: float, width: float, out: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -109,7 +107,7 @@ def _smooth(
         out[3] += weight * u * (3.0 - u * u) / width**3
 
 
-@_njit
+@compiled
 def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatArray:  # pragma: no cover - compiled
     """The record smoothed by a Gaussian at `count` places from `begin` on, tap by tap; nothing is beyond its ends."""
     reach = int(_REACH * width)
@@ -131,7 +129,7 @@ def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatAr
     return out
 
 
-@_njit
+@compiled
 def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float, int]:  # pragma: no cover - compiled
     """Steepest step (its first place), sign and height of the first edge to half the largest magnitude from `low` on.
 
@@ -158,7 +156,7 @@ def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float, int]:  #
     return steepest, sign, height, base
 
 
-@_njit
+@compiled
 def _foot(
     white: WaveArray, anchor: int, sign: float, width: float
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -185,7 +183,7 @@ def _foot(
     return at - lever * (1.0 - share), _foot_std(local, width, lever, share)
 
 
-@_njit
+@compiled
 def _foot_std(local: FloatArray, width: float, lever: float, share: float) -> float:  # pragma: no cover - compiled
     """Standard uncertainty of a foot from white noise of variance 1, carried through value, slope and place.
 
@@ -202,7 +200,7 @@ def _foot_std(local: FloatArray, width: float, lever: float, share: float) -> fl
     return math.sqrt(max(variance - 2.0 * by_value * by_curvature * of_slope, 0.0))
 
 
-@_njit
+@compiled
 def edge_foot(
     white: WaveArray, begin: int, first: int, stop: int
 ) -> tuple[int, float, float]:  # pragma: no cover - compiled

@@ -5,10 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.extract.background import Background, flagged_runs
 from pdclass.extract.bank import SUB_BLOCK, whiten_into
 from pdclass.extract.cut import clipped_samples, rails
@@ -17,8 +17,6 @@ from pdclass.extract.events import ATTACK_S, all_limits, in_order, piece_events,
 from pdclass.extract.fir import TAPS
 from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
-
-_njit = numba.njit(cache=True, nogil=True)
 
 BLOCK_SAMPLES = 1 << 20
 #: A wide box flags up to half its width before and after its cause; what lies nearer is one cluster.
@@ -82,7 +80,7 @@ def segment_events(
     return _without_recoveries(capture, events) if clipped else events
 
 
-@_njit
+@compiled
 def _clusters(
     runs: IntArray, begun: IntArray, gap: int, seen: int
 ) -> tuple[IntArray, IntArray]:  # pragma: no cover - compiled
@@ -105,7 +103,7 @@ def _clusters(
     return rows[: count - 1], last
 
 
-@_njit
+@compiled
 def _pieces(
     clusters: IntArray, bounds: tuple[int, int], longest: int, around: tuple[int, int]
 ) -> IntArray:  # pragma: no cover - compiled
@@ -140,7 +138,7 @@ def _events_of(
     return Events(*found)
 
 
-@_njit
+@compiled
 def _searched(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -203,7 +201,7 @@ def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
     return Events(np.stack([onsets[kept], ends[kept]], axis=1), feet, shapes, clipped)
 
 
-@_njit
+@compiled
 def _chosen(shapes: WaveArray, rows: IntArray, lengths: IntArray) -> WaveArray:  # pragma: no cover - compiled
     """Rows of shapes, zero after their lengths."""
     chosen = np.zeros((rows.size, shapes.shape[1]), np.float32)

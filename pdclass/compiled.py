@@ -13,22 +13,23 @@ import sys
 from collections.abc import Callable
 from functools import lru_cache
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numba
+from numba.core import config
 
 Kernel = TypeVar("Kernel", bound=Callable[..., Any])
 
 
 def compiled(function: Kernel) -> Kernel:
     """A function compiled at its first call, without the interpreter's lock, its machine code kept on disk."""
-    before = numba.config.CACHE_DIR
-    numba.config.CACHE_DIR = before or str(kernel_folder(Path(function.__code__.co_filename).parent))
+    # asked for by the user, or looked for only while the kernel is made: other packages keep their own place
+    asked = getattr(config, "CACHE_DIR", "")
+    setattr(config, "CACHE_DIR", asked or str(kernel_folder(Path(function.__code__.co_filename).parent)))  # noqa: B010
     try:
-        made: Kernel = numba.njit(cache=True, nogil=True)(function)
+        return cast(Kernel, numba.njit(cache=True, nogil=True)(function))
     finally:
-        numba.config.CACHE_DIR = before
-    return made
+        setattr(config, "CACHE_DIR", asked)  # noqa: B010
 
 
 @lru_cache

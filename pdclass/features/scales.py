@@ -80,7 +80,7 @@ SCALES = (
     Feature(
         "scale_evenness",
         "",
-        "evenness of the energy over the six octaves (wavelet levels) from 0.4 to 25 MHz, 0 (all in one) to 1 (all alike)",
+        "evenness of the energy over six octaves (wavelet levels) from 0.4 to 25 MHz, 0 (all in one) to 1 (all alike)",
         "evenness of the energy over the octaves from 0.4 to 25 MHz is {value}",
         "more even",
         "more uneven",

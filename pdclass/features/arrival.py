@@ -210,7 +210,7 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
     return Feature(
         _name(length_us, low, high),
         "ns",
-        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against its centre",
+        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against the mean",
         f"delay at {low:g}-{high:g} MHz in the first {length_us:g} µs is {{value}}",
         "later",
         "earlier",

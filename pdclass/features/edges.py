@@ -253,7 +253,7 @@ EDGES = (
         (0.0, _LONGEST_NS),
         30,
         "own definition",
-        absent="too little energy is left above the noise",
+        absent="too little energy is left above the noise, or the record ends within the pulse",
         needs_snr_db=6.0,
     ),
 )

@@ -43,7 +43,7 @@ def _swings(
 
 
 #: What a missing value means.
-_NO_PULSE = "the window is empty or cut short"
+_NO_PULSE = "the record ends within the pulse"
 
 RINGING = (
     Feature(

@@ -74,7 +74,7 @@ _GAINS[:, [0, -1]] /= 2
 
 
 #: What a missing value means.
-_NOTHING_LEFT = "too little power is left above the noise"
+_NOTHING_LEFT = "too little power is left above the noise, or the record ends within the pulse"
 
 SCALES = (
     Feature(

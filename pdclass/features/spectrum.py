@@ -86,7 +86,7 @@ def _spectra_into(
 
 
 #: What a missing value means.
-_NOTHING_LEFT = "too little power is left above the noise"
+_NOTHING_LEFT = "too little power is left above the noise, or the record ends within the pulse"
 
 
 def _band_name(low: float, high: float) -> str:

@@ -139,7 +139,7 @@ def _late_name(first_us: float, last_us: float) -> str:
 
 
 #: What a missing value means.
-_NOTHING_LEFT = "too little energy is left above the noise"
+_NOTHING_LEFT = "too little energy is left above the noise, or the record ends within the pulse"
 
 SPREAD = (
     Feature(
@@ -178,7 +178,7 @@ SPREAD = (
         (0.0, 15000.0),
         20,
         "own definition",
-        absent="the window is empty or cut short",
+        absent="the record ends within the pulse",
         needs_snr_db=6.0,
     ),
     Feature(
@@ -219,7 +219,7 @@ SPREAD = (
             2.5,
             "own definition",
             needs_snr_db=9.0,
-            absent="by then the pulse has sunk into the noise or the next one has begun",
+            absent="by then the pulse has sunk into the noise, the next one has begun or the record has ended",
         )
         for first, last in LATE_US
     ),

@@ -210,8 +210,8 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
     return Feature(
         _name(length_us, low, high),
         "ns",
-        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against its centre",
-        f"delay at {low:g}-{high:g} MHz {{value}}",
+        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against the mean",
+        f"delay at {low:g}-{high:g} MHz in the first {length_us:g} µs is {{value}}",
         "later",
         "earlier",
         (-_LONGEST_NS, _LONGEST_NS),
@@ -219,7 +219,8 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
         "group delay by the transform of t x(t) (A. V. Oppenheim, R. W. Schafer, 1989, from memory)",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
-        absent="nothing stands out of the noise in this band",
+        absent="too little power in this band",
+        below_zero="ahead of the mean",
         edition=2,
     )
 

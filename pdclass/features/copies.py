@@ -270,6 +270,10 @@ _BANDS = tuple(pairwise(LEVELS_MHZ))
 _EACH = 5 + len(_BANDS)
 
 
+#: What a missing value means.
+_NONE, _NO_SECOND = "no later copy stands out", "no second copy stands out"
+
+
 def _level_name(low: float, high: float) -> str:
     return f"level_{low:g}_{high:g}_db".replace(".", "p")
 
@@ -281,57 +285,100 @@ def _feature(
     words: tuple[str, str],
     bounds: tuple[float, float],
     tolerance: float,
+    absent: str = _NONE,
+    sentence: str = "",
+    below_zero: str = "",
 ) -> Feature:
     return Feature(
         name,
         unit,
         meaning,
-        f"{meaning} {{value}}",
+        sentence or f"{meaning} {{value}}",
         *words,
         bounds,
         tolerance,
         "Wiener deconvolution (N. Wiener, 1949, from memory)",
         needs_snr_db=12.0,
-        absent="no later copy stands out",
+        absent=absent,
+        below_zero=below_zero,
         edition=2,
     )
 
 
-def _place_of(number: int, which: str) -> tuple[Feature, ...]:
+def _place_of(number: int, which: str, absent: str) -> tuple[Feature, ...]:
     name = f"copy_{number}_{{}}".format
+    height = f"height of the {which} copy"
     return (
-        _feature(name("delay_us"), "µs", f"delay of the {which} copy", ("later", "earlier"), (0.0, 15.0), 0.03),
-        _feature(name("ratio"), "", f"height of the {which} copy", ("larger", "smaller"), (-20.0, 20.0), 0.03),
+        _feature(name("delay_us"), "µs", f"delay of the {which} copy", ("later", "earlier"), (0.0, 15.0), 0.03, absent),
+        _feature(
+            name("ratio"),
+            "",
+            f"{height} over that of the pulse, negative if it is turned over",
+            ("higher", "lower"),
+            (-20.0, 20.0),
+            0.03,
+            absent,
+            f"{height} {{value}} times the pulse",
+            "turned over",
+        ),
     )
 
 
 _SHAPE = (
-    _feature("copy_1_likeness", "", "likeness of the strongest copy to the pulse", ("more", "less"), (-1.0, 1.0), 0.15),
-    _feature("copy_1_width_ns", "ns", "width of the strongest copy", ("wider", "narrower"), (0.0, 700.0), 20.0),
-    _feature("copy_1_flank", "", "lowest flank beside the strongest copy", ("higher", "deeper"), (-50.0, 1.0), 0.2),
+    _feature(
+        "copy_1_likeness",
+        "",
+        "correlation of the strongest copy with the pulse, negative if it is turned over",
+        ("higher", "lower"),
+        (-1.0, 1.0),
+        0.15,
+        sentence="correlation of the strongest copy with the pulse {value}",
+    ),
+    _feature(
+        "copy_1_width_ns",
+        "ns",
+        "width of the strongest copy at half its height after deconvolution by the pulse",
+        ("wider", "narrower"),
+        (0.0, 700.0),
+        20.0,
+        sentence="width of the strongest copy after deconvolution {value}",
+    ),
+    _feature(
+        "copy_1_flank",
+        "",
+        "lowest place within 0.3 µs of the strongest copy over its height, after deconvolution by the pulse",
+        ("less deep", "deeper"),
+        (-50.0, 1.0),
+        0.2,
+        sentence="beside the strongest copy the deconvolved trace sinks to {value} of its height",
+        below_zero="to the other side",
+    ),
     *(
         _feature(
             f"copy_1_{_level_name(low, high)}",
             "dB",
-            f"level of the strongest copy over the pulse at {low:g}-{high:g} MHz",
+            f"level of the strongest copy over that of the pulse at {low:g}-{high:g} MHz",
             ("higher", "lower"),
             (-80.0, 80.0),
             2.5,
+            f"{_NONE}, or too little power in this band",
+            f"level of the strongest copy over that of the pulse at {low:g}-{high:g} MHz is {{value}}",
         )
         for low, high in _BANDS
     ),
 )
 
 COPIES = (
-    *_place_of(1, "strongest"),
+    *_place_of(1, "strongest", _NONE),
     *_SHAPE,
-    *_place_of(2, "second"),
+    *_place_of(2, "second", _NO_SECOND),
     _feature(
         "copy_delay_ratio",
         "",
-        "later over earlier delay of the two strongest copies",
+        "longer over shorter delay of the two strongest copies",
         ("larger", "smaller"),
         (1.0, 40.0),
         0.05,
+        _NO_SECOND,
     ),
 )

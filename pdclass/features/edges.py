@@ -17,7 +17,9 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 _LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
 _LONGEST_NS = 15000.0
 #: What a missing edge means.
-_OPEN = "the pulse does not come down to the level before its end"
+_NO_FOOT = "the wave before the peak does not come down to a tenth of it"
+_NO_FALL = "the pulse ends before it comes down to a tenth of the peak"
+_NO_FLANKS = "the wave does not come down to {} of the peak on both sides of it".format
 #: Crossings are looked for among the own samples and this long a lead [samples].
 _LEAD = 2 * GUARD
 #: Levels of the crossings, from the peak outwards.
@@ -187,58 +189,71 @@ def _tails(
     return tails
 
 
-def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 9.0) -> Feature:
+def _edge(name: str, meaning: str, words: tuple[str, str], sentence: str, absent: str, snr_db: float = 9.0) -> Feature:
     return Feature(
-        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=_OPEN
+        name, "ns", meaning, sentence, *words, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=absent
     )
 
 
+_SPEED, _WIDTH = ("slower", "faster"), ("wider", "narrower")
+
+
 EDGES = (
-    _edge("rise_ns", "10-90 % time of the edge that leads to the peak", "slower", "faster", "rise {value}"),
+    _edge("rise_ns", "10-90 % time of the edge that leads to the peak", _SPEED, "rise {value}", _NO_FOOT),
     _edge(
         "rise_raw_ns",
-        "10-90 % time of the leading edge before carriers are reduced",
-        "slower",
-        "faster",
-        "rise before carriers are reduced {value}",
+        "10-90 % time of the leading edge before radio carriers are taken out",
+        _SPEED,
+        "rise with radio carriers left in {value}",
+        _NO_FOOT,
     ),
-    _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
-    _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
-    _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
+    _edge("fall_ns", "90-10 % time of the edge that follows the peak", _SPEED, "fall {value}", _NO_FALL),
+    _edge("width_50_ns", "width at half of the peak", _WIDTH, "width at half of the peak {value}", _NO_FLANKS("half")),
+    _edge(
+        "width_10_ns",
+        "width at a tenth of the peak",
+        _WIDTH,
+        "width at a tenth of the peak {value}",
+        _NO_FLANKS("a tenth"),
+        18.0,
+    ),
     Feature(
         "width_ratio",
         "",
         "width at a tenth over width at half height",
-        "foot over half width {value}",
+        "width at a tenth over width at half height {value}",
         "broader at the foot",
         "narrower at the foot",
         (1.0, 1e4),
         0.1,
         _LEVELS,
+        absent=_NO_FLANKS("a tenth"),
         needs_snr_db=18.0,
     ),
     Feature(
         "asymmetry",
         "",
         "fall time over rise time",
-        "fall over rise {value}",
-        "more lopsided",
-        "more even",
+        "fall time over rise time {value}",
+        "a longer fall for its rise",
+        "a shorter fall for its rise",
         (0.0, 1e4),
         0.15,
         _LEVELS,
+        absent=_NO_FLANKS("a tenth"),
         needs_snr_db=12.0,
     ),
     Feature(
         "tail_ns",
         "ns",
         "from the peak until nine tenths of the energy have passed",
-        "tail {value}",
-        "longer",
-        "shorter",
+        "nine tenths of the energy have passed {value} after the peak",
+        "later",
+        "sooner",
         (0.0, _LONGEST_NS),
         30,
         "own definition",
+        absent="too little energy is left above the noise, or the record ends within the pulse",
         needs_snr_db=6.0,
     ),
 )

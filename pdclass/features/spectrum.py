@@ -85,21 +85,27 @@ def _spectra_into(
             found[row, 4 + place] = min(max(share, 0.0), 1.0)
 
 
+#: What a missing value means.
+_NOTHING_LEFT = "too little power is left above the noise, or the record ends within the pulse"
+
+
 def _band_name(low: float, high: float) -> str:
     return f"share_{low:g}_{high:g}_mhz".replace(".", "p")
 
 
-def _frequency(name: str, meaning: str, sentence: str, tolerance: float) -> Feature:
+def _frequency(
+    name: str, meaning: str, sentence: str, tolerance: float, words: tuple[str, str] = ("higher", "lower")
+) -> Feature:
     return Feature(
         name,
         "MHz",
         meaning,
         sentence,
-        "higher",
-        "lower",
+        *words,
         (0.0, 25.0),
         tolerance,
         _MOMENTS,
+        absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
     )
 
@@ -111,22 +117,28 @@ SPECTRUM = (
     _frequency(
         "spectral_spread_mhz",
         "width of the spectrum (standard deviation about its centre)",
-        "width of the spectrum {value}",
+        "width of the spectrum (standard deviation) {value}",
         0.1,
+        ("broader", "narrower"),
     ),
-    _frequency("rolloff_85_mhz", "85 % of the power lies below", "85 % of the power below {value}", 0.1),
-    _frequency("rolloff_95_mhz", "95 % of the power lies below", "95 % of the power below {value}", 0.2),
+    _frequency(
+        "rolloff_85_mhz", "frequency that 85 % of the power lies below", "85 % of the power lies below {value}", 0.1
+    ),
+    _frequency(
+        "rolloff_95_mhz", "frequency that 95 % of the power lies below", "95 % of the power lies below {value}", 0.2
+    ),
     *(
         Feature(
             _band_name(low, high),
             "",
             f"share of the power between {low:g} and {high:g} MHz",
-            f"share of the power at {low:g}-{high:g} MHz {{value}}",
+            f"share of the power at {low:g}-{high:g} MHz is {{value}}",
             "larger",
             "smaller",
             (0.0, 1.0),
             0.005,
             "own definition",
+            absent=_NOTHING_LEFT,
             needs_hz=0.8 * high * 1e6,
             needs_snr_db=6.0,
         )

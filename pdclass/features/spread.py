@@ -138,29 +138,34 @@ def _late_name(first_us: float, last_us: float) -> str:
     return f"late_{first_us:g}_{last_us:g}_db".replace(".", "p")
 
 
+#: What a missing value means.
+_NOTHING_LEFT = "too little energy is left above the noise, or the record ends within the pulse"
+
 SPREAD = (
     Feature(
         "equivalent_length_ns",
         "ns",
-        "spread of the energy in time",
-        "equivalent length {value}",
+        "spread of the energy in time (standard deviation about its centre)",
+        "equivalent time length {value}",
         "longer",
         "shorter",
         (0.0, 10000.0),
         5,
         _CONTIN,
+        absent=_NOTHING_LEFT,
         needs_snr_db=9.0,
     ),
     Feature(
         "equivalent_width_mhz",
         "MHz",
-        "spread of the energy in frequency",
+        "spread of the energy in frequency (root mean square of the frequency)",
         "equivalent bandwidth {value}",
         "broader",
         "narrower",
         (0.0, 50.0),
         0.15,
         _CONTIN,
+        absent=_NOTHING_LEFT,
         needs_snr_db=9.0,
     ),
     Feature(
@@ -173,30 +178,33 @@ SPREAD = (
         (0.0, 15000.0),
         20,
         "own definition",
+        absent="the record ends within the pulse",
         needs_snr_db=6.0,
     ),
     Feature(
         "energy_before_peak",
         "",
         "share of the energy before the peak",
-        "energy before the peak {value}",
-        "a larger share",
-        "a smaller share",
+        "share of the energy before the peak {value}",
+        "larger",
+        "smaller",
         (0.0, 1.0),
         0.17,
         "own definition",
+        absent=_NOTHING_LEFT,
         needs_snr_db=9.0,
     ),
     Feature(
         "crest_factor",
         "",
         "peak over the rms of the first two microseconds",
-        "crest factor {value}",
+        "crest factor (peak over rms of the first 2 µs) {value}",
         "more spiky",
         "less spiky",
         (0.5, 100.0),
         0.2,
         "peak over rms, usual definition",
+        absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
     ),
     *(
@@ -204,14 +212,14 @@ SPREAD = (
             _late_name(first, last),
             "dB",
             f"power between {first:g} and {last:g} µs after the peak, over that of the pulse's beginning",
-            f"level {first:g}-{last:g} µs after the peak {{value}}",
+            f"level {first:g}-{last:g} µs after the peak is {{value}} against the pulse's beginning",
             "higher",
             "lower",
             (_LOWEST_DB, 40.0),
             2.5,
             "own definition",
             needs_snr_db=9.0,
-            absent="nothing stands out of the noise there",
+            absent="by then the pulse has sunk into the noise, the next one has begun or the record has ended",
         )
         for first, last in LATE_US
     ),

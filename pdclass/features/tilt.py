@@ -264,17 +264,22 @@ def _tilts_into(
         _fits_into(found[row, bands:], power, floor, lag, low_hz)
 
 
+#: What a missing tilt means.
+_NO_TILT = "the level has a hill, as of a pulse that rings, or too little of the band stands out of the noise"
+
+
 def _level(low: float, high: float) -> Feature:
     return Feature(
         f"first_1p2_level_{low:g}_{high:g}_db".replace(".", "p"),
         "dB",
         f"level of the first 1.2 µs at {low:g}-{high:g} MHz over that of the whole band",
-        f"level of the first arrival at {low:g}-{high:g} MHz {{value}}",
+        f"level of the first 1.2 µs at {low:g}-{high:g} MHz over that of the whole band is {{value}}",
         "higher",
         "lower",
         (-60.0, 30.0),
         1.5,
         "own definition",
+        absent="too little power in this band",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
     )
@@ -286,12 +291,13 @@ TILT = (
         "first_root_tilt_db",
         "dB/√MHz",
         "tilt of the first arrival's level against the root of the frequency, the mark of skin effect",
-        "tilt against the root of the frequency {value}",
-        "rises more",
-        "falls more steeply",
+        "tilt of the first arrival against the root of the frequency (skin effect) {value}",
+        "more upward",
+        "more downward",
         (-500.0, 500.0),
         3.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
+        absent=_NO_TILT,
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
@@ -299,12 +305,13 @@ TILT = (
         "first_straight_tilt_db",
         "dB/MHz",
         "what is left of that tilt against the frequency itself, the mark of screens and dielectric",
-        "straight tilt {value}",
-        "rises more",
-        "falls more steeply",
+        "tilt of the first arrival against the frequency itself (screens, dielectric) {value}",
+        "more upward",
+        "more downward",
         (-200.0, 200.0),
         0.6,
         "own definition",
+        absent=_NO_TILT,
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
@@ -312,12 +319,14 @@ TILT = (
         "first_dispersion_ns",
         "ns",
         "how much later 1 MHz arrives than 10 MHz, if the delay runs as that of skin effect",
-        "1 MHz comes {value} after 10 MHz",
+        "first arrival at 1 MHz comes {value} after that at 10 MHz",
         "later",
         "earlier",
         (-300.0, 300.0),
         8.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
+        absent="the delay does not run as that of skin effect, or too little of the band stands out of the noise",
+        below_zero="that is before it",
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=12.0,
     ),

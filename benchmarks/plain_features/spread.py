@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import scipy.fft
 
-from plain_features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
+from plain_features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window, chance_energy
 from pdclass.pulses import FloatArray
 
 #: So far below the pulse nothing tells of the path any more.
@@ -48,12 +48,14 @@ def measure_spread(window: Window) -> dict[str, float]:
     peak = window.peak - (ONSET - GUARD)
     total = energy.sum()
     beginning = energy[GUARD : GUARD + 200]
+    clear = total > chance_energy(noise**2, energy.size)
+    spiky = beginning.sum() > chance_energy(noise**2, beginning.size)
     found = {
         "equivalent_length_ns": length_s * 1e9,
         "equivalent_width_mhz": _width_mhz(window),
         "onset_to_peak_ns": max(window.peak - ONSET, 0) * STEP_NS,
-        "energy_before_peak": float(energy[:peak].sum() / total),
-        "crest_factor": float(1 / np.sqrt(max(beginning.sum() / 200, 1e-4))),
+        "energy_before_peak": float(energy[:peak].sum() / total) if clear else np.nan,
+        "crest_factor": float(1 / np.sqrt(beginning.sum() / 200)) if spiky else np.nan,
     }
     return found | {_late_name(first, last): _late_level_db(window, first, last) for first, last in LATE_US}
 
@@ -63,7 +65,8 @@ def _width_mhz(window: Window) -> float:
     frequency_hz, power, noise = window.power()
     signal = power - noise
     total, moment = signal.sum(), np.sum(frequency_hz**2 * signal)
-    return float(np.sqrt(moment / total)) / 1e6 if total > 0 and moment > 0 else float("nan")
+    clear = total > chance_energy(noise.sum() / window.own.size, window.own.size)
+    return float(np.sqrt(moment / total)) / 1e6 if clear and moment > 0 else float("nan")
 
 
 def _late_level_db(window: Window, first_us: float, last_us: float) -> float:

@@ -95,6 +95,11 @@ class Window:
         return frequency_hz[inside], spectrum[inside], noise[inside]
 
 
+def chance_energy(floor: float, samples: int) -> float:
+    """Three deviations of the energy of so many samples of noise of a power known as from 200 samples."""
+    return float(3 * floor * np.sqrt(2 * samples * (1 + samples / 200)))
+
+
 def chain_reach_hz(chain: Chain) -> float:
     """Highest frequency that a chain carries: its upper corner, and at most 0.4 of the rate (anti-alias) [Hz]."""
     corner = chain.band_hz[1] if chain.band_hz else np.inf

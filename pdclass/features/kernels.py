@@ -153,3 +153,12 @@ def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
         if keys[i] & _ALL_BUT_SIGN == top:
             return i
     return 0
+
+
+@numba.njit(cache=True, nogil=True)
+def chance_energy(floor: float, samples: float) -> float:  # pragma: no cover - compiled
+    """What noise alone may leave of the energy of so many samples once its mean is taken out: three deviations.
+
+    `floor` is the noise's power; white noise, itself known no better than from the variance of 200 samples.
+    """
+    return 3 * floor * np.sqrt(2 * samples * (1 + samples / 200))

@@ -6,7 +6,7 @@ import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import LANES, sum_of_squares
+from pdclass.features.kernels import LANES, chance_energy, sum_of_squares
 from pdclass.features.window import ANALYSIS_RATE_HZ, BAND, BAND_HZ, GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
@@ -28,7 +28,7 @@ def measure_spread(windows: Windows) -> FloatArray:
     noise = np.where(windows.noise > 0, windows.noise, 0.0)
     size = windows.end - ONSET + GUARD
     length_ns = equivalent_length(windows.own, size, noise) * STEP_NS
-    width_mhz = equivalent_width(windows.own_power[:, BAND], windows.noise_power[:, BAND], BAND_HZ / 1e6)
+    width_mhz = equivalent_width(windows.own_power[:, BAND], windows.noise_power[:, BAND], BAND_HZ / 1e6, size)
     shape = _shape(windows.wave, windows.end, windows.peak, noise)
     late = _late_levels(windows.wave, windows.end, windows.peak, np.where(windows.noise > 0, noise, np.nan))
     onset_to_peak = np.maximum(windows.peak - ONSET, 0)
@@ -71,20 +71,23 @@ def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> Fl
 
 @numba.njit(cache=True, nogil=True)
 def equivalent_width(
-    power: WaveArray, noise: WaveArray, frequency: FloatArray
+    power: WaveArray, noise: WaveArray, frequency: FloatArray, size: IntArray
 ) -> FloatArray:  # pragma: no cover - compiled
     """Equivalent bandwidth, in the unit of `frequency`: root of the second moment of power less noise about zero.
 
-    NaN where nothing is left; noise that is NaN counts as none. (pulses, bins) twice, (bins,).
+    NaN where no more is left than noise may leave; noise that is NaN counts as none. (pulses, bins) twice, (bins,),
+    and (pulses,) the samples behind each spectrum.
     """
     found = np.full(len(power), np.nan)
     for r in range(len(power)):
-        total, moment = 0.0, 0.0
+        total, moment, hidden = 0.0, 0.0, 0.0
         for k in range(frequency.size):
-            signal = np.float64(power[r, k] - (noise[r, k] if noise[r, k] > 0 else np.float32(0.0)))
+            beside = np.float64(noise[r, k]) if noise[r, k] > 0 else 0.0
+            signal = np.float64(power[r, k]) - beside
+            hidden += beside
             total += signal
             moment += signal * frequency[k] * frequency[k]
-        if total > 0 and moment > 0:
+        if total > chance_energy(hidden / size[r], size[r]) and moment > 0:
             found[r] = np.sqrt(moment / total)
     return found
 
@@ -93,15 +96,17 @@ def equivalent_width(
 def _shape(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
-    """Share of the energy before the peak, and crest factor, (pulses, 2)."""
+    """Share of the energy before the peak, and crest factor, (pulses, 2); NaN where noise may have left the energy."""
     found, first = np.full((len(waves), 2), np.nan), ONSET - GUARD
     for r in range(len(waves)):
         wave, floor = waves[r], noise[r] * noise[r]
         total = _energy(wave, first, end[r], floor)
-        if total != 0:
+        if total > chance_energy(floor, end[r] - first):
             found[r, 0] = _energy(wave, first, peak[r], floor) / total
-        beginning = _energy(wave, ONSET, min(ONSET + _BEGINNING, end[r]), floor) / _BEGINNING
-        found[r, 1] = 1 / np.sqrt(max(beginning, 1e-4))
+        size = min(_BEGINNING, end[r] - ONSET)
+        beginning = _energy(wave, ONSET, ONSET + size, floor)
+        if beginning > chance_energy(floor, size):
+            found[r, 1] = 1 / np.sqrt(beginning / _BEGINNING)
     return found
 
 
@@ -162,6 +167,7 @@ SPREAD = (
         0.15,
         _CONTIN,
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "onset_to_peak_ns",
@@ -186,6 +192,7 @@ SPREAD = (
         0.17,
         "own definition",
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "crest_factor",
@@ -198,6 +205,7 @@ SPREAD = (
         0.2,
         "peak over rms, usual definition",
         needs_snr_db=6.0,
+        edition=2,
     ),
     *(
         Feature(

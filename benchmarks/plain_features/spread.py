@@ -21,7 +21,7 @@ def equivalent_spread(wave: FloatArray, rate_hz: float, noise: float = 0.0) -> t
 
     T² = second moment of the energy in time about its centre, W² = second moment of the spectral energy in
     frequency about zero, two-sided; the mean energy of white noise of the given level is taken out of both. NaN
-    where nothing is left.
+    where no more is left than noise may leave.
 
     References
     ----------
@@ -33,7 +33,11 @@ def equivalent_spread(wave: FloatArray, rate_hz: float, noise: float = 0.0) -> t
         return float("nan"), float("nan")
     time_s = np.arange(wave.size) / rate_hz
     centre = np.sum(time_s * energy) / total
-    length = np.sum((time_s - centre) ** 2 * energy) / total
+    away = (time_s - centre) ** 2
+    length = np.sum(away * energy) / total
+    chance = 3 * noise**2 * np.sqrt(2 * (np.sum(away**2) + np.sum(away) ** 2 / 200))
+    if length * total <= chance:
+        length = np.nan
     size = scipy.fft.next_fast_len(2 * wave.size)
     power = np.abs(scipy.fft.fft(wave, size)) ** 2 - wave.size * noise**2
     width = np.sum(scipy.fft.fftfreq(size, 1 / rate_hz) ** 2 * power) / power.sum()
@@ -54,7 +58,7 @@ def measure_spread(window: Window) -> dict[str, float]:
         "equivalent_length_ns": length_s * 1e9,
         "equivalent_width_mhz": _width_mhz(window),
         "onset_to_peak_ns": max(window.peak - ONSET, 0) * STEP_NS,
-        "energy_before_peak": float(energy[:peak].sum() / total) if clear else np.nan,
+        "energy_before_peak": float((energy[:peak].sum() + energy[peak] / 2) / total) if clear else np.nan,
         "crest_factor": float(1 / np.sqrt(beginning.sum() / 200)) if spiky else np.nan,
     }
     return found | {_late_name(first, last): _late_level_db(window, first, last) for first, last in LATE_US}
@@ -83,7 +87,7 @@ def _late_level_db(window: Window, first_us: float, last_us: float) -> float:
     power = float(np.mean(stretch**2)) - window.noise**2
     if power <= 3 * window.noise**2 * np.sqrt(2 / stretch.size):
         return float("nan")
-    return float(max(10 * np.log10(power / np.mean(core**2)), _LOWEST_DB))
+    return float(max(10 * np.log10(power / (np.mean(core**2) - window.noise**2)), _LOWEST_DB))
 
 
 def _late_name(first_us: float, last_us: float) -> str:

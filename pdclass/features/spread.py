@@ -39,7 +39,9 @@ def measure_spread(windows: Windows) -> FloatArray:
 def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> FloatArray:  # pragma: no cover - compiled
     """Equivalent time length of waves [samples]: root of the second moment of the energy about its centre.
 
-    The mean energy of white noise of the given level is taken out. NaN where nothing is left.
+    The mean energy of white noise of the given level is taken out. NaN where what is left is less than three times as
+    large as its own chance: late noise weighs with the square of the time, and else only what chance made too long
+    would be seen.
 
     Parameters
     ----------
@@ -65,8 +67,20 @@ def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> Fl
         if total > 0:
             centre = (lanes[1].sum() - floor * n * (n - 1) / 2) / total
             second = (lanes[2].sum() - floor * (n - 1) * n * (2 * n - 1) / 6) / total - centre * centre
-            found[r] = np.sqrt(second) if second > 0 else np.nan
+            if second > 0 and second * total > _chance_moment(floor, n, centre):
+                found[r] = np.sqrt(second)
     return found
+
+
+@numba.njit(cache=True, nogil=True)
+def _chance_moment(floor: float, samples: float, centre: float) -> float:  # pragma: no cover - compiled
+    """What noise alone may leave of the second moment of its energy about a centre: three deviations.
+
+    As `chance_energy`, each sample weighed with the square of its distance.
+    """
+    early, late = -centre, samples - centre
+    square = (late**3 - early**3) / 3
+    return float(3 * floor * np.sqrt(2 * ((late**5 - early**5) / 5 + square * square / 200)))
 
 
 @numba.njit(cache=True, nogil=True)
@@ -96,13 +110,17 @@ def equivalent_width(
 def _shape(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
-    """Share of the energy before the peak, and crest factor, (pulses, 2); NaN where noise may have left the energy."""
+    """Share of the energy before the middle of the peak sample, and crest factor, (pulses, 2).
+
+    NaN where noise may have left the energy.
+    """
     found, first = np.full((len(waves), 2), np.nan), ONSET - GUARD
     for r in range(len(waves)):
         wave, floor = waves[r], noise[r] * noise[r]
         total = _energy(wave, first, end[r], floor)
         if total > chance_energy(floor, end[r] - first):
-            found[r, 0] = _energy(wave, first, peak[r], floor) / total
+            at_peak = np.float64(wave[peak[r]]) ** 2 - floor
+            found[r, 0] = (_energy(wave, first, peak[r], floor) + 0.5 * at_peak) / total
         size = min(_BEGINNING, end[r] - ONSET)
         beginning = _energy(wave, ONSET, ONSET + size, floor)
         if beginning > chance_energy(floor, size):
@@ -123,12 +141,12 @@ def _late_levels(
     for r in range(len(waves)):
         floor = noise[r] * noise[r]
         early = waves[r, ONSET - GUARD : peak[r] + _CORE]
-        core = sum_of_squares(early) / early.size
+        core = (sum_of_squares(early) - floor * early.size) / early.size
         for k in range(len(_LATE)):
             first, stop = peak[r] + _LATE[k][0], min(peak[r] + _LATE[k][1], end[r])
             if first < end[r] and noise[r] > 0:
                 power = _energy(waves[r], first, stop, floor) / (stop - first)
-                if power > 3 * floor * np.sqrt(2 / (stop - first)):
+                if core > 0 and power > 3 * floor * np.sqrt(2 / (stop - first)):
                     found[r, k] = max(10 * np.log10(power / core), _LOWEST_DB)
     return found
 
@@ -155,6 +173,7 @@ SPREAD = (
         5,
         _CONTIN,
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "equivalent_width_mhz",
@@ -220,6 +239,7 @@ SPREAD = (
             "own definition",
             needs_snr_db=9.0,
             absent="nothing stands out of the noise there",
+            edition=2,
         )
         for first, last in LATE_US
     ),

@@ -54,6 +54,7 @@ RINGING = (
         2,
         "own definition",
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "swings_per_us",
@@ -66,6 +67,7 @@ RINGING = (
         0.2,
         "own definition",
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "overshoot",
@@ -78,6 +80,7 @@ RINGING = (
         0.02,
         "own definition",
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "undershoot_before",
@@ -90,5 +93,6 @@ RINGING = (
         0.02,
         "own definition",
         needs_snr_db=9.0,
+        edition=2,
     ),
 )

@@ -85,6 +85,7 @@ SCALES = (
         0.07,
         _REFERENCE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "scale_mean_level",
@@ -97,5 +98,6 @@ SCALES = (
         0.25,
         _REFERENCE,
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

@@ -199,6 +199,7 @@ SPREAD = (
         20,
         "own definition",
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "energy_before_peak",

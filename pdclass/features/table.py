@@ -14,6 +14,10 @@ from pdclass.features.feature import Feature
 from pdclass.features.window import ONSET, STEP_NS, Windows, chain_band_hz, prepared
 from pdclass.pulses import FloatArray, PulseSet
 
+#: What is measured on all of the own samples, and wrong on a part of them.
+_OF_WHOLE = frozenset(
+    ["tail_ns", *(feature.name for name in ("spectrum", "scales", "ringing", "spread") for feature in FAMILIES[name][0])]
+)
 #: So many windows stay in the fast cache of a processor; no result depends on it.
 BATCH = 128
 
@@ -66,6 +70,7 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
         windows, rows = prepared(pulses.waves[batch], duration_us[batch], reach_hz[batch], low_hz[batch])
         if rows.size:
             values = np.concatenate([measure(windows) for _, measure in families], axis=1)
+            values[np.ix_(windows.cut_short, [feature.name in _OF_WHOLE for feature in features])] = np.nan
             found.values[first + rows] = _allowed(values, windows, features)[:, columns]
             found.snr_db[first + rows] = windows.snr_db
     return found

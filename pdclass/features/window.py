@@ -29,6 +29,8 @@ BAND = slice(*np.searchsorted(_BINS_HZ, (ANALYSIS_BAND_HZ[0], np.nextafter(ANALY
 BAND_HZ = _BINS_HZ[BAND]
 #: The smallest share of a window that must be recorded.
 _LEAST_KNOWN = 4
+#: A pulse of which so few samples were recorded, though it goes on, is not measured as a whole.
+_SHORTEST_RECORD = 100
 #: An excursion of so many noise levels before the onset is another event.
 _BUSY_LEVELS = 9.0
 _BUSY_MARGIN = 30
@@ -81,6 +83,11 @@ class Windows:
     def noise_density(self) -> WaveArray:
         """Noise spectrum for one sample, (pulses, bins); NaN where it is unknown."""
         return np.asarray(self.noise_power / (self.end - ONSET + GUARD)[:, None].astype(np.float32))
+
+    @property
+    def cut_short(self) -> NDArray[np.bool_]:
+        """Where the record ends within the pulse's own samples and less than 1 us after its onset, (pulses,)."""
+        return np.asarray((self.end == self.last) & (self.last - ONSET < _SHORTEST_RECORD))
 
     @cached_property
     def own(self) -> WaveArray:

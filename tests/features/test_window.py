@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 from closed_form import double_exponential
-from one_pulse import single
+from one_pulse import features_of, single
 from plain_features.window import prepared as plainly
 
 from pdclass.features.window import ONSET, SAMPLES, Windows, chain_band_hz, prepared
@@ -92,3 +92,20 @@ def test_a_gap_is_filled_and_ends_what_is_known():
     assert rows.size == 2
     assert windows.last.tolist() == [1700, 1700]
     assert np.isfinite(windows.wave).all()
+
+
+@pytest.mark.parametrize(("last", "missing"), [(505, True), (560, True), (700, False)])
+def test_a_pulse_that_the_record_cuts_is_not_measured_as_a_whole(last, missing):
+    """Where the record ends within the pulse, less than 1 us after its onset, nothing of the whole is measured."""
+    pulses = single(double_exponential(10e-9, 200e-9, span_s=12e-6), duration_us=3.0)
+    pulses.waves[:, last:] = np.nan
+    values = features_of(pulses)
+    for name in ("centroid_mhz", "crest_factor", "swings", "scale_mean_level", "tail_ns", "equivalent_width_mhz"):
+        assert np.isnan(values[name]) == missing, name
+
+
+def test_a_short_pulse_that_ends_before_the_record_is_measured():
+    """What ends within its record is whole, however short the record."""
+    pulses = single(double_exponential(10e-9, 30e-9, span_s=12e-6), duration_us=0.3)
+    pulses.waves[:, 560:] = np.nan
+    assert np.isfinite(features_of(pulses)["centroid_mhz"])

@@ -16,7 +16,10 @@ from pdclass.pulses import FloatArray, PulseSet
 
 #: What is measured on all of the own samples, and wrong on a part of them.
 _OF_WHOLE = frozenset(
-    ["tail_ns", *(feature.name for name in ("spectrum", "scales", "ringing", "spread") for feature in FAMILIES[name][0])]
+    [
+        "tail_ns",
+        *(feature.name for name in ("spectrum", "scales", "ringing", "spread") for feature in FAMILIES[name][0]),
+    ]
 )
 #: So many windows stay in the fast cache of a processor; no result depends on it.
 BATCH = 128

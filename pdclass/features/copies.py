@@ -34,9 +34,9 @@ _REGULAR, _PASS_HZ = 0.01, 6e6
 _APART, _APART_SHARE = 12, 0.04
 #: A copy stands so many noise levels out of the echogram and has this share of the pulse, else there is none.
 _STANDS_OUT, _SMALLEST = 4.5, 0.03
-#: The level is what nine tenths of every so many-th delay from here on do not exceed, over what they would not exceed of
-#: normal noise: what carriers leave has no such high tops as noise of its median has. The echogram is too smooth for
-#: more delays to tell more.
+#: The level is what nine tenths of every so many-th delay from here on do not exceed, over what they would not exceed
+#: of normal noise: what carriers leave has no such high tops as noise of its median has. The echogram is too smooth
+#: for more delays to tell more.
 _LEVEL_FROM, _COMB, _CALMER, _NORMAL = 100, 4, 0.9, 1.6448536
 #: So much of a copy is compared with the pulse [samples], in these bands [MHz].
 _COMPARED, _COMPARED_FFT = 100, 512

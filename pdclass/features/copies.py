@@ -14,7 +14,7 @@ import numpy as np
 
 from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import largest, median_size, weighed
+from pdclass.features.kernels import largest, size_above, weighed
 from pdclass.features.lines import cut_lines, weigh
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, SAMPLES, SPECTRUM_FFT, STEP_NS, Windows
@@ -22,17 +22,22 @@ from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
 
-#: The pulse's beginning [samples], half of it fading out; copies are looked for from and up to these delays.
-_BEGINNING, _FIRST, _LAST = 80, 40, 1350
+#: The pulse's beginning [samples from the onset]: up to where so many samples in turn are below a share of the peak, or
+#: below so many noise levels; then it fades out. It has this length at the most, and no pulse longer than that has
+#: copies; they are looked for from its end on, and up to the last delay.
+_CALM, _SUNK, _SUNK_LEVELS, _BEGINNING_FADE, _LONGEST = 15, 0.03, 3.0, 20, 600
+_SHORTEST, _LAST = 40, 1350
 _WINDOW_FADE = 200
 #: Deconvolution: bins this far below the strongest count little; a Gaussian low-pass of this width follows [Hz].
 _REGULAR, _PASS_HZ = 0.01, 6e6
 #: Two copies are at least so far apart: samples, or a share of the delay.
 _APART, _APART_SHARE = 12, 0.04
 #: A copy stands so many noise levels out of the echogram and has this share of the pulse, else there is none.
-_STANDS_OUT, _SMALLEST = 4.0, 0.02
-#: Its level is that of every so many-th delay from here on: it is too smooth for more of them to tell more.
-_LEVEL_FROM, _COMB = 100, 4
+_STANDS_OUT, _SMALLEST = 4.5, 0.03
+#: The level is what nine tenths of every so many-th delay from here on do not exceed, over what they would not exceed
+#: of normal noise: what carriers leave has no such high tops as noise of its median has. The echogram is too smooth
+#: for more delays to tell more.
+_LEVEL_FROM, _COMB, _CALMER, _NORMAL = 100, 4, 0.9, 1.6448536
 #: So much of a copy is compared with the pulse [samples], in these bands [MHz].
 _COMPARED, _COMPARED_FFT = 100, 512
 #: A band with less than this share of the pulse's strongest one is not compared.
@@ -44,10 +49,24 @@ _FLANK = 30
 def measure_copies(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features): NaN where no copy stands out, or the noise is unknown."""
     found = np.full((len(windows), len(COPIES)), np.nan)
-    rows = np.flatnonzero((windows.noise > 0) & (windows.last - ONSET >= _BEGINNING + _WINDOW_FADE))
+    rows = np.flatnonzero((windows.noise > 0) & (windows.last - ONSET >= _WINDOW_FADE + 2 * _SHORTEST))
     if rows.size:
         used = windows.take(rows) if rows.size < len(windows) else windows
         found[rows] = _of_echograms(echogram(used), used)
+    return found
+
+
+@_njit
+def beginnings(waves: WaveArray, last: IntArray, noise: FloatArray) -> IntArray:  # pragma: no cover - compiled
+    """Length of each pulse's beginning [samples from the onset], with what fades of it; 0 = it does not end in time."""
+    found = np.zeros(len(waves), np.int64)
+    for row in range(len(waves)):
+        limit, calm = np.float32(max(_SUNK, _SUNK_LEVELS * noise[row])), 0
+        for i in range(min(_LONGEST, last[row] - ONSET)):
+            calm = calm + 1 if abs(waves[row, ONSET + i]) < limit and i >= _SHORTEST - _BEGINNING_FADE else 0
+            if calm == _CALM:
+                found[row] = i + 1 - _CALM + _BEGINNING_FADE
+                break
     return found
 
 
@@ -58,7 +77,8 @@ def echogram(windows: Windows) -> WaveArray:
     with its sign, whatever the shape of the pulse. Carriers that were not taken out would hide every copy: they are
     cut down first. Delays after the window's end are to be left alone.
     """
-    whole, beginning = _pieces(windows.wave, windows.last, _WHOLE_FADE, _BEGINNING_FADE)
+    sizes = beginnings(windows.wave, windows.last, windows.noise)
+    whole, beginning = _pieces(windows.wave, windows.last, sizes, _WHOLE_FADE, _FADE)
     whole_spectrum, pulse_spectrum = spectra(whole, SPECTRUM_FFT), spectra(beginning, SPECTRUM_FFT)
     cut_lines(whole_spectrum, pulse_spectrum)
     scale = (windows.last - ONSET) / (windows.end - ONSET + GUARD)
@@ -68,19 +88,21 @@ def echogram(windows: Windows) -> WaveArray:
 
 @_njit
 def _pieces(
-    waves: WaveArray, last: IntArray, window_fade: FloatArray, fade: FloatArray
+    waves: WaveArray, last: IntArray, sizes: IntArray, window_fade: FloatArray, fade: FloatArray
 ) -> tuple[WaveArray, WaveArray]:  # pragma: no cover - compiled
     """What follows each onset, fading out at the end of the record, and the beginning of it."""
     start = ONSET - GUARD
     whole = np.zeros((len(waves), SAMPLES - start), np.float32)
-    beginning = np.empty((len(waves), fade.size), np.float32)
+    beginning = np.zeros((len(waves), GUARD + _LONGEST + fade.size), np.float32)
     for row in range(len(waves)):
         size = last[row] - start
         whole[row, :size] = waves[row, start : last[row]]
         for i in range(window_fade.size):
             whole[row, size - window_fade.size + i] *= window_fade[i]
+        kept = GUARD + (sizes[row] if sizes[row] > 0 else _LONGEST) - fade.size
+        beginning[row, :kept] = waves[row, start : start + kept]
         for i in range(fade.size):
-            beginning[row, i] = waves[row, start + i] * fade[i]
+            beginning[row, kept + i] = waves[row, start + kept + i] * fade[i]
     return whole, beginning
 
 
@@ -115,7 +137,10 @@ def _of_echograms(gram: WaveArray, windows: Windows) -> FloatArray:
     own_samples = windows.end - ONSET + GUARD
     bins = np.array(first_bins(LEVELS_MHZ, _COMPARED_FFT))
     weights = np.ascontiguousarray(cosine_means(first_bins(LEVELS_MHZ, _COMPARED_FFT), _COMPARED_FFT, _COMPARED).T)
-    _copies_into(found, gram, windows.wave, windows.last, windows.noise_power, own_samples, _TAPER, bins, weights)
+    sizes = beginnings(windows.wave, windows.last, windows.noise)
+    _copies_into(
+        found, gram, windows.wave, sizes, windows.last, windows.noise_power, own_samples, _TAPER, bins, weights
+    )
     return found
 
 
@@ -124,6 +149,7 @@ def _copies_into(
     found: FloatArray,
     grams: WaveArray,
     waves: WaveArray,
+    sizes: IntArray,
     last: IntArray,
     noise_power: WaveArray,
     own_samples: IntArray,
@@ -135,10 +161,12 @@ def _copies_into(
     pulse, later = np.empty(_COMPARED), np.empty(_COMPARED)
     bands = weights.shape[1]
     strengths, floors, references = np.empty(bands), np.empty(bands), np.empty(bands)
-    scratch = np.empty(_LAST - _FIRST, np.float32)
+    scratch = np.empty(_LAST, np.float32)
     for row in range(len(found)):
+        if sizes[row] == 0:
+            continue
         gram = grams[row, : last[row] - ONSET]
-        first, second = strongest_copies(gram, scratch)
+        first, second = strongest_copies(gram, sizes[row], scratch)
         if first < 0 and second < 0:
             continue
         for i in range(_COMPARED):
@@ -164,24 +192,24 @@ def _copies_into(
 
 
 @_njit
-def strongest_copies(gram: WaveArray, scratch: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
+def strongest_copies(gram: WaveArray, start: int, scratch: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
     """Delays [samples] of the strongest peak of an echogram and of the strongest one apart from it; -1 = none.
 
-    `scratch` holds as many samples as there are delays to be looked at.
+    They are looked for from the delay `start` on; `scratch` holds as many samples as there are delays to be looked at.
     """
-    delays = min(_LAST, gram.size) - _FIRST
+    delays = min(_LAST, gram.size) - start
     if delays < 2 * _APART:
         return -1, -1
     size = scratch[:delays]
-    size[:] = gram[_FIRST : _FIRST + delays]
-    least = max(_STANDS_OUT * (median_size(gram[_LEVEL_FROM::_COMB].copy()) / 0.6744898 + 1e-9), _SMALLEST)
+    size[:] = gram[start : start + delays]
+    least = max(_STANDS_OUT * (size_above(gram[_LEVEL_FROM::_COMB].copy(), _CALMER) / _NORMAL + 1e-9), _SMALLEST)
     first = largest(size)
     if abs(size[first]) < least:
         return -1, -1
-    apart = max(_APART, round(_APART_SHARE * (first + _FIRST)))
+    apart = max(_APART, round(_APART_SHARE * (first + start)))
     size[max(first - apart, 0) : first + apart + 1] = 0
     second = largest(size)
-    return first + _FIRST, second + _FIRST if abs(size[second]) >= least else -1
+    return first + start, second + start if abs(size[second]) >= least else -1
 
 
 @_njit
@@ -261,7 +289,7 @@ def _taper() -> FloatArray:
 
 _TAPER = _taper()
 _WHOLE_FADE = fade_out(_WINDOW_FADE, _WINDOW_FADE)
-_BEGINNING_FADE = fade_out(GUARD + _BEGINNING, _BEGINNING // 2)
+_FADE = fade_out(_BEGINNING_FADE, _BEGINNING_FADE)
 _LOW_PASS = np.exp(-0.5 * (np.arange(SPECTRUM_FFT // 2 + 1) * ANALYSIS_RATE_HZ / SPECTRUM_FFT / _PASS_HZ) ** 2).astype(
     np.float32
 )
@@ -301,7 +329,7 @@ def _feature(
         needs_snr_db=12.0,
         absent=absent,
         below_zero=below_zero,
-        edition=2,
+        edition=3,
     )
 
 

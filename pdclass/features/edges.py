@@ -10,7 +10,7 @@ import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import LANES, sum_of_squares
+from pdclass.features.kernels import LANES, chance_energy, sum_of_squares
 from pdclass.features.window import GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
@@ -173,11 +173,17 @@ def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) 
 def _tails(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
-    """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out."""
-    tails, first = np.empty(len(waves)), ONSET - GUARD
+    """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out.
+
+    NaN where noise may have left that energy.
+    """
+    tails, first = np.full(len(waves), np.nan), ONSET - GUARD
     for r in range(len(waves)):
         floor = noise[r] * noise[r]
-        limit = 0.9 * (sum_of_squares(waves[r, first : end[r]]) - floor * (end[r] - first))
+        total = sum_of_squares(waves[r, first : end[r]]) - floor * (end[r] - first)
+        if not total > chance_energy(floor, end[r] - first):
+            continue
+        limit = 0.9 * total
         passed, i = 0.0, first
         while i < end[r]:
             value = np.float64(waves[r, i])
@@ -255,5 +261,6 @@ EDGES = (
         "own definition",
         absent="too little energy is left above the noise, or the record ends within the pulse",
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

@@ -8,7 +8,7 @@ from dataclasses import asdict, dataclass
 from pdclass.digest import json_digest
 
 #: Edition of the way windows are made ready, which every feature is measured on: raised as a feature's own.
-WINDOW_EDITION = 2
+WINDOW_EDITION = 3
 _WORDS = frozenset({"meaning", "sentence", "more", "less", "reference", "absent", "below_zero"})
 
 

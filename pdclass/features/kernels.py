@@ -38,6 +38,15 @@ def median_size(values: WaveArray) -> float:  # pragma: no cover - compiled
 
 
 @numba.njit(cache=True, nogil=True)
+def size_above(values: WaveArray, share: float) -> float:  # pragma: no cover - compiled
+    """The size that a share of the values without NaN, (n,) float32, does not exceed; one of theirs, 0 <= share < 1."""
+    keys = values.view(np.int32).copy()
+    for i in range(keys.size):
+        keys[i] = keys[i] & _ALL_BUT_SIGN
+    return _value(_ranked(keys, int(share * keys.size)))
+
+
+@numba.njit(cache=True, nogil=True)
 def _middle(keys: KeyArray) -> float:  # pragma: no cover - compiled
     """The median of floats given as integers that sort like them."""
     rank = (keys.size - 1) // 2
@@ -153,3 +162,12 @@ def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
         if keys[i] & _ALL_BUT_SIGN == top:
             return i
     return 0
+
+
+@numba.njit(cache=True, nogil=True)
+def chance_energy(floor: float, samples: float) -> float:  # pragma: no cover - compiled
+    """What noise alone may leave of the energy of so many samples once its mean is taken out: three deviations.
+
+    `floor` is the noise's power; white noise, itself known no better than from the variance of 200 samples.
+    """
+    return 3 * floor * np.sqrt(2 * samples * (1 + samples / 200))

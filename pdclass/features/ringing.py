@@ -58,6 +58,7 @@ RINGING = (
         "own definition",
         absent=_NO_PULSE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "swings_per_us",
@@ -71,6 +72,7 @@ RINGING = (
         "own definition",
         absent=_NO_PULSE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "overshoot",
@@ -84,6 +86,7 @@ RINGING = (
         "own definition",
         absent=_NO_PULSE,
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "undershoot_before",
@@ -97,5 +100,6 @@ RINGING = (
         "own definition",
         absent=_NO_PULSE,
         needs_snr_db=9.0,
+        edition=2,
     ),
 )

@@ -89,6 +89,7 @@ SCALES = (
         _REFERENCE,
         absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "scale_mean_level",
@@ -103,5 +104,6 @@ SCALES = (
         _REFERENCE,
         absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

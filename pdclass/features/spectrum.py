@@ -6,8 +6,8 @@ import numba
 import numpy as np
 
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import sum_between, weighed
-from pdclass.features.window import BAND, BAND_HZ, Windows
+from pdclass.features.kernels import chance_energy, sum_between, weighed
+from pdclass.features.window import BAND, BAND_HZ, GUARD, ONSET, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _njit = numba.njit(cache=True, nogil=True)
@@ -24,12 +24,13 @@ _STARTS = np.searchsorted(BAND_HZ, [low * 1e6 for low, _ in BANDS_MHZ] + [BANDS_
 def measure_spectrum(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features).
 
-    Sums run over power less noise with its sign, so that what is left of the noise cancels. Noise that is unknown
-    counts as none.
+    Sums run over power less noise with its sign, so that what is left of the noise cancels; NaN where it may be all
+    that is left. Noise that is unknown counts as none.
     """
     found = np.full((len(windows), len(SPECTRUM)), np.nan)
     band = BAND.start, BAND.stop
-    _spectra_into(found, windows.own_power, windows.noise_power, band, BAND_HZ / 1e6, _STARTS)
+    size = windows.end - ONSET + GUARD
+    _spectra_into(found, windows.own_power, windows.noise_power, size, band, BAND_HZ / 1e6, _STARTS)
     return found
 
 
@@ -66,6 +67,7 @@ def _spectra_into(
     found: FloatArray,
     powers: WaveArray,
     noises: WaveArray,
+    size: IntArray,
     band: tuple[int, int],
     mhz: FloatArray,
     starts: IntArray,
@@ -77,11 +79,13 @@ def _spectra_into(
         for k in range(mhz.size):
             noise[k] = noises[row, band[0] + k] if known else np.float32(0)
             signal[k] = np.float64(powers[row, band[0] + k]) - noise[k]
+        total = sum_between(signal, 0, signal.size)
+        if not total > chance_energy(sum_between(noise, 0, noise.size) / size[row], size[row]):
+            continue
         found[row, 0], found[row, 1] = centroid_and_spread(mhz, signal)
         found[row, 2], found[row, 3] = rolloff(mhz, signal, 0.85), rolloff(mhz, signal, 0.95)
-        total = sum_between(signal, 0, signal.size)
         for place in range(starts.size - 1):
-            share = sum_between(signal, starts[place], starts[place + 1]) / total if total > 0 else np.nan
+            share = sum_between(signal, starts[place], starts[place + 1]) / total
             found[row, 4 + place] = min(max(share, 0.0), 1.0)
 
 
@@ -107,6 +111,7 @@ def _frequency(
         _MOMENTS,
         absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
+        edition=2,
     )
 
 
@@ -141,6 +146,7 @@ SPECTRUM = (
             absent=_NOTHING_LEFT,
             needs_hz=0.8 * high * 1e6,
             needs_snr_db=6.0,
+            edition=2,
         )
         for low, high in BANDS_MHZ
     ),

@@ -29,6 +29,8 @@ BAND = slice(*np.searchsorted(_BINS_HZ, (ANALYSIS_BAND_HZ[0], np.nextafter(ANALY
 BAND_HZ = _BINS_HZ[BAND]
 #: The smallest share of a window that must be recorded.
 _LEAST_KNOWN = 4
+#: A pulse of which so few samples were recorded, though it goes on, is not measured as a whole.
+_SHORTEST_RECORD = 100
 #: An excursion of so many noise levels before the onset is another event.
 _BUSY_LEVELS = 9.0
 _BUSY_MARGIN = 30
@@ -82,6 +84,11 @@ class Windows:
         """Noise spectrum for one sample, (pulses, bins); NaN where it is unknown."""
         return np.asarray(self.noise_power / (self.end - ONSET + GUARD)[:, None].astype(np.float32))
 
+    @property
+    def cut_short(self) -> NDArray[np.bool_]:
+        """Where the record ends within the pulse's own samples and less than 1 us after its onset, (pulses,)."""
+        return np.asarray((self.end == self.last) & (self.last - ONSET < _SHORTEST_RECORD))
+
     @cached_property
     def own(self) -> WaveArray:
         """The own samples with a short lead, (pulses, SPECTRUM_FFT), faded out so that the cut adds nothing."""
@@ -111,8 +118,22 @@ def chain_band_hz(chains: Sequence[Chain]) -> FloatArray:
     return np.array([(low, min(high, 0.4 * chain.rate_hz)) for (low, high), chain in zip(bands, chains, strict=True)]).T
 
 
+def counting_noise_v(chains: Sequence[Chain]) -> FloatArray:
+    """Noise that rounding to whole counts adds within the analysis band [V], (chains,); 0 = size of a count unknown.
+
+    volts_per_count/√12 for white noise up to half the rate, of which the low-pass keeps a share. The median size of
+    a pre-trigger that mostly stands on one count would tell of less.
+    """
+    found = np.zeros(len(chains))
+    for place, chain in enumerate(chains):
+        top_hz = chain.rate_hz / 2
+        kept = np.exp(-np.log(2) * (np.linspace(0, top_hz, 257) / ANALYSIS_BAND_HZ[1]) ** 2).mean()
+        found[place] = abs(chain.volts_per_count or 0.0) * np.sqrt(kept / 12)
+    return found
+
+
 def prepared(
-    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray
+    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray, least_v: FloatArray
 ) -> tuple[Windows, IntArray]:
     """Make stored windows ready for measuring, and say which: those with nothing to measure are left out.
 
@@ -121,6 +142,7 @@ def prepared(
     waves_v : (pulses, samples) 20 us windows with the onset a quarter in [V]; NaN = not recorded.
     duration_us : (pulses,) length of the own samples [us]; NaN or not positive = to the end of the window.
     reach_hz, low_hz : (pulses,) what their chains carry, as of `chain_band_hz`.
+    least_v : (pulses,) the noise is no lower than this, as of `counting_noise_v` [V].
     """
     samples = waves_v.shape[1]
     filled, known, first, last, slope = _filled(np.ascontiguousarray(waves_v, np.float32))
@@ -131,7 +153,7 @@ def prepared(
     if rows.size < len(filled):
         filled, slope = filled[rows], slope[rows]
     raw = _to_analysis_band(filled, slope)
-    wave, start, stop, (level, noise_v) = _background(raw, first[rows])
+    wave, start, stop, (level, noise_v) = _background(raw, first[rows], least_v[rows])
     peak, height_v, before = _scaled(wave, raw, start, stop, end[rows], level)
     measurable = height_v != 0
     noise = noise_v / np.where(measurable, np.abs(height_v), np.nan)
@@ -212,7 +234,9 @@ def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover -
             waves[r, i] += step * np.float32(i)
 
 
-def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
+def _background(
+    raw: WaveArray, first: IntArray, least_v: FloatArray
+) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
     """The waves without carriers, the quiet stretch before each onset (start, stop), its level and noise (2, pulses).
 
     Carriers are fitted to the whole pre-trigger; where another event then stands out of what is left, to its
@@ -220,7 +244,7 @@ def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, I
     """
     start, stop = np.minimum(first + GUARD, ONSET - GUARD), np.full(len(raw), ONSET - GUARD)
     wave = without_tones(raw, fitted_tones(raw, start, stop))
-    level, begin, length = _quiet(wave, start, stop)
+    level, begin, length = _quiet(wave, start, stop, least_v)
     busy = np.flatnonzero(length < stop - start)
     start, stop = start + begin, start + begin + length
     if busy.size:
@@ -228,18 +252,18 @@ def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, I
         left = without_tones(again, fitted_tones(again, start[busy], stop[busy]))
         wave[busy] = left
         beside = np.where(length > 0, start, first)[busy]
-        level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy])[0]
+        level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy], least_v[busy])[0]
     level[1, length < _SHORTEST_QUIET] = np.nan
     return wave, start, stop, level
 
 
 @numba.njit(cache=True, nogil=True)
 def _quiet(
-    waves: WaveArray, start: IntArray, stop: IntArray
+    waves: WaveArray, start: IntArray, stop: IntArray, least: FloatArray
 ) -> tuple[FloatArray, IntArray, IntArray]:  # pragma: no cover - compiled
     """Level and noise of stretches, (2, rows), and their longest parts without an event (beginning, length).
 
-    A margin beside each excursion is left out, too; a part is empty where it is shorter than 100 samples.
+    The noise is `least` at the least. A margin beside each excursion is left out, too; a part is empty where it is shorter than 100 samples.
     """
     rows = len(waves)
     level, begin, length = np.zeros((2, rows)), np.zeros(rows, np.int64), np.zeros(rows, np.int64)
@@ -249,7 +273,7 @@ def _quiet(
             continue
         level[0, r] = median(before)
         deviation = before - np.float32(level[0, r])
-        level[1, r] = median_size(deviation) / _MEDIAN_SIZE
+        level[1, r] = max(median_size(deviation) / _MEDIAN_SIZE, least[r])
         limit, loud = np.float32(_BUSY_LEVELS * level[1, r]), np.int32(0)
         for i in range(before.size):
             loud += np.int32(abs(deviation[i]) > limit)

@@ -9,9 +9,9 @@ from __future__ import annotations
 
 from itertools import pairwise
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import largest, size_above, weighed
@@ -19,8 +19,6 @@ from pdclass.features.lines import cut_lines, weigh
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, SAMPLES, SPECTRUM_FFT, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: The pulse's beginning [samples from the onset]: up to where so many samples in turn are below a share of the peak, or
 #: below so many noise levels; then it fades out. It has this length at the most, and no pulse longer than that has
@@ -56,7 +54,7 @@ def measure_copies(windows: Windows) -> FloatArray:
     return found
 
 
-@_njit
+@compiled
 def beginnings(waves: WaveArray, last: IntArray, noise: FloatArray) -> IntArray:  # pragma: no cover - compiled
     """Length of each pulse's beginning [samples from the onset], with what fades of it; 0 = it does not end in time."""
     found = np.zeros(len(waves), np.int64)
@@ -86,7 +84,7 @@ def echogram(windows: Windows) -> WaveArray:
     return _scaled(waves_of(whole_spectrum, SPECTRUM_FFT))
 
 
-@_njit
+@compiled
 def _pieces(
     waves: WaveArray, last: IntArray, sizes: IntArray, window_fade: FloatArray, fade: FloatArray
 ) -> tuple[WaveArray, WaveArray]:  # pragma: no cover - compiled
@@ -106,7 +104,7 @@ def _pieces(
     return whole, beginning
 
 
-@_njit
+@compiled
 def _deconvolve(
     whole: SpectrumArray, beginning: SpectrumArray, noise_power: WaveArray, scale: FloatArray, low_pass: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -123,7 +121,7 @@ def _deconvolve(
         weigh(window, power)
 
 
-@_njit
+@compiled
 def _scaled(gram: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     for row in range(len(gram)):
         unit = np.float32(1) / (abs(gram[row, largest(gram[row, :5])]) + np.float32(1e-9))
@@ -144,7 +142,7 @@ def _of_echograms(gram: WaveArray, windows: Windows) -> FloatArray:
     return found
 
 
-@_njit
+@compiled
 def _copies_into(
     found: FloatArray,
     grams: WaveArray,
@@ -191,7 +189,7 @@ def _copies_into(
             found[row, _EACH + 2] = max(first, second) / min(first, second)
 
 
-@_njit
+@compiled
 def strongest_copies(gram: WaveArray, start: int, scratch: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
     """Delays [samples] of the strongest peak of an echogram and of the strongest one apart from it; -1 = none.
 
@@ -212,7 +210,7 @@ def strongest_copies(gram: WaveArray, start: int, scratch: WaveArray) -> tuple[i
     return first + start, second + start if abs(size[second]) >= least else -1
 
 
-@_njit
+@compiled
 def _later_into(kept: WaveArray, taper: FloatArray, later: FloatArray) -> None:  # pragma: no cover - compiled
     """Write what lies at a copy's place, from the level at its beginning, tapered and padded."""
     level = 0.0
@@ -223,13 +221,13 @@ def _later_into(kept: WaveArray, taper: FloatArray, later: FloatArray) -> None: 
         later[i] = (kept[i] - level) * taper[i]
 
 
-@_njit
+@compiled
 def _likeness(later: FloatArray, pulse: FloatArray) -> float:  # pragma: no cover - compiled
     energies = weighed(later, later) * weighed(pulse, pulse)
     return float(weighed(later, pulse) / np.sqrt(energies + 1e-12))
 
 
-@_njit
+@compiled
 def _width_and_flank(gram: WaveArray, delay: int) -> tuple[float, float]:  # pragma: no cover - compiled
     """Width of a peak at half its height [ns], and the lowest place beside it over its height."""
     sign, height = np.sign(gram[delay]), abs(gram[delay])
@@ -244,7 +242,7 @@ def _width_and_flank(gram: WaveArray, delay: int) -> tuple[float, float]:  # pra
     return (right - left + 1) * STEP_NS, flank / height
 
 
-@_njit
+@compiled
 def _strengths_into(
     wave: FloatArray, weights: FloatArray, strengths: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -255,7 +253,7 @@ def _strengths_into(
     band_means_into(lags, weights, strengths)
 
 
-@_njit
+@compiled
 def _floors_into(
     power: WaveArray, scale: float, bins: IntArray, floors: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -268,7 +266,7 @@ def _floors_into(
         floors[band] /= bins[band + 1] - bins[band]
 
 
-@_njit
+@compiled
 def _levels_into(
     strengths: FloatArray, references: FloatArray, floors: FloatArray, levels: FloatArray
 ) -> None:  # pragma: no cover - compiled

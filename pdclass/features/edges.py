@@ -6,9 +6,9 @@ high state in a unipolar pulse.
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import LANES, chance_energy, sum_of_squares
 from pdclass.features.window import GUARD, ONSET, STEP_NS, Windows
@@ -62,7 +62,7 @@ def measure_edges(windows: Windows) -> FloatArray:
     return np.stack([*times, ratio, lopsided, tail * STEP_NS], axis=1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _places(
     waves: WaveArray, raws: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -83,7 +83,7 @@ def _places(
     return at
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compiled
     """Energy of what stands above a limit, over that of the peak [samples]."""
     lane, low = np.zeros(LANES), np.float32(limit)
@@ -98,7 +98,7 @@ def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compil
     return float(lane.sum())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def outer_crossings(
     wave: WaveArray, peak: int, reach: int, rise: FloatArray, fall: FloatArray
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -133,7 +133,7 @@ def outer_crossings(
     return place, height
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _crossings(
     wave: WaveArray, top: int, reach: int, step: int, height: float, places: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -150,7 +150,7 @@ def _crossings(
         former, i = value, i + step
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cover - compiled
     """Mean of the samples about a place; ends are held."""
     total = 0.0
@@ -159,7 +159,7 @@ def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cov
     return total / (2 * reach + 1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) -> float:  # pragma: no cover - compiled
     """The mean one step on from a place where it is known."""
     if reach == 0:
@@ -169,7 +169,7 @@ def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) 
     return mean + (np.float64(wave[enters]) - np.float64(wave[leaves])) / (2 * reach + 1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _tails(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import lowest
 from pdclass.features.window import ANALYSIS_RATE_HZ, ONSET, Windows
@@ -20,7 +20,7 @@ def measure_ringing(windows: Windows) -> FloatArray:
     return _swings(windows.wave, windows.end, windows.peak, limit)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _swings(
     waves: WaveArray, end: IntArray, peak: IntArray, limit: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from math import comb
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import weighed
 from pdclass.features.window import SPECTRUM_FFT, Windows
@@ -49,7 +49,7 @@ def _half_band(angle: FloatArray) -> FloatArray:
     return np.asarray((1 - sine) ** MOMENTS * sum(comb(MOMENTS - 1 + k, k) * sine**k for k in range(MOMENTS)))
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _scales_into(found: FloatArray, power: WaveArray, gains: FloatArray) -> None:  # pragma: no cover - compiled
     """Write evenness and centre of the energies, pulse by pulse."""
     scales = len(gains)

@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import chance_energy, sum_between, weighed
 from pdclass.features.window import BAND, BAND_HZ, GUARD, ONSET, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Where the definitions come from.
 _MOMENTS = (
@@ -34,7 +32,7 @@ def measure_spectrum(windows: Windows) -> FloatArray:
     return found
 
 
-@_njit
+@compiled
 def centroid_and_spread(mhz: FloatArray, power: FloatArray) -> tuple[float, float]:  # pragma: no cover - compiled
     """Power-weighted mean frequency and the standard deviation about it [as `mhz`]; NaN without power.
 
@@ -48,7 +46,7 @@ def centroid_and_spread(mhz: FloatArray, power: FloatArray) -> tuple[float, floa
     return centre, np.sqrt(square) if square > 0 else np.nan
 
 
-@_njit
+@compiled
 def rolloff(mhz: FloatArray, power: FloatArray, share: float) -> float:  # pragma: no cover - compiled
     """The first frequency below which a share of the power lies [as `mhz`], interpolated; NaN without power."""
     wanted = share * sum_between(power, 0, power.size)
@@ -62,7 +60,7 @@ def rolloff(mhz: FloatArray, power: FloatArray, share: float) -> float:  # pragm
     return float(mhz[-1])
 
 
-@_njit
+@compiled
 def _spectra_into(
     found: FloatArray,
     powers: WaveArray,

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import LANES, chance_energy, sum_of_squares
 from pdclass.features.window import ANALYSIS_RATE_HZ, BAND, BAND_HZ, GUARD, ONSET, STEP_NS, Windows
@@ -35,7 +35,7 @@ def measure_spread(windows: Windows) -> FloatArray:
     return np.column_stack([length_ns, width_mhz, onset_to_peak * STEP_NS, shape, late])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> FloatArray:  # pragma: no cover - compiled
     """Equivalent time length of waves [samples]: root of the second moment of the energy about its centre.
 
@@ -72,7 +72,7 @@ def equivalent_length(waves: WaveArray, size: IntArray, noise: FloatArray) -> Fl
     return found
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _chance_moment(floor: float, samples: float, centre: float) -> float:  # pragma: no cover - compiled
     """What noise alone may leave of the second moment of its energy about a centre: three deviations.
 
@@ -83,7 +83,7 @@ def _chance_moment(floor: float, samples: float, centre: float) -> float:  # pra
     return float(3 * floor * np.sqrt(2 * ((late**5 - early**5) / 5 + square * square / 200)))
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def equivalent_width(
     power: WaveArray, noise: WaveArray, frequency: FloatArray, size: IntArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -106,7 +106,7 @@ def equivalent_width(
     return found
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _shape(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -128,7 +128,7 @@ def _shape(
     return found
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _late_levels(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -151,7 +151,7 @@ def _late_levels(
     return found
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _energy(wave: WaveArray, first: int, stop: int, floor: float) -> float:  # pragma: no cover - compiled
     """Energy of a stretch less that of the noise."""
     return sum_of_squares(wave[first:stop]) - floor * (stop - first) if stop > first else 0.0

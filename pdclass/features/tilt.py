@@ -11,10 +11,10 @@ from functools import lru_cache
 from itertools import pairwise
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.window import ANALYSIS_BAND_HZ, ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray
@@ -49,8 +49,6 @@ _EARLY_MHZ, _LATE_MHZ = 10.0, 1.0
 _TILTS = 3
 _DB = 10 / np.log(10)
 
-_njit = numba.njit(cache=True, nogil=True)
-
 
 def measure_tilt(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features): NaN where nothing stands out of the noise, or it is unknown."""
@@ -77,7 +75,7 @@ def _turns() -> FloatArray:
     return np.stack([np.cos(angle), np.sin(angle)])
 
 
-@_njit
+@compiled
 def slopes(first: FloatArray, second: FloatArray, level: FloatArray, weight: FloatArray) -> tuple[float, float]:
     # pragma: no cover - compiled
     """Both slopes of level = a + b first + c second by weighted least squares; NaN where they cannot be parted."""
@@ -92,14 +90,14 @@ def slopes(first: FloatArray, second: FloatArray, level: FloatArray, weight: Flo
     return (xy * zz - zy * xz) / apart, (zy * xx - xy * xz) / apart
 
 
-@_njit
+@compiled
 def slope(first: FloatArray, level: FloatArray, weight: FloatArray) -> float:  # pragma: no cover - compiled
     """Slope of level = a + b first by weighted least squares."""
     x = first - np.sum(weight * first) / np.sum(weight)
     return float(np.sum(weight * x * level) / np.sum(weight * x * x))
 
 
-@_njit
+@compiled
 def _begin(wave: Samples, low_hz: float, piece: FloatArray) -> None:  # pragma: no cover - compiled
     """Write the first arrival as if the chain's first-order lower corner lay at 0.3 MHz; unchanged where unknown."""
     start = ONSET - GUARD
@@ -113,7 +111,7 @@ def _begin(wave: Samples, low_hz: float, piece: FloatArray) -> None:  # pragma: 
             piece[i - start] = wave[i] + gain * (past - 0.5 * wave[i])
 
 
-@_njit
+@compiled
 def _fade_out(piece: FloatArray, own: int) -> float:  # pragma: no cover - compiled
     """Let what begins with `GUARD` samples fade to nothing `own` samples later; the sum of the squared weights."""
     fade = max(int(_FADE * own), 1)
@@ -126,7 +124,7 @@ def _fade_out(piece: FloatArray, own: int) -> float:  # pragma: no cover - compi
     return energy
 
 
-@_njit
+@compiled
 def _turned_into(sums: FloatArray, piece: FloatArray, turns: FloatArray, first: int, last: int) -> None:
     # pragma: no cover - compiled
     """Write the sums of samples times each turn, (2, bins), from the first bin to the last.
@@ -144,7 +142,7 @@ def _turned_into(sums: FloatArray, piece: FloatArray, turns: FloatArray, first: 
                 total[k] = (((total[k] + x * a[k]) + y * b[k]) + z * c[k]) + w * d[k]
 
 
-@_njit
+@compiled
 def _power_and_lag(
     piece: FloatArray, turns: FloatArray, sums: FloatArray, power: FloatArray, lag: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -159,7 +157,7 @@ def _power_and_lag(
         lag[k] = sums[0, k] * sums[2, k] + sums[1, k] * sums[3, k]
 
 
-@_njit
+@compiled
 def _levels_into(
     found: FloatArray, power: FloatArray, noise: FloatArray, starts: IntArray
 ) -> None:  # pragma: no cover - compiled
@@ -178,7 +176,7 @@ def _levels_into(
             found[band] = _DB * np.log(left[band] / mean)
 
 
-@_njit
+@compiled
 def _fits_into(
     found: FloatArray, power: FloatArray, noise: FloatArray, lag: FloatArray, low_hz: float
 ) -> None:  # pragma: no cover - compiled
@@ -217,7 +215,7 @@ def _fits_into(
         found[2] = later
 
 
-@_njit
+@compiled
 def _missed(left: FloatArray, weight: FloatArray) -> float:  # pragma: no cover - compiled
     """Weighted rms of what a fit leaves, about its mean."""
     total = np.sum(weight)
@@ -225,13 +223,13 @@ def _missed(left: FloatArray, weight: FloatArray) -> float:  # pragma: no cover 
     return float(np.sqrt(np.sum(weight * (left - mean) ** 2) / total))
 
 
-@_njit
+@compiled
 def _pass_db(f_mhz: float) -> float:  # pragma: no cover - compiled
     """What the analysis band's Gaussian low-pass took away [dB]."""
     return float(_DB * np.log(2.0) * (f_mhz * 1e6 / ANALYSIS_BAND_HZ[1]) ** 2)
 
 
-@_njit
+@compiled
 def _tilts_into(
     found: FloatArray,
     waves: Samples,

@@ -6,10 +6,10 @@ from collections.abc import Sequence
 from dataclasses import dataclass, fields
 from functools import cached_property
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.carriers import fitted_tones, without_tones
 from pdclass.features.kernels import median, median_size, place_of_largest
 from pdclass.features.transforms import spectra, waves_of
@@ -164,7 +164,7 @@ def prepared(
     return (windows, rows) if measurable.all() else (windows.take(measurable), rows[measurable])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _filled(
     waves: WaveArray,
 ) -> tuple[WaveArray, IntArray, IntArray, IntArray, FloatArray]:  # pragma: no cover - compiled
@@ -196,7 +196,7 @@ def _filled(
     return filled, known, first, last, rise
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _fill(wave: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
     """Put the median where nothing was recorded; the first recorded sample, and one past the last."""
     recorded = np.abs(wave) < np.inf
@@ -225,7 +225,7 @@ def _to_analysis_band(filled: WaveArray, rise: FloatArray) -> WaveArray:
     return raw
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover - compiled
     """Add to each wave a line from 0 that rises by so much over the window."""
     for r in range(len(waves)):
@@ -257,7 +257,7 @@ def _background(
     return wave, start, stop, level
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _quiet(
     waves: WaveArray, start: IntArray, stop: IntArray, least: FloatArray
 ) -> tuple[FloatArray, IntArray, IntArray]:  # pragma: no cover - compiled
@@ -285,7 +285,7 @@ def _quiet(
     return level, begin, length
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _widest_gap(deviation: WaveArray, limit: float) -> tuple[int, int]:  # pragma: no cover - compiled
     """Beginning and length of the widest gap between excursions, less the margin beside each."""
     begin, length, former = 0, 0, -_BUSY_MARGIN
@@ -298,7 +298,7 @@ def _widest_gap(deviation: WaveArray, limit: float) -> tuple[int, int]:  # pragm
     return begin, length
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _scaled(
     wave: WaveArray, raw: WaveArray, start: IntArray, stop: IntArray, end: IntArray, level: FloatArray
 ) -> tuple[IntArray, FloatArray, WaveArray]:  # pragma: no cover - compiled
@@ -324,7 +324,7 @@ def _scaled(
     return peak, height, before
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pragma: no cover - compiled
     """Power of spectra given as pairs of floats, times a share each, as a running mean over 33 bins, mirrored."""
     rows, bins = len(spectrum), spectrum.shape[1] // 2
@@ -347,7 +347,7 @@ def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pra
     return smooth
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     """Power of spectra given as pairs of floats."""
     power = np.empty((len(spectrum), spectrum.shape[1] // 2), np.float32)
@@ -358,7 +358,7 @@ def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     return power
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _own(wave: WaveArray, end: IntArray) -> WaveArray:  # pragma: no cover - compiled
     own = np.zeros((len(wave), SPECTRUM_FFT), np.float32)
     for r in range(len(wave)):

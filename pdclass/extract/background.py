@@ -36,15 +36,16 @@ PIECES_PER_EPOCH, PIECES_PER_FIT = 3, 128
 RUN_SAMPLES, RUNS_PER_FIT = 2048, 128
 _SMALLEST_PIECE = 512
 _LEVEL_PIECES, _LEVEL_COMB = 64, 128
-#: Where in more than this share of stretches of this many samples something stands out by so many noise levels, the
-#: background is impulsive: too few pieces are left from which its spectrum could be told.
-IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.25, 512, 6.0
+#: Where in more than this share of parts of so many samples something stands out by so many noise levels of the part
+#: itself, the background is impulsive: too few pieces are left from which its spectrum could be told. Noise that is
+#: louder at times is no impulse: its parts are loud all over.
+IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.10, 512, 6.0
 #: A long impulse lasts so long [s].
 IMPULSE_S = 2e-6
 #: Noise levels are told from what lies below so many of them; where more than this share of an epoch would be cut,
 #: and the background is not impulsive, it is the background that has risen there.
 GATE_LEVELS, MOST_CUT = 4.0, 0.3
-_ROUGH_RUNS = 8
+_ROUGH_RUNS = 32
 #: A local level counts where it is above that of the stretch by so many times the chance of its estimate.
 _CHANCE_NEAR, _CHANCE_LONE = 1.0, 2.0
 _LEAST_RAISE = 0.05
@@ -200,9 +201,9 @@ def detection_limit_counts(background: Background, rate_hz: float) -> float:
     count = len(background.filters)
     chosen = np.unique(np.linspace(0, count - 1, min(count, _LIMIT_STRETCHES)).astype(np.int64))
     own = [background.limits[k * EPOCHS_PER_STRETCH : (k + 1) * EPOCHS_PER_STRETCH] for k in chosen.tolist()]
-    return float(
-        np.median([_limit_of(pulse, background.filters[k], limits) for k, limits in zip(chosen, own, strict=True)])
-    )
+    reached = [_limit_of(pulse, background.filters[k], limits) for k, limits in zip(chosen, own, strict=True)]
+    # the last stretch may be short
+    return float(np.median(np.repeat(reached, [len(limits) for limits in own])))
 
 
 def _limit_of(pulse: FloatArray, taps: WaveArray, limits: WaveArray) -> float:
@@ -345,7 +346,8 @@ def _is_impulsive(white: WaveArray) -> bool:
     """Whether impulses come so often that hardly a stretch of the whitened samples is without one."""
     samples = min(IMPULSIVE_SAMPLES, white.size)
     parts = np.abs(white[: white.size // samples * samples]).reshape(-1, samples)
-    return bool(np.mean(parts.max(axis=1) > IMPULSIVE_LEVELS * whiten.quiet_level(white)) > IMPULSIVE_SHARE)
+    quiet = whiten.quiet_levels(parts)
+    return bool(np.mean(parts.max(axis=1) > IMPULSIVE_LEVELS * quiet) > IMPULSIVE_SHARE)
 
 
 def _raw_runs(counts: NDArray[Any], spread: tuple[WaveArray, float], runs: IntArray) -> WaveArray:

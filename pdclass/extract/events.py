@@ -17,12 +17,10 @@ DECAY_S = 300e-9
 TWIN_S = 0.5e-6
 #: A new pulse inside an older one's tail lifts the energy by this factor above what the tail held lately.
 TAIL_RISE = 8.0
-#: Within a microsecond, where a pulse's own humps also rise and fall, only a rise to this share of the former peak
-#: energy after a dip to the other share counts; from a third of a microsecond on one to a smaller share, too, after a
-#: dip to a sixteenth of what it reaches (`SMALLER_RISE`): a quarter of the height.
+#: Within a microsecond, where a pulse's own humps also rise and fall, and the tail of the whitening filter after it,
+#: only a rise to this share of the former peak energy after a dip to the other share counts.
 TWIN_SHARE = 0.7
 TWIN_DIP = 0.12
-SMALLER_RISE = 16.0
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25
 ALIVE = 9.0
@@ -91,7 +89,11 @@ def rough_starts(
     """Places from `lead` to `end` where the quick energy of a whitened stretch starts to rise for a new pulse.
 
     A twin has the sign of the pulse before it, and nothing of the other sign stands between them: what swings to
-    the other side is taken for ringing. `limits` = (alive, faded, tail rise, twin share, twin dip, swing, twin span).
+    the other side is taken for ringing. A smaller second pulse, below about 0.8 of the first one's height, stays part
+    of it for half a microsecond and as long as the first one's tail does: the filter that takes a carrier out leaves
+    something as large behind every pulse.
+
+    `limits` = (alive, faded, tail rise, twin share, twin dip, swing, twin span).
     """
     alive, faded, rise, share, dip, swing = limits[0], limits[1], limits[2], limits[3], limits[4], limits[5]
     twin = int(limits[6])
@@ -114,9 +116,7 @@ def rough_starts(
             if quick > swing * peak and _sign(white, begin + i, attack) != sign:
                 ringing = True
             if not ringing and attack < i - start <= 2 * twin:
-                as_twin = lowest < dip * peak and quick > share * peak
-                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, SMALLER_RISE * lowest, dip * peak)
-                fresh = fresh or as_twin or as_smaller
+                fresh = fresh or (lowest < dip * peak and quick > share * peak)
         if fresh and count < found.size:
             found[count] = begin + i
             count += 1

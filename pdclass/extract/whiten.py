@@ -155,8 +155,13 @@ def gated_filter(signals: WaveArray, taps: WaveArray, impulse: int) -> WaveArray
 
 def quiet_level(white: WaveArray) -> float:
     """Noise level of whitened samples from their quietest quarter, for signals in which much stands out."""
-    height = np.abs(white[..., ::_COMB]).reshape(-1)
-    return float(np.partition(height, height.size // 4)[height.size // 4]) / _QUARTER
+    return float(quiet_levels(np.abs(white[..., ::_COMB]).reshape(1, -1))[0])
+
+
+def quiet_levels(heights: WaveArray) -> WaveArray:
+    """(parts,) noise levels of whitened magnitudes (parts, samples), each from the quietest quarter of its own."""
+    quarter = heights.shape[1] // 4
+    return np.partition(heights, quarter, axis=1)[:, quarter] / np.float32(_QUARTER)
 
 
 def _spoilt(out: NDArray[np.bool_], after: int) -> NDArray[np.bool_]:

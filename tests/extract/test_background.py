@@ -86,6 +86,13 @@ def test_noise_that_rises_for_a_while_raises_the_threshold_there_alone():
     assert white[1_200_000:1_900_000].std() == pytest.approx(1, abs=0.1)
 
 
+@pytest.mark.parametrize(("share", "times"), [(0.3, 3), (0.5, 4), (0.6, 6)])
+def test_noise_that_switches_its_level_is_no_impulse(share, times):
+    """Noise several times louder for a share of every 5 ms gives hardly a false event in a cycle."""
+    signal = np.random.default_rng(6).normal(0, 20, T.size) * np.where(T % 5e-3 < share * 5e-3, times, 1)
+    assert len(whole(as_capture(signal))[1]) <= 4
+
+
 def test_converter_bursts_leave_the_pulses_between_them():
     """Bursts of 3 us every 10 us, five times the pulses' peak, each different: pulses at 12 between them stand out."""
     rng = np.random.default_rng(3)
@@ -140,6 +147,16 @@ def test_a_record_of_many_short_segments_is_searched():
     held, runs = whole(as_capture(rng.normal(0, 20, 2_500_000), segments=segments))
     assert len(held.filters) == -(-500 // EPOCHS_PER_STRETCH)
     assert len(runs) <= 8
+
+
+def test_a_record_that_stands_still_for_a_while_has_the_limit_of_the_rest():
+    """Where the last two fifths stand still the limit stays within a tenth of that of noise alone."""
+    signal = np.random.default_rng(6).normal(0, 20, T.size)
+    limits = []
+    for still in (T.size, 1_200_000):
+        signal[still:] = 0
+        limits.append(detection_limit_counts(measure_background(as_capture(signal), SETTINGS), RATE_HZ))
+    assert limits[1] == pytest.approx(limits[0], rel=0.1)
 
 
 def test_the_limit_of_a_changing_background_is_the_median_over_time():

@@ -170,4 +170,4 @@ def chance_energy(floor: float, samples: float) -> float:  # pragma: no cover - 
 
     `floor` is the noise's power; white noise, itself known no better than from the variance of 200 samples.
     """
-    return 3 * floor * np.sqrt(2 * samples * (1 + samples / 200))
+    return float(3 * floor * np.sqrt(2 * samples * (1 + samples / 200)))

@@ -75,7 +75,8 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
         windows, rows = prepared(pulses.waves[batch], duration_us[batch], *of_chain)
         if rows.size:
             values = np.concatenate([measure(windows) for _, measure in families], axis=1)
-            values[np.ix_(windows.cut_short, [feature.name in _OF_WHOLE for feature in features])] = np.nan
+            whole = np.array([feature.name in _OF_WHOLE for feature in features])
+            values[np.ix_(windows.cut_short, whole)] = np.nan
             found.values[first + rows] = _allowed(values, windows, features)[:, columns]
             found.snr_db[first + rows] = windows.snr_db
     return found

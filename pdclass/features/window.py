@@ -263,7 +263,8 @@ def _quiet(
 ) -> tuple[FloatArray, IntArray, IntArray]:  # pragma: no cover - compiled
     """Level and noise of stretches, (2, rows), and their longest parts without an event (beginning, length).
 
-    The noise is `least` at the least. A margin beside each excursion is left out, too; a part is empty where it is shorter than 100 samples.
+    The noise is `least` at the least. A margin beside each excursion is left out, too; a part is empty where it is
+    shorter than 100 samples.
     """
     rows = len(waves)
     level, begin, length = np.zeros((2, rows)), np.zeros(rows, np.int64), np.zeros(rows, np.int64)

@@ -47,7 +47,7 @@ IMPULSE_S = 2e-6
 GATE_LEVELS, MOST_CUT = 4.0, 0.3
 _ROUGH_RUNS = 32
 #: A local level counts where it is above that of the stretch by so many times the chance of its estimate.
-_CHANCE_NEAR, _CHANCE_LONE = 1.0, 2.0
+_CHANCE_NEAR, _CHANCE_LONE = 2.0, 3.0
 _LEAST_RAISE = 0.05
 _NEAR_EPOCHS = 5
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.

@@ -27,6 +27,9 @@ _AHEAD, _NEAR = 12.0, 3.0
 #: Smoothing that makes the edge stand out so much less than a narrower one did is wider than the pulse.
 _PAST = 0.8
 _NEWTON = 3
+#: What the uncertainty never falls below [sample]: the wave between samples is not known, and where in a sample a
+#: fast edge begins moves its foot so much, however far the pulse stands above the noise.
+BETWEEN_SAMPLES = 0.03
 _ROOT_TWO_PI = 2.5066282746310002
 
 
@@ -213,7 +216,7 @@ def edge_foot(
 
     Returns
     -------
-    sample, offset, uncertainty; the latter NaN where it is not known.
+    sample, offset, uncertainty (of noise, and of the wave between samples); the latter NaN where it is not known.
     """
     width, most = 1.0, 0.0
     sample, offset, std = first, 0.0, np.nan
@@ -233,7 +236,7 @@ def edge_foot(
             if stands_out > most:
                 sample, offset, std, pending = near + steepest, at, spread, False
             if spread <= width / 2:
-                return near + steepest, at, spread
+                return near + steepest, at, math.hypot(spread, BETWEEN_SAMPLES)
         elif stands_out > most:
             sample, best_sign, best_width, pending = near + steepest, sign, width, True
         most = max(most, stands_out)
@@ -242,4 +245,4 @@ def edge_foot(
         width *= 2.0
     if pending:
         offset, std = _foot(white, sample, best_sign, best_width)
-    return sample, offset, std if std < stop - begin else np.nan
+    return sample, offset, math.hypot(std, BETWEEN_SAMPLES) if std < stop - begin else np.nan

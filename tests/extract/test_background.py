@@ -89,7 +89,7 @@ def test_noise_that_rises_for_a_while_raises_the_threshold_there_alone():
 @pytest.mark.parametrize(("share", "times"), [(0.3, 3), (0.5, 4), (0.6, 6)])
 def test_noise_that_switches_its_level_is_no_impulse(share, times):
     """Noise several times louder for a share of every 5 ms gives hardly a false event in a cycle."""
-    signal = np.random.default_rng(6).normal(0, 20, T.size) * np.where(T % 5e-3 < share * 5e-3, times, 1)
+    signal = np.random.default_rng(6).normal(0, 20, T.size) * np.where(share * 5e-3 > T % 5e-3, times, 1)
     assert len(whole(as_capture(signal))[1]) <= 4
 
 

@@ -95,7 +95,7 @@ def main(gigabytes):
     print(done.stdout, end="")
     measuring.weak(
         "One pulse in five cycles: the pulses found are held until the end, about 8 kB each.",
-        "Pages of the mapped file count as this process's until the system takes them back, which it does when others need them.",
+        "Pages of the mapped file that the passes leave behind are given back; where the system knows no such advice they count as this process's until others need them.",
     )
 
 

@@ -103,12 +103,14 @@ def class_differences():
 
 
 def clear_from(noise, difference):
-    """Smallest ratio of peak to noise on the grid from which on the spread stays clear [dB]; infinite = nowhere."""
+    """Smallest ratio of peak to noise on the grid from which on the spread stays clear [dB]; infinite = nowhere, NaN = not known."""
     spread = np.array([noise[snr_db].spread for snr_db in SNR_DB])
     with np.errstate(invalid="ignore"):
         clear = spread < CLEAR_SHARE * difference
     stays = np.logical_and.accumulate(clear[::-1], axis=0)[::-1]
-    return np.where(stays.any(axis=0), np.array(SNR_DB, float)[stays.argmax(axis=0)], np.inf)
+    first = np.where(stays.any(axis=0), np.array(SNR_DB, float)[stays.argmax(axis=0)], np.inf)
+    # what the base bundle's reference lacks has no difference between classes to be held against
+    return np.where(np.isnan(difference), np.nan, first)
 
 
 def main():

@@ -13,7 +13,6 @@ from pdclass.wavelets import DETECTOR_APART, Crossings, crossing_events, noise_l
 
 GRID = np.arange(3.5, 14.0, 0.1)
 CALIBRATION_CYCLES, FRESH_CYCLES = 4, 6
-BLOCK_SAMPLES = 1 << 16
 _BAND = scipy.signal.butter(4, (2e6, 30e6), "bandpass", fs=RATE_HZ, output="sos").astype(np.float32)
 
 
@@ -63,11 +62,7 @@ def own_events(counts):
 
 
 def own_flags(counts):
-    """The detection kernel alone: background, whitening, bank, flags, in blocks; how many samples left the background."""
+    """The detection kernel alone: background, then whitening, bank and flags in one pass; the runs that left it."""
     capture = captured(counts)
     held, bounds = background.measure_background(capture, ExtractSettings()), (0, counts.size)
-    flagged = 0
-    for first in range(0, counts.size, BLOCK_SAMPLES):
-        last = min(first + BLOCK_SAMPLES, counts.size)
-        flagged += int(np.count_nonzero(background.scanned(counts, held, bounds, first, last)[1]))
-    return flagged
+    return background.flagged_runs(counts, held, bounds, *bounds)

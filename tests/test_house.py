@@ -20,6 +20,7 @@ FLOORS = {
     "extract": 2,
     "wavelets": 1,
     "sim": 1,
+    "compiled": 0,
     "errors": 0,
     "digest": 0,
     "settings": 0,

@@ -55,13 +55,13 @@ def write_clearness(found, path):
 
 
 def seen_from(found):
-    """From which measured ratio of peak to noise on a feature is clear in white noise [dB]; infinite = nowhere."""
+    """From which measured ratio of peak to noise on a feature is clear in white noise [dB]; infinite = nowhere, NaN = not known."""
     seen = {snr_db: round(errors.seen_db) for (kind, snr_db), errors in found.noise.items() if kind == "white"}
-    return [float(seen.get(value, np.inf)) for value in found.clear["white"]]
+    return [float(seen.get(value, value)) for value in found.clear["white"]]
 
 
 def _literal(value):
-    return f"{value:.1f}" if np.isfinite(value) else "math.inf"
+    return f"{value:.1f}" if np.isfinite(value) else "math.nan" if np.isnan(value) else "math.inf"
 
 
 def _head(found):

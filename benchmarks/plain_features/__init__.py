@@ -10,11 +10,13 @@ import numpy as np
 from plain_features.arrival import measure_arrival
 from plain_features.copies import measure_copies
 from plain_features.edges import measure_edges
+from plain_features.modes import measure_modes
 from plain_features.ringing import measure_ringing
 from plain_features.scales import measure_scales
 from plain_features.spectrum import measure_spectrum
 from plain_features.spread import measure_spread
-from plain_features.window import Window, prepared
+from plain_features.tilt import measure_tilt
+from plain_features.window import ONSET, Window, prepared
 
 from pdclass.features import CATALOGUE
 from pdclass.pulses import FloatArray, PulseSet
@@ -27,7 +29,11 @@ MEASURES = (
     measure_spread,
     measure_arrival,
     measure_copies,
+    measure_tilt,
+    measure_modes,
 )
+#: Measured on all of the own samples: nothing where the record ends within them, less than 1 us after the onset.
+OF_WHOLE = (measure_spectrum, measure_scales, measure_ringing, measure_spread)
 
 
 def plain_table(pulses: PulseSet) -> FloatArray:
@@ -44,8 +50,11 @@ def plain_table(pulses: PulseSet) -> FloatArray:
 def plain_values(window: Window) -> FloatArray:
     """Values of one pulse, NaN where the chain or the noise does not allow one or it leaves its range."""
     found: dict[str, float] = {}
+    cut = window.end == window.last < ONSET + 100
     for measure in MEASURES:
-        found |= measure(window)
+        found |= {} if measure in OF_WHOLE and cut else measure(window)
+    if cut:
+        del found["tail_ns"]
     values = np.full(len(CATALOGUE), np.nan)
     for place, feature in enumerate(CATALOGUE):
         low, high = feature.valid_range

@@ -18,8 +18,10 @@ from plain_features.arrival import band_means, faded, first_bins
 from plain_features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
 from pdclass.pulses import FloatArray
 
-#: The pulse's beginning [samples], half of it fading out; copies are looked for from and up to these delays.
-_BEGINNING, _FIRST, _LAST = 80, 40, 1350
+#: The pulse's beginning [samples from the onset] goes on until so many samples in turn are below a share of the peak,
+#: or below so many noise levels; then it fades out. Copies are looked for from its end up to the last delay.
+_CALM, _SUNK, _SUNK_LEVELS, _FADE, _LONGEST = 15, 0.03, 3.0, 20, 600
+_SHORTEST, _LAST = 40, 1350
 _FFT = 4096
 _WINDOW_FADE = 200
 #: Deconvolution: bins this far below the strongest count little; a Gaussian low-pass of this width follows [Hz].
@@ -27,7 +29,7 @@ _REGULAR, _PASS_HZ = 0.01, 6e6
 #: Two copies are at least so far apart: samples, or a share of the delay.
 _APART, _APART_SHARE = 12, 0.04
 #: A copy stands so many noise levels out of the echogram and has this share of the pulse, else there is none.
-_STANDS_OUT, _SMALLEST = 4.0, 0.02
+_STANDS_OUT, _SMALLEST = 4.5, 0.03
 #: So much of a copy is compared with the pulse [samples], in these bands [MHz].
 _COMPARED, _COMPARED_FFT = 100, 512
 #: A band with less than this share of the pulse's strongest one is not compared.
@@ -44,14 +46,23 @@ class Copy(NamedTuple):
     clear: float
 
 
-def echogram(window: Window) -> FloatArray:
+def beginning_of(window: Window) -> int:
+    """Length of the pulse's beginning [samples from the onset], with what fades of it; 0 = it does not end in time."""
+    first = _SHORTEST - _FADE
+    own = window.wave[ONSET + first : min(ONSET + _LONGEST, window.last)]
+    calm = np.abs(own) < max(_SUNK, _SUNK_LEVELS * window.noise)
+    runs = np.convolve(calm, np.ones(_CALM), "valid") >= _CALM - 0.5
+    return first + int(np.argmax(runs)) + _FADE if runs.any() else 0
+
+
+def echogram(window: Window, size: int) -> FloatArray:
     """The window deconvolved by its pulse's beginning, by delay [samples]; 1 at delay 0.
 
     Wiener deconvolution with the noise beside the pulse, smoothed by a Gaussian of 6 MHz: a copy shows as a peak
     with its sign, whatever the shape of the pulse.
     """
     whole = scipy.fft.rfft(faded(window.wave[ONSET - GUARD : window.last], _WINDOW_FADE), _FFT)
-    beginning = scipy.fft.rfft(faded(window.wave[ONSET - GUARD : ONSET + _BEGINNING], _BEGINNING // 2), _FFT)
+    beginning = scipy.fft.rfft(faded(window.wave[ONSET - GUARD : ONSET + size], _FADE), _FFT)
     power = np.abs(beginning) ** 2
     noise = np.repeat(window.noise_density, 2)[: power.size] * (window.last - ONSET)
     ratio = whole * np.conj(beginning) / (power + noise + _REGULAR * power.max()) * _low_pass()
@@ -59,17 +70,17 @@ def echogram(window: Window) -> FloatArray:
     return np.asarray(found / (np.abs(found[:5]).max() + 1e-9))
 
 
-def strongest_copies(gram: FloatArray) -> tuple[Copy | None, Copy | None]:
+def strongest_copies(gram: FloatArray, start: int) -> tuple[Copy | None, Copy | None]:
     """The strongest peak of an echogram and the strongest one apart from it; None where nothing stands out."""
-    size = np.abs(gram[_FIRST : min(_LAST, gram.size)])
+    size = np.abs(gram[start : min(_LAST, gram.size)])
     if size.size < 2 * _APART:
         return None, None
-    level = float(np.median(np.abs(gram[100:]))) / 0.6744898 + 1e-9
-    first = _copy_at(gram, int(np.argmax(size)) + _FIRST, level)
+    level = float(np.quantile(np.abs(gram[100:]), 0.9)) / 1.6448536 + 1e-9
+    first = _copy_at(gram, int(np.argmax(size)) + start, level)
     apart = max(_APART, round(_APART_SHARE * first.delay))
-    near = first.delay - _FIRST
+    near = first.delay - start
     size[max(near - apart, 0) : near + apart + 1] = 0
-    second = _copy_at(gram, int(np.argmax(size)) + _FIRST, level)
+    second = _copy_at(gram, int(np.argmax(size)) + start, level)
     return (first if _stands_out(first) else None), (second if _stands_out(second) else None)
 
 
@@ -78,10 +89,13 @@ def measure_copies(window: Window) -> dict[str, float]:
     shape = ("likeness", "width_ns", "flank", *(_level_name(*band) for band in _BANDS))
     places = [f"copy_{number}_{name}" for number in (1, 2) for name in ("delay_us", "ratio")]
     found = dict.fromkeys([*places, *(f"copy_1_{name}" for name in shape), "copy_delay_ratio"], np.nan)
-    if not window.noise > 0 or window.last - ONSET < _BEGINNING + _WINDOW_FADE:
+    if not window.noise > 0 or window.last - ONSET < _WINDOW_FADE + 2 * _SHORTEST:
         return found
-    gram = echogram(window)
-    first, second = strongest_copies(gram)
+    size = beginning_of(window)
+    if not size:
+        return found
+    gram = echogram(window, size)
+    first, second = strongest_copies(gram, size)
     for number, copy in enumerate((first, second), start=1):
         if copy is not None:
             found |= {f"copy_{number}_delay_us": copy.delay * STEP_NS / 1e3, f"copy_{number}_ratio": copy.ratio}

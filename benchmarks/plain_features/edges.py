@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from plain_features.window import GUARD, ONSET, STEP_NS, Window
+from plain_features.window import GUARD, ONSET, STEP_NS, Window, chance_energy
 from pdclass.pulses import FloatArray
 
 _LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
@@ -119,5 +119,7 @@ def _tail_ns(window: Window) -> float:
     """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out."""
     noise = window.noise if window.noise > 0 else 0.0
     energy = np.cumsum(window.wave[ONSET - GUARD : window.end] ** 2 - noise**2)
+    if not energy[-1] > chance_energy(noise**2, energy.size):
+        return float("nan")
     passed = int(np.argmax(energy >= 0.9 * energy[-1]))
     return float(max(passed + ONSET - GUARD - window.peak, 0)) * STEP_NS

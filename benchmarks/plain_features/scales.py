@@ -1,4 +1,8 @@
-"""Scales: how the energy of the own samples lies among wavelet scales."""
+"""Scales: how the energy of the own samples lies among wavelet scales.
+
+One discrete wavelet transform, so one place of its grid: energies move as the pulse is shifted against it. The package
+takes the mean over all shifts, and its values are other ones on purpose; they are not compared.
+"""
 
 from __future__ import annotations
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from plain_features.window import Window
+from plain_features.window import Window, chance_energy
 from pdclass.pulses import FloatArray
 
 BANDS_MHZ = ((0.1, 1.0), (1.0, 3.0), (3.0, 7.0), (7.0, 14.0), (14.0, 25.0))
@@ -41,6 +41,8 @@ def measure_spectrum(window: Window) -> dict[str, float]:
     """
     frequency_hz, power, noise = window.power()
     signal = power - noise
+    if not signal.sum() > chance_energy(noise.sum() / window.own.size, window.own.size):
+        return {}
     centre, spread = centroid_and_spread_hz(frequency_hz, signal)
     found = {
         "centroid_mhz": centre / 1e6,
@@ -51,7 +53,7 @@ def measure_spectrum(window: Window) -> dict[str, float]:
     total = signal.sum()
     for low, high in BANDS_MHZ:
         inside = (frequency_hz >= low * 1e6) & (frequency_hz < high * 1e6)
-        share = float(signal[inside].sum() / total) if total > 0 else np.nan
+        share = float(signal[inside].sum() / total)
         found[_band_name(low, high)] = min(max(share, 0.0), 1.0)
     return found
 

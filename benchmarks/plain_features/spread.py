@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import scipy.fft
 
-from plain_features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window
+from plain_features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Window, chance_energy
 from pdclass.pulses import FloatArray
 
 #: So far below the pulse nothing tells of the path any more.
@@ -21,7 +21,7 @@ def equivalent_spread(wave: FloatArray, rate_hz: float, noise: float = 0.0) -> t
 
     T² = second moment of the energy in time about its centre, W² = second moment of the spectral energy in
     frequency about zero, two-sided; the mean energy of white noise of the given level is taken out of both. NaN
-    where nothing is left.
+    where no more is left than noise may leave.
 
     References
     ----------
@@ -33,7 +33,11 @@ def equivalent_spread(wave: FloatArray, rate_hz: float, noise: float = 0.0) -> t
         return float("nan"), float("nan")
     time_s = np.arange(wave.size) / rate_hz
     centre = np.sum(time_s * energy) / total
-    length = np.sum((time_s - centre) ** 2 * energy) / total
+    away = (time_s - centre) ** 2
+    length = np.sum(away * energy) / total
+    chance = 3 * noise**2 * np.sqrt(2 * (np.sum(away**2) + np.sum(away) ** 2 / 200))
+    if length * total <= chance:
+        length = np.nan
     size = scipy.fft.next_fast_len(2 * wave.size)
     power = np.abs(scipy.fft.fft(wave, size)) ** 2 - wave.size * noise**2
     width = np.sum(scipy.fft.fftfreq(size, 1 / rate_hz) ** 2 * power) / power.sum()
@@ -48,12 +52,14 @@ def measure_spread(window: Window) -> dict[str, float]:
     peak = window.peak - (ONSET - GUARD)
     total = energy.sum()
     beginning = energy[GUARD : GUARD + 200]
+    clear = total > chance_energy(noise**2, energy.size)
+    spiky = beginning.sum() > chance_energy(noise**2, beginning.size)
     found = {
         "equivalent_length_ns": length_s * 1e9,
         "equivalent_width_mhz": _width_mhz(window),
         "onset_to_peak_ns": max(window.peak - ONSET, 0) * STEP_NS,
-        "energy_before_peak": float(energy[:peak].sum() / total),
-        "crest_factor": float(1 / np.sqrt(max(beginning.sum() / 200, 1e-4))),
+        "energy_before_peak": float((energy[:peak].sum() + energy[peak] / 2) / total) if clear else np.nan,
+        "crest_factor": float(1 / np.sqrt(beginning.sum() / 200)) if spiky else np.nan,
     }
     return found | {_late_name(first, last): _late_level_db(window, first, last) for first, last in LATE_US}
 
@@ -63,7 +69,8 @@ def _width_mhz(window: Window) -> float:
     frequency_hz, power, noise = window.power()
     signal = power - noise
     total, moment = signal.sum(), np.sum(frequency_hz**2 * signal)
-    return float(np.sqrt(moment / total)) / 1e6 if total > 0 and moment > 0 else float("nan")
+    clear = total > chance_energy(noise.sum() / window.own.size, window.own.size)
+    return float(np.sqrt(moment / total)) / 1e6 if clear and moment > 0 else float("nan")
 
 
 def _late_level_db(window: Window, first_us: float, last_us: float) -> float:
@@ -80,7 +87,7 @@ def _late_level_db(window: Window, first_us: float, last_us: float) -> float:
     power = float(np.mean(stretch**2)) - window.noise**2
     if power <= 3 * window.noise**2 * np.sqrt(2 / stretch.size):
         return float("nan")
-    return float(max(10 * np.log10(power / np.mean(core**2)), _LOWEST_DB))
+    return float(max(10 * np.log10(power / (np.mean(core**2) - window.noise**2)), _LOWEST_DB))
 
 
 def _late_name(first_us: float, last_us: float) -> str:

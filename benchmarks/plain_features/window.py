@@ -95,6 +95,11 @@ class Window:
         return frequency_hz[inside], spectrum[inside], noise[inside]
 
 
+def chance_energy(floor: float, samples: int) -> float:
+    """Three deviations of the energy of so many samples of noise of a power known as from 200 samples."""
+    return float(3 * floor * np.sqrt(2 * samples * (1 + samples / 200)))
+
+
 def chain_reach_hz(chain: Chain) -> float:
     """Highest frequency that a chain carries: its upper corner, and at most 0.4 of the rate (anti-alias) [Hz]."""
     corner = chain.band_hz[1] if chain.band_hz else np.inf
@@ -115,7 +120,8 @@ def prepared(wave_v: WaveArray, chain: Chain, duration_us: float) -> Window | No
         return None
     first, last = (round(edge / wave_v.size * SAMPLES) for edge in (known[0], known[-1] + 1))
     raw = to_analysis_band(np.asarray(wave_v, np.float64))
-    carried, quiet = _background(raw, first)
+    least_v = _counting_noise_v(chain)
+    carried, quiet = _background(raw, first, least_v)
     clean = raw - carried
     beside = clean[quiet] if quiet.stop > quiet.start else clean[first:ONSET]
     level = float(np.median(beside)) if beside.size else 0.0
@@ -130,7 +136,7 @@ def prepared(wave_v: WaveArray, chain: Chain, duration_us: float) -> Window | No
         return None
     clean, raw, before = clean / height, raw / height, clean[quiet] / height
     known_noise = quiet.stop - quiet.start >= _SHORTEST_QUIET
-    noise = float(np.median(np.abs(before)) / 0.6744898) if known_noise else np.nan
+    noise = max(float(np.median(np.abs(before)) / 0.6744898), least_v / abs(height)) if known_noise else np.nan
     noise_power = _noise_power(before, end - ONSET + GUARD, known=known_noise)
     low_hz = chain.band_hz[0] if chain.band_hz else float("nan")
     return Window(clean, raw, end, last, peak, height, noise, noise_power, chain_reach_hz(chain), low_hz)
@@ -157,7 +163,14 @@ def to_analysis_band(wave_v: FloatArray) -> FloatArray:
     return np.asarray(wave + np.linspace(begin, finish, SAMPLES, endpoint=False), np.float64)
 
 
-def _background(raw: FloatArray, first: int) -> tuple[FloatArray, slice]:
+def _counting_noise_v(chain: Chain) -> float:
+    """Noise of rounding to whole counts that the low-pass keeps [V]; 0 where their size is unknown."""
+    frequency_hz = np.linspace(0, chain.rate_hz / 2, 257)
+    kept = np.mean(2.0 ** -((frequency_hz / ANALYSIS_BAND_HZ[1]) ** 2))
+    return float(abs(chain.volts_per_count or 0.0) * np.sqrt(kept / 12))
+
+
+def _background(raw: FloatArray, first: int, least_v: float) -> tuple[FloatArray, slice]:
     """The carriers through the window, and the quiet stretch before the onset that tells of the noise.
 
     Carriers are fitted to the whole pre-trigger; where another event then stands out of what is left, to its
@@ -165,7 +178,7 @@ def _background(raw: FloatArray, first: int) -> tuple[FloatArray, slice]:
     """
     before = slice(min(first + GUARD, ONSET - GUARD), ONSET - GUARD)
     carried = carriers(raw[before], before.start)
-    quiet = _longest_quiet((raw - carried)[before])
+    quiet = _longest_quiet((raw - carried)[before], least_v)
     stretch = slice(before.start + quiet.start, before.start + quiet.stop)
     if stretch == before:
         return carried, before
@@ -174,12 +187,12 @@ def _background(raw: FloatArray, first: int) -> tuple[FloatArray, slice]:
     return carriers(raw[stretch], stretch.start), stretch
 
 
-def _longest_quiet(before: FloatArray) -> slice:
+def _longest_quiet(before: FloatArray, least_v: float) -> slice:
     """The longest stretch of a pre-trigger without an event; a margin beside each excursion is left out, too."""
     if before.size < _SHORTEST_QUIET:
         return slice(0, 0)
     deviation = np.abs(before - np.median(before))
-    loud = np.flatnonzero(deviation > _BUSY_LEVELS * np.median(deviation) / 0.6744898)
+    loud = np.flatnonzero(deviation > _BUSY_LEVELS * max(np.median(deviation) / 0.6744898, least_v))
     if not loud.size:
         return slice(0, before.size)
     edges = np.concatenate([[-_BUSY_MARGIN], loud, [before.size + _BUSY_MARGIN]])

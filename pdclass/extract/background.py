@@ -20,6 +20,7 @@ from pdclass.errors import InputError
 from pdclass.extract import bank, whiten
 from pdclass.extract.events import threshold_sigmas
 from pdclass.extract.fir import TAPS
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
 from pdclass.settings import Settings
 
@@ -35,17 +36,18 @@ PIECES_PER_EPOCH, PIECES_PER_FIT = 3, 128
 RUN_SAMPLES, RUNS_PER_FIT = 2048, 128
 _SMALLEST_PIECE = 512
 _LEVEL_PIECES, _LEVEL_COMB = 64, 128
-#: Where in more than this share of stretches of this many samples something stands out by so many noise levels, the
-#: background is impulsive: too few pieces are left from which its spectrum could be told.
-IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.25, 512, 6.0
+#: Where in more than this share of parts of so many samples something stands out by so many noise levels of the part
+#: itself, the background is impulsive: too few pieces are left from which its spectrum could be told. Noise that is
+#: louder at times is no impulse: its parts are loud all over.
+IMPULSIVE_SHARE, IMPULSIVE_SAMPLES, IMPULSIVE_LEVELS = 0.10, 512, 6.0
 #: A long impulse lasts so long [s].
 IMPULSE_S = 2e-6
 #: Noise levels are told from what lies below so many of them; where more than this share of an epoch would be cut,
 #: and the background is not impulsive, it is the background that has risen there.
 GATE_LEVELS, MOST_CUT = 4.0, 0.3
-_ROUGH_RUNS = 8
+_ROUGH_RUNS = 32
 #: A local level counts where it is above that of the stretch by so many times the chance of its estimate.
-_CHANCE_NEAR, _CHANCE_LONE = 1.0, 2.0
+_CHANCE_NEAR, _CHANCE_LONE = 2.0, 3.0
 _LEAST_RAISE = 0.05
 _NEAR_EPOCHS = 5
 #: The reference pulse of the detection limit: Gaussian, 50 ns wide at half height.
@@ -138,6 +140,7 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
         filters.append(taps / np.float32(noise[0]))
         limits.append((noise / noise[0] * raised).astype(np.float32))
         gains.append((1 / raised[:, 0]).astype(np.float32))
+        let_go(counts, epochs[inside][0, 0], epochs[inside][-1, 1])
     cycle_s = 1 / capture.chain.mains_hz if capture.chain.mains_hz else settings.cycle_s
     sigmas = threshold_sigmas(scales, cycle_s * rate_hz, settings.false_events_per_cycle)
     held = (np.concatenate(limits) * sigmas).astype(np.float32)
@@ -145,10 +148,8 @@ def measure_background(capture: Capture, settings: ExtractSettings) -> Backgroun
     return Background(level, dither, epoch, firsts, starts, np.stack(filters), held, np.concatenate(gains))
 
 
-def scanned(
-    counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int
-) -> tuple[WaveArray, NDArray[np.bool_]]:
-    """A stretch of a segment whitened to noise of variance 1, and which of its samples leave the background.
+def whitened(counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int) -> WaveArray:
+    """A stretch of a segment in local noise levels, (last - first,) float32.
 
     Parameters
     ----------
@@ -156,30 +157,36 @@ def scanned(
     background : of this record.
     bounds : first and one past the last sample of the segment.
     first, last : the stretch wanted, within the segment; where it is cut changes no bit of the result.
-
-    Returns
-    -------
-    (last - first,) float32 whitened samples in local noise levels; (last - first,) centres of box sums above threshold.
     """
-    white, flags = np.empty(last - first, np.float32), np.zeros(last - first, np.bool_)
-    held = background
-    grid = held.grid(bounds)
-    bank.scan_into(
-        counts, held.dither, held.level, held.filters, held.limits, held.gains, grid, bounds, first, white, flags
+    held, white = background, np.empty(last - first, np.float32)
+    raw = np.empty(bank.SUB_BLOCK + TAPS, np.float32)
+    bank.whiten_into(
+        counts, held.dither, held.level, held.filters, held.gains, held.grid(bounds), bounds, first, raw, white
     )
-    return white, flags
+    return white
 
 
-def flagged_runs(counts: NDArray[Any], background: Background, bounds: tuple[int, int]) -> IntArray:
-    """Runs (first, one past last) of the samples of one segment that leave the background, as `scanned` flags them."""
-    held, grid, block = background, background.grid(bounds), bounds[0]
+def flagged_runs(
+    counts: NDArray[Any], background: Background, bounds: tuple[int, int], first: int, last: int
+) -> IntArray:
+    """Runs (first, one past last) of the samples of a stretch that leave the background.
+
+    Parameters
+    ----------
+    counts : the record.
+    background : of this record.
+    bounds : first and one past the last sample of the segment.
+    first, last : the stretch wanted: whole sub-blocks of `bank.SUB_BLOCK` samples from the segment's start on, or up
+        to its end. A run that goes on in the next stretch begins there anew.
+    """
+    held, grid, block = background, background.grid(bounds), first
     found, room = [], np.empty((_RUN_ROOM, 2), np.int64)
-    while block < bounds[1]:
+    while block < last:
         count, block = bank.runs_into(
-            counts, held.dither, held.level, held.filters, held.limits, grid, bounds, block, room
+            counts, held.dither, held.level, held.filters, held.limits, grid, bounds, block, last, room
         )
         found.append(room[:count].copy())
-    return bank.joined_runs(np.concatenate([np.zeros((0, 2), np.int64), *found]), 1)
+    return found[0] if len(found) == 1 else np.concatenate([np.zeros((0, 2), np.int64), *found])
 
 
 def detection_limit_counts(background: Background, rate_hz: float) -> float:
@@ -194,9 +201,9 @@ def detection_limit_counts(background: Background, rate_hz: float) -> float:
     count = len(background.filters)
     chosen = np.unique(np.linspace(0, count - 1, min(count, _LIMIT_STRETCHES)).astype(np.int64))
     own = [background.limits[k * EPOCHS_PER_STRETCH : (k + 1) * EPOCHS_PER_STRETCH] for k in chosen.tolist()]
-    return float(
-        np.median([_limit_of(pulse, background.filters[k], limits) for k, limits in zip(chosen, own, strict=True)])
-    )
+    reached = [_limit_of(pulse, background.filters[k], limits) for k, limits in zip(chosen, own, strict=True)]
+    # the last stretch may be short
+    return float(np.median(np.repeat(reached, [len(limits) for limits in own])))
 
 
 def _limit_of(pulse: FloatArray, taps: WaveArray, limits: WaveArray) -> float:
@@ -339,7 +346,8 @@ def _is_impulsive(white: WaveArray) -> bool:
     """Whether impulses come so often that hardly a stretch of the whitened samples is without one."""
     samples = min(IMPULSIVE_SAMPLES, white.size)
     parts = np.abs(white[: white.size // samples * samples]).reshape(-1, samples)
-    return bool(np.mean(parts.max(axis=1) > IMPULSIVE_LEVELS * whiten.quiet_level(white)) > IMPULSIVE_SHARE)
+    quiet = whiten.quiet_levels(parts)
+    return bool(np.mean(parts.max(axis=1) > IMPULSIVE_LEVELS * quiet) > IMPULSIVE_SHARE)
 
 
 def _raw_runs(counts: NDArray[Any], spread: tuple[WaveArray, float], runs: IntArray) -> WaveArray:

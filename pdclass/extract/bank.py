@@ -8,14 +8,13 @@ from __future__ import annotations
 
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.extract.fir import TAPS, filter_into
 from pdclass.pulses import IntArray, WaveArray
 
-_njit = numba.njit(cache=True, nogil=True)
 #: Samples worked on at once.
 SUB_BLOCK = 4096
 #: The pattern that spreads whole numbers over the width of a count repeats after so many samples of a segment.
@@ -27,7 +26,7 @@ _CHUNK = 128
 _SPOILT_BEFORE, _SPOILT_AFTER = 16, 32
 
 
-@_njit
+@compiled
 def continued_back(head: WaveArray, taps: WaveArray, count: int) -> WaveArray:  # pragma: no cover - compiled
     """The samples that the background would have had before a beginning, predicted backwards from it.
 
@@ -44,7 +43,7 @@ def continued_back(head: WaveArray, taps: WaveArray, count: int) -> WaveArray:  
     return joined[:count]
 
 
-@_njit
+@compiled
 def load_signal(
     counts: NDArray[Any], dither: WaveArray, level: float, first: int, begin: int, out: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -55,7 +54,7 @@ def load_signal(
         out[i] = (np.float32(own[i]) - shift) + pattern[i]
 
 
-@_njit
+@compiled
 def load_before(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -74,7 +73,7 @@ def load_before(
         out[:missing] = continued_back(head, taps, missing)
 
 
-@_njit
+@compiled
 def _above(wave: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     fired = np.int32(0)
     for i in range(wave.size):
@@ -82,7 +81,7 @@ def _above(wave: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     return fired
 
 
-@_njit
+@compiled
 def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> Any:  # pragma: no cover - compiled
     """Boxes of twice `half` samples from those of half of it, and whether any leaves the limit."""
     fired = np.int32(0)
@@ -94,7 +93,7 @@ def _doubled(wave: WaveArray, half: int, out: WaveArray, limit: float) -> Any:  
     return fired
 
 
-@_njit
+@compiled
 def _mark(wave: WaveArray, limit: float, flags: NDArray[np.bool_]) -> None:  # pragma: no cover - compiled
     for begin in range(0, wave.size, _CHUNK):
         own, chosen = wave[begin : begin + _CHUNK], flags[begin : begin + _CHUNK]
@@ -103,7 +102,7 @@ def _mark(wave: WaveArray, limit: float, flags: NDArray[np.bool_]) -> None:  # p
                 chosen[i] |= abs(own[i]) > limit
 
 
-@_njit
+@compiled
 def flag_boxes(
     white: WaveArray, spare: WaveArray, limits: WaveArray, before: int, flags: NDArray[np.bool_]
 ) -> bool:  # pragma: no cover - compiled
@@ -136,43 +135,39 @@ def flag_boxes(
     return flagged
 
 
-@_njit
-def scan_into(
+@compiled
+def whiten_into(
     counts: NDArray[Any],
     dither: WaveArray,
     level: float,
     filters: WaveArray,
-    limits: WaveArray,
     gains: WaveArray,
     grid: tuple[int, int, int, int],
     bounds: tuple[int, int],
     first: int,
+    raw: WaveArray,
     white: WaveArray,
-    flags: NDArray[np.bool_],
 ) -> None:  # pragma: no cover - compiled
-    """Whiten and flag `white.size` samples from `first` on, sub-block by sub-block of the segment's own grid.
+    """Whiten `white.size` samples from `first` on to noise of variance 1, sub-block by sub-block of the segment's grid.
 
-    `grid` = (samples an epoch, epochs a stretch, the segment's first epoch, its epochs).
+    `grid` = (samples an epoch, epochs a stretch, the segment's first epoch, its epochs); `raw` is room for a sub-block
+    and the filter's length.
     """
-    reach, order = (1 << (limits.shape[1] - 1)) >> 1, filters.shape[1] - 1
-    raw, boxes, spare = _buffers(reach, order)
-    last = first + white.size
+    order, last = filters.shape[1] - 1, first + white.size
     block = bounds[0] + (first - bounds[0]) // SUB_BLOCK * SUB_BLOCK
     while block < last:
         begin, end = max(block, first), min(block + SUB_BLOCK, last)
-        low, high = max(begin - reach, bounds[0]), min(end + reach, bounds[1])
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
-        taps, own = filters[epoch // grid[1]], boxes[: high - low]
-        load_before(counts, dither, level, taps, bounds, low - order, raw[: own.size + order])
-        filter_into(raw, taps, own)
+        taps, own, signal = filters[epoch // grid[1]], white[begin - first : end - first], raw[: end - begin + order]
+        load_before(counts, dither, level, taps, bounds, begin - order, signal)
+        filter_into(signal, taps, own)
         gain = gains[epoch]
-        for i in range(end - begin):
-            white[begin - first + i] = gain * own[begin - low + i]
-        flag_boxes(own, spare[: own.size], limits[epoch], begin - low, flags[begin - first : end - first])
+        for i in range(own.size):
+            own[i] = gain * own[i]
         block += SUB_BLOCK
 
 
-@_njit
+@compiled
 def runs_into(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -182,14 +177,15 @@ def runs_into(
     grid: tuple[int, int, int, int],
     bounds: tuple[int, int],
     block: int,
+    last: int,
     runs: IntArray,
 ) -> tuple[int, int]:  # pragma: no cover - compiled
-    """Write the runs of flagged samples from the sub-block at `block` on; how many, and where it stopped for room."""
+    """Write the runs of flagged samples of the sub-blocks from `block` up to `last`; how many, and where room ended."""
     reach, order = (1 << (limits.shape[1] - 1)) >> 1, filters.shape[1] - 1
     raw, boxes, spare = _buffers(reach, order)
     flags = np.zeros(SUB_BLOCK, np.bool_)
     count = 0
-    while block < bounds[1] and count + SUB_BLOCK // 2 < len(runs):
+    while block < last and count + SUB_BLOCK // 2 < len(runs):
         end = min(block + SUB_BLOCK, bounds[1])
         low, high = max(block - reach, bounds[0]), min(end + reach, bounds[1])
         epoch = grid[2] + min((block - bounds[0]) // grid[0], grid[3] - 1)
@@ -203,13 +199,13 @@ def runs_into(
     return count, block
 
 
-@_njit
+@compiled
 def _buffers(reach: int, order: int) -> tuple[WaveArray, WaveArray, WaveArray]:  # pragma: no cover - compiled
     size = SUB_BLOCK + 2 * reach
     return np.empty(size + order, np.float32), np.empty(size, np.float32), np.empty(size, np.float32)
 
 
-@_njit
+@compiled
 def _add_runs(flags: NDArray[np.bool_], first: int, runs: IntArray, count: int) -> int:  # pragma: no cover - compiled
     """Append the runs of set flags; one that goes on where the last run ended makes that longer."""
     words = flags.view(np.uint64)
@@ -226,7 +222,7 @@ def _add_runs(flags: NDArray[np.bool_], first: int, runs: IntArray, count: int) 
     return count
 
 
-@_njit
+@compiled
 def _cut_out(white: WaveArray, gate: float, most: float) -> bool:  # pragma: no cover - compiled
     """NaN for what stands out and what it spoils around it, unless that is more than a share; whether it did so."""
     size = white.size
@@ -249,7 +245,7 @@ def _cut_out(white: WaveArray, gate: float, most: float) -> bool:  # pragma: no 
     return True
 
 
-@_njit
+@compiled
 def count_above(
     white: WaveArray, gate: tuple[float, float], marks: WaveArray, above: IntArray, looked: IntArray
 ) -> None:  # pragma: no cover - compiled
@@ -273,7 +269,7 @@ def count_above(
         looked[scale] = _numbers(boxes[:usable]) if gated else usable
 
 
-@_njit
+@compiled
 def _count(wave: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     for i in range(wave.size):
@@ -281,7 +277,7 @@ def _count(wave: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     return beyond
 
 
-@_njit
+@compiled
 def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> Any:  # pragma: no cover - compiled
     beyond = np.int32(0)
     ahead = wave[half : half + out.size]
@@ -292,7 +288,7 @@ def _doubled_count(wave: WaveArray, half: int, out: WaveArray, mark: float) -> A
     return beyond
 
 
-@_njit
+@compiled
 def _numbers(wave: WaveArray) -> Any:  # pragma: no cover - compiled
     seen = np.int32(0)
     for i in range(wave.size):
@@ -300,7 +296,7 @@ def _numbers(wave: WaveArray) -> Any:  # pragma: no cover - compiled
     return seen
 
 
-@_njit
+@compiled
 def count_runs(
     counts: NDArray[Any],
     dither: WaveArray,
@@ -319,7 +315,7 @@ def count_runs(
     return above, looked
 
 
-@_njit
+@compiled
 def white_run(
     counts: NDArray[Any], dither: WaveArray, level: float, taps: WaveArray, run: IntArray
 ) -> WaveArray:  # pragma: no cover - compiled
@@ -335,7 +331,7 @@ def white_run(
     return white
 
 
-@_njit
+@compiled
 def gathered(
     counts: NDArray[Any], starts: IntArray, level: float, taper: WaveArray
 ) -> WaveArray:  # pragma: no cover - compiled
@@ -364,38 +360,6 @@ def dither_table(counts: NDArray[Any]) -> WaveArray:
     return ((place >> np.uint64(40)).astype(np.float64) / (1 << 24) - 0.5).astype(np.float32)
 
 
-def whitened(
-    counts: NDArray[Any], taps: WaveArray, offset: float, bounds: tuple[int, int], first: int, last: int
-) -> WaveArray:
-    """Whitened samples `first` to `last` of a segment; what came before it is predicted backwards.
-
-    Parameters
-    ----------
-    counts : the record.
-    taps : whitening filter.
-    offset : level of the record, taken out first [count].
-    bounds : first and one past the last sample of the segment.
-    first, last : the stretch wanted, within the segment.
-    """
-    taps = padded(taps)
-    unbent = np.full((1, 1), np.inf, np.float32)
-    out, flags = np.empty(last - first, np.float32), np.zeros(last - first, np.bool_)
-    grid = (1 << 62, 1, 0, 1)
-    table = dither_table(counts)
-    scan_into(counts, table, offset, taps[None], unbent, np.ones(1, np.float32), grid, bounds, first, out, flags)
-    return out
-
-
 def padded(taps: WaveArray) -> WaveArray:
     """A filter of at most 64 taps with zeros behind it."""
     return np.concatenate([taps, np.zeros(TAPS - taps.size)]).astype(np.float32)
-
-
-def joined_runs(runs: IntArray, gap: int) -> IntArray:
-    """Runs with neighbours closer than `gap` samples joined."""
-    if not len(runs):
-        return runs
-    apart = np.flatnonzero(runs[1:, 0] - runs[:-1, 1] >= gap) + 1
-    firsts = runs[np.concatenate([[0], apart]), 0]
-    lasts = runs[np.concatenate([apart - 1, [len(runs) - 1]]), 1]
-    return np.stack([firsts, lasts], axis=1)

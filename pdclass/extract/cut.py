@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
-import numba
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
+from pdclass.extract.pages import let_go
 from pdclass.pulses import (
     Capture,
     IntArray,
@@ -14,8 +17,9 @@ from pdclass.pulses import (
     window_samples,
 )
 
-_njit = numba.njit(cache=True, nogil=True)
-_BATCH = 256
+_STRETCH = 1024
+#: Windows cut at once: the pages of a mapped record that they touch are let go then.
+_BATCH = 128
 #: Every so many-th sample of the pre-trigger serves its median: neighbours tell nearly the same.
 _COMB = 6
 #: A share of clipped samples worth saying.
@@ -32,23 +36,31 @@ def windows(capture: Capture, onsets: IntArray) -> WaveArray:
     """(pulses, samples) float32 [V]; what lies beyond the pulse's segment is NaN."""
     samples = window_samples(capture.chain.rate_hz)
     scale = np.float32(capture.chain.volts_per_count)
-    waves = np.full((len(onsets), samples), np.nan, np.float32)
+    waves = np.empty((len(onsets), samples), np.float32)
     starts, bounds = onsets - onset_in_window(samples), segments_of(capture, onsets)
-    whole = (starts >= bounds[:, 0]) & (starts + samples <= bounds[:, 1])
-    if whole.any():
-        views = np.lib.stride_tricks.sliding_window_view(capture.counts, samples)
-        rows = np.flatnonzero(whole)
-        for first in range(0, len(rows), _BATCH):
-            batch = rows[first : first + _BATCH]
-            waves[batch] = views[starts[batch]].astype(np.float32) * scale
-    for row in np.flatnonzero(~whole).tolist():
-        begin, end = max(bounds[row, 0], starts[row]), min(bounds[row, 1], starts[row] + samples)
-        piece = np.asarray(capture.counts[begin:end], np.float32) * scale
-        waves[row, begin - starts[row] : end - starts[row]] = piece
+    counts = np.asarray(capture.counts)
+    for first in range(0, len(onsets), _BATCH):
+        batch = slice(first, first + _BATCH)
+        _cut(counts, starts[batch], bounds[batch], scale, waves[batch])
+        let_go(capture.counts, starts[first], starts[batch][-1] + samples)
     return waves
 
 
-@_njit
+@compiled
+def _cut(
+    counts: NDArray[Any], starts: IntArray, bounds: IntArray, scale: Any, waves: WaveArray
+) -> None:  # pragma: no cover - compiled
+    for row in range(len(waves)):
+        wave, start = waves[row], starts[row]
+        begin, end = max(bounds[row, 0] - start, 0), min(bounds[row, 1] - start, wave.size)
+        wave[:begin] = np.nan
+        wave[end:] = np.nan
+        own = counts[start + begin : start + end]
+        for i in range(own.size):
+            wave[begin + i] = np.float32(own[i]) * scale
+
+
+@compiled
 def middle(values: WaveArray) -> float:  # pragma: no cover - compiled
     """Median of values, which are reordered (selection by partition; the upper one of two); 0 without values."""
     low, high, wanted = 0, values.size - 1, values.size // 2
@@ -73,7 +85,7 @@ def middle(values: WaveArray) -> float:  # pragma: no cover - compiled
     return float(values[wanted]) if values.size else 0.0
 
 
-@_njit
+@compiled
 def signed_peaks(waves: WaveArray, lengths: IntArray, lead: int) -> WaveArray:  # pragma: no cover - compiled
     """Largest excursion of each pulse's own samples from the median of its pre-trigger [V], with its sign.
 
@@ -124,7 +136,7 @@ def clipped(capture: Capture, waves: WaveArray, places: IntArray) -> NDArray[np.
     return hit
 
 
-@_njit
+@compiled
 def any_beyond(waves: WaveArray, limit: float) -> bool:  # pragma: no cover - compiled
     """Whether any sample is larger than a limit, sign ignored."""
     some = False
@@ -136,10 +148,26 @@ def any_beyond(waves: WaveArray, limit: float) -> bool:  # pragma: no cover - co
 
 def clipped_samples(capture: Capture, first: int, last: int) -> int:
     """How many samples of a stretch stand at the end of the digitiser's range."""
-    ends, piece = rails(capture), capture.counts[first:last]
-    if ends is None or not piece.size or (piece.min() > ends[0] and piece.max() < ends[1]):
+    ends, piece = rails(capture), np.asarray(capture.counts[first:last])
+    # a digitiser of more bits than its samples can hold has no end within them
+    if ends is None or ends[1] > np.iinfo(piece.dtype).max:
         return 0
-    return int(np.count_nonzero((piece <= ends[0]) | (piece >= ends[1])))
+    return int(_outside(piece, piece.dtype.type(ends[0]), piece.dtype.type(ends[1])))
+
+
+@compiled
+def _outside(counts: NDArray[Any], low: Any, high: Any) -> int:  # pragma: no cover - compiled
+    """How many counts are at most `low` or at least `high`; stretch by stretch, nearly all of which hold none."""
+    total = 0
+    for begin in range(0, counts.size, _STRETCH):
+        own = counts[begin : begin + _STRETCH]
+        some = False
+        for i in range(own.size):
+            some |= (own[i] <= low) | (own[i] >= high)
+        if some:
+            for i in range(own.size):
+                total += (own[i] <= low) | (own[i] >= high)
+    return total
 
 
 def clipping_note(capture: Capture, count: int) -> list[str]:
@@ -151,7 +179,7 @@ def clipping_note(capture: Capture, count: int) -> list[str]:
     return [f"{capture.name}: {share:.1%} of the samples stand at the end of the digitiser's range; {said}"]
 
 
-@_njit
+@compiled
 def _touch(
     waves: WaveArray, lengths: IntArray, lead: int, low: float, high: float
 ) -> NDArray[np.bool_]:  # pragma: no cover - compiled

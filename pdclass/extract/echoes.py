@@ -6,14 +6,12 @@ import math
 from dataclasses import dataclass
 from functools import lru_cache
 
-import numba
 import numpy as np
 import scipy.fft
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Skin-effect paths exp(-K sqrt(s)) tried between parent and copy; K² [s] spans no path to some kilometres.
 PATHS_S = np.concatenate([[0.0], np.geomspace(0.5e-9, 400e-9, 10)])
@@ -47,7 +45,8 @@ SHAPE_S = 3e-6
 #: What is not even so alike after a few of the paths is not looked at after all of them.
 HARDLY_ALIKE = 0.35
 _FEW = (np.repeat([0, 2], 4), np.tile([0, 3, 6, 9], 2))
-_BATCH = 16
+#: Small enough that the spectra of a batch stay in the cache.
+_BATCH = 8
 _SHIFT_S = 0.3e-6
 
 
@@ -149,7 +148,7 @@ def _following(onsets: IntArray, peaks: FloatArray, delay: IntArray, rate_hz: fl
     return follows[which.reshape(-1)], smaller[which.reshape(-1)]
 
 
-@_njit
+@compiled
 def _count_following(
     onsets: IntArray, peaks: FloatArray, aims: FloatArray, reach: float
 ) -> tuple[FloatArray, FloatArray]:  # pragma: no cover - compiled
@@ -284,7 +283,7 @@ def _after_paths(
     return np.asarray(best.reshape(travelled.shape[:2]), np.float64)
 
 
-@_njit
+@compiled
 def _best_match(
     arrived: WaveArray, match: WaveArray, copies: WaveArray, sizes: IntArray, shift: int
 ) -> FloatArray:  # pragma: no cover - compiled

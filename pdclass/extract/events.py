@@ -3,14 +3,13 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.extract.onsets import edge_foot, first_sample
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Smoothing of the whitened energy: short enough to part pulses 0.2 us apart, long enough to bridge noise.
 ATTACK_S = 60e-9
@@ -18,12 +17,10 @@ DECAY_S = 300e-9
 TWIN_S = 0.5e-6
 #: A new pulse inside an older one's tail lifts the energy by this factor above what the tail held lately.
 TAIL_RISE = 8.0
-#: Within a microsecond, where a pulse's own humps also rise and fall, only a rise to this share of the former peak
-#: energy after a dip to the other share counts; from a third of a microsecond on one to a smaller share, too, after a
-#: dip to a sixteenth of what it reaches (`SMALLER_RISE`): a quarter of the height.
+#: Within a microsecond, where a pulse's own humps also rise and fall, and the tail of the whitening filter after it,
+#: only a rise to this share of the former peak energy after a dip to the other share counts.
 TWIN_SHARE = 0.7
 TWIN_DIP = 0.12
-SMALLER_RISE = 16.0
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25
 ALIVE = 9.0
@@ -37,7 +34,7 @@ def spans(rate_hz: float) -> tuple[int, int, int]:
     return attack, decay, twin
 
 
-@_njit
+@compiled
 def _total_energy(white: WaveArray, begin: int, end: int) -> FloatArray:  # pragma: no cover - compiled
     """Sums of squares of `white` from `begin` up to each sample; one more entry than samples."""
     total = np.empty(end - begin + 1)
@@ -47,13 +44,13 @@ def _total_energy(white: WaveArray, begin: int, end: int) -> FloatArray:  # prag
     return total
 
 
-@_njit
+@compiled
 def _mean(total: FloatArray, place: int, width: int) -> float:  # pragma: no cover - compiled
     """Mean square of the `width` samples up to and with a place, nothing being before the first."""
     return float((total[place + 1] - total[max(place + 1 - width, 0)]) / width)
 
 
-@_njit
+@compiled
 def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover - compiled
     """Sign of the largest of the `width` samples up to and with `last`."""
     best = white[last]
@@ -63,32 +60,50 @@ def _sign(white: WaveArray, last: int, width: int) -> float:  # pragma: no cover
     return 1.0 if best >= 0 else -1.0
 
 
-@_njit
-def _lately(total: FloatArray, begin: int, end: int, width: int) -> float:  # pragma: no cover - compiled
-    """Largest mean square of `width` samples that ended from `begin` up to `end`."""
-    most = 0.0
-    for i in range(max(begin, 0), max(end, 0)):
-        most = max(most, _mean(total, i, width))
-    return most
+@compiled
+def _rises(quick: FloatArray, begin: int, end: int, now: float, rise: float) -> bool:  # pragma: no cover - compiled
+    """Whether `now` is more than `rise` times each of the quick energies from `begin` up to `end`; the latest first."""
+    for i in range(end - 1, begin - 1, -1):  # noqa: SIM110 - compiled loops have no generators
+        if now <= rise * quick[i]:
+            return False
+    return True
 
 
-@_njit
+@compiled
+def _quick_energy(total: FloatArray, width: int) -> FloatArray:  # pragma: no cover - compiled
+    """`_mean` at every place."""
+    quick = np.empty(total.size - 1)
+    for i in range(min(width, quick.size)):
+        quick[i] = _mean(total, i, width)
+    late, early = total[width + 1 :], total[1:]
+    own = quick[width:]
+    for i in range(own.size):
+        own[i] = (late[i] - early[i]) / width
+    return quick
+
+
+@compiled
 def rough_starts(
     white: WaveArray, begin: int, lead: int, end: int, attack: int, decay: int, limits: FloatArray
 ) -> IntArray:  # pragma: no cover - compiled
     """Places from `lead` to `end` where the quick energy of a whitened stretch starts to rise for a new pulse.
 
     A twin has the sign of the pulse before it, and nothing of the other sign stands between them: what swings to
-    the other side is taken for ringing. `limits` = (alive, faded, tail rise, twin share, twin dip, swing, twin span).
+    the other side is taken for ringing. A smaller second pulse, below about 0.8 of the first one's height, stays part
+    of it for half a microsecond and as long as the first one's tail does: the filter that takes a carrier out leaves
+    something as large behind every pulse.
+
+    `limits` = (alive, faded, tail rise, twin share, twin dip, swing, twin span).
     """
     alive, faded, rise, share, dip, swing = limits[0], limits[1], limits[2], limits[3], limits[4], limits[5]
     twin = int(limits[6])
     total = _total_energy(white, begin, end)
+    energy = _quick_energy(total, attack)
     found = np.empty((end - lead) // attack + 2, np.int64)
     count, start, active, ringing = 0, 0, False, False
     peak, lowest, sign = 0.0, 0.0, 1.0
     for i in range(lead - begin, end - begin):
-        quick = _mean(total, i, attack)
+        quick = energy[i]
         fresh = False
         if not active:
             fresh = quick > alive
@@ -97,13 +112,11 @@ def rough_starts(
             continue
         else:
             if quick > alive and i - start > twin:
-                fresh = quick > rise * _lately(total, max(i - twin, lead - begin), i - attack, attack)
+                fresh = _rises(energy, max(i - twin, lead - begin), i - attack, quick, rise)
             if quick > swing * peak and _sign(white, begin + i, attack) != sign:
                 ringing = True
             if not ringing and attack < i - start <= 2 * twin:
-                as_twin = lowest < dip * peak and quick > share * peak
-                as_smaller = 3 * (i - start) > 2 * twin and quick > max(alive, SMALLER_RISE * lowest, dip * peak)
-                fresh = fresh or as_twin or as_smaller
+                fresh = fresh or (lowest < dip * peak and quick > share * peak)
         if fresh and count < found.size:
             found[count] = begin + i
             count += 1
@@ -115,7 +128,7 @@ def rough_starts(
     return found[:count]
 
 
-@_njit
+@compiled
 def strongest_box(white: WaveArray, begin: int, end: int) -> tuple[int, int]:  # pragma: no cover - compiled
     """First sample and width of the box of 1, 2, 4, ... samples whose sum stands out most from its noise."""
     best, place, width = -1.0, begin, 1
@@ -132,7 +145,7 @@ def strongest_box(white: WaveArray, begin: int, end: int) -> tuple[int, int]:  #
     return place, width
 
 
-@_njit
+@compiled
 def _valley(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover - compiled
     """The middle of the three samples of least energy between two events."""
     least, place = np.inf, begin
@@ -143,7 +156,7 @@ def _valley(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover 
     return place
 
 
-@_njit
+@compiled
 def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # pragma: no cover - compiled
     """One past the last sample that belongs to an event: where its energy has sunk into the noise.
 
@@ -169,72 +182,73 @@ def event_end(white: WaveArray, start: int, limit: int, decay: int) -> int:  # p
     return min(max(end, start + max(2, decay // 3)), limit)
 
 
-@_njit
+@compiled
 def piece_events(
-    white: WaveArray, pieces: IntArray, attack: int, decay: int, limits: FloatArray
-) -> tuple[IntArray, FloatArray]:  # pragma: no cover - compiled
-    """Events of pieces of clusters, in the order found.
+    white: WaveArray, piece: IntArray, attack: int, decay: int, limits: FloatArray
+) -> tuple[IntArray, FloatArray, bool]:  # pragma: no cover - compiled
+    """Events of a piece of a cluster, in the order found, and whether a later end of the stretch would change nothing.
 
     Parameters
     ----------
     white : whitened stretch, noise of variance 1.
-    pieces : rows of (earliest sample, first flagged, one past the last flagged, end of the stretch, whether the
-        cluster began before: then what is already there at the first place is no new event).
+    piece : earliest sample, first flagged, one past the last flagged, end of the stretch, whether the cluster began
+        before: then what is already there at the first place is no new event.
     attack, decay, limits : as for `rough_starts`.
 
     Returns
     -------
-    rows of (onset, end), and of (refined instant after the onset, its standard uncertainty) [samples].
+    rows of (onset, end), and of (refined instant after the onset, its standard uncertainty) [samples]; settled.
     """
     twin = int(limits[6])
-    places = np.empty((256, 2), np.int64)
-    feet = np.empty((256, 2))
+    begin, first, last, stop, continued = piece
+    rough = rough_starts(white, begin, max(begin, first - decay), min(last + attack + 1, stop), attack, decay, limits)
+    if continued:
+        rough = rough[rough > first + attack]
+    ahead, settled = twin, stop > last + 2 * twin
+    if not continued and not rough.size:
+        box, width = strongest_box(white, max(begin, first - 2 * twin), min(last + 2 * twin, stop))
+        rough = np.array([box])
+        ahead = max(twin, width)
+    places, feet = np.empty((rough.size, 2), np.int64), np.empty((rough.size, 2))
     count = 0
-    for row in range(len(pieces)):
-        begin, first, last, stop, continued = pieces[row]
-        rough = rough_starts(
-            white, begin, max(begin, first - decay), min(last + attack + 1, stop), attack, decay, limits
-        )
-        if continued:
-            rough = rough[rough > first + attack]
-        ahead, longest = twin, twin
-        if not continued and not rough.size:
-            box, width = strongest_box(white, max(begin, first - 2 * twin), min(last + 2 * twin, stop))
-            rough = np.array([box])
-            ahead, longest = max(twin, width), max(twin, width)
-        if count + rough.size > len(places):
-            places = np.concatenate((places, np.empty((len(places) + rough.size, 2), np.int64)))
-            feet = np.concatenate((feet, np.empty((len(feet) + rough.size, 2))))
-        kept = count
-        for n in range(rough.size):
-            place = rough[n]
-            following = rough[n + 1] if n + 1 < rough.size else stop
-            low = max(places[count - 1, 0] + attack if count > kept else begin, place - ahead)
-            high = min(place + longest, max(following - attack, place + 2 * attack), stop)
-            if count > kept:
-                low = _valley(white, low, place)
-            sample, offset, std = edge_foot(white, low, max(place - attack, low), high)
-            start = sample + math.floor(offset)
-            if count == kept:
-                start = min(first_sample(white, low, place, high, attack), start)
-            start = min(max(start, low), high - 1)
-            if count > kept and start <= places[count - 1, 0]:
-                continue
-            places[count, 0], feet[count, 0], feet[count, 1] = start, sample - start + offset, std
-            count += 1
-        for n in range(kept, count):
-            limit = places[n + 1, 0] if n + 1 < count else stop
-            places[n, 1] = event_end(white, places[n, 0], limit, decay)
-    return places[:count], feet[:count]
+    for n in range(rough.size):
+        place = rough[n]
+        following = rough[n + 1] if n + 1 < rough.size else stop
+        low = max(places[count - 1, 0] + attack if count else begin, place - ahead)
+        high = min(place + ahead, max(following - attack, place + 2 * attack), stop)
+        settled &= n + 1 < rough.size or (place + ahead <= stop - attack and place + 2 * attack <= stop)
+        if count:
+            low = _valley(white, low, place)
+        sample, offset, std = edge_foot(white, low, max(place - attack, low), high)
+        start = sample + math.floor(offset)
+        if count == 0:
+            start = min(first_sample(white, low, place, high, attack), start)
+        start = min(max(start, low), high - 1)
+        if count and start <= places[count - 1, 0]:
+            continue
+        places[count, 0], feet[count, 0], feet[count, 1] = start, sample - start + offset, std
+        count += 1
+    for n in range(count):
+        limit = places[n + 1, 0] if n + 1 < count else stop
+        places[n, 1] = event_end(white, places[n, 0], limit, decay)
+    if count:
+        settled &= places[count - 1, 1] < stop and places[count - 1, 0] + 4 * decay < stop
+    return places[:count], feet[:count], settled
 
 
-def events_of_pieces(white: WaveArray, pieces: IntArray, rate_hz: float) -> tuple[IntArray, FloatArray]:
-    """Events of pieces of clusters as in `piece_events`, with the spans of a sampling rate."""
-    attack, decay, twin = spans(rate_hz)
-    return piece_events(white, pieces, attack, decay, np.append(_LIMITS, twin))
+def found_in(white: WaveArray, piece: IntArray, rate_hz: float) -> tuple[IntArray, FloatArray]:
+    """Events of a piece of a cluster as in `piece_events`, with the spans of a sampling rate."""
+    attack, decay, _ = spans(rate_hz)
+    places, feet, _ = piece_events(white, piece, attack, decay, all_limits(rate_hz))
+    return places, feet
 
 
-@_njit
+def all_limits(rate_hz: float) -> FloatArray:
+    """The `limits` of `rough_starts` at a sampling rate."""
+    return np.append(_LIMITS, spans(rate_hz)[2])
+
+
+@compiled
 def in_order(onsets: IntArray, ends: IntArray, apart: int) -> IntArray:  # pragma: no cover - compiled
     """Which of the events, sorted by onset, stay; their ends are cut at the next onset.
 
@@ -263,10 +277,15 @@ def threshold_sigmas(scales: int, samples_per_cycle: float, false_events: float)
     ----------
     J. Pickands, Trans. Am. Math. Soc. 145, 51-73, 1969 (from memory; index 1, constant 1).
     """
+    return _known_sigmas(scales, samples_per_cycle, false_events).copy()
+
+
+@lru_cache(maxsize=64)
+def _known_sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:
     return np.asarray(_sigmas(scales, samples_per_cycle, false_events), np.float64)
 
 
-@_njit
+@compiled
 def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> FloatArray:  # pragma: no cover - compiled
     sigmas = np.full(scales, 5.0)
     for scale in range(scales):
@@ -276,7 +295,7 @@ def _sigmas(scales: int, samples_per_cycle: float, false_events: float) -> Float
     return sigmas
 
 
-@_njit
+@compiled
 def _normal_quantile(tail: float) -> float:  # pragma: no cover - compiled
     """The z beyond which the standard normal law leaves the share `tail`, by bisection on erfc."""
     low, high = 0.0, 40.0

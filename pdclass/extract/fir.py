@@ -10,11 +10,11 @@ from __future__ import annotations
 
 from typing import Any
 
-import numba
 from llvmlite import ir
 from numba import types
 from numba.extending import intrinsic
 
+from pdclass.compiled import compiled
 from pdclass.pulses import WaveArray
 
 TAPS = 64
@@ -23,7 +23,6 @@ _GROUPS = TAPS // _LANES
 _BLOCKS = 6
 #: Outputs of one tile.
 TILE = _BLOCKS * _LANES
-_njit = numba.njit(cache=True, nogil=True)
 _VECTOR = ir.VectorType(ir.FloatType(), _LANES)
 
 
@@ -71,7 +70,7 @@ def _tile(typing: Any, signal: Any, taps: Any, out: Any, at: Any) -> Any:  # noq
 _write_tile: Any = intrinsic(_tile)
 
 
-@_njit
+@compiled
 def _one_by_one(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # pragma: no cover - compiled
     for i in range(out.size):
         out[i] = taps[TAPS - 1] * signal[i]
@@ -82,7 +81,7 @@ def _one_by_one(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # 
                     out[i] += taps[TAPS - 1 - place] * signal[i + place]
 
 
-@_njit
+@compiled
 def filter_into(signal: WaveArray, taps: WaveArray, out: WaveArray) -> None:  # pragma: no cover - compiled
     """Write `out[i] = sum_k taps[k] signal[i + 63 - k]`.
 

@@ -5,13 +5,12 @@ from __future__ import annotations
 import math
 from functools import lru_cache
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.extract.cut import segments_of
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: The record is divided into bricks; a pulse's noise comes from its own brick and its neighbours: within 1 ms.
 BRICK_S = 0.5e-3
@@ -48,6 +47,7 @@ def noise_beside(capture: Capture, places: IntArray) -> WaveArray:
         values = np.take(capture.counts, starts[:, None] + offsets, mode="clip").astype(np.float32)
         own = np.searchsorted(bricks, batch[:, 0])
         levels[first : first + _BATCH] = _levels(values, starts, offsets, own, batch[:, 1:], places, integer)
+        let_go(capture.counts, starts[0], starts[-1] + brick)
     scale = np.float32(abs(capture.chain.volts_per_count or 1.0))
     return np.asarray(levels[np.cumsum(new) - 1] * scale, np.float32)
 
@@ -65,7 +65,7 @@ def comb(brick: int) -> IntArray:
     return np.asarray(part * stride + (mixed >> np.uint64(40)).astype(np.int64) % stride, np.int64)
 
 
-@_njit
+@compiled
 def _levels(
     values: WaveArray,
     starts: IntArray,
@@ -93,7 +93,7 @@ def _levels(
     return levels
 
 
-@_njit
+@compiled
 def noise_level(values: WaveArray, integer: bool) -> float:  # pragma: no cover - compiled
     """Median absolute deviation / 0.6745 of samples, from a histogram in which each sample fills its bin evenly.
 
@@ -130,7 +130,7 @@ def noise_level(values: WaveArray, integer: bool) -> float:  # pragma: no cover 
         width *= 8.0
 
 
-@_njit
+@compiled
 def _below(total: FloatArray, place: float) -> float:  # pragma: no cover - compiled
     """How many samples lie below a place of the histogram, each spread evenly over its bin."""
     if place <= 0.0:
@@ -141,7 +141,7 @@ def _below(total: FloatArray, place: float) -> float:  # pragma: no cover - comp
     return float(total[k] + (place - k) * (total[k + 1] - total[k]))
 
 
-@_njit
+@compiled
 def _inverse(total: FloatArray, wanted: float, high: float, about: float) -> float:  # pragma: no cover - compiled
     """The distance from `about` within which `wanted` samples lie; from the lower end where that is 0."""
     low = 0.0

@@ -9,12 +9,10 @@ from __future__ import annotations
 
 import math
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.pulses import FloatArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 #: Before a crest of so many noise levels three samples in a row below the other number are noise, no onset.
 CLEAR = 10.0
@@ -25,14 +23,17 @@ SMOOTHINGS = 6
 STANDS_OUT = 8.0
 _REACH = 4.0
 #: The edge is followed back so many standard deviations before the place where half its height may be reached.
-_AHEAD = 12.0
+_AHEAD, _NEAR = 12.0, 3.0
 #: Smoothing that makes the edge stand out so much less than a narrower one did is wider than the pulse.
 _PAST = 0.8
 _NEWTON = 3
+#: What the uncertainty never falls below [sample]: the wave between samples is not known, and where in a sample a
+#: fast edge begins moves its foot so much, however far the pulse stands above the noise.
+BETWEEN_SAMPLES = 0.03
 _ROOT_TWO_PI = 2.5066282746310002
 
 
-@_njit
+@compiled
 def onset_by_information(white: WaveArray, begin: int, end: int) -> int:  # pragma: no cover - compiled
     """The first sample of the pulse in a stretch that begins with noise and ends at the pulse's first crest.
 
@@ -67,7 +68,7 @@ def onset_by_information(white: WaveArray, begin: int, end: int) -> int:  # prag
     return place
 
 
-@_njit
+@compiled
 def first_sample(
     white: WaveArray, begin: int, place: int, stop: int, attack: int
 ) -> int:  # pragma: no cover - compiled
@@ -92,7 +93,7 @@ def first_sample(
     return onset
 
 
-@_njit
+@compiled
 def _smooth(
     white: WaveArray, anchor: int, offset: float, width: float, out: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -109,25 +110,33 @@ def _smooth(
         out[3] += weight * u * (3.0 - u * u) / width**3
 
 
-@_njit
+@compiled
 def _smoothed(white: WaveArray, begin: int, count: int, width: float) -> FloatArray:  # pragma: no cover - compiled
     """The record smoothed by a Gaussian at `count` places from `begin` on, tap by tap; nothing is beyond its ends."""
     reach = int(_REACH * width)
     near = np.zeros(count + 2 * reach)
     for i in range(max(begin - reach, 0), min(begin + count + reach, white.size)):
         near[i - begin + reach] = white[i]
-    out = np.zeros(count)
-    for k in range(2 * reach + 1):
-        weight = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
-        late = near[k : k + count]
+    weights = np.empty(2 * reach + 1)
+    for k in range(reach + 1):
+        weights[k] = math.exp(-0.5 * ((k - reach) / width) ** 2) / (width * _ROOT_TWO_PI)
+        weights[2 * reach - k] = weights[k]
+    out: FloatArray = weights[0] * near[:count]
+    for k in range(1, 2 * reach + 1, 4):
+        # four taps a pass, added in their order: `reach` is a multiple of two
+        a, b, c, d = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]
+        first, second = near[k : k + count], near[k + 1 : k + 1 + count]
+        third, fourth = near[k + 2 : k + 2 + count], near[k + 3 : k + 3 + count]
         for n in range(count):
-            out[n] += weight * late[n]
+            out[n] = (((out[n] + a * first[n]) + b * second[n]) + c * third[n]) + d * fourth[n]
     return out
 
 
-@_njit
-def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float]:  # pragma: no cover - compiled
+@compiled
+def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float, int]:  # pragma: no cover - compiled
     """Steepest step (its first place), sign and height of the first edge to half the largest magnitude from `low` on.
+
+    The last of the four is where the edge begins.
 
     The edge is what rises without a break through the first place of half the height.
     """
@@ -147,10 +156,10 @@ def _first_edge(wave: FloatArray, low: int) -> tuple[int, float, float]:  # prag
     for n in range(base, top):
         if sign * (wave[n + 1] - wave[n]) > slope:
             slope, steepest = sign * (wave[n + 1] - wave[n]), n
-    return steepest, sign, height
+    return steepest, sign, height, base
 
 
-@_njit
+@compiled
 def _foot(
     white: WaveArray, anchor: int, sign: float, width: float
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -164,7 +173,9 @@ def _foot(
     for _ in range(_NEWTON):
         if sign * local[3] >= 0:
             break
-        at = min(max(at - local[2] / local[3], -0.5), 1.5)
+        former, at = at, min(max(at - local[2] / local[3], -0.5), 1.5)
+        if at == former:
+            break
         _smooth(white, anchor, at, width, local)
     if sign * local[1] <= 0:
         return at, np.inf
@@ -175,7 +186,7 @@ def _foot(
     return at - lever * (1.0 - share), _foot_std(local, width, lever, share)
 
 
-@_njit
+@compiled
 def _foot_std(local: FloatArray, width: float, lever: float, share: float) -> float:  # pragma: no cover - compiled
     """Standard uncertainty of a foot from white noise of variance 1, carried through value, slope and place.
 
@@ -192,7 +203,7 @@ def _foot_std(local: FloatArray, width: float, lever: float, share: float) -> fl
     return math.sqrt(max(variance - 2.0 * by_value * by_curvature * of_slope, 0.0))
 
 
-@_njit
+@compiled
 def edge_foot(
     white: WaveArray, begin: int, first: int, stop: int
 ) -> tuple[int, float, float]:  # pragma: no cover - compiled
@@ -205,22 +216,33 @@ def edge_foot(
 
     Returns
     -------
-    sample, offset, uncertainty; the latter NaN where it is not known.
+    sample, offset, uncertainty (of noise, and of the wave between samples); the latter NaN where it is not known.
     """
     width, most = 1.0, 0.0
     sample, offset, std = first, 0.0, np.nan
+    # an edge that does not stand out is refined in the end only, if no other smoothing serves better
+    pending, best_sign, best_width = False, 1.0, 1.0
     for _ in range(SMOOTHINGS):
         early = max(begin, first - int(_AHEAD * width))
-        wave = _smoothed(white, early, stop - early, width)
-        steepest, sign, height = _first_edge(wave, first - early)
+        # most edges begin close by: what lies further back is smoothed only for those that do not
+        near = max(early, first - int(_NEAR * width))
+        steepest, sign, height, base = _first_edge(_smoothed(white, near, stop - near, width), first - near)
+        if base == 0 and near > early:
+            near = early
+            steepest, sign, height, base = _first_edge(_smoothed(white, near, stop - near, width), first - near)
         stands_out = height * math.sqrt(math.sqrt(2.0) * _ROOT_TWO_PI * width)
-        if stands_out > most or stands_out >= STANDS_OUT:
-            at, spread = _foot(white, early + steepest, sign, width)
+        if stands_out >= STANDS_OUT:
+            at, spread = _foot(white, near + steepest, sign, width)
             if stands_out > most:
-                most, sample, offset, std = stands_out, early + steepest, at, spread
-            if stands_out >= STANDS_OUT and spread <= width / 2:
-                return early + steepest, at, spread
+                sample, offset, std, pending = near + steepest, at, spread, False
+            if spread <= width / 2:
+                return near + steepest, at, math.hypot(spread, BETWEEN_SAMPLES)
+        elif stands_out > most:
+            sample, best_sign, best_width, pending = near + steepest, sign, width, True
+        most = max(most, stands_out)
         if stands_out < _PAST * most:
             break
         width *= 2.0
-    return sample, offset, std if std < stop - begin else np.nan
+    if pending:
+        offset, std = _foot(white, sample, best_sign, best_width)
+    return sample, offset, math.hypot(std, BETWEEN_SAMPLES) if std < stop - begin else np.nan

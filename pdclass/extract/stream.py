@@ -64,7 +64,8 @@ def extract(
     ----------
     capture : needs `volts_per_count`.
     settings : how pulses are found.
-    block_samples : samples a block of the pass over the record; does not change the result.
+    block_samples : samples a block of the pass over the record, rounded up to whole sub-blocks of 4096; does not
+        change the result.
 
     Raises
     ------

@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from pdclass.extract.background import Background, scanned
+from pdclass.compiled import compiled
+from pdclass.extract.background import Background, flagged_runs
+from pdclass.extract.bank import SUB_BLOCK, whiten_into
 from pdclass.extract.cut import clipped_samples, rails
 from pdclass.extract.echoes import SHAPE_S
-from pdclass.extract.events import ATTACK_S, events_of_pieces, in_order
+from pdclass.extract.events import ATTACK_S, all_limits, in_order, piece_events, spans
+from pdclass.extract.fir import TAPS
+from pdclass.extract.pages import let_go
 from pdclass.pulses import Capture, FloatArray, IntArray, WaveArray, window_samples
-
-_njit = numba.njit(cache=True, nogil=True)
 
 BLOCK_SAMPLES = 1 << 20
 #: A wide box flags up to half its width before and after its cause; what lies nearer is one cluster.
@@ -23,6 +25,10 @@ JOIN_S = 1.3e-6
 MARGIN_S = 4e-6
 #: A longer burst is looked at piece by piece, counted from its own start; a cut is no new beginning.
 LONGEST_CLUSTER_S = 400e-6
+#: Pieces searched at once.
+_PIECES = 256
+#: So many samples around a piece may be looked at when an edge is smoothed.
+_REACH = 160
 #: So long the whitening filter remembers samples that were cut off.
 RECOVERY_SAMPLES = 80
 
@@ -50,121 +56,138 @@ def segment_events(
 ) -> Events:
     """Events of one segment.
 
-    Each block is whitened once, with what its clusters need before and after it; a piece of a cluster belongs to the
-    block in which it begins, so that the block size changes nothing.
+    Blocks (`block_samples`, rounded up to whole sub-blocks) are searched for clusters; a cluster that may go on in the
+    next block waits for it. Only pieces of clusters are whitened for good, each with what it needs before and after
+    it, so that the block size changes nothing.
     """
     rate_hz = capture.chain.rate_hz
     margin, gap, longest = (round(span * rate_hz) for span in (MARGIN_S, JOIN_S, LONGEST_CLUSTER_S))
-    window, shape = window_samples(rate_hz), round(SHAPE_S * rate_hz)
+    shape, step = round(SHAPE_S * rate_hz), -(-block_samples // SUB_BLOCK) * SUB_BLOCK
     found = [Events(np.zeros((0, 2), np.int64), np.zeros((0, 2)), np.zeros((0, shape), np.float32))]
-    clipped = 0
-    begun = np.array([bounds[0] - gap, bounds[0] - gap])
-    for first in range(bounds[0], bounds[1], block_samples):
-        last = min(first + block_samples, bounds[1])
-        begin, end = max(bounds[0], first - margin), min(bounds[1], last + longest + max(gap, window))
+    clipped, begun = 0, np.array([bounds[0] - gap, bounds[0] - gap])
+    for first in range(bounds[0], bounds[1], step):
+        last = min(first + step, bounds[1])
         clipped += clipped_samples(capture, first, last)
-        white, flags = scanned(capture.counts, background, bounds, begin, end)
-        clusters = _clusters(flags, first - begin, last - begin, gap, begun - begin) + begin
-        begun = _open_cluster(clusters, flags[first - begin : last - begin], begun, last)
-        pieces = _pieces(clusters, (first, last), bounds, longest, (margin, window))
-        if len(pieces):
-            pieces[:, :4] -= begin
-            places, feet = events_of_pieces(white, pieces, rate_hz)
-            found.append(Events(places + begin, feet, _shapes(white, places, shape)))
+        runs = flagged_runs(capture.counts, background, bounds, first, last)
+        clusters, begun = _clusters(runs, begun, gap, bounds[1] + gap if last == bounds[1] else last)
+        pieces = _pieces(clusters, bounds, longest, (margin, window_samples(rate_hz)))
+        found += [
+            _events_of(capture, background, bounds, pieces[row : row + _PIECES], shape)
+            for row in range(0, len(pieces), _PIECES)
+        ]
+        let_go(capture.counts, first, last)
     events = _ordered(found, max(2, round(ATTACK_S * rate_hz)), clipped)
     return _without_recoveries(capture, events) if clipped else events
 
 
-def _clusters(flags: NDArray[np.bool_], first: int, last: int, gap: int, begun: IntArray) -> IntArray:
-    """Runs of flagged samples from `first` on, neighbours closer than `gap` joined, of those that begin before `last`.
+@compiled
+def _clusters(
+    runs: IntArray, begun: IntArray, gap: int, seen: int
+) -> tuple[IntArray, IntArray]:  # pragma: no cover - compiled
+    """Runs with neighbours closer than `gap` joined, and the last of them, which samples past `seen` may continue.
 
-    `begun` = (first, one past the last flagged sample) of the cluster before, which the first run may continue.
+    `begun` is that of the runs before.
     """
-    # most samples are quiet: they are passed over eight at a time, as words
-    own = flags[first:]
-    lead = min(-own.ctypes.data % 8, own.size)
-    words = own[lead : lead + (own.size - lead) // 8 * 8].view(np.uint64)
-    return np.asarray(_runs(_flagged(own.view(np.uint8), words, lead) + first, last, gap, begun), np.int64)
-
-
-@_njit
-def _flagged(flags: NDArray[np.uint8], words: NDArray[np.uint64], lead: int) -> IntArray:  # pragma: no cover - compiled
-    """Places of flagged samples; `words` are the same flags from `lead` on, eight in one."""
-    some = 0
-    for word in words:
-        some += word != 0
-    places = np.empty(8 * some + 16, np.int64)
-    count = 0
-    for i in range(lead):
-        places[count] = i
-        count += flags[i]
-    for k in range(words.size):
-        if words[k] != 0:
-            for i in range(lead + 8 * k, lead + 8 * k + 8):
-                places[count] = i
-                count += flags[i]
-    for i in range(lead + 8 * words.size, flags.size):
-        places[count] = i
-        count += flags[i]
-    return places[:count]
-
-
-@_njit
-def _runs(flagged: IntArray, last: int, gap: int, begun: IntArray) -> IntArray:  # pragma: no cover - compiled
-    rows = np.empty((64, 2), np.int64)
+    rows = np.empty((len(runs) + 1, 2), np.int64)
     rows[0] = begun
     count = 1
-    for i in flagged:
-        if i - rows[count - 1, 1] >= gap:
-            if i >= last:
-                break
-            if count == len(rows):
-                rows = np.concatenate((rows, np.empty((count, 2), np.int64)))
-            rows[count, 0] = i
+    for row in range(len(runs)):
+        if runs[row, 0] - rows[count - 1, 1] >= gap:
+            rows[count, 0] = runs[row, 0]
             count += 1
-        rows[count - 1, 1] = i + 1
-    return rows[:count]
+        rows[count - 1, 1] = runs[row, 1]
+    last = rows[count - 1].copy()
+    if seen - last[1] >= gap:
+        last[0] = last[1]
+        return rows[:count], last
+    return rows[: count - 1], last
 
 
-def _open_cluster(clusters: IntArray, flags: NDArray[np.bool_], before: IntArray, last: int) -> IntArray:
-    """The cluster that the next block may continue: its first sample, and one past its last one before `last`."""
-    first, end = (int(value) for value in clusters[-1])
-    if end > last:
-        tail = np.flatnonzero(flags[max(first - last, -flags.size) :])
-        end = last - min(last - first, flags.size) + int(tail[-1]) + 1 if len(tail) else int(before[1])
-    return np.array([first, end])
-
-
-@_njit
+@compiled
 def _pieces(
-    clusters: IntArray, block: tuple[int, int], bounds: tuple[int, int], longest: int, around: tuple[int, int]
+    clusters: IntArray, bounds: tuple[int, int], longest: int, around: tuple[int, int]
 ) -> IntArray:  # pragma: no cover - compiled
-    """Pieces of clusters that begin in a block, as `piece_events` wants them, places in the file."""
+    """Pieces of clusters as `piece_events` wants them, places in the file."""
     room = 0
     for row in range(len(clusters)):
-        room += max(clusters[row, 1] - max(clusters[row, 0], block[0] - longest), 0) // longest + 2
+        room += (clusters[row, 1] - clusters[row, 0]) // longest + 1
     pieces = np.empty((room, 5), np.int64)
     count = 0
     for row in range(len(clusters)):
         first, last = clusters[row]
-        begin = first + max(0, -((first - block[0]) // longest)) * longest
-        while begin < min(last, block[1]):
+        for begin in range(first, last, longest):
             end = min(begin + longest, last)
             pieces[count, 0], pieces[count, 1] = max(bounds[0], begin - around[0]), begin
             pieces[count, 2], pieces[count, 3] = end, min(bounds[1], end + around[1])
             pieces[count, 4] = begin > first
             count += 1
-            begin += longest
     return pieces[:count]
 
 
-@_njit
-def _shapes(white: WaveArray, places: IntArray, longest: int) -> WaveArray:  # pragma: no cover - compiled
-    shapes = np.zeros((len(places), longest), np.float32)
-    for row in range(len(places)):
-        length = min(places[row, 1] - places[row, 0], longest)
-        shapes[row, :length] = white[places[row, 0] : places[row, 0] + length]
-    return shapes
+def _events_of(
+    capture: Capture, background: Background, bounds: tuple[int, int], pieces: IntArray, shape: int
+) -> Events:
+    held, rate_hz = background, capture.chain.rate_hz
+    attack, decay, twin = spans(rate_hz)
+    sizes = (attack, decay, 2 * twin + 6 * decay, shape)
+    limits, grid = all_limits(rate_hz), held.grid(bounds)
+    found = _searched(
+        capture.counts, held.dither, held.level, held.filters, held.gains, grid, bounds, pieces, sizes, limits
+    )
+    let_go(capture.counts, pieces[0, 0], pieces[-1, 3])
+    return Events(*found)
+
+
+@compiled
+def _searched(
+    counts: NDArray[Any],
+    dither: WaveArray,
+    level: float,
+    filters: WaveArray,
+    gains: WaveArray,
+    grid: tuple[int, int, int, int],
+    bounds: tuple[int, int],
+    pieces: IntArray,
+    sizes: tuple[int, int, int, int],
+    limits: FloatArray,
+) -> tuple[IntArray, FloatArray, WaveArray]:  # pragma: no cover - compiled
+    """Places, feet and shapes of the events of pieces, each whitened by itself.
+
+    `sizes` = (attack, decay, samples after a cluster in which most events end, samples of a shape). Where an event
+    has not ended by then, the piece is whitened again up to its own end.
+    """
+    attack, decay, after, longest = sizes
+    places, feet = np.empty((len(pieces), 2), np.int64), np.empty((len(pieces), 2))
+    shapes = np.zeros((len(pieces), longest), np.float32)
+    raw, white = np.empty(SUB_BLOCK + TAPS, np.float32), np.empty(SUB_BLOCK, np.float32)
+    count = 0
+    for row in range(len(pieces)):
+        piece = pieces[row].copy()
+        low = max(bounds[0], piece[0] - _REACH)
+        piece[:4] -= low
+        stop, settled = piece[3], False
+        piece[3] = min(stop, piece[2] + after)
+        while True:
+            size = min(piece[3] + _REACH, bounds[1] - low)
+            if size > white.size:
+                white = np.empty(2 * size, np.float32)
+            own = white[:size]
+            whiten_into(counts, dither, level, filters, gains, grid, bounds, low, raw, own)
+            new, instants, settled = piece_events(own, piece, attack, decay, limits)
+            if settled or piece[3] == stop:
+                break
+            piece[3] = stop
+        if count + len(new) > len(places):
+            room = len(places) + len(new)
+            places = np.concatenate((places, np.empty((room, 2), np.int64)))
+            feet = np.concatenate((feet, np.empty((room, 2))))
+            shapes = np.concatenate((shapes, np.zeros((room, longest), np.float32)))
+        for n in range(len(new)):
+            length = min(new[n, 1] - new[n, 0], longest)
+            shapes[count, :length] = own[new[n, 0] : new[n, 0] + length]
+            places[count], feet[count] = new[n] + low, instants[n]
+            count += 1
+    return places[:count], feet[:count], shapes[:count]
 
 
 def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
@@ -173,11 +196,19 @@ def _ordered(found: list[Events], apart: int, clipped: int) -> Events:
     order = np.argsort(places[:, 0], kind="stable")
     onsets, ends = places[order, 0], places[order, 1]
     kept = in_order(onsets, ends, apart)
-    shapes = np.concatenate([part.shapes for part in found])[order[kept]]
-    lengths = (ends - onsets)[kept]
-    shapes[np.arange(shapes.shape[1]) >= lengths[:, None]] = 0.0
+    shapes = _chosen(np.concatenate([part.shapes for part in found]), order[kept], (ends - onsets)[kept])
     feet = np.concatenate([part.feet for part in found])[order[kept]]
     return Events(np.stack([onsets[kept], ends[kept]], axis=1), feet, shapes, clipped)
+
+
+@compiled
+def _chosen(shapes: WaveArray, rows: IntArray, lengths: IntArray) -> WaveArray:  # pragma: no cover - compiled
+    """Rows of shapes, zero after their lengths."""
+    chosen = np.zeros((rows.size, shapes.shape[1]), np.float32)
+    for n in range(rows.size):
+        length = min(lengths[n], shapes.shape[1])
+        chosen[n, :length] = shapes[rows[n], :length]
+    return chosen
 
 
 def _without_recoveries(capture: Capture, events: Events) -> Events:

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-import numba
 import numpy as np
 import scipy.fft
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
-_njit = numba.njit(cache=True, nogil=True)
 PIECE_SAMPLES = 1024
 #: A floor under the spectrum, as a share of its mean: keeps the recursion stable when a filter has emptied a band.
 _FLOOR = 1e-9
@@ -52,7 +51,7 @@ def middle_power(signals: WaveArray) -> WaveArray:
     return np.asarray(np.partition(spectra.real**2 + spectra.imag**2, middle, axis=1)[:, middle], np.float32)
 
 
-@_njit
+@compiled
 def _middle_of_three(spectra: NDArray[np.complex64]) -> WaveArray:  # pragma: no cover - compiled
     epochs, _, bins = spectra.shape
     out = np.empty((epochs, bins), np.float32)
@@ -108,7 +107,7 @@ def whitening_filter(spectrum: FloatArray, order: int) -> WaveArray:
     return _levinson(scipy.fft.irfft(spectrum + _FLOOR * spectrum.mean())[: order + 1])[0]
 
 
-@_njit
+@compiled
 def _levinson(correlation: FloatArray) -> tuple[WaveArray, float]:  # pragma: no cover - compiled
     """The filter of an autocorrelation, and the power that it leaves (0 or less: no spectrum has that)."""
     order, left = correlation.size - 1, correlation[0]
@@ -156,8 +155,13 @@ def gated_filter(signals: WaveArray, taps: WaveArray, impulse: int) -> WaveArray
 
 def quiet_level(white: WaveArray) -> float:
     """Noise level of whitened samples from their quietest quarter, for signals in which much stands out."""
-    height = np.abs(white[..., ::_COMB]).reshape(-1)
-    return float(np.partition(height, height.size // 4)[height.size // 4]) / _QUARTER
+    return float(quiet_levels(np.abs(white[..., ::_COMB]).reshape(1, -1))[0])
+
+
+def quiet_levels(heights: WaveArray) -> WaveArray:
+    """(parts,) noise levels of whitened magnitudes (parts, samples), each from the quietest quarter of its own."""
+    quarter = heights.shape[1] // 4
+    return np.partition(heights, quarter, axis=1)[:, quarter] / np.float32(_QUARTER)
 
 
 def _spoilt(out: NDArray[np.bool_], after: int) -> NDArray[np.bool_]:

@@ -9,16 +9,14 @@ from __future__ import annotations
 from functools import lru_cache
 from itertools import pairwise
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import weighed
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
-
-_njit = numba.njit(cache=True, nogil=True)
 
 EDGES_MHZ = (0.1, 0.5, 1.3, 2.5, 4.5, 7.0, 10.0, 13.5, 18.0, 25.0)
 #: Length of the first arrival [us], over how much of its end it fades out [samples], and its bands.
@@ -91,7 +89,7 @@ def cosine_means(starts: tuple[int, ...], size: int, lags: int) -> FloatArray:
     return np.array([waves[low - starts[0] : high - starts[0]].mean(axis=0) for low, high in pairwise(starts)])
 
 
-@_njit
+@compiled
 def behind_common_corner(
     waves: WaveArray, low_hz: FloatArray, samples: int
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -116,7 +114,7 @@ def behind_common_corner(
     return pieces
 
 
-@_njit
+@compiled
 def _floors(powers: WaveArray, low_hz: FloatArray, starts: IntArray) -> FloatArray:  # pragma: no cover - compiled
     """Noise power as it is behind the common corner, summed over each band, (pulses, bands)."""
     hz = np.arange(starts[-1]) * ANALYSIS_RATE_HZ / _FFT
@@ -131,7 +129,7 @@ def _floors(powers: WaveArray, low_hz: FloatArray, starts: IntArray) -> FloatArr
     return sums
 
 
-@_njit
+@compiled
 def _added(values: FloatArray) -> float:  # pragma: no cover - compiled
     """Sum of a few values, in four sums side by side."""
     a, b, c, d, whole = 0.0, 0.0, 0.0, 0.0, values.size // 4 * 4
@@ -142,7 +140,7 @@ def _added(values: FloatArray) -> float:  # pragma: no cover - compiled
     return a + b + (c + d)
 
 
-@_njit
+@compiled
 def correlate_into(early: FloatArray, late: FloatArray, lags: FloatArray) -> None:  # pragma: no cover - compiled
     """Write sum_n early(n) late(n + lag) for each lag, four terms at a time so that the lags fill vectors.
 
@@ -156,7 +154,7 @@ def correlate_into(early: FloatArray, late: FloatArray, lags: FloatArray) -> Non
             lags[lag] += a * first[lag] + b * second[lag] + (c * third[lag] + d * fourth[lag])
 
 
-@_njit
+@compiled
 def band_means_into(lags: FloatArray, weights: FloatArray, means: FloatArray) -> None:  # pragma: no cover - compiled
     """Write the mean over each band of the spectrum of a correlation; `weights` (lags, bands) as of `cosine_means`."""
     means[:] = 0.0
@@ -165,7 +163,7 @@ def band_means_into(lags: FloatArray, weights: FloatArray, means: FloatArray) ->
             means[band] += lags[lag] * weights[lag, band]
 
 
-@_njit
+@compiled
 def _delays_into(
     found: FloatArray,
     usable: IntArray,
@@ -210,8 +208,8 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
     return Feature(
         _name(length_us, low, high),
         "ns",
-        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against its centre",
-        f"delay at {low:g}-{high:g} MHz {{value}}",
+        f"delay of the energy between {low:g} and {high:g} MHz in the first {length_us:g} µs against the mean",
+        f"delay at {low:g}-{high:g} MHz in the first {length_us:g} µs is {{value}}",
         "later",
         "earlier",
         (-_LONGEST_NS, _LONGEST_NS),
@@ -219,7 +217,8 @@ def _delay(length_us: float, low: float, high: float) -> Feature:
         "group delay by the transform of t x(t) (A. V. Oppenheim, R. W. Schafer, 1989, from memory)",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
-        absent="nothing stands out of the noise in this band",
+        absent="too little power in this band",
+        below_zero="ahead of the mean",
         edition=2,
     )
 

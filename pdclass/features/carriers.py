@@ -8,10 +8,10 @@ from __future__ import annotations
 
 from typing import NamedTuple
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.kernels import LANES, place_of_largest
 from pdclass.features.transforms import spectra
 from pdclass.pulses import FloatArray, IntArray, WaveArray
@@ -89,7 +89,7 @@ def without_tones(waves: WaveArray, tones: Tones) -> WaveArray:
     return clean
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _take_out(
     waves: WaveArray,
     clean: WaveArray,
@@ -104,7 +104,7 @@ def _take_out(
         _leave(waves[r], 0, waves.shape[1], tones, r, clean[r])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _begin(
     waves: WaveArray,
     start: IntArray,
@@ -126,7 +126,7 @@ def _begin(
         _leave_tapered(waves[r], start[r], stop[r], tones, r, rest[r])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _next_line(
     spectrum: WaveArray,
     waves: WaveArray,
@@ -161,7 +161,7 @@ def _next_line(
     return found
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _strongest_line(
     spectrum: WaveArray, rest: WaveArray, length: int, power: WaveArray
 ) -> float:  # pragma: no cover - compiled
@@ -187,7 +187,7 @@ def _strongest_line(
     return _ASIDE * (fine + _vertex(left, middle, right))
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _stands_out(power: WaveArray, line: float) -> bool:  # pragma: no cover - compiled
     """Whether a line's power is that of a carrier: so far above the median."""
     limit, below = np.float32(line / _TONE_POWER), np.int32(0)
@@ -196,7 +196,7 @@ def _stands_out(power: WaveArray, line: float) -> bool:  # pragma: no cover - co
     return bool(2 * below > power.size)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _vertex(left: float, middle: float, right: float) -> float:  # pragma: no cover - compiled
     """Place of the top of the parabola through the logarithms of three powers, from the middle one."""
     a, b, c = np.log(left + 1e-300), np.log(middle + 1e-300), np.log(right + 1e-300)
@@ -204,7 +204,7 @@ def _vertex(left: float, middle: float, right: float) -> float:  # pragma: no co
     return 0.5 * (a - c) / bend if bend != 0 else 0.0
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _three_powers(
     rest: WaveArray, length: int, turn: float
 ) -> tuple[float, float, float]:  # pragma: no cover - compiled
@@ -237,7 +237,7 @@ def _three_powers(
     return left, total[0] ** 2 + total[1] ** 2, right
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _transform(wave: WaveArray, start: int, stop: int, turn: float) -> complex:  # pragma: no cover - compiled
     """The Fourier transform of a stretch at one frequency [radians a sample], phases from its first sample."""
     lane = np.zeros((2, LANES), np.float32)
@@ -255,7 +255,7 @@ def _transform(wave: WaveArray, start: int, stop: int, turn: float) -> complex: 
     return total
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _fit(
     length: int, turn: FloatArray, moments: NDArray[np.complex128], gram: FloatArray, even: FloatArray, odd: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -273,14 +273,14 @@ def _fit(
     odd[1 : n + 1] = _solved(gram[1, :n, :n].copy(), -moments[1 : n + 1].imag)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _kernel(length: int, turn: float) -> float:  # pragma: no cover - compiled
     """Sum of cos(turn x) over so many places one apart about 0: the kernel of P. G. L. Dirichlet."""
     single = np.sin(0.5 * turn)
     return np.sin(0.5 * length * turn) / single if abs(single) > 1e-9 else float(length)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _solved(matrix: FloatArray, right: FloatArray) -> FloatArray:  # pragma: no cover - compiled
     """Solution of a symmetric system of which the lower half is given, by Cholesky; 0 along spanned directions."""
     n = right.size
@@ -304,7 +304,7 @@ def _solved(matrix: FloatArray, right: FloatArray) -> FloatArray:  # pragma: no 
     return right
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _leave(
     wave: WaveArray, start: int, stop: int, tones: Tones, r: int, left: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -325,7 +325,7 @@ def _leave(
             phasor *= step
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _leave_tapered(
     wave: WaveArray, start: int, stop: int, tones: Tones, r: int, rest: WaveArray
 ) -> None:  # pragma: no cover - compiled
@@ -345,7 +345,7 @@ def _leave_tapered(
     rest[length:] = 0.0
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _spread(turn: float, cosine: WaveArray, sine: WaveArray) -> None:  # pragma: no cover - compiled
     """Cosine and sine of 0, 1, 2 ... turns."""
     step, phasor = np.exp(1j * turn), 1.0 + 0.0j

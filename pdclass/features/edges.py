@@ -6,18 +6,20 @@ high state in a unipolar pulse.
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import LANES, sum_of_squares
+from pdclass.features.kernels import LANES, chance_energy, sum_of_squares
 from pdclass.features.window import GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray, WaveArray
 
 _LEVELS = "after IEEE Std 181-2011 (reference levels 10, 50, 90 %), base line and peak in place of histogram levels"
 _LONGEST_NS = 15000.0
 #: What a missing edge means.
-_OPEN = "the pulse does not come down to the level before its end"
+_NO_FOOT = "the wave before the peak does not come down to a tenth of it"
+_NO_FALL = "the pulse ends before it comes down to a tenth of the peak"
+_NO_FLANKS = "the wave does not come down to {} of the peak on both sides of it".format
 #: Crossings are looked for among the own samples and this long a lead [samples].
 _LEAD = 2 * GUARD
 #: Levels of the crossings, from the peak outwards.
@@ -60,7 +62,7 @@ def measure_edges(windows: Windows) -> FloatArray:
     return np.stack([*times, ratio, lopsided, tail * STEP_NS], axis=1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _places(
     waves: WaveArray, raws: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -81,7 +83,7 @@ def _places(
     return at
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compiled
     """Energy of what stands above a limit, over that of the peak [samples]."""
     lane, low = np.zeros(LANES), np.float32(limit)
@@ -96,7 +98,7 @@ def _width(wave: WaveArray, limit: float) -> float:  # pragma: no cover - compil
     return float(lane.sum())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def outer_crossings(
     wave: WaveArray, peak: int, reach: int, rise: FloatArray, fall: FloatArray
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -131,7 +133,7 @@ def outer_crossings(
     return place, height
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _crossings(
     wave: WaveArray, top: int, reach: int, step: int, height: float, places: FloatArray
 ) -> None:  # pragma: no cover - compiled
@@ -148,7 +150,7 @@ def _crossings(
         former, i = value, i + step
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cover - compiled
     """Mean of the samples about a place; ends are held."""
     total = 0.0
@@ -157,7 +159,7 @@ def mean_at(wave: WaveArray, place: int, reach: int) -> float:  # pragma: no cov
     return total / (2 * reach + 1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) -> float:  # pragma: no cover - compiled
     """The mean one step on from a place where it is known."""
     if reach == 0:
@@ -167,15 +169,21 @@ def _next_mean(wave: WaveArray, place: int, reach: int, step: int, mean: float) 
     return mean + (np.float64(wave[enters]) - np.float64(wave[leaves])) / (2 * reach + 1)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _tails(
     waves: WaveArray, end: IntArray, peak: IntArray, noise: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
-    """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out."""
-    tails, first = np.empty(len(waves)), ONSET - GUARD
+    """From the peak until nine tenths of the energy of the own samples have passed, the noise's energy left out.
+
+    NaN where noise may have left that energy.
+    """
+    tails, first = np.full(len(waves), np.nan), ONSET - GUARD
     for r in range(len(waves)):
         floor = noise[r] * noise[r]
-        limit = 0.9 * (sum_of_squares(waves[r, first : end[r]]) - floor * (end[r] - first))
+        total = sum_of_squares(waves[r, first : end[r]]) - floor * (end[r] - first)
+        if not total > chance_energy(floor, end[r] - first):
+            continue
+        limit = 0.9 * total
         passed, i = 0.0, first
         while i < end[r]:
             value = np.float64(waves[r, i])
@@ -187,58 +195,72 @@ def _tails(
     return tails
 
 
-def _edge(name: str, meaning: str, more: str, less: str, sentence: str, snr_db: float = 9.0) -> Feature:
+def _edge(name: str, meaning: str, words: tuple[str, str], sentence: str, absent: str, snr_db: float = 9.0) -> Feature:
     return Feature(
-        name, "ns", meaning, sentence, more, less, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=_OPEN
+        name, "ns", meaning, sentence, *words, (0.0, _LONGEST_NS), 5.0, _LEVELS, needs_snr_db=snr_db, absent=absent
     )
 
 
+_SPEED, _WIDTH = ("slower", "faster"), ("wider", "narrower")
+
+
 EDGES = (
-    _edge("rise_ns", "10-90 % time of the edge that leads to the peak", "slower", "faster", "rise {value}"),
+    _edge("rise_ns", "10-90 % time of the edge that leads to the peak", _SPEED, "rise {value}", _NO_FOOT),
     _edge(
         "rise_raw_ns",
-        "10-90 % time of the leading edge before carriers are reduced",
-        "slower",
-        "faster",
-        "rise before carriers are reduced {value}",
+        "10-90 % time of the leading edge before radio carriers are taken out",
+        _SPEED,
+        "rise with radio carriers left in {value}",
+        _NO_FOOT,
     ),
-    _edge("fall_ns", "90-10 % time of the edge that follows the peak", "slower", "faster", "fall {value}"),
-    _edge("width_50_ns", "width at half of the peak", "wider", "narrower", "width at half height {value}"),
-    _edge("width_10_ns", "width at a tenth of the peak", "wider", "narrower", "width at a tenth {value}", 18.0),
+    _edge("fall_ns", "90-10 % time of the edge that follows the peak", _SPEED, "fall {value}", _NO_FALL),
+    _edge("width_50_ns", "width at half of the peak", _WIDTH, "width at half of the peak {value}", _NO_FLANKS("half")),
+    _edge(
+        "width_10_ns",
+        "width at a tenth of the peak",
+        _WIDTH,
+        "width at a tenth of the peak {value}",
+        _NO_FLANKS("a tenth"),
+        18.0,
+    ),
     Feature(
         "width_ratio",
         "",
         "width at a tenth over width at half height",
-        "foot over half width {value}",
+        "width at a tenth over width at half height {value}",
         "broader at the foot",
         "narrower at the foot",
         (1.0, 1e4),
         0.1,
         _LEVELS,
+        absent=_NO_FLANKS("a tenth"),
         needs_snr_db=18.0,
     ),
     Feature(
         "asymmetry",
         "",
         "fall time over rise time",
-        "fall over rise {value}",
-        "more lopsided",
-        "more even",
+        "fall time over rise time {value}",
+        "a longer fall for its rise",
+        "a shorter fall for its rise",
         (0.0, 1e4),
         0.15,
         _LEVELS,
+        absent=_NO_FLANKS("a tenth"),
         needs_snr_db=12.0,
     ),
     Feature(
         "tail_ns",
         "ns",
         "from the peak until nine tenths of the energy have passed",
-        "tail {value}",
-        "longer",
-        "shorter",
+        "nine tenths of the energy have passed {value} after the peak",
+        "later",
+        "sooner",
         (0.0, _LONGEST_NS),
         30,
         "own definition",
+        absent="too little energy is left above the noise, or the record ends within the pulse",
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

@@ -8,8 +8,8 @@ from dataclasses import asdict, dataclass
 from pdclass.digest import json_digest
 
 #: Edition of the way windows are made ready, which every feature is measured on: raised as a feature's own.
-WINDOW_EDITION = 2
-_WORDS = frozenset({"meaning", "sentence", "more", "less", "reference", "absent"})
+WINDOW_EDITION = 3
+_WORDS = frozenset({"meaning", "sentence", "more", "less", "reference", "absent", "below_zero"})
 
 
 @dataclass(frozen=True)
@@ -29,6 +29,7 @@ class Feature:
     needs_hz : the chain must carry signals up to here, else the feature is unmeasurable [Hz].
     needs_snr_db : below this ratio of peak to noise the feature is unmeasurable [dB].
     absent : what a missing value means where neither chain nor noise forbids it.
+    below_zero : what a negative value means, said behind it; "" = it goes without saying.
     edition : of the way it is measured, from 1; raised when the numbers change by more than rounding though the
         definition stays, so that a bundle taught with the former ones is refused.
     """
@@ -45,6 +46,7 @@ class Feature:
     needs_hz: float = 0.0
     needs_snr_db: float = 0.0
     absent: str = "not measurable here"
+    below_zero: str = ""
     edition: int = 1
 
     @property

@@ -6,10 +6,10 @@ the same on every machine.
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.pulses import FloatArray, WaveArray
 
 KeyArray = NDArray[np.int32]
@@ -19,7 +19,7 @@ _LOWEST, _HIGHEST = np.int32(-(2**31)), np.int32(2**31 - 1)
 _ALL_BUT_SIGN = np.int32(0x7FFFFFFF)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def median(values: WaveArray) -> float:  # pragma: no cover - compiled
     """The median of values without NaN, (n,) float32, n >= 1; exact, the mean of the middle two where n is even."""
     keys = values.view(np.int32).copy()
@@ -28,7 +28,7 @@ def median(values: WaveArray) -> float:  # pragma: no cover - compiled
     return _middle(keys)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def median_size(values: WaveArray) -> float:  # pragma: no cover - compiled
     """The median of the sizes of values without NaN, (n,) float32, n >= 1."""
     keys = values.view(np.int32).copy()
@@ -37,7 +37,16 @@ def median_size(values: WaveArray) -> float:  # pragma: no cover - compiled
     return _middle(keys)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
+def size_above(values: WaveArray, share: float) -> float:  # pragma: no cover - compiled
+    """The size that a share of the values without NaN, (n,) float32, does not exceed; one of theirs, 0 <= share < 1."""
+    keys = values.view(np.int32).copy()
+    for i in range(keys.size):
+        keys[i] = keys[i] & _ALL_BUT_SIGN
+    return _value(_ranked(keys, int(share * keys.size)))
+
+
+@compiled
 def _middle(keys: KeyArray) -> float:  # pragma: no cover - compiled
     """The median of floats given as integers that sort like them."""
     rank = (keys.size - 1) // 2
@@ -50,7 +59,7 @@ def _middle(keys: KeyArray) -> float:  # pragma: no cover - compiled
     return 0.5 * (_value(lower) + _value(upper))
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _ranked(keys: KeyArray, rank: int) -> np.int32:  # pragma: no cover - compiled
     """The key with so many smaller ones, by halving the range: each count fills a vector, nothing is moved."""
     low, high = np.int64(_LOWEST), np.int64(_HIGHEST)
@@ -63,7 +72,7 @@ def _ranked(keys: KeyArray, rank: int) -> np.int32:  # pragma: no cover - compil
     return np.int32(low)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _count_up_to(keys: KeyArray, limit: np.int32) -> np.int32:  # pragma: no cover - compiled
     count = np.int32(0)
     for i in range(keys.size):
@@ -71,7 +80,7 @@ def _count_up_to(keys: KeyArray, limit: np.int32) -> np.int32:  # pragma: no cov
     return count
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _value(key: np.int32) -> float:  # pragma: no cover - compiled
     """The float behind a key that sorts like it."""
     bits = np.empty(1, np.int32)
@@ -79,7 +88,7 @@ def _value(key: np.int32) -> float:  # pragma: no cover - compiled
     return np.float64(bits.view(np.float32)[0])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def sum_of_squares(values: WaveArray) -> float:  # pragma: no cover - compiled
     """Sum of the squares of values, (n,)."""
     lane, whole = np.zeros(LANES), values.size // LANES * LANES
@@ -93,7 +102,7 @@ def sum_of_squares(values: WaveArray) -> float:  # pragma: no cover - compiled
     return float(lane.sum())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def lowest(values: WaveArray) -> float:  # pragma: no cover - compiled
     """The smallest of values without NaN, (n,) float32, and at most 0."""
     lane, whole = np.zeros(LANES, np.float32), values.size // LANES * LANES
@@ -105,7 +114,7 @@ def lowest(values: WaveArray) -> float:  # pragma: no cover - compiled
     return np.float64(lane.min())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def weighed(values: FloatArray | WaveArray, weights: FloatArray) -> float:  # pragma: no cover - compiled
     """Sum of the products of values and weights, both (n,)."""
     lane, whole = np.zeros(LANES), values.size // LANES * LANES
@@ -117,7 +126,7 @@ def weighed(values: FloatArray | WaveArray, weights: FloatArray) -> float:  # pr
     return float(lane.sum())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def sum_between(values: FloatArray | WaveArray, first: int, last: int) -> float:  # pragma: no cover - compiled
     """Sum of `values[first:last]`."""
     lane = np.zeros(LANES)
@@ -131,7 +140,7 @@ def sum_between(values: FloatArray | WaveArray, first: int, last: int) -> float:
     return float(lane.sum())
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def place_of_largest(values: WaveArray) -> int:  # pragma: no cover - compiled
     """Place of the first of the largest sizes of values without NaN, (n,) float32, n >= 1."""
     keys, top, place = values.view(np.int32), np.int32(0), 0
@@ -142,7 +151,7 @@ def place_of_largest(values: WaveArray) -> int:  # pragma: no cover - compiled
     return place
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
     """Place of the first value of the largest size, (n,) float32 without NaN."""
     keys = values.view(np.int32)
@@ -153,3 +162,12 @@ def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
         if keys[i] & _ALL_BUT_SIGN == top:
             return i
     return 0
+
+
+@compiled
+def chance_energy(floor: float, samples: float) -> float:  # pragma: no cover - compiled
+    """What noise alone may leave of the energy of so many samples once its mean is taken out: three deviations.
+
+    `floor` is the noise's power; white noise, itself known no better than from the variance of 200 samples.
+    """
+    return float(3 * floor * np.sqrt(2 * samples * (1 + samples / 200)))

@@ -5,9 +5,9 @@ A carrier is a few bins wide, while a pulse with its copies fills the band smoot
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.transforms import SpectrumArray
 from pdclass.pulses import WaveArray
 
@@ -19,7 +19,7 @@ PULSE_STANDS_OUT = 3.0
 _BESIDE, _APART = 8, 5
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def cut_lines(spectra: SpectrumArray, pulses: SpectrumArray) -> None:  # pragma: no cover - compiled
     """Cut lines in spectra of what follows each pulse, (waves, bins), in place; phases stay.
 
@@ -40,7 +40,7 @@ def cut_lines(spectra: SpectrumArray, pulses: SpectrumArray) -> None:  # pragma:
         weigh(spectrum, most)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def weigh(spectrum: SpectrumArray, weights: WaveArray) -> None:  # pragma: no cover - compiled
     """Multiply a spectrum, (bins,), by weights in place; as plain floats, which fill a vector."""
     parts = spectrum.view(np.float32)
@@ -49,7 +49,7 @@ def weigh(spectrum: SpectrumArray, weights: WaveArray) -> None:  # pragma: no co
         parts[2 * k + 1] *= weights[k]
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _most_into(power: WaveArray, most: WaveArray) -> None:  # pragma: no cover - compiled
     """Write the power from which a bin is cut; box sums come by doubling."""
     beside, width, sums = power.copy(), 1, power.size

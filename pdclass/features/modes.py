@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pdclass.features.feature import Feature
-from pdclass.features.window import ANALYSIS_RATE_HZ, Windows
+from pdclass.features.window import ANALYSIS_RATE_HZ, STEP_NS, Windows
 from pdclass.pulses import FloatArray
 
 ComplexArray = NDArray[np.complex128]
@@ -29,11 +29,12 @@ _REFERENCE = "matrix pencil (Y. Hua, T. K. Sarkar, IEEE Trans. ASSP 38(5), 814-8
 
 
 class Mode(NamedTuple):
-    """One damped oscillation: frequency [Hz], quality Q = pi f tau, energy over that of the samples."""
+    """One damped oscillation: frequency [Hz], quality Q = pi f tau, energy over that of the samples, its own wave."""
 
     frequency_hz: float
     quality: float
     share: float
+    wave: FloatArray
 
 
 def poles(wave: FloatArray, order: int = ORDER, pencil: int = _PENCIL) -> ComplexArray:
@@ -78,8 +79,8 @@ def oscillations(wave: FloatArray, rate_hz: float) -> list[Mode]:
         if pole.imag <= 0 or pole.real == 0:
             continue
         quality = min(turn / (2 * decay), _MOST_Q) if decay > 0 else _MOST_Q
-        own = 4 * float(np.sum((weight * power).real ** 2))
-        modes.append(Mode(turn / (2 * np.pi) * rate_hz, quality, min(own / energy, 1.0)))
+        own = 2 * (weight * power).real
+        modes.append(Mode(turn / (2 * np.pi) * rate_hz, quality, min(float(np.sum(own**2)) / energy, 1.0), own))
     return sorted(modes, key=lambda mode: -mode.share)
 
 
@@ -100,6 +101,10 @@ def measure_modes(windows: Windows) -> FloatArray:
     return found
 
 
+#: What a missing value means.
+_TOO_SHORT = f"the pulse ends sooner than {LEAST * STEP_NS:.0f} ns after its peak"
+_NO_RINGING = f"nothing rings strongly enough, or {_TOO_SHORT}"
+
 MODES = (
     Feature(
         "mode_mhz",
@@ -111,30 +116,33 @@ MODES = (
         (0.0, 50.0),
         0.3,
         _REFERENCE,
+        absent=_NO_RINGING,
         needs_snr_db=12.0,
     ),
     Feature(
         "mode_q",
         "",
         "quality factor of the strongest damped oscillation after the peak",
-        "rings with a quality of {value}",
-        "rings longer",
-        "dies out faster",
+        "rings with a quality factor of {value}",
+        "less damped",
+        "more damped",
         (_LEAST_Q, _MOST_Q),
         0.5,
         _REFERENCE,
+        absent=_NO_RINGING,
         needs_snr_db=12.0,
     ),
     Feature(
         "mode_share",
         "",
         "share of the energy after the peak that the strongest damped oscillation holds",
-        "share of the strongest ringing {value}",
+        "share of the strongest ringing in the energy after the peak is {value}",
         "larger",
         "smaller",
         (0.0, 1.0),
         0.05,
         _REFERENCE,
+        absent=_TOO_SHORT,
         needs_snr_db=12.0,
     ),
 )

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import lowest
 from pdclass.features.window import ANALYSIS_RATE_HZ, ONSET, Windows
@@ -20,7 +20,7 @@ def measure_ringing(windows: Windows) -> FloatArray:
     return _swings(windows.wave, windows.end, windows.peak, limit)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _swings(
     waves: WaveArray, end: IntArray, peak: IntArray, limit: FloatArray
 ) -> FloatArray:  # pragma: no cover - compiled
@@ -42,6 +42,9 @@ def _swings(
     return found
 
 
+#: What a missing value means.
+_NO_PULSE = "the record ends within the pulse"
+
 RINGING = (
     Feature(
         "swings",
@@ -53,42 +56,50 @@ RINGING = (
         (0.0, 1000.0),
         2,
         "own definition",
+        absent=_NO_PULSE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "swings_per_us",
         "1/µs",
         "changes of sign per microsecond of the part that stands out",
-        "rate of swings through zero {value}",
+        "swings through zero at a rate of {value}",
         "more frequent",
         "rarer",
         (0.0, 100.0),
         0.2,
         "own definition",
+        absent=_NO_PULSE,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "overshoot",
         "",
         "largest swing to the other side after the peak, over the peak",
-        "swing back over the peak {value}",
+        "swing back after the peak {value} of the peak",
         "larger",
         "smaller",
         (0.0, 1.0),
         0.02,
         "own definition",
+        absent=_NO_PULSE,
         needs_snr_db=9.0,
+        edition=2,
     ),
     Feature(
         "undershoot_before",
         "",
         "largest swing to the other side before the peak, over the peak",
-        "first swing over the peak {value}",
+        "swing to the other side before the peak {value} of the peak",
         "larger",
         "smaller",
         (0.0, 1.0),
         0.02,
         "own definition",
+        absent=_NO_PULSE,
         needs_snr_db=9.0,
+        edition=2,
     ),
 )

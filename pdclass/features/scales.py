@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from math import comb
 
-import numba
 import numpy as np
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.kernels import weighed
 from pdclass.features.window import SPECTRUM_FFT, Windows
@@ -49,7 +49,7 @@ def _half_band(angle: FloatArray) -> FloatArray:
     return np.asarray((1 - sine) ** MOMENTS * sum(comb(MOMENTS - 1 + k, k) * sine**k for k in range(MOMENTS)))
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _scales_into(found: FloatArray, power: WaveArray, gains: FloatArray) -> None:  # pragma: no cover - compiled
     """Write evenness and centre of the energies, pulse by pulse."""
     scales = len(gains)
@@ -73,29 +73,37 @@ _GAINS = scale_gains(LEVELS, SPECTRUM_FFT // 2 + 1)[1:]
 _GAINS[:, [0, -1]] /= 2
 
 
+#: What a missing value means.
+_NOTHING_LEFT = "too little power is left above the noise, or the record ends within the pulse"
+
 SCALES = (
     Feature(
         "scale_evenness",
         "",
-        "how evenly the energy is spread over the wavelet scales, 0 (one scale) to 1 (all alike)",
-        "evenness over scales {value}",
+        "evenness of the energy over six octaves (wavelet levels) from 0.4 to 25 MHz, 0 (all in one) to 1 (all alike)",
+        "evenness of the energy over the octaves from 0.4 to 25 MHz is {value}",
         "more even",
-        "more concentrated",
+        "more uneven",
         (0.0, 1.0),
         0.07,
         _REFERENCE,
+        absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
+        edition=2,
     ),
     Feature(
         "scale_mean_level",
         "",
-        "energy-weighted mean wavelet level; one level more = half the frequency",
-        "centre of the wavelet scales {value}",
-        "coarser",
-        "finer",
+        "mean octave of the energy, a wavelet level from 2 (12.5-25 MHz) to 7 (0.4-0.8 MHz), one more for half the "
+        "frequency",
+        "mean octave of the energy, from 2 (12.5-25 MHz) to 7 (0.4-0.8 MHz), is {value}",
+        "lower in frequency",
+        "higher in frequency",
         (2.0, float(LEVELS)),
         0.25,
         _REFERENCE,
+        absent=_NOTHING_LEFT,
         needs_snr_db=6.0,
+        edition=2,
     ),
 )

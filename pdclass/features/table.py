@@ -11,9 +11,16 @@ from pdclass.errors import RefusedError
 from pdclass.features.catalogue import BY_NAME, CATALOGUE, FAMILIES
 from pdclass.features.edges import PLACES, measured_places
 from pdclass.features.feature import Feature
-from pdclass.features.window import ONSET, STEP_NS, Windows, chain_band_hz, prepared
+from pdclass.features.window import ONSET, STEP_NS, Windows, chain_band_hz, counting_noise_v, prepared
 from pdclass.pulses import FloatArray, PulseSet
 
+#: What is measured on all of the own samples, and wrong on a part of them.
+_OF_WHOLE = frozenset(
+    [
+        "tail_ns",
+        *(feature.name for name in ("spectrum", "scales", "ringing", "spread") for feature in FAMILIES[name][0]),
+    ]
+)
 #: So many windows stay in the fast cache of a processor; no result depends on it.
 BATCH = 128
 
@@ -60,12 +67,16 @@ def measured(pulses: PulseSet, names: Sequence[str] | None = None) -> Measured:
     columns = [[feature.name for feature in features].index(name) for name in wanted]
     chain, duration_us = pulses.table["chain"].to_numpy(np.int64), pulses.table["duration_us"].to_numpy(np.float64)
     low_hz, reach_hz = chain_band_hz(pulses.chains)[:, chain]
+    least_v = counting_noise_v(pulses.chains)[chain]
     found = Measured(np.full((len(chain), len(wanted)), np.nan), np.full(len(chain), np.nan), reach_hz)
     for first in range(0, len(chain), BATCH):
         batch = slice(first, first + BATCH)
-        windows, rows = prepared(pulses.waves[batch], duration_us[batch], reach_hz[batch], low_hz[batch])
+        of_chain = reach_hz[batch], low_hz[batch], least_v[batch]
+        windows, rows = prepared(pulses.waves[batch], duration_us[batch], *of_chain)
         if rows.size:
             values = np.concatenate([measure(windows) for _, measure in families], axis=1)
+            whole = np.array([feature.name in _OF_WHOLE for feature in features])
+            values[np.ix_(windows.cut_short, whole)] = np.nan
             found.values[first + rows] = _allowed(values, windows, features)[:, columns]
             found.snr_db[first + rows] = windows.snr_db
     return found
@@ -89,7 +100,8 @@ def measured_edges(pulses: PulseSet, place: int) -> dict[str, object]:
     row = pulses.table.iloc[[place]]
     chain, duration_us = row["chain"].to_numpy(np.int64), row["duration_us"].to_numpy(np.float64)
     low_hz, reach_hz = chain_band_hz(pulses.chains)[:, chain]
-    windows, rows = prepared(pulses.waves[[place]], duration_us, reach_hz, low_hz)
+    least_v = counting_noise_v(pulses.chains)[chain]
+    windows, rows = prepared(pulses.waves[[place]], duration_us, reach_hz, low_hz, least_v)
     if not rows.size:
         return {}
     kept, scale = int(windows.last[0]), float(windows.height_v[0])

@@ -7,13 +7,14 @@ frequency weighing as much as it stands out of it.
 
 from __future__ import annotations
 
+from functools import lru_cache
 from itertools import pairwise
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.feature import Feature
 from pdclass.features.window import ANALYSIS_BAND_HZ, ANALYSIS_RATE_HZ, GUARD, ONSET, STEP_NS, Windows
 from pdclass.pulses import FloatArray, IntArray
@@ -48,14 +49,10 @@ _EARLY_MHZ, _LATE_MHZ = 10.0, 1.0
 _TILTS = 3
 _DB = 10 / np.log(10)
 
-_njit = numba.njit(cache=True, nogil=True)
-
 
 def measure_tilt(windows: Windows) -> FloatArray:
     """The features of this family, (pulses, features): NaN where nothing stands out of the noise, or it is unknown."""
     found = np.full((len(windows), len(TILT)), np.nan)
-    samples = GUARD + _LENGTH
-    angle = 2 * np.pi / _GRID * np.outer(np.arange(samples), np.arange(_BINS))
     starts = np.array([int(np.ceil(edge / _STEP_MHZ)) for edge in EDGES_MHZ])
     _tilts_into(
         found,
@@ -65,13 +62,20 @@ def measure_tilt(windows: Windows) -> FloatArray:
         windows.noise,
         windows.noise_power,
         windows.low_hz,
-        np.stack([np.cos(angle), np.sin(angle)]),
+        _turns(),
         starts,
     )
     return found
 
 
-@_njit
+@lru_cache(maxsize=1)
+def _turns() -> FloatArray:
+    """Cosine and sine of every bin at every sample, (2, samples, bins)."""
+    angle = 2 * np.pi / _GRID * np.outer(np.arange(GUARD + _LENGTH), np.arange(_BINS))
+    return np.stack([np.cos(angle), np.sin(angle)])
+
+
+@compiled
 def slopes(first: FloatArray, second: FloatArray, level: FloatArray, weight: FloatArray) -> tuple[float, float]:
     # pragma: no cover - compiled
     """Both slopes of level = a + b first + c second by weighted least squares; NaN where they cannot be parted."""
@@ -86,14 +90,14 @@ def slopes(first: FloatArray, second: FloatArray, level: FloatArray, weight: Flo
     return (xy * zz - zy * xz) / apart, (zy * xx - xy * xz) / apart
 
 
-@_njit
+@compiled
 def slope(first: FloatArray, level: FloatArray, weight: FloatArray) -> float:  # pragma: no cover - compiled
     """Slope of level = a + b first by weighted least squares."""
     x = first - np.sum(weight * first) / np.sum(weight)
     return float(np.sum(weight * x * level) / np.sum(weight * x * x))
 
 
-@_njit
+@compiled
 def _begin(wave: Samples, low_hz: float, piece: FloatArray) -> None:  # pragma: no cover - compiled
     """Write the first arrival as if the chain's first-order lower corner lay at 0.3 MHz; unchanged where unknown."""
     start = ONSET - GUARD
@@ -107,7 +111,7 @@ def _begin(wave: Samples, low_hz: float, piece: FloatArray) -> None:  # pragma: 
             piece[i - start] = wave[i] + gain * (past - 0.5 * wave[i])
 
 
-@_njit
+@compiled
 def _fade_out(piece: FloatArray, own: int) -> float:  # pragma: no cover - compiled
     """Let what begins with `GUARD` samples fade to nothing `own` samples later; the sum of the squared weights."""
     fade = max(int(_FADE * own), 1)
@@ -120,25 +124,40 @@ def _fade_out(piece: FloatArray, own: int) -> float:  # pragma: no cover - compi
     return energy
 
 
-@_njit
+@compiled
+def _turned_into(sums: FloatArray, piece: FloatArray, turns: FloatArray, first: int, last: int) -> None:
+    # pragma: no cover - compiled
+    """Write the sums of samples times each turn, (2, bins), from the first bin to the last.
+
+    Four samples at a time, each bin's terms added one after the other in their order. Samples: a multiple of four.
+    """
+    sums[:, first:last] = 0.0
+    for part in range(2):
+        total = sums[part, first:last]
+        for n in range(0, piece.size, 4):
+            x, y, z, w = piece[n], piece[n + 1], piece[n + 2], piece[n + 3]
+            a, b = turns[part, n, first:last], turns[part, n + 1, first:last]
+            c, d = turns[part, n + 2, first:last], turns[part, n + 3, first:last]
+            for k in range(total.size):
+                total[k] = (((total[k] + x * a[k]) + y * b[k]) + z * c[k]) + w * d[k]
+
+
+@compiled
 def _power_and_lag(
-    piece: FloatArray, turns: FloatArray, power: FloatArray, lag: FloatArray
+    piece: FloatArray, turns: FloatArray, sums: FloatArray, power: FloatArray, lag: FloatArray
 ) -> None:  # pragma: no cover - compiled
-    """Write |X|² and Re(X* Y) [samples] at every bin, X and Y the transforms of x(n) and n x(n)."""
-    sums = np.zeros((4, power.size))
+    """Write |X|² at every bin, and Re(X* Y) [samples] where delays are fitted; X, Y transforms of x(n) and n x(n)."""
+    _turned_into(sums[:2], piece, turns, 0, power.size)
     for n in range(piece.size):
-        value, moment = piece[n], n * piece[n]
-        for k in range(power.size):
-            sums[0, k] += value * turns[0, n, k]
-            sums[1, k] += value * turns[1, n, k]
-            sums[2, k] += moment * turns[0, n, k]
-            sums[3, k] += moment * turns[1, n, k]
+        piece[n] *= n
+    first, last = int(_DELAY_FROM_MHZ / _STEP_MHZ), int(_FIT_TO_MHZ / _STEP_MHZ) + 1
+    _turned_into(sums[2:], piece, turns, first, last)
     for k in range(power.size):
         power[k] = sums[0, k] ** 2 + sums[1, k] ** 2
         lag[k] = sums[0, k] * sums[2, k] + sums[1, k] * sums[3, k]
 
 
-@_njit
+@compiled
 def _levels_into(
     found: FloatArray, power: FloatArray, noise: FloatArray, starts: IntArray
 ) -> None:  # pragma: no cover - compiled
@@ -157,7 +176,7 @@ def _levels_into(
             found[band] = _DB * np.log(left[band] / mean)
 
 
-@_njit
+@compiled
 def _fits_into(
     found: FloatArray, power: FloatArray, noise: FloatArray, lag: FloatArray, low_hz: float
 ) -> None:  # pragma: no cover - compiled
@@ -196,7 +215,7 @@ def _fits_into(
         found[2] = later
 
 
-@_njit
+@compiled
 def _missed(left: FloatArray, weight: FloatArray) -> float:  # pragma: no cover - compiled
     """Weighted rms of what a fit leaves, about its mean."""
     total = np.sum(weight)
@@ -204,13 +223,13 @@ def _missed(left: FloatArray, weight: FloatArray) -> float:  # pragma: no cover 
     return float(np.sqrt(np.sum(weight * (left - mean) ** 2) / total))
 
 
-@_njit
+@compiled
 def _pass_db(f_mhz: float) -> float:  # pragma: no cover - compiled
     """What the analysis band's Gaussian low-pass took away [dB]."""
     return float(_DB * np.log(2.0) * (f_mhz * 1e6 / ANALYSIS_BAND_HZ[1]) ** 2)
 
 
-@_njit
+@compiled
 def _tilts_into(
     found: FloatArray,
     waves: Samples,
@@ -224,14 +243,16 @@ def _tilts_into(
 ) -> None:  # pragma: no cover - compiled
     bins, every = turns.shape[2], (noise_power.shape[1] - 1) * 2 // _GRID
     piece, power, lag, floor = np.empty(turns.shape[1]), np.empty(bins), np.empty(bins), np.empty(bins)
-    bands = starts.size - 1
+    bands, sums = starts.size - 1, np.zeros((4, bins))
     for row in range(len(waves)):
         if not noise[row] > 0 or last[row] < ONSET + _LENGTH:
             continue
         low_hz = corner_hz[row]
         _begin(waves[row], low_hz, piece)
-        energy = _fade_out(piece, min(end[row] - ONSET, _LENGTH))
-        _power_and_lag(piece, turns, power, lag)
+        own = min(end[row] - ONSET, _LENGTH)
+        energy = _fade_out(piece, own)
+        # what follows is zero
+        _power_and_lag(piece[: (GUARD + own + 3) // 4 * 4], turns, sums, power, lag)
         for k in range(bins):
             square, floor[k] = (k * _STEP_MHZ * 1e6) ** 2, noise_power[row, k * every]
             floor[k] *= energy / (end[row] - ONSET + GUARD)
@@ -241,17 +262,22 @@ def _tilts_into(
         _fits_into(found[row, bands:], power, floor, lag, low_hz)
 
 
+#: What a missing tilt means.
+_NO_TILT = "the level has a hill, as of a pulse that rings, or too little of the band stands out of the noise"
+
+
 def _level(low: float, high: float) -> Feature:
     return Feature(
         f"first_1p2_level_{low:g}_{high:g}_db".replace(".", "p"),
         "dB",
         f"level of the first 1.2 µs at {low:g}-{high:g} MHz over that of the whole band",
-        f"level of the first arrival at {low:g}-{high:g} MHz {{value}}",
+        f"level of the first 1.2 µs at {low:g}-{high:g} MHz over that of the whole band is {{value}}",
         "higher",
         "lower",
         (-60.0, 30.0),
         1.5,
         "own definition",
+        absent="too little power in this band",
         needs_hz=0.8 * high * 1e6,
         needs_snr_db=6.0,
     )
@@ -263,12 +289,13 @@ TILT = (
         "first_root_tilt_db",
         "dB/√MHz",
         "tilt of the first arrival's level against the root of the frequency, the mark of skin effect",
-        "tilt against the root of the frequency {value}",
-        "rises more",
-        "falls more steeply",
+        "tilt of the first arrival against the root of the frequency (skin effect) {value}",
+        "more upward",
+        "more downward",
         (-500.0, 500.0),
         3.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
+        absent=_NO_TILT,
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
@@ -276,12 +303,13 @@ TILT = (
         "first_straight_tilt_db",
         "dB/MHz",
         "what is left of that tilt against the frequency itself, the mark of screens and dielectric",
-        "straight tilt {value}",
-        "rises more",
-        "falls more steeply",
+        "tilt of the first arrival against the frequency itself (screens, dielectric) {value}",
+        "more upward",
+        "more downward",
         (-200.0, 200.0),
         0.6,
         "own definition",
+        absent=_NO_TILT,
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=20.0,
     ),
@@ -289,12 +317,14 @@ TILT = (
         "first_dispersion_ns",
         "ns",
         "how much later 1 MHz arrives than 10 MHz, if the delay runs as that of skin effect",
-        "1 MHz comes {value} after 10 MHz",
+        "first arrival at 1 MHz comes {value} after that at 10 MHz",
         "later",
         "earlier",
         (-300.0, 300.0),
         8.0,
         "exp(-K √s): R. L. Wigington, N. S. Nahman, Proc. IRE 45, 166-174, 1957 (from memory)",
+        absent="the delay does not run as that of skin effect, or too little of the band stands out of the noise",
+        below_zero="that is before it",
         needs_hz=_FIT_REACH_HZ,
         needs_snr_db=12.0,
     ),

@@ -6,10 +6,10 @@ from collections.abc import Sequence
 from dataclasses import dataclass, fields
 from functools import cached_property
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.features.carriers import fitted_tones, without_tones
 from pdclass.features.kernels import median, median_size, place_of_largest
 from pdclass.features.transforms import spectra, waves_of
@@ -29,6 +29,8 @@ BAND = slice(*np.searchsorted(_BINS_HZ, (ANALYSIS_BAND_HZ[0], np.nextafter(ANALY
 BAND_HZ = _BINS_HZ[BAND]
 #: The smallest share of a window that must be recorded.
 _LEAST_KNOWN = 4
+#: A pulse of which so few samples were recorded, though it goes on, is not measured as a whole.
+_SHORTEST_RECORD = 100
 #: An excursion of so many noise levels before the onset is another event.
 _BUSY_LEVELS = 9.0
 _BUSY_MARGIN = 30
@@ -82,6 +84,11 @@ class Windows:
         """Noise spectrum for one sample, (pulses, bins); NaN where it is unknown."""
         return np.asarray(self.noise_power / (self.end - ONSET + GUARD)[:, None].astype(np.float32))
 
+    @property
+    def cut_short(self) -> NDArray[np.bool_]:
+        """Where the record ends within the pulse's own samples and less than 1 us after its onset, (pulses,)."""
+        return np.asarray((self.end == self.last) & (self.last - ONSET < _SHORTEST_RECORD))
+
     @cached_property
     def own(self) -> WaveArray:
         """The own samples with a short lead, (pulses, SPECTRUM_FFT), faded out so that the cut adds nothing."""
@@ -111,8 +118,22 @@ def chain_band_hz(chains: Sequence[Chain]) -> FloatArray:
     return np.array([(low, min(high, 0.4 * chain.rate_hz)) for (low, high), chain in zip(bands, chains, strict=True)]).T
 
 
+def counting_noise_v(chains: Sequence[Chain]) -> FloatArray:
+    """Noise that rounding to whole counts adds within the analysis band [V], (chains,); 0 = size of a count unknown.
+
+    volts_per_count/√12 for white noise up to half the rate, of which the low-pass keeps a share. The median size of
+    a pre-trigger that mostly stands on one count would tell of less.
+    """
+    found = np.zeros(len(chains))
+    for place, chain in enumerate(chains):
+        top_hz = chain.rate_hz / 2
+        kept = np.exp(-np.log(2) * (np.linspace(0, top_hz, 257) / ANALYSIS_BAND_HZ[1]) ** 2).mean()
+        found[place] = abs(chain.volts_per_count or 0.0) * np.sqrt(kept / 12)
+    return found
+
+
 def prepared(
-    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray
+    waves_v: WaveArray, duration_us: FloatArray, reach_hz: FloatArray, low_hz: FloatArray, least_v: FloatArray
 ) -> tuple[Windows, IntArray]:
     """Make stored windows ready for measuring, and say which: those with nothing to measure are left out.
 
@@ -121,6 +142,7 @@ def prepared(
     waves_v : (pulses, samples) 20 us windows with the onset a quarter in [V]; NaN = not recorded.
     duration_us : (pulses,) length of the own samples [us]; NaN or not positive = to the end of the window.
     reach_hz, low_hz : (pulses,) what their chains carry, as of `chain_band_hz`.
+    least_v : (pulses,) the noise is no lower than this, as of `counting_noise_v` [V].
     """
     samples = waves_v.shape[1]
     filled, known, first, last, slope = _filled(np.ascontiguousarray(waves_v, np.float32))
@@ -131,7 +153,7 @@ def prepared(
     if rows.size < len(filled):
         filled, slope = filled[rows], slope[rows]
     raw = _to_analysis_band(filled, slope)
-    wave, start, stop, (level, noise_v) = _background(raw, first[rows])
+    wave, start, stop, (level, noise_v) = _background(raw, first[rows], least_v[rows])
     peak, height_v, before = _scaled(wave, raw, start, stop, end[rows], level)
     measurable = height_v != 0
     noise = noise_v / np.where(measurable, np.abs(height_v), np.nan)
@@ -142,7 +164,7 @@ def prepared(
     return (windows, rows) if measurable.all() else (windows.take(measurable), rows[measurable])
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _filled(
     waves: WaveArray,
 ) -> tuple[WaveArray, IntArray, IntArray, IntArray, FloatArray]:  # pragma: no cover - compiled
@@ -174,7 +196,7 @@ def _filled(
     return filled, known, first, last, rise
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _fill(wave: WaveArray) -> tuple[int, int]:  # pragma: no cover - compiled
     """Put the median where nothing was recorded; the first recorded sample, and one past the last."""
     recorded = np.abs(wave) < np.inf
@@ -203,7 +225,7 @@ def _to_analysis_band(filled: WaveArray, rise: FloatArray) -> WaveArray:
     return raw
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover - compiled
     """Add to each wave a line from 0 that rises by so much over the window."""
     for r in range(len(waves)):
@@ -212,7 +234,9 @@ def _put_back(waves: WaveArray, rise: FloatArray) -> None:  # pragma: no cover -
             waves[r, i] += step * np.float32(i)
 
 
-def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
+def _background(
+    raw: WaveArray, first: IntArray, least_v: FloatArray
+) -> tuple[WaveArray, IntArray, IntArray, FloatArray]:
     """The waves without carriers, the quiet stretch before each onset (start, stop), its level and noise (2, pulses).
 
     Carriers are fitted to the whole pre-trigger; where another event then stands out of what is left, to its
@@ -220,7 +244,7 @@ def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, I
     """
     start, stop = np.minimum(first + GUARD, ONSET - GUARD), np.full(len(raw), ONSET - GUARD)
     wave = without_tones(raw, fitted_tones(raw, start, stop))
-    level, begin, length = _quiet(wave, start, stop)
+    level, begin, length = _quiet(wave, start, stop, least_v)
     busy = np.flatnonzero(length < stop - start)
     start, stop = start + begin, start + begin + length
     if busy.size:
@@ -228,18 +252,19 @@ def _background(raw: WaveArray, first: IntArray) -> tuple[WaveArray, IntArray, I
         left = without_tones(again, fitted_tones(again, start[busy], stop[busy]))
         wave[busy] = left
         beside = np.where(length > 0, start, first)[busy]
-        level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy])[0]
+        level[:, busy] = _quiet(left, beside, np.where(length > 0, stop, ONSET)[busy], least_v[busy])[0]
     level[1, length < _SHORTEST_QUIET] = np.nan
     return wave, start, stop, level
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _quiet(
-    waves: WaveArray, start: IntArray, stop: IntArray
+    waves: WaveArray, start: IntArray, stop: IntArray, least: FloatArray
 ) -> tuple[FloatArray, IntArray, IntArray]:  # pragma: no cover - compiled
     """Level and noise of stretches, (2, rows), and their longest parts without an event (beginning, length).
 
-    A margin beside each excursion is left out, too; a part is empty where it is shorter than 100 samples.
+    The noise is `least` at the least. A margin beside each excursion is left out, too; a part is empty where it is
+    shorter than 100 samples.
     """
     rows = len(waves)
     level, begin, length = np.zeros((2, rows)), np.zeros(rows, np.int64), np.zeros(rows, np.int64)
@@ -249,7 +274,7 @@ def _quiet(
             continue
         level[0, r] = median(before)
         deviation = before - np.float32(level[0, r])
-        level[1, r] = median_size(deviation) / _MEDIAN_SIZE
+        level[1, r] = max(median_size(deviation) / _MEDIAN_SIZE, least[r])
         limit, loud = np.float32(_BUSY_LEVELS * level[1, r]), np.int32(0)
         for i in range(before.size):
             loud += np.int32(abs(deviation[i]) > limit)
@@ -261,7 +286,7 @@ def _quiet(
     return level, begin, length
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _widest_gap(deviation: WaveArray, limit: float) -> tuple[int, int]:  # pragma: no cover - compiled
     """Beginning and length of the widest gap between excursions, less the margin beside each."""
     begin, length, former = 0, 0, -_BUSY_MARGIN
@@ -274,7 +299,7 @@ def _widest_gap(deviation: WaveArray, limit: float) -> tuple[int, int]:  # pragm
     return begin, length
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _scaled(
     wave: WaveArray, raw: WaveArray, start: IntArray, stop: IntArray, end: IntArray, level: FloatArray
 ) -> tuple[IntArray, FloatArray, WaveArray]:  # pragma: no cover - compiled
@@ -300,7 +325,7 @@ def _scaled(
     return peak, height, before
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pragma: no cover - compiled
     """Power of spectra given as pairs of floats, times a share each, as a running mean over 33 bins, mirrored."""
     rows, bins = len(spectrum), spectrum.shape[1] // 2
@@ -323,7 +348,7 @@ def _smoothed_power(spectrum: WaveArray, share: FloatArray) -> WaveArray:  # pra
     return smooth
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     """Power of spectra given as pairs of floats."""
     power = np.empty((len(spectrum), spectrum.shape[1] // 2), np.float32)
@@ -334,7 +359,7 @@ def _power(spectrum: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     return power
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _own(wave: WaveArray, end: IntArray) -> WaveArray:  # pragma: no cover - compiled
     own = np.zeros((len(wave), SPECTRUM_FFT), np.float32)
     for r in range(len(wave)):

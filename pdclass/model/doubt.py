@@ -6,10 +6,10 @@ import math
 from fractions import Fraction
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.errors import InputError, PdclassError
 from pdclass.pulses import FloatArray, IntArray
 
@@ -32,7 +32,7 @@ def log_probabilities(margins: FloatArray, temperature: float, shift: FloatArray
     return scaled
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _normalise(scaled: FloatArray) -> None:
     # pulse by pulse: vectorised exponentials may round differently at the end of a batch
     for row in range(scaled.shape[0]):
@@ -52,7 +52,7 @@ def probabilities(margins: FloatArray, temperature: float, shift: FloatArray) ->
     return out
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _exponentiate(values: FloatArray) -> None:
     for row in range(values.shape[0]):
         for k in range(values.shape[1]):

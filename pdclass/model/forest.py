@@ -13,10 +13,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass, fields
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.errors import InputError, PdclassError, RefusedError, complaint
 from pdclass.pulses import FloatArray
 
@@ -158,7 +158,7 @@ def _check_tree(forest: Forest, tree: int, start: int, stop: int) -> None:
         _refuse_unless(fine=False, field=f"tree {tree}, node {place}", expected=expected, found=found)
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _tree_fault(left: NDArray[np.int32], right: NDArray[np.int32], max_depth: int) -> tuple[int, int]:
     nodes = left.size
     reached = np.zeros(nodes, np.int64)
@@ -223,7 +223,7 @@ def margins(forest: Forest, values: FloatArray) -> FloatArray:
     return out
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _add_trees(
     rows: FloatArray,
     tree_start: NDArray[np.int64],

@@ -16,10 +16,10 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.model.doubt import group_quantile
 from pdclass.model.forest import checked_values
 from pdclass.pulses import FloatArray, IntArray, WaveArray
@@ -118,7 +118,7 @@ def _distances(
     return out
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _nearest(
     columns: FloatArray,
     of_reference: IntArray,
@@ -149,7 +149,7 @@ def _nearest(
         out[row] = best[neighbours - 1]
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _add_gaps(x: float, known: FloatArray, total: FloatArray, shared: FloatArray) -> None:
     if np.isnan(x):
         return

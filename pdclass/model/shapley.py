@@ -12,10 +12,10 @@ The definition is the path-dependent one: S. Lundberg, G. Erion, S.-I. Lee, arXi
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from pdclass.compiled import compiled
 from pdclass.model.forest import Forest, checked_values
 from pdclass.pulses import FloatArray, IntArray
 
@@ -61,7 +61,7 @@ def _quadrature(most: int) -> tuple[FloatArray, FloatArray]:
     return node, weight
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _family(
     tree_start: NDArray[np.int64], left: NDArray[np.int32], right: NDArray[np.int32]
 ) -> tuple[IntArray, IntArray, NDArray[np.bool_], int]:
@@ -84,7 +84,7 @@ def _family(
     return parent, tree_of, is_left, summed
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _leaf_games(
     tree_start: NDArray[np.int64],
     tree_class: NDArray[np.int16],
@@ -126,7 +126,7 @@ def _leaf_games(
     return leaf_class, value[leaves], offset, which[:end], low[:end], high[:end], missing[:end], cover[:end]
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _add_bases(leaves: _Leaves, base: FloatArray) -> None:
     leaf_class, leaf_value, offset, _, _, _, _, cover = leaves
     for leaf in range(leaf_value.size):
@@ -136,7 +136,7 @@ def _add_bases(leaves: _Leaves, base: FloatArray) -> None:
         base[leaf_class[leaf]] += product
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _add_shares(rows: FloatArray, leaves: _Leaves, node: FloatArray, weight: FloatArray, shares: FloatArray) -> None:
     leaf_class, leaf_value, offset, which, low, high, missing, cover = leaves
     n, n_classes, n_features = shares.shape
@@ -159,7 +159,7 @@ def _add_shares(rows: FloatArray, leaves: _Leaves, node: FloatArray, weight: Flo
             shares[start + r] = summed[:, :, r]
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _meet(x: FloatArray, low: float, high: float, missing: bool, meets: FloatArray, size: int) -> None:
     """1 where a pulse satisfies all conditions of a path on one feature, else 0."""
     if_missing = 1.0 if missing else 0.0
@@ -168,7 +168,7 @@ def _meet(x: FloatArray, low: float, high: float, missing: bool, meets: FloatArr
         meets[r] = if_missing if np.isnan(x[r]) else inside
 
 
-@numba.njit(cache=True, nogil=True)
+@compiled
 def _add_node(
     t: float,
     scaled: float,

@@ -10,6 +10,7 @@ import numpy as np
 import scipy.fft
 
 from pdclass.features import CATALOGUE, feature_table, measured_edges
+from pdclass.features.modes import MOST, oscillations
 from pdclass.features.scales import scale_gains
 from pdclass.pulses import FloatArray, PulseSet
 
@@ -19,7 +20,17 @@ _FFT, _GRAM_FFT = 2048, 4096
 _LEVELS, _PADDED = 7, 2048
 #: The echogram is drawn up to here [us]; its smoothing [MHz], and what counts little in the division.
 GRAM_US = 5.0
+#: Length of the first arrival whose tilt is drawn [us].
+_ARRIVAL_US = 1.2
 _BEGINNING_US, _SMOOTH_MHZ, _REGULAR = 0.8, 6.0, 0.01
+
+
+class FirstArrival(NamedTuple):
+    """Frequencies [MHz], level over their mean power [dB] and delay from the first sample [ns], all (bins,)."""
+
+    mhz: FloatArray
+    level_db: FloatArray
+    delay_ns: FloatArray
 
 
 class FeatureExample(NamedTuple):
@@ -110,6 +121,33 @@ def scale_shares(example: FeatureExample) -> tuple[FloatArray, FloatArray]:
     power = np.abs(np.fft.rfft(example.own, _PADDED)) ** 2
     energies = (scale_gains(_LEVELS, power.size) @ power)[1:]
     return np.arange(2.0, 2 + energies.size), energies / energies.sum()
+
+
+def first_arrival(example: FeatureExample) -> FirstArrival:
+    """Level and delay of the first 1.2 µs, its end faded out, bin by bin."""
+    piece = example.between(-LEAD_US, min(example.at["end"], _ARRIVAL_US)).copy()
+    fade = round(0.4 * (piece.size - LEAD_US / example.step_us))
+    piece[piece.size - fade :] *= 0.5 + 0.5 * np.cos(np.pi * (np.arange(fade) + 0.5) / fade)
+    spectrum = scipy.fft.rfft(piece, _FFT)
+    moment = scipy.fft.rfft(piece * np.arange(piece.size), _FFT)
+    power = np.abs(spectrum) ** 2
+    mhz = scipy.fft.rfftfreq(_FFT, example.step_us)
+    shown = (mhz >= 0.5) & (mhz <= 25)
+    delay_ns = (np.conj(spectrum) * moment).real[shown] / power[shown] * example.step_us * 1e3
+    return FirstArrival(mhz[shown], 10 * np.log10(power[shown] / power[shown].mean()), delay_ns)
+
+
+def strongest_mode(example: FeatureExample) -> tuple[FloatArray, FloatArray]:
+    """Times [us] of what modes are fitted to, and the fitted wave of the strongest; zeros where nothing rings."""
+    first = int(np.argmin(np.abs(example.time_us - example.at["peak"])))
+    last = min(first + MOST, int(np.searchsorted(example.time_us, example.at["end"])))
+    time_us, wave = example.time_us[first:last], example.wave[first:last]
+    mhz, quality = example.values["mode_mhz"], example.values["mode_q"]
+    if not np.isfinite(mhz):
+        return time_us, np.zeros(time_us.size)
+    found = oscillations(wave, 1e6 / example.step_us)
+    nearest = min(found, key=lambda mode: abs(mode.frequency_hz / 1e6 - mhz) + abs(mode.quality - quality))
+    return time_us, nearest.wave
 
 
 def energy_so_far(example: FeatureExample) -> tuple[FloatArray, FloatArray]:

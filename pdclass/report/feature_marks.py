@@ -22,7 +22,7 @@ def reading(axes: Panel, names: Sequence[str], examples: Sequence[FeatureExample
     axes.set_axis_off()
     axes.set_xlim(0, 1)
     axes.set_ylim(max(len(names), 11) + 0.5, -0.5)
-    right = np.linspace(1.0, 0.76, len(examples)) if len(examples) > 1 else [1.0]
+    right = np.linspace(1.0, 0.72, len(examples)) if len(examples) > 1 else [1.0]
     for place, example in zip(right[::-1], examples, strict=True):
         axes.text(place, 0, example.label, ha="right", fontsize=8, color=COLOURS[example.label], fontweight="bold")
     for row, name in enumerate(names, start=1):

@@ -12,11 +12,14 @@ from pdclass.report.feature_examples import (
     GRAM_US,
     LEAD_US,
     FeatureExample,
+    FirstArrival,
     bands,
     echogram,
     energy_so_far,
+    first_arrival,
     levels_db,
     scale_shares,
+    strongest_mode,
 )
 from pdclass.report.feature_marks import SMALL, arrow, dots, draw_wave, reading, said, words_at
 from pdclass.report.plots import COLOURS, EDGE, Panel, panels_figure
@@ -53,12 +56,11 @@ def _edges(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
     at = {name: value * 1e3 for name, value in example.at.items()}
     span = float(np.nanmax([at["fall_10"], at["fall_50"], 100.0]))
     draw_wave(flanks, example, (-0.35 * span / 1e3, 1.75 * span / 1e3), scale=1e3)
-    for level in (0.1, 0.25, 0.5, 0.9, 1.0):
+    for level in (0.1, 0.5, 0.9, 1.0):
         flanks.axhline(level, color="#bbbbbb", lw=0.6, ls=":")
-    flanks.set_yticks([0, 0.1, 0.25, 0.5, 0.9, 1.0], ["base 0", "10 %", "25 %", "50 %", "90 %", "peak"])
+    flanks.set_yticks([0, 0.1, 0.5, 0.9, 1.0], ["base 0", "10 %", "50 %", "90 %", "peak"])
     for name, first, last, level in (
         ("width_50_ns", at["rise_50"], at["fall_50"], 0.5),
-        ("width_25_ns", at["rise_25"], at["fall_25"], 0.25),
         ("width_10_ns", at["foot_10"], at["fall_10"], 0.1),
     ):
         arrow(flanks, first, last, level, "")
@@ -94,8 +96,7 @@ def _tail(axes: Panel, example: FeatureExample) -> None:
 
 
 def _spectrum(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
-    shares, tilt = panels
-    example = examples[0]
+    (shares,), example = panels, examples[0]
     values = example.values
     for each in reversed(examples):
         mhz, level, noise = levels_db(each)
@@ -119,25 +120,6 @@ def _spectrum(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> No
     shares.set_xlabel("frequency [MHz]; share of the power by band above")
     shares.set_ylabel("level [dB]")
     shares.legend(frameon=False, fontsize=SMALL, loc="lower left", bbox_to_anchor=(-0.02, 1.0), ncols=3)
-    _tilt(tilt, example)
-
-
-def _tilt(axes: Panel, example: FeatureExample) -> None:
-    """Level against the root of the frequency, with the straight line whose slope is the feature."""
-    mhz, level, noise = levels_db(example)
-    used = (mhz >= 1) & (mhz <= 15)
-    clear = used & (level > noise + 10) & (level > -40)
-    axes.plot(np.sqrt(mhz[used]), level[used], color=COLOURS[example.label], lw=1.3)
-    lines = (("slope_root_db", np.sqrt(mhz), "-"), ("slope_linear_db", mhz, "--"))
-    for name, axis, dashes in lines:
-        slope = example.values.get(name, np.nan)
-        if np.isfinite(slope) and clear.any():
-            line = slope * (axis - axis[clear].mean()) + level[clear].mean()
-            axes.plot(np.sqrt(mhz[clear]), line[clear], color=EDGE, lw=1.2, ls=dashes, label=said(example, name))
-    axes.set_xticks(np.sqrt([1, 2, 4, 6, 10, 15]), ["1", "2", "4", "6", "10", "15"])
-    axes.set_xlabel("frequency [MHz], by its root")
-    axes.set_ylim(-60, 18)
-    axes.legend(frameon=False, fontsize=SMALL, loc="upper right")
 
 
 def _scales(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
@@ -189,23 +171,6 @@ def _ringing(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> Non
     axes.set_xlabel("time from onset [µs]")
 
 
-def _echoes(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
-    (axes,), example = panels, examples[0]
-    delay, ratio = (example.values.get(name, np.nan) for name in ("echo_delay_us", "echo_ratio"))
-    draw_wave(axes, example, (-0.3, 7.0))
-    if np.isfinite(delay):
-        copy = (example.time_us >= -LEAD_US) & (example.time_us < min(3.0, example.at["end"]))
-        time = example.time_us[copy] + delay
-        axes.plot(time, ratio * example.wave[copy], color=EDGE, lw=1.2, ls="--", label="the pulse, delayed and scaled")
-        peak = example.at["peak"]
-        arrow(axes, peak, peak + delay, 1.04, said(example, "echo_delay_us"))
-        axes.plot([peak + delay, peak + delay], [1.04, ratio], color="#bbbbbb", lw=0.8)
-        words_at(axes, peak + delay + 0.12, ratio * 1.1, said(example, "echo_ratio"), below=ratio < 0)
-        axes.legend(frameon=False, fontsize=8, loc="upper right")
-    axes.set_ylim(-0.65, 1.22)
-    axes.set_xlabel("time from onset [µs]")
-
-
 def _spread(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
     _energy(panels[0], examples[0])
     _late(panels[1], examples[0])
@@ -226,22 +191,15 @@ def _energy(axes: Panel, example: FeatureExample) -> None:
         fontsize=SMALL,
         arrowprops={"arrowstyle": "-", "lw": 0.6, "color": _GREY},
     )
-    axes.axvspan(peak + 0.2, peak + 1.2, color="#f1efe6", lw=0)
-    axes.text(peak + 0.7, 0.88, said(example, "late_energy"), ha="center", fontsize=SMALL)
     arrow(axes, 0.0, peak, 1.1, said(example, "onset_to_peak_ns"), align="left")
     centre = float(np.sum(time[1:] * np.diff(passed)))
     length = values.get("equivalent_length_ns", np.nan) / 1e3
     arrow(axes, centre - length, centre + length, -0.14, "± " + said(example, "equivalent_length_ns"), below=True)
-    limit = max(0.1, 4 * example.noise)
-    strong = example.time_us[(np.abs(example.wave) > limit) & (example.time_us >= 0)]
-    strong = strong[strong < example.at["end"]]
-    if strong.size:
-        arrow(axes, float(strong[0]), float(strong[-1]), -0.46, said(example, "standing_out_ns"), below=True)
     rms = 1 / values.get("crest_factor", np.nan)
     axes.plot([0, 2], [rms, rms], color=EDGE, lw=0.9, ls="--")
     axes.text(2.02, rms, f"rms of 2 µs = 1/crest_factor ({1 / rms:.2f})", va="center", fontsize=SMALL)
     axes.set_xlim(-0.3, 5.2)
-    axes.set_ylim(-0.75, 1.3)
+    axes.set_ylim(-0.45, 1.3)
     axes.legend(frameon=False, fontsize=SMALL, loc="center right", bbox_to_anchor=(1.0, 0.6))
     axes.set_xlabel("time from onset [µs]")
 
@@ -262,7 +220,8 @@ def _late(axes: Panel, example: FeatureExample) -> None:
         value = example.values[name]
         if np.isfinite(value):
             axes.plot([peak + first, peak + last], [value, value], color=COLOURS[example.label], lw=2.6)
-            axes.text(peak + first, value + 1.0 + 8.5 * (number % 2), f"{name}\n{value:.1f} dB", fontsize=7)
+            side, shift = ("bottom", 1.0) if number % 2 else ("top", -1.5)
+            axes.text(peak + first, value + shift, f"{name}\n{value:.1f} dB", va=side, fontsize=7)
     axes.set_xlim(-0.3, 6.7)
     axes.set_ylim(floor - 12, 16)
     axes.set_ylabel("[dB]")
@@ -274,7 +233,7 @@ def _arrival(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> Non
     for example in examples:
         shown = (example.time_us >= -0.1) & (example.time_us <= 0.75)
         waves.plot(example.time_us[shown] * 1e3, example.wave[shown], color=COLOURS[example.label], lw=1.5)
-    lengths = sorted({name.split("_")[1] for name in examples[0].values if name.startswith("first_")})
+    lengths = sorted({name.split("_")[1] for name in examples[0].values if "_delay_" in name and name[0] == "f"})
     for number, length in enumerate(lengths):
         dashes = ("--", "-")[number % 2]
         waves.axvline(float(length.replace("p", ".")) * 1e3, color=EDGE, lw=1.0, ls=dashes)
@@ -305,20 +264,15 @@ def _copies(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None
     example = examples[0]
     _echogram(gram_panel, example)
     _likeness(likeness, example)
-    for number, colour in ((1, COLOURS[example.label]), (2, COLOURS["local"])):
-        for name, low, high in bands(example.values, f"copy_{number}_level_{_NUMBERS}_db"):
-            value = example.values[name]
-            if np.isfinite(value):
-                levels.plot([low, high], [value, value], color=colour, lw=2.4, ls=("-", "--")[number - 1])
-        levels.plot([], [], color=colour, lw=2.4, ls=("-", "--")[number - 1], label=f"copy {number}")
+    for name, low, high in bands(example.values, f"copy_1_level_{_NUMBERS}_db"):
+        levels.plot([low, high], [example.values[name]] * 2, color=COLOURS[example.label], lw=2.4)
     levels.axhline(0, color="#999999", lw=0.6)
     levels.set_xscale("log")
     levels.set_xticks([1, 2.5, 5, 9, 14], ["1", "2.5", "5", "9", "14"])
     levels.minorticks_off()
     levels.set_xlabel("band [MHz]")
-    levels.set_ylabel("copy over pulse [dB]")
+    levels.set_ylabel("copy 1 over pulse [dB]")
     levels.margins(y=0.35)
-    levels.legend(frameon=False, fontsize=SMALL)
 
 
 def _echogram(axes: Panel, example: FeatureExample) -> None:
@@ -365,6 +319,79 @@ def _likeness(axes: Panel, example: FeatureExample) -> None:
     axes.legend(frameon=False, fontsize=SMALL)
 
 
+def _tilt(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
+    levels, fits, delays = panels
+    for example in examples:
+        colour = COLOURS[example.label]
+        for name, low, high in bands(example.values, f"first_1p2_level_{_NUMBERS}_db"):
+            levels.plot([low, high], [example.values[name]] * 2, color=colour, lw=2.4)
+        levels.plot([], [], color=colour, lw=2.4, label=example.label)
+        arrival = first_arrival(example)
+        _along_root(fits, example, arrival)
+        _along_inverse_root(delays, example, arrival)
+    levels.set_xscale("log")
+    levels.set_xticks([0.5, 1, 3, 10, 25], ["0.5", "1", "3", "10", "25"])
+    levels.minorticks_off()
+    levels.set_xlabel("band [MHz]")
+    levels.set_ylabel("level over the whole band [dB]")
+    levels.legend(frameon=False, fontsize=SMALL, loc="lower left")
+    for axes in (fits, delays):
+        axes.legend(frameon=False, fontsize=SMALL, loc="lower left", bbox_to_anchor=(-0.02, 1.0), borderpad=0)
+    fits.set_xticks(np.sqrt([0.7, 2, 4, 6, 10]), ["0.7", "2", "4", "6", "10"])
+    fits.set_xlabel("frequency [MHz], by its root")
+    fits.set_ylabel("level [dB]; dashed: fit")
+    delays.set_xticks(1 / np.sqrt([1, 2.5, 4, 10]), ["1", "2.5", "4", "10"])
+    delays.set_xlabel("frequency [MHz], by its inverse root")
+    delays.set_ylabel("later than at 10 MHz [ns]; dashed: fit")
+
+
+def _along_root(axes: Panel, example: FeatureExample, arrival: FirstArrival) -> None:
+    """Level against the root of the frequency, with both tilts as fitted."""
+    used = (arrival.mhz >= 0.7) & (arrival.mhz <= 10)
+    mhz, level = arrival.mhz[used], arrival.level_db[used]
+    root, straight = (example.values.get(name, np.nan) for name in ("first_root_tilt_db", "first_straight_tilt_db"))
+    words = f"{root:+.1f} dB/√MHz {straight:+.2f} dB/MHz" if np.isfinite(root) else "no such law fits"
+    axes.plot(np.sqrt(mhz), level, color=COLOURS[example.label], lw=1.5, label=f"{example.label}: {words}")
+    fit = root * np.sqrt(mhz) + straight * mhz
+    axes.plot(np.sqrt(mhz), fit + np.median(level - fit), color=EDGE, lw=1.0, ls="--")
+
+
+def _along_inverse_root(axes: Panel, example: FeatureExample, arrival: FirstArrival) -> None:
+    """Delay against the inverse root of the frequency: a straight line is what skin effect makes."""
+    # hollows hardly weigh in the fit; their delays are far off and would hide the others
+    clear = arrival.level_db > arrival.level_db.max() - 20
+    used = (arrival.mhz >= 2.5) & (arrival.mhz <= 10) & clear
+    mhz, delay = arrival.mhz[used], arrival.delay_ns[used]
+    later = example.values.get("first_dispersion_ns", np.nan)
+    words = f"{later:.0f} ns from 10 to 1 MHz" if np.isfinite(later) else "no such law fits"
+    place = 1 / np.sqrt(mhz)
+    line = later * (1 / np.sqrt(np.append(mhz, 1.0)) - np.sqrt(0.1)) / (1 - np.sqrt(0.1))
+    shift = np.median(delay - line[:-1]) if np.isfinite(later) else delay[-1]
+    axes.plot(
+        place,
+        delay - shift,
+        color=COLOURS[example.label],
+        marker=".",
+        ms=3,
+        ls="none",
+        label=f"{example.label}: {words}",
+    )
+    axes.plot(1 / np.sqrt(np.append(mhz, 1.0)), line, color=EDGE, lw=1.0, ls="--")
+
+
+def _modes(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
+    for axes, example in zip(panels, examples, strict=False):
+        draw_wave(axes, example, (-0.15, example.at["peak"] + 2.6))
+        time_us, ringing = strongest_mode(example)
+        axes.axvspan(time_us[0], time_us[-1], color="#faf9f4", lw=0)
+        if np.isfinite(example.values.get("mode_mhz", np.nan)):
+            axes.plot(time_us, ringing, color=EDGE, lw=1.2, ls="--", label="its strongest damped oscillation")
+            axes.legend(frameon=False, fontsize=SMALL, loc="center right", bbox_to_anchor=(1.0, 0.75))
+        words = [said(example, name) for name in ("mode_mhz", "mode_q", "mode_share")]
+        axes.text(0.98, 0.97, "\n".join(words), transform=axes.transAxes, ha="right", va="top", fontsize=SMALL)
+        axes.set_xlabel("time from onset [µs]; shaded: what is fitted")
+
+
 def _plain(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
     """A family without a drawing of its own: the waves that its values are of."""
     (axes,) = panels
@@ -375,11 +402,12 @@ def _plain(panels: Sequence[Panel], examples: Sequence[FeatureExample]) -> None:
 
 _DRAWINGS: Mapping[str, tuple[Draw, tuple[float, ...]]] = {
     "edges": (_edges, (1.25, 0.75)),
-    "spectrum": (_spectrum, (1.2, 0.8)),
+    "spectrum": (_spectrum, (2.0,)),
     "scales": (_scales, (2.0,)),
     "ringing": (_ringing, (2.0,)),
-    "echoes": (_echoes, (2.0,)),
     "spread": (_spread, (1.1, 0.95)),
     "arrival": (_arrival, (0.8, 1.2)),
     "copies": (_copies, (1.0, 0.6, 0.5)),
+    "tilt": (_tilt, (0.65, 0.75, 0.75)),
+    "modes": (_modes, (1.0, 1.0)),
 }

@@ -192,6 +192,7 @@ def reason_sentence(
         found = f"{feature.meaning}: {_cause(feature, seen)}; {_absence(place, pair, wording)}"
     else:
         stated = feature.sentence.format(value=quantity(value, feature.unit))
+        stated += f", {feature.below_zero}" if value < 0 and feature.below_zero else ""
         blur = how_blurred(feature.name, seen.snr_db) if seen else None
         found = f"{stated}{f' ({blur})' if blur else ''}: {_standing(place, value, pair, wording)}"
     towards = wording.classes[pair[0] if share > 0 else pair[1]]

@@ -13,9 +13,9 @@ from pdclass.extract.background import (
     epoch_places,
     flagged_runs,
     measure_background,
-    scanned,
+    whitened,
 )
-from pdclass.extract.bank import joined_runs
+from pdclass.extract.bank import SUB_BLOCK
 
 RATE_HZ = 100e6
 SETTINGS = ExtractSettings()
@@ -25,8 +25,17 @@ T = np.arange(2_000_000) / RATE_HZ
 def whole(capture):
     """The background, and the events of the record: flagged runs more than 3 us apart."""
     held = measure_background(capture, SETTINGS)
-    runs = [flagged_runs(capture.counts, held, bounds) for bounds in capture.segment_bounds()]
-    return held, joined_runs(np.concatenate(runs), 300)
+    runs = np.concatenate([flagged_runs(capture.counts, held, bounds, *bounds) for bounds in capture.segment_bounds()])
+    apart = np.flatnonzero(runs[1:, 0] - runs[:-1, 1] >= 300) + 1
+    return held, np.array([part[[0, -1], [0, 1]] for part in np.split(runs, apart) if len(part)]).reshape(-1, 2)
+
+
+def flags(counts, held, bounds, *stretch):
+    """Which samples of a stretch leave the background."""
+    set_there = np.zeros(stretch[1] - stretch[0], np.bool_)
+    for first, last in flagged_runs(counts, held, bounds, *stretch) - stretch[0]:
+        set_there[first:last] = True
+    return set_there
 
 
 def keyed(on_s, period_s, ramp_s=50e-6):
@@ -71,10 +80,17 @@ def test_noise_that_rises_for_a_while_raises_the_threshold_there_alone():
     signal[600_000:900_000] *= 2
     capture = as_capture(signal)
     held, runs = whole(capture)
-    white, _ = scanned(capture.counts, held, (0, T.size), 0, T.size)
+    white = whitened(capture.counts, held, (0, T.size), 0, T.size)
     assert len(runs) <= 4
     assert white[700_000:800_000].std() == pytest.approx(1, abs=0.1)
     assert white[1_200_000:1_900_000].std() == pytest.approx(1, abs=0.1)
+
+
+@pytest.mark.parametrize(("share", "times"), [(0.3, 3), (0.5, 4), (0.6, 6)])
+def test_noise_that_switches_its_level_is_no_impulse(share, times):
+    """Noise several times louder for a share of every 5 ms gives hardly a false event in a cycle."""
+    signal = np.random.default_rng(6).normal(0, 20, T.size) * np.where(share * 5e-3 > T % 5e-3, times, 1)
+    assert len(whole(as_capture(signal))[1]) <= 4
 
 
 def test_converter_bursts_leave_the_pulses_between_them():
@@ -90,31 +106,30 @@ def test_converter_bursts_leave_the_pulses_between_them():
         signal[onset : onset + wave.size] += wave
     capture = as_capture(signal)
     held = measure_background(capture, SETTINGS)
-    white, flags = scanned(capture.counts, held, (0, T.size), 0, T.size)
+    white = whitened(capture.counts, held, (0, T.size), 0, T.size)
+    out = flags(capture.counts, held, (0, T.size), 0, T.size)
     assert held.noise < 1.25 * 20
     found = [np.abs(white[o : o + 20]).max() > max(5.5, 1.2 * np.abs(white[o - 20 : o - 1]).max()) for o in onsets]
-    assert np.mean([flags[o : o + 20].any() for o in onsets]) >= 0.9
+    assert np.mean([out[o : o + 20].any() for o in onsets]) >= 0.9
     assert np.mean(found) >= 0.9
     assert np.median([np.abs(white[o : o + 20]).max() for o in onsets]) > 7
 
 
 @pytest.mark.parametrize("dtype", [np.int16, np.float32])
 def test_no_bit_depends_on_where_the_record_is_cut(dtype):
-    """White samples and flags are the same in pieces of any length, and the runs are those of the flags."""
+    """White samples are the same in pieces of any length, and flags in those of whole sub-blocks."""
     rng = np.random.default_rng(4)
     signal = background(rng, 300_000)
     signal[100_000:100_600] += 400 * double_exponential(12e-9, 60e-9)[:600]
     capture = as_capture(signal, segments=np.array([[0, 0], [120_001, 900_000]]), dtype=dtype)
     held = measure_background(capture, SETTINGS)
     for bounds in capture.segment_bounds():
-        white, flags = scanned(capture.counts, held, bounds, *bounds)
-        for step in (997, 4096, 50_000):
-            cuts = [*range(bounds[0], bounds[1], step), bounds[1]]
-            parts = [scanned(capture.counts, held, bounds, a, b) for a, b in pairwise(cuts)]
-            assert np.concatenate([part[0] for part in parts]).tobytes() == white.tobytes()
-            assert np.array_equal(np.concatenate([part[1] for part in parts]), flags)
-        edges = np.flatnonzero(np.diff(np.concatenate([[False], flags, [False]]))).reshape(-1, 2) + bounds[0]
-        assert np.array_equal(flagged_runs(capture.counts, held, bounds), edges)
+        for part, steps in ((whitened, (61, 997, 50_000)), (flags, (SUB_BLOCK, 5 * SUB_BLOCK))):
+            whole = part(capture.counts, held, bounds, *bounds)
+            for step in steps:
+                cuts = [*range(bounds[0], bounds[1], step), bounds[1]]
+                parts = [part(capture.counts, held, bounds, a, b) for a, b in pairwise(cuts)]
+                assert np.concatenate(parts).tobytes() == whole.tobytes()
 
 
 def test_epochs_hang_on_the_start_of_their_segment():
@@ -132,6 +147,16 @@ def test_a_record_of_many_short_segments_is_searched():
     held, runs = whole(as_capture(rng.normal(0, 20, 2_500_000), segments=segments))
     assert len(held.filters) == -(-500 // EPOCHS_PER_STRETCH)
     assert len(runs) <= 8
+
+
+def test_a_record_that_stands_still_for_a_while_has_the_limit_of_the_rest():
+    """Where the last two fifths stand still the limit stays within a tenth of that of noise alone."""
+    signal = np.random.default_rng(6).normal(0, 20, T.size)
+    limits = []
+    for still in (T.size, 1_200_000):
+        signal[still:] = 0
+        limits.append(detection_limit_counts(measure_background(as_capture(signal), SETTINGS), RATE_HZ))
+    assert limits[1] == pytest.approx(limits[0], rel=0.1)
 
 
 def test_the_limit_of_a_changing_background_is_the_median_over_time():

@@ -8,22 +8,30 @@ import pytest
 from closed_form import as_capture, background, damped_sine, double_exponential
 
 from pdclass.extract import extract
-from pdclass.extract import walk as walk_module
+from pdclass.extract.background import Background
+from pdclass.extract.bank import dither_table, padded
 from pdclass.extract.walk import segment_events
 
+#: A background that whitens nothing: what leaves five noise levels is flagged.
+AS_IT_IS = Background(
+    level=0.0,
+    dither=dither_table(np.zeros(1, np.float32)),
+    epoch_samples=1 << 40,
+    first_epochs=np.zeros(1, np.int64),
+    segment_firsts=np.zeros(1, np.int64),
+    filters=padded(np.ones(1, np.float32))[None],
+    limits=np.full((1, 1), 5.2, np.float32),
+    gains=np.ones(1, np.float32),
+)
 
-def whitened_record(monkeypatch, white):
-    """A record whose samples are already white: what leaves five noise levels is flagged."""
 
-    def scanned(counts, background, bounds, first, last):
-        return white[first:last].copy(), np.abs(white[first:last]) > 5.2
-
-    monkeypatch.setattr(walk_module, "scanned", scanned)
-    return as_capture(white, dtype=np.float32)
+def white_events(white, *block_samples):
+    """Events of samples that are white already."""
+    return segment_events(as_capture(white, dtype=np.float32), AS_IT_IS, (0, white.size), *block_samples)
 
 
 @pytest.mark.parametrize("block_samples", [313, 4096, 70_001])
-def test_stretches_of_any_length_give_the_same_bits(monkeypatch, block_samples):
+def test_stretches_of_any_length_give_the_same_bits(block_samples):
     """Pulses, a burst longer than a piece, and events at the record's ends come out bit for bit the same."""
     rng = np.random.default_rng(1)
     white = rng.normal(0, 1, 200_000).astype(np.float32)
@@ -32,15 +40,13 @@ def test_stretches_of_any_length_give_the_same_bits(monkeypatch, block_samples):
     white[40_000:150_000] += 6 * np.sin(0.8 * np.arange(110_000))
     for onset in (10_000, 10_120, 20_000, 60_000, 90_000, 170_000):
         white[onset : onset + 600] += 40 * double_exponential(12e-9, 60e-9)
-    capture = whitened_record(monkeypatch, white)
-    whole = segment_events(capture, None, (0, white.size))
-    parts = segment_events(capture, None, (0, white.size), block_samples)
+    whole, parts = white_events(white), white_events(white, block_samples)
     assert len(whole.places) > 8
     for name in ("places", "feet", "shapes"):
         assert np.array_equal(getattr(whole, name), getattr(parts, name), equal_nan=True), name
 
 
-def test_pulses_between_converter_bursts_are_found(monkeypatch):
+def test_pulses_between_converter_bursts_are_found():
     """With rings of 3 us and five times their peak every 10 us, 90 % of pulses at 12 noise levels between are found."""
     rng = np.random.default_rng(2)
     white = rng.normal(0, 1, 400_000).astype(np.float32)
@@ -51,7 +57,7 @@ def test_pulses_between_converter_bursts_are_found(monkeypatch):
     for number, onset in enumerate(pulses):
         shape = double_exponential(*((12e-9, 60e-9), (30e-9, 150e-9))[number % 2])
         white[onset : onset + 600] += rng.choice([-12, 12]) * shape
-    found = segment_events(whitened_record(monkeypatch, white), None, (0, white.size)).places[:, 0]
+    found = white_events(white).places[:, 0]
     assert np.mean([np.abs(found - onset).min() <= 10 for onset in pulses]) >= 0.9
     assert len(found) <= 1.02 * (399 + len(pulses))
 

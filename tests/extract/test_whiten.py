@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from closed_form import background
 
-from pdclass.extract.bank import gathered, whitened
+from pdclass.extract.bank import SUB_BLOCK, dither_table, gathered, padded, whiten_into
 from pdclass.extract.whiten import (
     PIECE_SAMPLES,
     gated_filter,
@@ -14,6 +14,15 @@ from pdclass.extract.whiten import (
     spread_starts,
     whitening_filter,
 )
+
+
+def whitened(counts, taps, level, bounds, first, last):
+    """Samples `first` to `last` of a segment through one filter."""
+    taps, out = padded(taps), np.empty(last - first, np.float32)
+    raw, grid = np.empty(SUB_BLOCK + taps.size, np.float32), (1 << 62, 1, 0, 1)
+    unbent, table = np.ones(1, np.float32), dither_table(counts)
+    whiten_into(counts, table, level, taps[None], unbent, grid, bounds, first, raw, out)
+    return out
 
 
 def spectrum_of(signal, pieces=3):

@@ -14,9 +14,8 @@ SHAPES = (
     damped_sine(7e6, 0.4e-6, span_s=12e-6),
     damped_sine(3e6, 1.5e-6, span_s=12e-6),
 )
-#: Measured another way by intent: wavelet energies that do not depend on where the grid of scales falls, echoes that
-#: survive carriers.
-OTHERWISE = ("scale_", "echo_")
+#: Measured another way by intent: the mean wavelet energies over all places of the grid of scales, plainly over one.
+OTHERWISE = ("scale_",)
 #: Which copy is the strongest, and whether it stands out, turns on little: a larger share of those may differ.
 BY_CHOICE = ("copy_",)
 

@@ -11,6 +11,7 @@ from scipy.signal import butter, sosfilt
 from pdclass.errors import RefusedError
 from pdclass.extract import extract
 from pdclass.features import BY_NAME, CATALOGUE, FAMILIES, feature_digests, feature_table
+from pdclass.features.feature import Feature
 from pdclass.pulses import PulseSet
 
 #: One sample, in the units in which features of time come.
@@ -46,24 +47,31 @@ def found():
 def test_names_and_words_are_complete_and_unlike():
     """Every entry has a unit in its name where it has one, words for more and less, and a sentence with a value."""
     assert len(NAMES) == len(set(NAMES)) >= 20
-    assert {"edges", "spectrum", "scales", "ringing", "echoes", "spread", "arrival", "copies", "tilt", "modes"} == set(
-        FAMILIES
-    )
+    families = {"edges", "spectrum", "scales", "ringing", "spread", "arrival", "copies", "tilt", "modes"}
+    assert families == set(FAMILIES)
     assert sorted(NAMES) == sorted(f.name for features, _ in FAMILIES.values() for f in features)
-    endings = {"ns": "_ns", "MHz": "_mhz", "µs": "_us"}
+    endings = {"ns": "_ns", "MHz": "_mhz", "µs": "_us", "dB": "_db", "dB/MHz": "_db", "dB/√MHz": "_db"}
     for feature in CATALOGUE:
         assert feature.name.endswith(endings.get(feature.unit, ""))
         assert "{value}" in feature.sentence
         assert feature.more != feature.less
+        # a missing value has a cause of its own
+        assert feature.absent != Feature.absent
+        # it follows after a colon
+        assert ":" not in feature.meaning + feature.sentence
+        # what may be negative is higher or lower, not larger or smaller
+        assert feature.valid_range[0] >= 0 or (feature.more, feature.less) != ("larger", "smaller")
         assert feature.tolerance > 0
         assert feature.reference
+    assert len({feature.sentence for feature in CATALOGUE}) == len({f.meaning for f in CATALOGUE}) == len(NAMES)
 
 
 def test_a_changed_definition_changes_the_digest_and_changed_words_do_not():
     """A bundle that names a digest notices when the feature under the name is another; words may be mended."""
     feature = BY_NAME["rise_ns"]
     assert dataclasses.replace(feature, valid_range=(0.0, 1.0)).digest != feature.digest
-    assert dataclasses.replace(feature, sentence="edge {value}").digest == feature.digest
+    for words in ({"sentence": "edge {value}"}, {"absent": "not there"}, {"below_zero": "turned over"}):
+        assert dataclasses.replace(feature, **words).digest == feature.digest
     assert feature_digests()["rise_ns"] == feature.digest
 
 

@@ -52,12 +52,29 @@ def test_a_low_passed_copy_loses_its_high_frequencies_and_its_likeness():
     assert lossy["copy_1_likeness"] < plain["copy_1_likeness"] - 0.03
 
 
-def test_a_pulse_without_copies_has_none():
-    """Where nothing follows a pulse that stands 40 dB out of the noise, every feature of the copies is NaN."""
-    for seed in range(5):
-        values = found(pulse(), noise_v=0.01, seed=seed)
-        strong = values["copy_1_ratio"]
-        assert np.isnan(strong) or abs(strong) < 0.1
+@pytest.mark.parametrize("fall_ns", [60, 200, 400, 900])
+def test_a_pulse_without_copies_has_none(fall_ns):
+    """However slowly it falls, its own tail is no copy; chance is taken for one in at most one of ten at 30 dB."""
+    wave = double_exponential(10e-9, fall_ns * 1e-9, span_s=15e-6)
+    assert np.isnan(found(wave, noise_v=0.001)["copy_1_ratio"])
+    noisy = [found(wave, noise_v=0.03, seed=seed)["copy_1_ratio"] for seed in range(40)]
+    assert np.sum(np.isfinite(noisy)) <= 4
+
+
+def test_a_copy_before_the_pulse_is_over_is_none():
+    """Of a pulse that falls with 900 ns, a copy after 1 us lies within its own tail: nothing is made of it."""
+    wave = double_exponential(10e-9, 900e-9, span_s=15e-6)
+    assert np.isnan(found(wave + 0.3 * np.roll(wave, 100))["copy_1_delay_us"])
+    assert found(wave + 0.3 * np.roll(wave, 600))["copy_1_delay_us"] == pytest.approx(6.0, abs=0.03)
+
+
+@pytest.mark.parametrize("delay_us", [0.45, 1, 2, 6, 12])
+def test_an_early_copy_of_a_short_pulse_is_found(delay_us):
+    """The beginning of a short pulse is over after 0.4 us: a copy of 0.3 is found from there on."""
+    wave = double_exponential(5e-9, 60e-9, span_s=15e-6)
+    values = found(wave + 0.3 * np.roll(wave, round(100 * delay_us)), noise_v=0.01)
+    assert values["copy_1_delay_us"] == pytest.approx(delay_us, abs=0.02)
+    assert values["copy_1_ratio"] == pytest.approx(0.3, abs=0.08)
 
 
 def test_the_second_copy_is_apart_from_the_first():
@@ -79,11 +96,11 @@ def under_carriers(seed):
 
 
 def test_a_copy_survives_carriers(monkeypatch):
-    """Nearly every copy is found under carriers and none is invented; were no lines cut, a third would be lost."""
+    """Two of three copies are found under carriers and none is invented; were no lines cut, half would be lost."""
     pulses = [under_carriers(seed) for seed in range(20)]
     delays = np.array([features_of(each)["copy_1_delay_us"] for each in pulses])
-    assert np.sum(np.isfinite(delays)) >= 17
+    assert np.sum(np.isfinite(delays)) >= 13
     assert delays[np.isfinite(delays)] == pytest.approx(np.full(np.isfinite(delays).sum(), 6.0), abs=0.03)
     monkeypatch.setattr(copies, "cut_lines", lambda spectra, pulses: None)
     uncut = [features_of(each)["copy_1_delay_us"] for each in pulses]
-    assert np.sum(np.isfinite(uncut)) <= 14
+    assert np.sum(np.isfinite(uncut)) <= 10

@@ -15,12 +15,14 @@ from pdclass.features import BY_NAME, CATALOGUE, feature_table
 from pdclass.pulses import Chain, PulseSet, typed_table
 
 STORED = Path(__file__).with_name("definitions.json")
+FAST = double_exponential(10e-9, 50e-9, span_s=12e-6)
 WAVES = {
-    "fast": double_exponential(10e-9, 50e-9, span_s=12e-6),
+    "fast": FAST,
     "slow": double_exponential(100e-9, 600e-9, span_s=12e-6),
     "ringing": damped_sine(7e6, 0.4e-6, span_s=12e-6),
     "long ringing with a copy": damped_sine(2e6, 1.5e-6, span_s=12e-6)
     + 0.3 * np.roll(damped_sine(2e6, 1.5e-6, span_s=12e-6), 800),
+    "fast with two copies": FAST + 0.5 * np.roll(FAST, 300) - 0.2 * np.roll(FAST, 800),
 }
 
 

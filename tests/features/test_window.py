@@ -1,12 +1,14 @@
 """Windows made ready in batches against the plain way, one by one."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from closed_form import double_exponential
-from one_pulse import single
+from one_pulse import features_of, single
 from plain_features.window import prepared as plainly
 
-from pdclass.features.window import ONSET, SAMPLES, Windows, chain_band_hz, prepared
+from pdclass.features.window import ONSET, SAMPLES, Windows, chain_band_hz, counting_noise_v, prepared
 from pdclass.pulses import PulseSet
 
 FIELDS = ("wave", "raw", "noise_power", "noise", "height_v", "end", "last", "peak")
@@ -38,7 +40,8 @@ def some(rate_hz, count=20):
 
 def windows_of(pulses):
     low_hz, reach_hz = chain_band_hz(pulses.chains * len(pulses.table))
-    return prepared(pulses.waves, pulses.table["duration_us"].to_numpy(np.float64), reach_hz, low_hz)
+    least_v = counting_noise_v(pulses.chains * len(pulses.table))
+    return prepared(pulses.waves, pulses.table["duration_us"].to_numpy(np.float64), reach_hz, low_hz, least_v)
 
 
 @pytest.mark.parametrize("rate_hz", [40e6, 62.5e6, 100e6, 250e6])
@@ -92,3 +95,35 @@ def test_a_gap_is_filled_and_ends_what_is_known():
     assert rows.size == 2
     assert windows.last.tolist() == [1700, 1700]
     assert np.isfinite(windows.wave).all()
+
+
+@pytest.mark.parametrize(("last", "missing"), [(505, True), (560, True), (700, False)])
+def test_a_pulse_that_the_record_cuts_is_not_measured_as_a_whole(last, missing):
+    """Where the record ends within the pulse, less than 1 us after its onset, nothing of the whole is measured."""
+    pulses = single(double_exponential(10e-9, 200e-9, span_s=12e-6), duration_us=3.0)
+    pulses.waves[:, last:] = np.nan
+    values = features_of(pulses)
+    for name in ("centroid_mhz", "crest_factor", "swings", "scale_mean_level", "tail_ns", "equivalent_width_mhz"):
+        assert np.isnan(values[name]) == missing, name
+
+
+def test_a_short_pulse_that_ends_before_the_record_is_measured():
+    """What ends within its record is whole, however short the record."""
+    pulses = single(double_exponential(10e-9, 30e-9, span_s=12e-6), duration_us=0.3)
+    pulses.waves[:, 560:] = np.nan
+    assert np.isfinite(features_of(pulses)["centroid_mhz"])
+
+
+@pytest.mark.parametrize("noise_counts", [0.0, 0.2, 1.0])
+def test_the_noise_of_few_counts_is_no_lower_than_that_of_rounding(noise_counts):
+    """At 40 MS/s and 1/127 a count, the median noise level is within 3 dB of the noise and the rounding together."""
+    count, levels = 1 / 127, []
+    for seed in range(20):
+        wave = double_exponential(20e-9, 200e-9, 40e6, 12e-6)
+        pulses = single(wave, rate_hz=40e6, noise_v=noise_counts * count, seed=seed)
+        waves = (np.rint(pulses.waves / count) * count).astype(np.float32)
+        chain = replace(pulses.chains[0], volts_per_count=count)
+        windows, _ = windows_of(PulseSet(waves, (chain,), pulses.table))
+        levels.append(windows.noise[0] * abs(windows.height_v[0]))
+    true = count * np.hypot(noise_counts, 1 / np.sqrt(12))
+    assert 20 * np.log10(np.median(levels) / true) == pytest.approx(0, abs=3.0)

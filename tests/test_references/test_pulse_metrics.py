@@ -39,7 +39,8 @@ def equivalent_spread(wave):
     size = scipy.fft.next_fast_len(2 * wave.size)
     power = (np.abs(scipy.fft.rfft(wave, size)) ** 2).astype(np.float32)[None]
     power[:, 0] /= 2  # of the two sides all other bins count twice
-    width = equivalent_width(power, np.zeros_like(power), scipy.fft.rfftfreq(size, 1 / RATE_HZ))[0]
+    hz = scipy.fft.rfftfreq(size, 1 / RATE_HZ)
+    width = equivalent_width(power, np.zeros_like(power), hz, np.array([wave.size]))[0]
     return length / RATE_HZ, width
 
 

@@ -118,10 +118,24 @@ def test_what_the_chain_does_not_carry_says_where_the_chain_ends():
 
 def test_a_copy_that_is_not_there_is_no_failure_to_measure():
     """Where neither noise nor chain forbids it, a missing value says what its absence means."""
-    copies = [feature for feature in CATALOGUE if feature.name.startswith(("copy_", "echo_"))]
-    for feature in copies:
-        sentence = reason_sentence(0, math.nan, 0.5, (0, 1), _alone(feature.name), Seen(40.0, 40e6))
-        assert f"{feature.meaning}: no later copy stands out; missing in" in sentence
+    absences = {
+        "copy_1_delay_us": "no later copy stands out",
+        "copy_1_level_5_9_db": "no later copy stands out, or too little power in this band",
+        "copy_2_ratio": "no second copy stands out",
+        "copy_delay_ratio": "no second copy stands out",
+    }
+    for name, absence in absences.items():
+        sentence = reason_sentence(0, math.nan, 0.5, (0, 1), _alone(name), Seen(40.0, 40e6))
+        assert sentence.startswith(f"{BY_NAME[name].meaning}: {absence}; missing in 0 % of")
+
+
+def test_what_a_negative_value_means_is_said_behind_it():
+    """A copy that is turned over is called so, and ranks as lower than upright ones, not as smaller."""
+    turned, upright = (
+        reason_sentence(0, value, 0.5, (0, 1), _alone("copy_2_ratio"), Seen(60.0, 40e6)) for value in (-0.708, 0.3)
+    )
+    assert turned.startswith("height of the second copy -0.708 times the pulse, turned over: lower than all switchgear")
+    assert upright.startswith("height of the second copy 0.300 times the pulse: lower than all switchgear")
 
 
 def test_a_value_that_noise_blurs_says_so(monkeypatch, wording):

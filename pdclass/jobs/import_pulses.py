@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from pdclass.capture import Map, double_notes, pulses_of, read_map, read_rows, write_pulses
 from pdclass.errors import InputError
-from pdclass.extract.events import events_of_pieces, spans
+from pdclass.extract.events import found_in, spans
 from pdclass.extract.whiten import whitening_filter
 from pdclass.jobs.extract import check_table_place
 from pdclass.jobs.inventory import inventory_lines
@@ -125,7 +125,7 @@ def _found_onset(row: WaveArray, taps: FloatArray, rate_hz: float) -> int:
     energy = np.convolve(held.astype(np.float64) ** 2, np.ones(attack))[: held.size]
     place = int(np.argmax(energy >= 0.5 * energy.max()))
     piece = [0, max(0, place - reach), min(held.size, place + reach), held.size, 0]
-    starts = events_of_pieces(held, np.array([piece], np.int64), rate_hz)[0][:, 0]
+    starts = found_in(held, np.array(piece, np.int64), rate_hz)[0][:, 0]
     return first + int(min(starts, key=lambda start: abs(start - place)))
 
 

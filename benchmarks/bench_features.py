@@ -17,7 +17,7 @@ import plain_features
 from pdclass.extract import extract
 from pdclass.features import BY_NAME, CATALOGUE, FAMILIES, feature_table
 from pdclass.features.table import BATCH
-from pdclass.features.window import chain_band_hz, prepared
+from pdclass.features.window import chain_band_hz, counting_noise_v, prepared
 from pdclass.jobs.simulate import scenario_path
 from pdclass.pulses import PulseSet
 from pdclass.sim.scenario import capture_of, circuit_of, read_scenario
@@ -65,13 +65,15 @@ def by_family(pulses):
     low_hz, reach_hz = chain_band_hz(pulses.chains)[:, pulses.table["chain"].to_numpy(np.int64)]
     parts = [slice(first, first + BATCH) for first in range(0, len(duration_us), BATCH)]
     few = pulses.take(np.arange(PLAIN_PULSES))
-    batches = [prepared(pulses.waves[part], duration_us[part], reach_hz[part], low_hz[part])[0] for part in parts]
+    least_v = counting_noise_v(pulses.chains)[pulses.table["chain"].to_numpy(np.int64)]
+    rows = duration_us, reach_hz, low_hz, least_v
+    batches = [prepared(pulses.waves[part], *(each[part] for each in rows))[0] for part in parts]
     windows = list(ready(few))
 
     def all_prepared():
         for part in parts:
             # the spectrum of the own samples is shared by families, and made when first asked for
-            prepared(pulses.waves[part], duration_us[part], reach_hz[part], low_hz[part])[0].own_power
+            prepared(pulses.waves[part], *(each[part] for each in rows))[0].own_power
 
     for batch in batches:
         batch.own_power

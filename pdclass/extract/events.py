@@ -6,6 +6,7 @@ import math
 from functools import lru_cache
 
 import numpy as np
+from scipy.special import chdtri
 
 from pdclass.compiled import compiled
 from pdclass.extract.onsets import edge_foot, first_sample
@@ -23,9 +24,11 @@ TWIN_SHARE = 0.7
 TWIN_DIP = 0.12
 #: A swing to the other side with this share of the peak energy is a mode that rings.
 SWING = 0.25
+#: Where a pulse has begun the quick energy is at least this, and no chance of noise: a mean of few samples, as at low
+#: rates, is above it as rarely as one of six samples is (the chance of that, for Gaussian noise).
 ALIVE = 9.0
+ALIVE_CHANCE = 7.4e-10
 FADED = 2.0
-_LIMITS = np.array([ALIVE, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP, SWING])
 
 
 def spans(rate_hz: float) -> tuple[int, int, int]:
@@ -245,7 +248,9 @@ def found_in(white: WaveArray, piece: IntArray, rate_hz: float) -> tuple[IntArra
 
 def all_limits(rate_hz: float) -> FloatArray:
     """The `limits` of `rough_starts` at a sampling rate."""
-    return np.append(_LIMITS, spans(rate_hz)[2])
+    attack, _, twin = spans(rate_hz)
+    alive = max(ALIVE, float(chdtri(attack, ALIVE_CHANCE)) / attack)
+    return np.array([alive, FADED, TAIL_RISE, TWIN_SHARE, TWIN_DIP, SWING, twin])
 
 
 @compiled

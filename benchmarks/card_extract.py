@@ -270,7 +270,7 @@ def draw(rows, alone):
         fontsize=10,
     )
     PICTURE.parent.mkdir(exist_ok=True)
-    figure.savefig(PICTURE, dpi=130, metadata={"Software": None})
+    figure.savefig(PICTURE, dpi=132, metadata={"Software": None})
 
 
 def main(count):

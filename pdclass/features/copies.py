@@ -14,7 +14,7 @@ import numpy as np
 from pdclass.compiled import compiled
 from pdclass.features.arrival import band_means_into, correlate_into, cosine_means, fade_out, first_bins
 from pdclass.features.feature import Feature
-from pdclass.features.kernels import largest, size_above, weighed
+from pdclass.features.kernels import place_of_largest, size_above, weighed
 from pdclass.features.lines import cut_lines, weigh
 from pdclass.features.transforms import SpectrumArray, spectra, waves_of
 from pdclass.features.window import ANALYSIS_RATE_HZ, GUARD, ONSET, SAMPLES, SPECTRUM_FFT, STEP_NS, Windows
@@ -113,7 +113,7 @@ def _deconvolve(
     for row in range(len(whole)):
         for k in range(power.size):
             power[k] = beginning[row, k].real ** 2 + beginning[row, k].imag ** 2
-        least, share = np.float32(_REGULAR) * power[largest(power)], np.float32(scale[row])
+        least, share = np.float32(_REGULAR) * power[place_of_largest(power)], np.float32(scale[row])
         window, pulse, noise = whole[row], beginning[row], noise_power[row]
         for k in range(power.size):
             power[k] = low_pass[k] / (power[k] + noise[k] * share + least)
@@ -124,7 +124,7 @@ def _deconvolve(
 @compiled
 def _scaled(gram: WaveArray) -> WaveArray:  # pragma: no cover - compiled
     for row in range(len(gram)):
-        unit = np.float32(1) / (abs(gram[row, largest(gram[row, :5])]) + np.float32(1e-9))
+        unit = np.float32(1) / (abs(gram[row, place_of_largest(gram[row, :5])]) + np.float32(1e-9))
         for i in range(gram.shape[1]):
             gram[row, i] *= unit
     return gram
@@ -201,12 +201,12 @@ def strongest_copies(gram: WaveArray, start: int, scratch: WaveArray) -> tuple[i
     size = scratch[:delays]
     size[:] = gram[start : start + delays]
     least = max(_STANDS_OUT * (size_above(gram[_LEVEL_FROM::_COMB].copy(), _CALMER) / _NORMAL + 1e-9), _SMALLEST)
-    first = largest(size)
+    first = place_of_largest(size)
     if abs(size[first]) < least:
         return -1, -1
     apart = max(_APART, round(_APART_SHARE * (first + start)))
     size[max(first - apart, 0) : first + apart + 1] = 0
-    second = largest(size)
+    second = place_of_largest(size)
     return first + start, second + start if abs(size[second]) >= least else -1
 
 

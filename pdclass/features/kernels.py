@@ -152,19 +152,6 @@ def place_of_largest(values: WaveArray) -> int:  # pragma: no cover - compiled
 
 
 @compiled
-def largest(values: WaveArray) -> int:  # pragma: no cover - compiled
-    """Place of the first value of the largest size, (n,) float32 without NaN."""
-    keys = values.view(np.int32)
-    top = np.int32(0)
-    for i in range(keys.size):
-        top = max(top, keys[i] & _ALL_BUT_SIGN)
-    for i in range(keys.size):
-        if keys[i] & _ALL_BUT_SIGN == top:
-            return i
-    return 0
-
-
-@compiled
 def chance_energy(floor: float, samples: float) -> float:  # pragma: no cover - compiled
     """What noise alone may leave of the energy of so many samples once its mean is taken out: three deviations.
 

@@ -80,11 +80,6 @@ class Windows:
         return np.asarray(-20 * np.log10(known))
 
     @property
-    def noise_density(self) -> WaveArray:
-        """Noise spectrum for one sample, (pulses, bins); NaN where it is unknown."""
-        return np.asarray(self.noise_power / (self.end - ONSET + GUARD)[:, None].astype(np.float32))
-
-    @property
     def cut_short(self) -> NDArray[np.bool_]:
         """Where the record ends within the pulse's own samples and less than 1 us after its onset, (pulses,)."""
         return np.asarray((self.end == self.last) & (self.last - ONSET < _SHORTEST_RECORD))
